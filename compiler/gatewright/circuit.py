@@ -195,6 +195,19 @@ class Circuit:
                     same = rows[self.widths[rows] == width]
                     yield same, np.stack([self.matrices[i] for i in self.link[same]])
 
+    def pieces(self, rows: NDArray[np.int64], key: NDArray[np.int64]) -> Iterator[tuple[NDArray[np.int64], Piece]]:
+        """Yield ``(positions in rows, piece)``, one a kind and width, for operations `rows` with the given keys."""
+        kinds = self.op[rows]
+        widths = self.widths[rows]
+        for k, gate in enumerate(self.table):
+            of_kind = np.flatnonzero(kinds == k)
+            for width in np.unique(widths[of_kind]).tolist():
+                chosen = of_kind[widths[of_kind] == width]
+                at = rows[chosen]
+                qubits = self.qubits[self.offsets[at][:, None] + np.arange(width)]
+                values = self.parameters[self.parameter_offsets[at][:, None] + np.arange(gate.n_parameters)]
+                yield chosen, Piece(gate, key[chosen], qubits, values, self.link[at])
+
     def unitary(self) -> Array:
         """Return the full matrix, global phase included.
 
@@ -220,7 +233,7 @@ class Circuit:
                 "too many qubits for a full matrix", required=f"{MAX_DENSE_QUBITS} at most", found=str(self.n_qubits)
             )
         size = 2**self.n_qubits
-        state = np.eye(size, dtype=np.complex128) * np.exp(1j * self.phase)
+        state: Array = np.eye(size, dtype=np.complex128) * np.exp(1j * self.phase)
         for operation in self:
             if operation.matrix is not None:
                 state = apply_matrix(operation.matrix, operation.qubits, state, self.n_qubits)

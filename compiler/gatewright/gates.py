@@ -250,8 +250,8 @@ GATES: dict[str, Gate] = _table(
         Gate("ccz", 3, 0, _c(_Z, 2)),
         Gate("cswap", 3, 0, _c(_SWAP)),
         # Relative-phase Toffolis (Margolus; Maslov, PRA 93, 022311 (2016)), as qelib1.inc defines them.
-        Gate("rccx", 3, 0, _constant(_permutation([0, 1, 2, 3, 4, 5, 7, 6], {5: -1, 6: -1j, 7: 1j}))),
-        Gate("rc3x", 4, 0, _constant(_permutation([*range(14), 15, 14], {12: 1j, 13: -1j, 15: -1}))),
+        Gate("rccx", 3, 0, _constant(_permutation([0, 1, 2, 3, 4, 5, 7, 6], {5: -1, 6: 1j, 7: -1j}))),
+        Gate("rc3x", 4, 0, _constant(_permutation([*range(14), 15, 14], {12: 1j, 13: -1j, 14: -1}))),
         Gate("c3x", 4, 0, _c(_X, 3)),
         Gate("c3sqrtx", 4, 0, _c(_SX, 3)),
         Gate("c4x", 5, 0, _c(_X, 4)),

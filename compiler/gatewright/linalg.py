@@ -31,7 +31,7 @@ Array = NDArray[np.complex128]
 
 def dagger(matrix: NDArray[Any]) -> NDArray[Any]:
     """Return the conjugate transpose over the last two axes."""
-    return np.conj(np.swapaxes(matrix, -1, -2))
+    return np.asarray(np.conj(np.swapaxes(matrix, -1, -2)))
 
 
 def kron(first: ArrayLike, second: ArrayLike) -> Array:
@@ -163,7 +163,7 @@ def reorder_qubits(matrix: ArrayLike, order: tuple[int, ...]) -> Array:
     tensor = u.reshape(*batch, *(2,) * (2 * n))
     k = len(batch)
     axes = (*range(k), *(k + q for q in order), *(k + n + q for q in order))
-    return tensor.transpose(axes).reshape(u.shape)
+    return np.asarray(tensor.transpose(axes).reshape(u.shape))
 
 
 def checked_unitary(

@@ -1,1 +1,18 @@
-"""proof."""
+"""Proofs: what they say, the independent checker, and their files."""
+
+from gatewright.proof.checker import check_legal, check_proof
+from gatewright.proof.dense import dense_distance
+from gatewright.proof.file import ProofFile, encode_proof, read_proof
+from gatewright.proof.windows import Proof, Step, Verdict
+
+__all__ = [
+    "Proof",
+    "ProofFile",
+    "Step",
+    "Verdict",
+    "check_legal",
+    "check_proof",
+    "dense_distance",
+    "encode_proof",
+    "read_proof",
+]

@@ -1,0 +1,145 @@
+"""Compare two small circuits by their full matrices: a second opinion that shares nothing with the windows.
+
+Qubits of the output that carry no source qubit are taken to start in |0⟩, and must end there.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+from numpy.typing import NDArray
+
+from gatewright.circuit import Circuit, apply_matrix
+from gatewright.errors import CircuitError, ProofError
+from gatewright.gates import BARRIER, MEASURE
+from gatewright.linalg import kron
+
+__all__ = ["dense_distance", "dense_work", "touched_qubits"]
+
+Array = NDArray[np.complex128]
+
+#: Largest matrix: 2**24 entries are 256 MiB.
+MAX_LOG_ENTRIES = 24
+
+
+def touched_qubits(output: Circuit, initial: Sequence[int], final: Sequence[int]) -> list[int]:
+    """Return the output's qubits that an operation or a source qubit touches, in order."""
+    barrier = np.array([gate.name == BARRIER.name for gate in output.table], dtype=bool)
+    acting = np.repeat(~barrier[output.op], output.widths) if len(output) else np.zeros(0, dtype=bool)
+    return sorted({*output.qubits[acting].tolist(), *initial, *final})
+
+
+def dense_work(source: Circuit, output: Circuit, initial: Sequence[int], final: Sequence[int]) -> float:
+    """Return the number of matrix entries that the comparison computes."""
+    entries = 2.0 ** (len(touched_qubits(output, initial, final)) + source.n_qubits)
+    return float(entries * (1 + np.count_nonzero(output.widths >= 2)))
+
+
+def dense_distance(source: Circuit, output: Circuit, initial: Sequence[int], final: Sequence[int]) -> float:
+    """Return the operator-norm distance, up to global phase, of the output from the source on its places.
+
+    Parameters
+    ----------
+    source, output : Circuit
+        Unitary, but for measurements at the end; these must agree.
+    initial, final : sequence of int, length source.n_qubits
+        Output qubit of each source qubit at the two ends.
+
+    Raises
+    ------
+    CircuitError
+        Too large, or not unitary before its measurements.
+    ProofError
+        The measurements differ.
+    """
+    held = touched_qubits(output, initial, final)
+    n = source.n_qubits
+    if len(held) + n > MAX_LOG_ENTRIES:
+        raise CircuitError(
+            "too large to compare by full matrices",
+            required=f"qubits of the source and qubits touched by the output together at most {MAX_LOG_ENTRIES}",
+            found=f"{n} and {len(held)}",
+            hint="compile with --proof and check with that proof",
+        )
+    meant_unitary, meant_bits = _split(source)
+    made_unitary, made_bits = _split(output)
+    if {(final[q], bit) for q, bit in meant_bits} != set(made_bits):
+        raise ProofError(
+            "not equal: the measurements at the end differ",
+            required=_listed([(final[q], bit) for q, bit in meant_bits]),
+            found=_listed(made_bits),
+        )
+    rank = {q: k for k, q in enumerate(held)}
+    meant = _spread(_run(source, meant_unitary, range(n), np.eye(2**n, dtype=np.complex128), n), final, rank)
+    start = _spread(np.eye(2**n, dtype=np.complex128), initial, rank)
+    made = _run(output, made_unitary, [rank.get(q, 0) for q in range(output.n_qubits)], start, len(held))
+    overlap = complex(np.vdot(meant, made))
+    phase = overlap / abs(overlap) if overlap else 1.0
+    return float(np.linalg.norm(made - phase * meant, ord=2))
+
+
+def _listed(pairs: list[tuple[int, int]]) -> str:
+    return ", ".join(f"qubit {q} → bit {b}" for q, b in sorted(pairs)[:12]) or "none"
+
+
+def _split(circuit: Circuit) -> tuple[list[int], list[tuple[int, int]]]:
+    """Return the unitary operations, and the measurements, which must be the last on their qubits and bits."""
+    unitary: list[int] = []
+    measured: list[tuple[int, int]] = []
+    done: set[int] = set()
+    for k in range(len(circuit)):
+        name = circuit.table[circuit.op[k]].name
+        if name == BARRIER.name:
+            continue
+        qubits = circuit.qubits_of(k)
+        again = done.intersection(qubits)
+        if name == MEASURE.name and not again:
+            measured.append((qubits[0], int(circuit.link[k])))
+            done.add(qubits[0])
+        elif again or not circuit.is_unitary[k]:
+            raise CircuitError(
+                "cannot compare full matrices of a circuit that measures or resets before its end",
+                found=f"operation {k} ('{name}') on qubit {qubits[0]}",
+                hint="compile with --proof and check with that proof",
+            )
+        else:
+            unitary.append(k)
+    if len({bit for _, bit in measured}) < len(measured):
+        raise CircuitError(
+            "cannot compare full matrices of a circuit that measures twice into one bit",
+            hint="compile with --proof and check with that proof",
+        )
+    return unitary, measured
+
+
+def _spread(columns: Array, places: Sequence[int], rank: dict[int, int]) -> Array:
+    """Put the n qubits of `columns` on their places among all held qubits, the others in |0⟩."""
+    n, total = len(places), len(rank)
+    bits = (np.arange(2**n)[:, None] >> np.arange(n - 1, -1, -1)) & 1
+    rows = (bits << (total - 1 - np.array([rank[q] for q in places]))).sum(axis=1)
+    out = np.zeros((2**total, columns.shape[1]), dtype=np.complex128)
+    out[rows] = columns
+    return out
+
+
+def _run(circuit: Circuit, rows: list[int], rank: Sequence[int], state: Array, n: int) -> Array:
+    """Apply operations to a stack of states; one-qubit gates wait for the next wider one on their qubit."""
+    pending: dict[int, Array] = {}
+    matrices: dict[int, Array] = {}
+    for of_kind, stack in circuit.matrix_groups(rows):
+        matrices.update(zip(of_kind.tolist(), stack, strict=True))
+    for k in rows:
+        qubits = [rank[q] for q in circuit.qubits_of(k)]
+        matrix = matrices[k]
+        if len(qubits) == 1:
+            before = pending.get(qubits[0])
+            pending[qubits[0]] = matrix if before is None else matrix @ before
+            continue
+        local = np.eye(1, dtype=np.complex128)
+        for q in qubits:
+            local = kron(local, pending.pop(q, np.eye(2)))
+        state = apply_matrix(matrix @ local, qubits, state, n)
+    for q, matrix in pending.items():
+        state = apply_matrix(matrix, [q], state, n)
+    return state

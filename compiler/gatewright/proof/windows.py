@@ -1,0 +1,114 @@
+"""What a proof says: windows, seams and placements, as arrays.
+
+A *step* claims that an output circuit does the same as a source circuit. Both are cut into the same sequence of
+*windows*. Window w takes a few source wires, which sit on the output wires ``entry`` when it begins and on
+``exit`` (the same wires, perhaps permuted) when it ends, and in it
+
+    output · (⊗ seam before) = phase · permutation · (⊗ seam after) · source
+
+A *seam* is the one-qubit unitary by which the output is ahead of the source on a wire; each is written once, by
+the window it leaves, and enters the next window on that wire. Seams at the two ends of a circuit and beside
+measurements, resets and barriers are the identity. The module holds data only; `checker` judges it.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from gatewright.circuit import Circuit
+
+__all__ = ["Proof", "Step", "Verdict"]
+
+Integers = NDArray[np.int32]
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Step:
+    """The claim that one circuit does the same as another.
+
+    Attributes
+    ----------
+    initial, final : ndarray of int32, shape (N,)
+        Output wire of each source wire at the two ends; the source is taken to have N wires, those beyond its own
+        idle.
+    source_window : ndarray of int32, shape (operations of the source,)
+        Window of each source operation.
+    output_window : ndarray of int32, shape (operations of the output,)
+    offsets : ndarray of int64, shape (W + 1,)
+        Window w has the slots ``offsets[w]:offsets[w + 1]``, one a wire.
+    wires, entry, exit : ndarray of int32, shape (slots,)
+        The source wire of each slot, and the output wires on which it enters and leaves.
+    seams : ndarray of float64, shape (slots, 4)
+        Quaternion (a, b, c, d), the matrix a − i(b X + c Y + d Z), for the seam after the window.
+    output : Circuit or None
+        The circuit this step ends with, where it is not the last.
+    """
+
+    initial: Integers
+    final: Integers
+    source_window: Integers
+    output_window: Integers
+    offsets: NDArray[np.int64]
+    wires: Integers
+    entry: Integers
+    exit: Integers
+    seams: NDArray[np.float64]
+    output: Circuit | None = None
+
+    @property
+    def windows(self) -> int:
+        """Number of windows."""
+        return len(self.offsets) - 1
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Proof:
+    """The steps from source to output, in order; each starts where the one before ended."""
+
+    steps: tuple[Step, ...]
+
+    @property
+    def windows(self) -> int:
+        """Number of windows in all steps together."""
+        return sum(step.windows for step in self.steps)
+
+
+@dataclass(frozen=True, slots=True)
+class Verdict:
+    """What the checker found; it exists only where everything was proven.
+
+    Attributes
+    ----------
+    error_bound : float
+        Upper bound on the operator-norm distance, up to global phase, between the source (on its wires, moved to
+        their places) and the output.
+    windows : int
+    worst_window, worst_distance
+        Number (within its step) and distance of the window that contributes most.
+    initial, final : tuple of int
+        Physical qubit of each source qubit at the two ends.
+    method : str
+    """
+
+    error_bound: float
+    windows: int
+    worst_window: int
+    worst_distance: float
+    initial: tuple[int, ...]
+    final: tuple[int, ...]
+    method: str
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return the entries of the JSON summary's ``proof``."""
+        return {
+            "verified": True,
+            "error_bound": self.error_bound,
+            "windows": self.windows,
+            "method": self.method,
+            "worst_window": self.worst_window,
+            "worst_distance": self.worst_distance,
+        }

@@ -1,0 +1,373 @@
+"""Turn windows into native gates: entanglers for each window, one-qubit runs merged across them, phases carried on.
+
+Every two-qubit window becomes ``L_k E … E L_1 E L_0``. What stands after its last entangler is not played there: it
+is multiplied into the first layer of the next window on the same wire, so that one run of pulses does for both. The
+part of a run that is a rotation about the plan's axis moves on behind an entangler that lets it pass. What is owed
+at the end of a window in this way is its seam in the proof.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from typing import Any
+
+import numba as nb
+import numpy as np
+from numpy.typing import NDArray
+
+from gatewright.circuit import Circuit, Piece, assemble
+from gatewright.errors import GateSetError
+from gatewright.linalg import dagger
+from gatewright.proof.windows import Step
+from gatewright.stages.draft import Draft
+from gatewright.stages.fuse import FIXED, ONE, TWO, Fused, window_unitaries
+from gatewright.synthesis.native import NativeEntangler, NativeSet
+
+__all__ = ["synthesise"]
+
+Array = NDArray[np.complex128]
+
+
+@nb.njit(
+    "i8(i1[::1], i8[::1], i4[::1], i4[::1], i4[::1], b1[::1], c16[:,:,:,:,::1], c16[:,:,::1], c16[:,:,::1], i8[::1],"
+    " i4[::1], i4[::1], c16[:,:,::1], i8[::1], i8)",
+    cache=True,
+    nogil=True,
+)
+def _merge(
+    kind: Any,
+    offsets: Any,
+    wires: Any,
+    row: Any,
+    uses: Any,
+    flush: Any,
+    layers: Any,
+    one: Any,
+    site_matrix: Any,
+    site_event: Any,
+    site_window: Any,
+    site_wire: Any,
+    owed: Any,
+    window_event: Any,
+    n_wires: int,
+) -> int:
+    """Multiply one-qubit layers together along the wires; return the number of sites."""
+    pending = np.zeros((n_wires, 2, 2), np.complex128)
+    for p in range(n_wires):
+        pending[p, 0, 0] = pending[p, 1, 1] = 1
+    site, event = 0, 0
+    for w in range(len(kind)):
+        window_event[w] = event
+        if kind[w] == 0:
+            event += 1
+            continue
+        width = kind[w]
+        k = uses[w]
+        for layer in range(k + 1):
+            for j in range(width):
+                p = wires[offsets[w] + j]
+                for a in range(2):
+                    for b in range(2):
+                        if layer > 0:
+                            site_matrix[site, a, b] = layers[row[w], layer, j, a, b]
+                            continue
+                        total = 0j
+                        for c in range(2):
+                            left = one[row[w], a, c] if width == 1 else layers[row[w], 0, j, a, c]
+                            total += left * pending[p, c, b]
+                        site_matrix[site, a, b] = total
+                if layer < k or flush[offsets[w] + j]:
+                    site_event[site] = event
+                    site_window[site] = w
+                    site_wire[site] = p
+                    site += 1
+                    event += 1
+                    if layer == k:
+                        pending[p] = 0
+                        pending[p, 0, 0] = pending[p, 1, 1] = 1
+                else:
+                    pending[p] = site_matrix[site]
+            if layer < k:
+                event += 1
+        for j in range(width):
+            owed[offsets[w] + j] = pending[wires[offsets[w] + j]]
+    return site
+
+
+@nb.njit(
+    "void(i1[::1], i8[::1], i4[::1], i4[::1], b1[::1], i8[::1], i8[::1], f8[:,::1], b1[::1], f8[::1], i8)",
+    cache=True,
+    nogil=True,
+)
+def _carry(
+    kind: Any,
+    offsets: Any,
+    wires: Any,
+    uses: Any,
+    flush: Any,
+    passes_to: Any,
+    sign: Any,
+    angles: Any,
+    trailing: Any,
+    owed: Any,
+    n_wires: int,
+) -> None:
+    """Move rotations about the plan's axis behind the entanglers that let them pass."""
+    phase = np.zeros(n_wires)
+    moved = np.zeros(2)
+    site = 0
+    for w in range(len(kind)):
+        if kind[w] == 0:
+            continue
+        for layer in range(uses[w] + 1):
+            moved[0] = moved[1] = 0.0
+            for j in range(kind[w]):
+                p = wires[offsets[w] + j]
+                if layer == uses[w]:
+                    if flush[offsets[w] + j]:
+                        angles[site, 2] += phase[p]
+                        phase[p] = 0.0
+                        trailing[site] = True
+                        site += 1
+                    continue
+                angles[site, 2] += phase[p]
+                phase[p] = 0.0
+                if passes_to[j] < 0:
+                    trailing[site] = True
+                elif angles[site, 1] == 0.0:
+                    moved[passes_to[j]] += sign[j] * (angles[site, 0] + angles[site, 2])
+                    angles[site, 0] = angles[site, 2] = 0.0
+                else:
+                    moved[passes_to[j]] += sign[j] * angles[site, 0]
+                site += 1
+            if layer < uses[w]:
+                for j in range(kind[w]):
+                    p = wires[offsets[w] + j]
+                    phase[p] = moved[j] - 2 * np.pi * np.round(moved[j] / (2 * np.pi))
+        for j in range(kind[w]):
+            owed[offsets[w] + j] = phase[wires[offsets[w] + j]]
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class _Sites:
+    """One-qubit runs to be played: matrices first, then angles, and where and when each is."""
+
+    angles: NDArray[np.float64]
+    trailing: NDArray[np.bool_]
+    event: NDArray[np.int64]
+    window: NDArray[np.int32]
+    wire: NDArray[np.int32]
+
+
+def synthesise(draft: Draft) -> Draft:
+    """Write the fused windows in native gates, and claim each as equal to its part of the source.
+
+    Raises
+    ------
+    GateSetError
+        A window needs an entangler and the gate set has none.
+    """
+    assert draft.fused is not None
+    circuit, native = draft.circuit, draft.native
+    fused = _oriented(draft.fused, draft)
+    one, two = window_unitaries(circuit, fused)
+    uses = np.zeros(len(fused.kind), dtype=np.int32)
+    layers = np.zeros((0, 4, 2, 2, 2), dtype=np.complex128)
+    if len(two):
+        if native.entangler is None:
+            raise GateSetError(
+                f"gate set '{draft.device.gate_set.name}' has no two-qubit gate",
+                required="an entangler for the two-qubit gates of the circuit",
+            )
+        made = native.entangler.entangler.synthesise(two, tolerance=draft.settings.tolerance)
+        uses[fused.kind == TWO] = made.uses
+        layers = np.ascontiguousarray(made.layers)
+    sites, seams, window_event = _runs(fused, one, layers, uses, native, circuit.n_qubits)
+    output, windows = _emit(circuit, fused, sites, uses, window_event, native)
+    step, final = _claim(draft, fused, windows, seams)
+    return replace(draft, circuit=output, fused=fused, final=final, steps=(*draft.steps, step))
+
+
+def _oriented(fused: Fused, draft: Draft) -> Fused:
+    """Order the wires of every two-wire window as the entangler wants them on that pair."""
+    first = fused.offsets[:-1][fused.kind == TWO]
+    if draft.native.entangler is None or not len(first):
+        return fused
+    n = draft.device.n_qubits
+    pairs = np.asarray(draft.device.allowed_pairs(draft.native.entangler.gate.name), dtype=np.int64)
+    allowed = np.zeros((n, n), dtype=bool)
+    allowed[pairs[:, 0], pairs[:, 1]] = True
+    p, q = fused.wires[first], fused.wires[first + 1]
+    turned = ~allowed[p, q]
+    wires = fused.wires.copy()
+    wires[first[turned]], wires[first[turned] + 1] = q[turned], p[turned]
+    return replace(fused, wires=wires)
+
+
+def _runs(
+    fused: Fused, one: Array, layers: Array, uses: NDArray[np.int32], native: NativeSet, n_wires: int
+) -> tuple[_Sites, NDArray[np.float64], NDArray[np.int64]]:
+    """Merge layers along the wires, find their angles, carry phases on; return the runs and each slot's seam."""
+    kind, offsets, wires = fused.kind, fused.offsets, fused.wires
+    slot_window = np.repeat(np.arange(len(kind)), np.diff(offsets))
+    flush = _last_before_fixed(wires, kind[slot_window] == FIXED)
+    row = np.zeros(len(kind), dtype=np.int32)
+    for each in (ONE, TWO):
+        row[kind == each] = np.arange(np.count_nonzero(kind == each))
+    most = int(np.sum(np.where(kind == TWO, 2 * uses, 0)) + len(wires)) + 1
+    matrix = np.empty((most, 2, 2), dtype=np.complex128)
+    event = np.empty(most, dtype=np.int64)
+    window, wire = np.empty(most, dtype=np.int32), np.empty(most, dtype=np.int32)
+    owed = np.tile(np.eye(2, dtype=np.complex128), (len(wires), 1, 1))
+    window_event = np.empty(len(kind), dtype=np.int64)
+    total = _merge(
+        kind, offsets, wires, row, uses, flush, layers, one, matrix, event, window, wire, owed, window_event, n_wires
+    )
+    angles = np.ascontiguousarray(native.plan.angles(matrix[:total]))
+    trailing = np.ones(total, dtype=np.bool_)
+    phases = np.zeros(len(wires))
+    axis = native.plan.axis
+    if axis is not None:
+        entangler = native.entangler
+        passes = np.array(entangler.passes_to if entangler else (-1, -1), dtype=np.int64)
+        sign = np.array(entangler.sign if entangler else (1, 1), dtype=np.int64)
+        _carry(kind, offsets, wires, uses, flush, passes, sign, angles, trailing, phases, n_wires)
+        angles[:, 2] = _snapped(angles[:, 2])
+    # The output lacks what is owed: it is ahead of the source by the inverse.
+    half = -phases / 2
+    behind = np.zeros((len(wires), 4))
+    behind[:, 0] = np.cos(half)
+    behind[:, 1:] = np.sin(half)[:, None] * (axis if axis is not None else np.zeros(3))
+    seams = _quaternion_product(behind, _quaternions(dagger(owed)))
+    return _Sites(angles, trailing, event[:total], window[:total], wire[:total]), seams, window_event
+
+
+def _last_before_fixed(wires: NDArray[np.int32], is_fixed: NDArray[np.bool_]) -> NDArray[np.bool_]:
+    """Return which slots are the last of their wire, or come directly before a fixed window on it."""
+    order = np.argsort(wires, kind="stable")
+    same = wires[order][1:] == wires[order][:-1]
+    last = np.ones(len(wires), dtype=np.bool_)
+    last[order[:-1]] = ~same | is_fixed[order[1:]]
+    return last
+
+
+def _snapped(angles: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return sums of angles with those within rounding of a multiple of π/16 set to it."""
+    multiple = np.round(angles * 16 / np.pi) * np.pi / 16
+    return np.where(np.abs(angles - multiple) <= 2e-15, multiple, angles)
+
+
+def _quaternions(u: Array) -> NDArray[np.float64]:
+    """Return (a, b, c, d) with u ∝ a − i(b X + c Y + d Z)."""
+    determinant = u[:, 0, 0] * u[:, 1, 1] - u[:, 0, 1] * u[:, 1, 0]
+    m = u / np.sqrt(determinant)[:, None, None]
+    return np.stack(
+        [
+            (m[:, 0, 0] + m[:, 1, 1]).real,
+            -(m[:, 0, 1] + m[:, 1, 0]).imag,
+            (m[:, 1, 0] - m[:, 0, 1]).real,
+            (m[:, 1, 1] - m[:, 0, 0]).imag,
+        ],
+        axis=1,
+    ) / 2
+
+
+def _quaternion_product(p: NDArray[np.float64], q: NDArray[np.float64]) -> NDArray[np.float64]:
+    out = np.empty_like(p)
+    out[:, 0] = p[:, 0] * q[:, 0] - np.einsum("ni,ni->n", p[:, 1:], q[:, 1:])
+    out[:, 1:] = p[:, :1] * q[:, 1:] + q[:, :1] * p[:, 1:] + np.cross(p[:, 1:], q[:, 1:])
+    return out
+
+
+def _emit(
+    circuit: Circuit,
+    fused: Fused,
+    sites: _Sites,
+    uses: NDArray[np.int32],
+    window_event: NDArray[np.int64],
+    native: NativeSet,
+) -> tuple[Circuit, NDArray[np.int32]]:
+    """Return the native circuit and the window of each of its operations."""
+    emission = native.plan.emit(sites.angles, sites.trailing)
+    room = max(1, emission.gate.shape[1])
+    pieces: list[Piece] = []
+    windows: list[NDArray[Any]] = []
+    for number, gate in enumerate(native.plan.gates):
+        site, column = np.nonzero(emission.gate == number)
+        if len(site):
+            values = emission.parameters[site, column, : gate.n_parameters]
+            pieces.append(Piece(gate, sites.event[site] * room + column, sites.wire[site][:, None], values))
+            windows.append(sites.window[site])
+    if native.entangler is not None and uses.any():
+        pieces.append(_entanglers(fused, uses, window_event, native.entangler, room))
+        windows.append(np.repeat(np.arange(len(uses)), uses))
+    fixed_rows = np.flatnonzero(fused.kind[fused.window] == FIXED)
+    at = fused.window[fixed_rows]
+    for chosen, piece in circuit.pieces(fixed_rows, window_event[at] * room):
+        pieces.append(piece)
+        windows.append(at[chosen])
+    output, order = assemble(replace(circuit, matrices=(), phase=0.0), circuit.n_qubits, pieces)
+    joined = np.concatenate(windows) if windows else np.zeros(0)
+    return output, joined[order].astype(np.int32)
+
+
+def _entanglers(
+    fused: Fused, uses: NDArray[np.int32], window_event: NDArray[np.int64], entangler: NativeEntangler, room: int
+) -> Piece:
+    """Place the entanglers: after the two runs of each layer."""
+    window = np.repeat(np.arange(len(uses)), uses)
+    first = np.cumsum(uses) - uses
+    layer = np.arange(len(window)) - np.repeat(first, uses)
+    key = (window_event[window] + 3 * layer + 2) * room
+    qubits = fused.wires[fused.offsets[window][:, None] + np.arange(2)]
+    return Piece(entangler.gate, key, qubits, np.tile(np.array(entangler.parameters), (len(window), 1)))
+
+
+def _claim(
+    draft: Draft, fused: Fused, output_window: NDArray[np.int32], seams: NDArray[np.float64]
+) -> tuple[Step, NDArray[np.int32]]:
+    """Follow the source wires through the windows and write the step."""
+    from_source = draft.origin >= 0
+    source_window = np.empty(len(draft.expanded), dtype=np.int32)
+    source_window[draft.origin[from_source]] = fused.window[from_source]
+    crossed = np.bincount(fused.window[~from_source], minlength=len(fused.kind)) % 2 == 1
+    exits = fused.wires.copy()
+    turned = fused.offsets[:-1][crossed]
+    exits[turned], exits[turned + 1] = fused.wires[turned + 1], fused.wires[turned]
+    wires, final = _follow(draft.initial, fused.offsets, fused.wires, crossed)
+    # A seam belongs to the source wire, which leaves a crossed window on the other output wire.
+    slots = np.arange(len(exits))
+    slots[turned], slots[turned + 1] = turned + 1, turned
+    step = Step(
+        initial=draft.initial,
+        final=final,
+        source_window=source_window,
+        output_window=output_window,
+        offsets=fused.offsets,
+        wires=wires,
+        entry=fused.wires,
+        exit=exits,
+        seams=seams[slots],
+    )
+    return step, final
+
+
+def _follow(
+    initial: NDArray[np.int32], offsets: NDArray[np.int64], entry: NDArray[np.int32], crossed: NDArray[np.bool_]
+) -> tuple[NDArray[np.int32], NDArray[np.int32]]:
+    """Return the source wire of every slot, and where each source wire ends."""
+    occupant = np.empty(len(initial), dtype=np.int32)
+    occupant[initial] = np.arange(len(initial))
+    wires = np.empty(len(entry), dtype=np.int32)
+    start = 0
+    # Between two crossed windows nothing moves: one gather serves them all.
+    for w in np.flatnonzero(crossed).tolist():
+        stop = int(offsets[w]) + 2
+        wires[start:stop] = occupant[entry[start:stop]]
+        p, q = entry[stop - 2], entry[stop - 1]
+        occupant[p], occupant[q] = occupant[q], occupant[p]
+        start = stop
+    wires[start:] = occupant[entry[start:]]
+    final = np.empty(len(initial), dtype=np.int32)
+    final[occupant] = np.arange(len(initial))
+    return wires, final

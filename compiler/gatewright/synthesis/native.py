@@ -1,0 +1,143 @@
+"""How a native gate set is used: its one-qubit plan, its entangler, and which phases pass through that.
+
+A rotation about the axis n that the one-qubit plan can split off commutes with some entanglers, or changes wires in
+passing (iSWAP); then it need not be played before them. All of this is found from the matrices, never from names.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.optimize import minimize_scalar
+
+from gatewright.errors import GateSetError, UnsupportedError
+from gatewright.gates import Gate
+from gatewright.linalg import dagger, kron
+from gatewright.synthesis.entangler import Entangler, classify
+from gatewright.synthesis.one_qubit import OneQubitPlan, plan_one_qubit
+from gatewright.synthesis.weyl import canonical_coordinates
+
+if TYPE_CHECKING:
+    from gatewright.devices import GateSet, NativeGate
+
+__all__ = ["NativeEntangler", "NativeSet", "native_set"]
+
+Array = NDArray[np.complex128]
+
+#: Chamber points of the classes that `classify` accepts.
+CLASSES = np.array([[np.pi / 4, 0, 0], [np.pi / 4, np.pi / 4, 0]])
+#: Points at which a parametrised entangler is looked at before refining.
+SAMPLES = 241
+PAULI = np.array([[[0, 1], [1, 0]], [[0, -1j], [1j, 0]], [[1, 0], [0, -1]]])
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class NativeEntangler:
+    """One two-qubit native gate at fixed parameters.
+
+    Attributes
+    ----------
+    gate : Gate
+    parameters : tuple of float
+    entangler : Entangler
+    passes_to : tuple of int
+        For each qubit, where a rotation about the plan's axis goes when moved behind the gate; -1 if it does not pass.
+    sign : tuple of int
+        The sign that its angle takes.
+    """
+
+    gate: Gate
+    parameters: tuple[float, ...]
+    entangler: Entangler
+    passes_to: tuple[int, int]
+    sign: tuple[int, int]
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class NativeSet:
+    """A gate set ready for use."""
+
+    plan: OneQubitPlan
+    entangler: NativeEntangler | None
+
+
+def native_set(gate_set: GateSet, *, tolerance: float = 1e-12) -> NativeSet:
+    """Plan the use of a gate set.
+
+    Parameters
+    ----------
+    gate_set : GateSet
+    tolerance : float
+        Within which an entangler belongs to a class.
+
+    Raises
+    ------
+    GateSetError, UnsupportedError
+        No two-qubit gate of the set belongs to a class that can be used; the reason for each is given.
+    """
+    plan = plan_one_qubit(gate_set.one_qubit)
+    usable: list[tuple[float, NativeEntangler]] = []
+    reasons: list[str] = []
+    for native in gate_set.two_qubit:
+        try:
+            parameters = _parameters(native)
+            matrix = native.gate.matrix(parameters)
+            entangler = classify(matrix, tolerance=tolerance)
+        except (GateSetError, UnsupportedError) as error:
+            reasons.append(f"'{native.gate.name}': {error}")
+            continue
+        passes = _passages(matrix, plan.axis)
+        usable.append((native.error or 0.0, NativeEntangler(native.gate, parameters, entangler, *passes)))
+    if usable:
+        return NativeSet(plan, min(usable, key=lambda entry: entry[0])[1])
+    if reasons:
+        what = f"gate set '{gate_set.name}' has no entangler that can be used yet"
+        raise UnsupportedError(what, found="; ".join(reasons))
+    return NativeSet(plan, None)
+
+
+def _parameters(native: NativeGate) -> tuple[float, ...]:
+    """Choose parameters at which the gate is closest to a usable class."""
+    if native.gate.n_parameters == 0:
+        return ()
+    if native.gate.n_parameters > 1:
+        raise UnsupportedError(
+            "cannot yet choose among several parameters",
+            required="one parameter at most",
+            found=str(native.gate.n_parameters),
+        )
+    low, high = native.ranges[0]
+    low, high = max(low, -2 * np.pi), min(high, 2 * np.pi)
+    grid = np.linspace(low, high, SAMPLES)
+
+    def away(angles: Iterable[float]) -> NDArray[np.float64]:
+        points = canonical_coordinates(native.gate.matrix(np.asarray(angles, dtype=float)[:, None]))
+        return np.asarray(np.abs(points[:, None, :] - CLASSES).max(axis=2).min(axis=1))
+
+    distances = away(grid)
+    best = int(np.argmin(np.round(distances, 9) + 1e-12 * np.abs(grid)))
+    around = (grid[max(best - 1, 0)], grid[min(best + 1, SAMPLES - 1)])
+    refined = minimize_scalar(lambda a: float(away([a])[0]), bounds=around, method="bounded", options={"xatol": 1e-15})
+    # The optimum is a kink of the distance; where it is a simple fraction of π, that fraction is exact.
+    simple = np.round(refined.x * 24 / np.pi) * np.pi / 24
+    candidates = [c for c in (simple, float(refined.x), float(grid[best])) if low <= c <= high]
+    return (min(candidates, key=lambda a: float(np.round(away([a])[0], 14))),)
+
+
+def _passages(matrix: Array, axis: NDArray[np.float64] | None) -> tuple[tuple[int, int], tuple[int, int]]:
+    if axis is None:
+        return (-1, -1), (1, 1)
+    turn = np.tensordot(axis, PAULI, axes=1)
+    local = (kron(turn, np.eye(2)), kron(np.eye(2), turn))
+    target, sign = [-1, -1], [1, 1]
+    for qubit in range(2):
+        moved = matrix @ local[qubit] @ dagger(matrix)
+        for other in range(2):
+            for s in (1, -1):
+                if np.abs(moved - s * local[other]).max() < 1e-12:
+                    target[qubit], sign[qubit] = other, s
+    return (target[0], target[1]), (sign[0], sign[1])
