@@ -23,15 +23,16 @@ from gatewright.cost import (
 from gatewright.devices import Device
 from gatewright.errors import DeviceError, InputError, ProofError, nearest_name
 from gatewright.linalg import checked_unitary
-from gatewright.proof import Proof, Verdict, check_proof
+from gatewright.proof import Proof, Verdict, check_legal, check_proof, encode_proof
 from gatewright.proof.dense import dense_distance, dense_work, touched_qubits
 from gatewright.stages.draft import Draft, Settings, Stage
 from gatewright.stages.expand import expand
-from gatewright.stages.fuse import TWO, fuse, fuse_circuit, window_unitaries
+from gatewright.stages.fuse import fuse
 from gatewright.stages.place import place
 from gatewright.stages.route import route
 from gatewright.stages.schedule import schedule
 from gatewright.stages.synthesise import synthesise
+from gatewright.stages.windows import TWO, fuse_circuit, window_unitaries
 from gatewright.synthesis.native import NativeSet, native_set
 
 __all__ = ["CHAIN", "EFFORTS", "Result", "check", "compile", "count"]
@@ -125,6 +126,10 @@ class Result:
             "seconds": {stage: round(value, 6) for stage, value in self.seconds.items()},
         }
 
+    def encode_proof(self) -> bytes:
+        """Return the bytes of the proof file, for `gatewright.read_proof` and ``gatewright check``."""
+        return encode_proof(self.proof, self.source, self.circuit)
+
     def to_qasm(self, *, version: int = 3) -> str:
         """Return the circuit as an OpenQASM program, with the placement in its header.
 
@@ -158,6 +163,7 @@ def compile(  # noqa: A001
     placement: Sequence[int] | None = None,
     budget: Mapping[str, float] | None = None,
     nearest_unitary: bool = False,
+    moved: float = 0.0,
     chain: Sequence[Stage] = CHAIN,
     progress: Callable[[str], None] | None = None,
 ) -> Result:
@@ -181,6 +187,8 @@ def compile(  # noqa: A001
         Limits on costs, as in `gatewright.cost.BUDGETS`; whether each is met is in the result.
     nearest_unitary : bool
         Accept a matrix that is not unitary and compile the unitary nearest to it.
+    moved : float
+        For a circuit read from a matrix: how far that was from unitary, to be reported.
     chain : sequence of callables
         Stages to run, `CHAIN` by default.
     progress : callable, optional
@@ -211,14 +219,11 @@ def compile(  # noqa: A001
     if not 0 <= tolerance <= 1e-2:
         raise InputError("the tolerance is out of range", required="0 to 0.01", found=str(tolerance))
     clock = _Clock(progress)
-    with_matrix = not isinstance(source, Circuit)
-    moved = 0.0
-    if with_matrix:
+    if isinstance(source, Circuit):
+        circuit = source
+    else:
         unitary, moved = checked_unitary(source, tolerance=tolerance, nearest=nearest_unitary)
         circuit = Circuit.from_unitary(unitary)
-    else:
-        assert isinstance(source, Circuit)
-        circuit = source
     if circuit.n_qubits > int(np.count_nonzero(device.active)):
         raise DeviceError(
             "the circuit has more qubits than the device",
@@ -295,8 +300,6 @@ def check(
     ProofError
         Not equal, or not legal, and where.
     """
-    from gatewright.proof import check_legal
-
     if proof is not None:
         return check_proof(source, output, proof, device=device, tolerance=tolerance)
     if device is not None:

@@ -18,7 +18,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from gatewright.devices.coupling import Coupling, read_coupling
-from gatewright.devices.gateset import GateSet, NativeGate, read_gate_set
+from gatewright.devices.gateset import GateSet, NativeGate, read_gate_set, shipped_gate_sets
 from gatewright.devices.reading import Table, is_integer, load_toml
 from gatewright.errors import DeviceError, nearest_name, shorten
 from gatewright.gates import MEASURE, RESET
@@ -26,7 +26,7 @@ from gatewright.gates import MEASURE, RESET
 if TYPE_CHECKING:
     import networkx
 
-__all__ = ["Device", "read_device"]
+__all__ = ["Device", "read_any", "read_device"]
 
 Integers = NDArray[np.int32]
 Vector = NDArray[np.float64]
@@ -139,7 +139,7 @@ class Device:
         """Coupling graph of what is in service: a node for each active qubit, an edge for each row of `pairs`."""
         import networkx
 
-        graph = networkx.DiGraph(name=self.name)
+        graph = networkx.DiGraph()
         graph.add_nodes_from(np.flatnonzero(self.active).tolist())
         graph.add_edges_from(self.pairs.tolist())
         return graph
@@ -316,7 +316,7 @@ def read_device(source: str | os.PathLike[str] | Mapping[str, Any]) -> Device:
             on), and ``directed``: an edge [a, b] carries a two-qubit gate with a as its first qubit only (edges
             of a shape go from the smaller number to the larger).
         ``out_of_service``
-            ``qubits`` and ``edges``, lists.
+            ``qubits`` and ``edges``, lists; an edge goes out in both directions.
         ``calibration``
             ``t1_ns``, ``t2_ns``, ``readout_error``, ``readout_duration_ns``, ``reset_duration_ns``: one number, or a
             list with one a qubit, nan where unknown. ``gates.NAME`` with ``error`` and ``duration_ns``, for a one-qubit
@@ -346,11 +346,39 @@ def read_device(source: str | os.PathLike[str] | Mapping[str, Any]) -> Device:
     >>> device.errors("cz", device.pairs).tolist()
     [0.005, 0.005, 0.005, 0.01, 0.01, 0.005, 0.005, 0.005]
     """
-    where, folder = "", Path()
-    data: Any = source
     if isinstance(source, (str, os.PathLike)):
-        data = load_toml(source, error=DeviceError)
-        where, folder = shorten(os.fspath(source), 200), Path(source).parent
+        return _read(load_toml(source, error=DeviceError), Path(source))
+    return _read(source, None)
+
+
+def read_any(source: str | os.PathLike[str]) -> Device | GateSet:
+    """Read a gate set, by its shipped name or from a file, or a device from a file.
+
+    Raises
+    ------
+    DeviceError, GateSetError
+        Also where a file is neither.
+
+    Examples
+    --------
+    >>> read_any("ion-xx").name
+    'ion-xx'
+    """
+    if isinstance(source, str) and source in shipped_gate_sets():
+        return read_gate_set(source)
+    data = load_toml(source, error=DeviceError)
+    if "coupling" in data or "gate_set" in data:
+        return _read(data, Path(source))
+    where = shorten(os.fspath(source), 200)
+    if "gates" in data:
+        return read_gate_set(data, where=where)
+    raise DeviceError(
+        "the file is neither a gate set nor a device", required="'gates', or 'gate_set' and 'coupling'", where=where
+    )
+
+
+def _read(data: object, file: Path | None) -> Device:
+    where, folder = ("", Path()) if file is None else (shorten(file, 200), file.parent)
     known = ("name", "description", "gate_set", "coupling", "out_of_service", "calibration")
     table = Table(data, error=DeviceError, where=where, known=known)
     name = table.text("name")
@@ -459,7 +487,7 @@ def _column(table: Table, key: str, n: int, low: float, high: float, default: fl
     if isinstance(value, (list, tuple, np.ndarray)):
         values = table.as_sequence(key, value)
         if len(values) != n:
-            raise table.fault(key, f"one number, or {n} (one a qubit)", f"{len(values)} entries")
+            raise table.fault(key, f"one number, or {n} (one a qubit)", found=f"{len(values)} entries")
         return np.array([table.as_number(f"{key}[{k}]", v, low, high, True) for k, v in enumerate(values)])
     return np.full(n, table.as_number(key, value, low, high, True))
 
@@ -470,7 +498,7 @@ def _pair_columns(entry: Table, gate: NativeGate, pairs: Integers, n: int) -> di
     found = {}
     for key, limits in _GATE_COLUMNS.items():
         if isinstance(entry.data.get(key), (list, tuple, np.ndarray)):
-            raise entry.fault(key, "one number for all pairs; 'pairs' has those of single ones", "a list")
+            raise entry.fault(key, "one number for all pairs; 'pairs' has those of single ones", found="a list")
         known = base[key] if key not in entry else entry.number(key, *limits, unknown=True)
         found[key] = np.full(len(pairs), math.nan if known is None else known)
     keys = _keys_of(pairs, n)

@@ -21,7 +21,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gatewright.devices.reach import Reach, one_qubit_reach
-from gatewright.devices.reading import Table, load_toml, one_line
+from gatewright.devices.reading import Table, load_toml
 from gatewright.devices.resources import shipped_gate_set_files
 from gatewright.errors import (
     CircuitError,
@@ -255,7 +255,7 @@ def read_gate_set(source: str | os.PathLike[str] | Mapping[str, Any], *, where: 
             Typical values; may be left out.
         ``gates.NAME.definition``
             The gate in terms of OpenQASM's standard library, for use in output; needed for a gate with
-            parameters that the library does not have.
+            parameters that `gatewright.gates.GATES` does not have.
     where : str
         Name to use in messages for a mapping or a name.
 
@@ -293,7 +293,7 @@ def _read(data: object, where: str) -> GateSet:
     table.get("gates")
     entries = table.table("gates")
     if not 1 <= len(entries.data) <= _MAX_GATES:
-        raise table.fault("gates", f"1 to {_MAX_GATES} gates", f"{len(entries.data)} gates")
+        raise table.fault("gates", f"1 to {_MAX_GATES} gates", found=f"{len(entries.data)} gates")
     gates = {key: _read_gate(entries, key) for key in entries.data}
     found = GateSet(name, description, gates)
     if found.reach.kind != "all":
@@ -352,7 +352,7 @@ def _read_gate(gates: Table, name: str) -> NativeGate:
 def _read_parameters(table: Table) -> tuple[tuple[str, ...], tuple[tuple[float, float], ...]]:
     rows = table.tables("parameters", ("name", "from", "to", "unit"))
     if len(rows) > _MAX_PARAMETERS:
-        raise table.fault("parameters", f"at most {_MAX_PARAMETERS}", f"{len(rows)} parameters")
+        raise table.fault("parameters", f"at most {_MAX_PARAMETERS}", found=f"{len(rows)} parameters")
     names: list[str] = []
     ranges: list[tuple[float, float]] = []
     for row in rows:
@@ -406,14 +406,14 @@ def _in_entry(table: Table, key: str, problem: GatewrightError) -> GatewrightErr
 def _read_matrix(table: Table, size: int, names: tuple[str, ...]) -> _Entries:
     rows = table.sequence("matrix")
     if len(rows) != size:
-        raise table.fault("matrix", f"{size} rows", f"{len(rows)} rows")
+        raise table.fault("matrix", f"{size} rows", found=f"{len(rows)} rows")
     base = np.zeros((size, size), dtype=np.complex128)
     entries: list[tuple[int, int, Expression]] = []
     texts: list[str] = list(names)
     for r, row in enumerate(rows):
         values = table.as_sequence(f"matrix[{r}]", row)
         if len(values) != size:
-            raise table.fault(f"matrix[{r}]", f"{size} entries", f"{len(values)} entries")
+            raise table.fault(f"matrix[{r}]", f"{size} entries", found=f"{len(values)} entries")
         for c, value in enumerate(values):
             key = f"matrix[{r}][{c}]"
             if isinstance(value, str):
@@ -476,8 +476,8 @@ def _check_standard(table: Table, gate: Gate, matrices: Array, points: Vector) -
     if (known.n_qubits, known.n_parameters) != (gate.n_qubits, gate.n_parameters):
         raise table.fail(
             f"'{gate.name}' is the name of another gate",
-            required=f"{known.n_qubits} qubits and {known.n_parameters} parameters, or another name",
-            found=f"{gate.n_qubits} and {gate.n_parameters}",
+            required=f"qubits: {known.n_qubits}, parameters: {known.n_parameters}; or another name",
+            found=f"qubits: {gate.n_qubits}, parameters: {gate.n_parameters}",
         )
     apart = float(distance(matrices, known.matrix(points)).max())
     if apart > _SAME:
@@ -490,10 +490,10 @@ def _check_standard(table: Table, gate: Gate, matrices: Array, points: Vector) -
 
 def _read_definition(table: Table, gate: Gate) -> str:
     if "definition" not in table:
-        if gate.n_parameters and gate.name not in STANDARD_LIBRARY:
+        if gate.n_parameters and gate.name not in GATES:
             raise table.fail(
                 f"'{table.path('definition')}' is missing",
-                required=f"an OpenQASM definition, as '{gate.name}' is not in the standard library",
+                required=f"an OpenQASM definition, as '{gate.name}' is not a well-known gate",
             )
         return ""
     text = table.get("definition")
@@ -503,7 +503,7 @@ def _read_definition(table: Table, gate: Gate) -> str:
         raise table.fault("definition", f"text of at most {_MAX_DEFINITION} characters", text)
     text = text.strip()
     if not re.match(rf"gate\s+{gate.name}\b[^{{}}]*\{{[^{{}}]*\}}\Z", text):
-        raise table.fault("definition", f"one definition, 'gate {gate.name} … {{ … }}'", one_line(text))
+        raise table.fault("definition", f"one definition, 'gate {gate.name} … {{ … }}'", text)
     return text
 
 

@@ -128,11 +128,11 @@ class Table:
         """Return an error about this source."""
         return self.error(what, required=required, found=found, hint=hint, where=self.where)
 
-    def fault(self, name: str, required: str, found: object) -> InputError:
-        """Return an error about the entry `name`."""
+    def fault(self, name: str, required: str, value: object = None, *, found: str = "") -> InputError:
+        """Return an error about the entry `name`, quoting its value unless there is a better phrase."""
         key = self.path(name)
         what = f"'{shorten(key)}' is wrong" if key else "the outermost value is wrong"
-        return self.fail(what, required=required, found=one_line(found))
+        return self.fail(what, required=required, found=found or one_line(value))
 
     def __contains__(self, name: str) -> bool:
         """Return whether there is an entry `name`."""

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from gatewright.circuit import Circuit, apply_matrix
 from gatewright.errors import CircuitError, ProofError
 from gatewright.gates import BARRIER, MEASURE
-from gatewright.linalg import kron
+from gatewright.linalg import dagger, kron
 
 __all__ = ["dense_distance", "dense_work", "touched_qubits"]
 
@@ -76,7 +76,9 @@ def dense_distance(source: Circuit, output: Circuit, initial: Sequence[int], fin
     made = _run(output, made_unitary, [rank.get(q, 0) for q in range(output.n_qubits)], start, len(held))
     overlap = complex(np.vdot(meant, made))
     phase = overlap / abs(overlap) if overlap else 1.0
-    return float(np.linalg.norm(made - phase * meant, ord=2))
+    difference = made - phase * meant
+    # The largest singular value, by the Hermitian eigenvalue problem: many times faster, and as accurate for it.
+    return float(np.sqrt(max(0.0, np.linalg.eigvalsh(dagger(difference) @ difference)[-1])))
 
 
 def _listed(pairs: list[tuple[int, int]]) -> str:

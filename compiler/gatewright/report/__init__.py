@@ -1,1 +1,1 @@
-"""report."""
+"""Reports for people."""

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
 from gatewright.proof.windows import Step
-from gatewright.stages.fuse import Fused
+from gatewright.stages.windows import Fused
 
 if TYPE_CHECKING:
     from gatewright.devices import Device

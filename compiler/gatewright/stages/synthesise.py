@@ -1,4 +1,4 @@
-"""Turn windows into native gates: entanglers for each window, one-qubit runs merged across them, phases carried on.
+"""Fifth stage: turn windows into native gates.
 
 Every two-qubit window becomes ``L_k E … E L_1 E L_0``. What stands after its last entangler is not played there: it
 is multiplied into the first layer of the next window on the same wire, so that one run of pulses does for both. The
@@ -20,7 +20,7 @@ from gatewright.errors import GateSetError
 from gatewright.linalg import dagger
 from gatewright.proof.windows import Step
 from gatewright.stages.draft import Draft
-from gatewright.stages.fuse import FIXED, ONE, TWO, Fused, window_unitaries
+from gatewright.stages.windows import FIXED, ONE, TWO, Fused, window_unitaries
 from gatewright.synthesis.native import NativeEntangler, NativeSet
 
 __all__ = ["synthesise"]
@@ -95,7 +95,7 @@ def _merge(
 
 
 @nb.njit(
-    "void(i1[::1], i8[::1], i4[::1], i4[::1], b1[::1], i8[::1], i8[::1], f8[:,::1], b1[::1], f8[::1], i8)",
+    "void(i1[::1], i8[::1], i4[::1], i4[::1], b1[::1], i8[::1], i8[::1], b1, f8[:,::1], b1[::1], f8[::1], i8)",
     cache=True,
     nogil=True,
 )
@@ -107,6 +107,7 @@ def _carry(
     flush: Any,
     passes_to: Any,
     sign: Any,
+    steers: bool,
     angles: Any,
     trailing: Any,
     owed: Any,
@@ -137,6 +138,11 @@ def _carry(
                 elif angles[site, 1] == 0.0:
                     moved[passes_to[j]] += sign[j] * (angles[site, 0] + angles[site, 2])
                     angles[site, 0] = angles[site, 2] = 0.0
+                elif steers:
+                    # The rotation before the pulse turns the pulse's axis and comes out behind it.
+                    moved[passes_to[j]] += sign[j] * (angles[site, 0] + angles[site, 2])
+                    angles[site, 0] = -angles[site, 2]
+                    trailing[site] = True
                 else:
                     moved[passes_to[j]] += sign[j] * angles[site, 0]
                 site += 1
@@ -224,15 +230,19 @@ def _runs(
         kind, offsets, wires, row, uses, flush, layers, one, matrix, event, window, wire, owed, window_event, n_wires
     )
     angles = np.ascontiguousarray(native.plan.angles(matrix[:total]))
-    trailing = np.ones(total, dtype=np.bool_)
+    trailing = np.zeros(total, dtype=np.bool_)
     phases = np.zeros(len(wires))
     axis = native.plan.axis
-    if axis is not None:
+    if axis is None:
+        trailing[:] = True
+    else:
         entangler = native.entangler
         passes = np.array(entangler.passes_to if entangler else (-1, -1), dtype=np.int64)
         sign = np.array(entangler.sign if entangler else (1, 1), dtype=np.int64)
-        _carry(kind, offsets, wires, uses, flush, passes, sign, angles, trailing, phases, n_wires)
-        angles[:, 2] = _snapped(angles[:, 2])
+        _carry(
+            kind, offsets, wires, uses, flush, passes, sign, native.plan.steers, angles, trailing, phases, n_wires
+        )
+        angles[:, ::2] = _snapped(angles[:, ::2])
     # The output lacks what is owed: it is ahead of the source by the inverse.
     half = -phases / 2
     behind = np.zeros((len(wires), 4))

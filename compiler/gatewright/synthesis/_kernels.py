@@ -40,11 +40,13 @@ SIGNS = _signs()
 _ROWS, _MAGIC = _magic()
 
 _SWEEPS = 40
-"""Most Jacobi sweeps; unitary input takes 4 or 5, rarely 7."""
-_CONVERGED = 1e-31
-"""Sum of the squares of the off-diagonal entries that is pure rounding."""
-_STEADY = 1e-16
-"""Sum of the squared sines of a sweep after which the next one changes nothing: the rest is the input's own defect."""
+"""Most Jacobi sweeps."""
+_USUAL_SWEEPS = 7
+"""Enough for unitary input, which mostly takes 4; after them, a sweep that gains little meets the input's defect."""
+_CONVERGED = 1e-30
+"""Sum of the squares of the off-diagonal entries that is rounding."""
+_NEAR = 1e-18
+"""What that sum is at most for input that is let through."""
 _WALL = 1e-15
 """So near to π/4, x counts as π/4, where z ≥ 0."""
 _ACCEPTED = 1e-9
@@ -53,8 +55,8 @@ _ACCEPTED = 1e-9
 
 def _compiled(*arguments: Any) -> Callable[[_F], _F]:
     """Compile for one signature, cached on disk, releasing the lock."""
-    options = {"cache": True, "nogil": True, "error_model": "numpy"}
-    return cast(Callable[[_F], _F], numba.njit(types.int64(*arguments), **options))
+    jit = numba.njit(types.int64(*arguments), cache=True, nogil=True, error_model="numpy")
+    return cast(Callable[[_F], _F], jit)
 
 
 def _input(dtype: Any, dimensions: int) -> Any:
@@ -92,16 +94,16 @@ def decompose(unitaries: Any, phase: Any, local: Any, coordinates: Any) -> int:
                 work[p, q] = a
                 work[p, 4 + q] = b
                 work[p, 8 + q] = 1.0 if q == p else 0.0
-        turned = 1.0
-        for _ in range(_SWEEPS):
+        previous = np.inf
+        for sweep in range(_SWEEPS):
             off = 0.0
             for p in range(3):
                 for q in range(p + 1, 4):
                     a, b = work[p, q], work[p, 4 + q]
                     off += a * a + b * b
-            if off <= _CONVERGED or turned <= _STEADY:
+            if off <= _CONVERGED or (sweep >= _USUAL_SWEEPS and off <= _NEAR and off > 0.5 * previous):
                 break
-            turned = 0.0
+            previous = off
             for p in range(3):
                 for q in range(p + 1, 4):
                     # The rotation by θ, |θ| ≤ π/4, that minimises both off-diagonal entries together. All six angles
@@ -121,7 +123,6 @@ def decompose(unitaries: Any, phase: Any, local: Any, coordinates: Any) -> int:
                         large, small = abs(small), math.copysign(large, small)
                     c = math.sqrt(0.5 + 0.5 * large)
                     s = 0.5 * small / c
-                    turned += s * s
                     for k in range(12):
                         a, b = work[p, k], work[q, k]
                         work[p, k] = c * a + s * b

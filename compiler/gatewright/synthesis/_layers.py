@@ -15,9 +15,23 @@ from numpy.typing import NDArray
 
 from gatewright.synthesis._kernels import SIGNS, arrange
 
-__all__ = ["HADAMARD", "PAULI_X", "Plan", "conjugate", "layers", "make_plan", "multiply", "quarter_turn"]
+__all__ = [
+    "HADAMARD",
+    "ONE",
+    "PAULI_X",
+    "ROUNDING",
+    "Plan",
+    "conjugate",
+    "layers",
+    "make_plan",
+    "multiply",
+    "quarter_turn",
+]
 
 Quaternions = NDArray[np.float64]
+
+ROUNDING = 4e-15
+"""Distances up to here are rounding, and recorded as 0."""
 
 ONE = np.array([1.0, 0.0, 0.0, 0.0])
 PAULI_X = np.array([0.0, 1.0, 0.0, 0.0])
@@ -48,13 +62,13 @@ def multiply(*factors: Quaternions) -> Quaternions:
 
 def conjugate(quaternion: Quaternions) -> Quaternions:
     """Return the inverse of unit quaternions (..., 4)."""
-    return quaternion * np.array([1.0, -1.0, -1.0, -1.0])
+    return np.asarray(quaternion * np.array([1.0, -1.0, -1.0, -1.0]))
 
 
 def quarter_turn(axis: str, sign: int = 1) -> Quaternions:
     """Return the rotation by ±π/2 about X or Z."""
     quaternion = np.array([1.0, sign * (axis == "x"), 0.0, sign * (axis == "z")])
-    return quaternion / np.sqrt(2)
+    return np.asarray(quaternion / np.sqrt(2))
 
 
 def make_plan(before: Quaternions, after: Quaternions, *, exchanged: bool) -> Plan:

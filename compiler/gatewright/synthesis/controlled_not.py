@@ -12,13 +12,11 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from gatewright.linalg import kron
-from gatewright.synthesis._layers import HADAMARD, ONE, layers, make_plan, multiply, quarter_turn
-from gatewright.synthesis.weyl import _checked_stack, _factors, canonical_coordinates
+from gatewright.synthesis._kak import checked_stack, decomposed
+from gatewright.synthesis._layers import HADAMARD, ONE, ROUNDING, layers, make_plan, multiply, quarter_turn
+from gatewright.synthesis.weyl import canonical_coordinates
 
 __all__ = ["EntanglerCircuit", "class_distances", "cnot_count", "count_reason", "least_uses", "synthesise"]
-
-ROUNDING = 4e-15
-"""Distances up to here are rounding, and recorded as 0."""
 
 # CAN(π/4, 0, 0) = (H Rz(−π/2) ⊗ Rx(−π/2)) · CX · (H ⊗ 1) up to phase.
 _PLAN = make_plan(
@@ -59,7 +57,7 @@ class EntanglerCircuit:
 
 
 def class_distances(coordinates: ArrayLike) -> NDArray[np.float64]:
-    """Return the distance of each class to what at most 0, 1, 2 and 3 CNOTs reach.
+    """Return the distance of each class to what exactly 0, 1, 2 and 3 CNOTs reach.
 
     Parameters
     ----------
@@ -69,14 +67,14 @@ def class_distances(coordinates: ArrayLike) -> NDArray[np.float64]:
     Returns
     -------
     ndarray, shape (..., 4)
-        Least operator-norm distance up to phase from CAN(x, y, z) to a gate of the class of 1, of CNOT, to one with
-        z = 0, and to any.
+        Least operator-norm distance up to phase from CAN(x, y, z) to a local gate, to one of the class of CNOT, to
+        one with z = 0, and to any.
 
     Notes
     -----
-    The distance between gates of two classes is least where both are canonical with commuting phases (the
-    eigenphases of MᵀM move by at most twice the arc between the gates). CAN(a, b, c) is 2 sin(s/2) from 1, s the sum
-    of the two largest of \\|a\\|, \\|b\\|, \\|c\\|.
+    The distance between two classes is attained by two canonical gates, because each eigenphase of MᵀM moves by at
+    most twice the arc between the gates. CAN(a, b, c) is 2 sin(s/2) from 1, with s the sum of the two largest of the
+    absolute values of a, b and c.
 
     Examples
     --------
@@ -93,7 +91,7 @@ def least_uses(distances: NDArray[np.float64], tolerance: float) -> NDArray[np.i
     """Return the index of the first of the last axis's distances within `tolerance`, or else of the last one."""
     within = distances <= tolerance
     within[..., -1] = True
-    return np.argmax(within, axis=-1)
+    return np.asarray(np.argmax(within, axis=-1), dtype=np.int64)
 
 
 def cnot_count(unitary: ArrayLike, *, tolerance: float = 1e-12) -> NDArray[np.int64]:
@@ -191,8 +189,8 @@ def synthesise(unitary: ArrayLike, *, tolerance: float = 1e-12) -> EntanglerCirc
     >>> int(circuit.uses), bool(distance(circuit.matrix(cx), swap) < 2e-14)
     (3, True)
     """
-    u = _checked_stack(unitary)
-    factors = _factors(u)
+    u = checked_stack(unitary)
+    factors = decomposed(u)
     distances = class_distances(factors.coordinates)
     uses = least_uses(distances, tolerance)
     gap = np.take_along_axis(distances, uses[:, None], axis=-1)[:, 0]

@@ -374,4 +374,3 @@ def virtual_z(unitary: ArrayLike, *, tolerance: float = ROUNDING) -> VirtualZ:
     angles[~generic, 1] = 0.0
     turned = euler.phase + np.pi * odd - pulses * (np.pi / 4)
     return VirtualZ(angles, pulses, np.asarray(settle(turned, 0.0)[0]))
-

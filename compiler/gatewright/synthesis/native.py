@@ -24,7 +24,7 @@ from gatewright.synthesis.weyl import canonical_coordinates
 if TYPE_CHECKING:
     from gatewright.devices import GateSet, NativeGate
 
-__all__ = ["NativeEntangler", "NativeSet", "native_set"]
+__all__ = ["NativeEntangler", "NativeSet", "entangler_parameters", "native_set"]
 
 Array = NDArray[np.complex128]
 
@@ -84,7 +84,7 @@ def native_set(gate_set: GateSet, *, tolerance: float = 1e-12) -> NativeSet:
     reasons: list[str] = []
     for native in gate_set.two_qubit:
         try:
-            parameters = _parameters(native)
+            parameters = entangler_parameters(native)
             matrix = native.gate.matrix(parameters)
             entangler = classify(matrix, tolerance=tolerance)
         except (GateSetError, UnsupportedError) as error:
@@ -100,7 +100,7 @@ def native_set(gate_set: GateSet, *, tolerance: float = 1e-12) -> NativeSet:
     return NativeSet(plan, None)
 
 
-def _parameters(native: NativeGate) -> tuple[float, ...]:
+def entangler_parameters(native: NativeGate) -> tuple[float, ...]:
     """Choose parameters at which the gate is closest to a usable class."""
     if native.gate.n_parameters == 0:
         return ()
@@ -119,7 +119,8 @@ def _parameters(native: NativeGate) -> tuple[float, ...]:
         return np.asarray(np.abs(points[:, None, :] - CLASSES).max(axis=2).min(axis=1))
 
     distances = away(grid)
-    best = int(np.argmin(np.round(distances, 9) + 1e-12 * np.abs(grid)))
+    # Of equally good points, the smallest angle; of two of the same size, the positive one.
+    best = int(np.argmin(np.round(distances, 9) + 1e-12 * np.abs(grid) + 1e-14 * (grid < 0)))
     around = (grid[max(best - 1, 0)], grid[min(best + 1, SAMPLES - 1)])
     refined = minimize_scalar(lambda a: float(away([a])[0]), bounds=around, method="bounded", options={"xatol": 1e-15})
     # The optimum is a kink of the distance; where it is a simple fraction of π, that fraction is exact.

@@ -1,56 +1,36 @@
 """One-qubit unitaries in the native one-qubit gates of any set, with the fewest pulses; batched.
 
-Every gate is recognised from its matrices alone, whatever its name, axes, units and phases: a fixed rotation, a
-rotation about one axis, an equatorial rotation R(θ,φ) = Rn(φ) Rm(θ) Rn(-φ), a general one Rn(a) Rm(b) Rn(c). The
-ways to combine them are Euler angles (Nielsen and Chuang, theorem 4.1) and fixed quarter turns between rotations
-that cost nothing (McKay et al., PRA 96, 022330 (2017)).
+What the gates do is found from their matrices (`gatewright.synthesis.recognise`). The ways to combine them: Euler
+angles (Nielsen and Chuang, theorem 4.1); one or two fixed quarter turns between rotations, which cost nothing where
+they are virtual (McKay et al., PRA 96, 022330 (2017)); one equatorial pulse before a rotation about the pole; two
+equatorial pulses of least total angle; one general rotation.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Sequence
-from dataclasses import dataclass, replace
-from itertools import permutations, product
-from typing import Any, Protocol, TypeAlias
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, field
+from itertools import product
+from typing import Protocol, TypeAlias
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from gatewright.errors import GateSetError, UnsupportedError
+from gatewright.errors import MatrixError, UnsupportedError
 from gatewright.gates import Gate
 from gatewright.linalg import haar_unitary
-from gatewright.synthesis.euler import ROUNDING, euler_angles, fewest_turns, quaternion, rotation, settle
+from gatewright.synthesis.euler import ROUNDING, axis_vector, euler_angles, fewest_turns, quaternion, rotation, settle
+from gatewright.synthesis.recognise import SAME, Equatorial, Fixed, General, Kind, NativeOneQubit, Turn, recognise
 
 __all__ = ["Emission", "NativeOneQubit", "OneQubitPlan", "plan_one_qubit"]
 
 Real: TypeAlias = NDArray[np.float64]
+Complex: TypeAlias = NDArray[np.complex128]
 Mask: TypeAlias = NDArray[np.bool_]
 
-# Axes count as parallel or orthogonal, and a model of a gate as right, within this.
-_SAME = 2e-14
-# A rotation whose range is too short is made of at most so many pulses.
-_MOST_COPIES = 4
 _PI = float(np.pi)
-
-
-class NativeOneQubit(Protocol):
-    """What is asked of a native one-qubit gate."""
-
-    @property
-    def gate(self) -> Gate:
-        """Name, number of parameters and matrix, up to phase."""
-
-    @property
-    def ranges(self) -> Sequence[tuple[float, float]]:
-        """Lowest and highest value of each parameter."""
-
-    @property
-    def virtual(self) -> bool:
-        """Whether it costs nothing."""
-
-    @property
-    def duration_ns(self) -> float | None:
-        """How long it takes, where known."""
+_QUARTER = _PI / 2
+_BLOCK = 16384
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -69,381 +49,549 @@ class Emission:
     parameters: Real
 
 
-# --- Recognised gates -------------------------------------------------------------------------------------------
+@dataclass(frozen=True, eq=False, slots=True)
+class OneQubitPlan:
+    """How a set of native gates makes any one-qubit unitary.
+
+    Attributes
+    ----------
+    gates : tuple of Gate
+        The gates used.
+    virtual : tuple of bool
+        Which of them cost nothing.
+    axis : ndarray, shape (3,), or None
+        The axis n of a rotation that may be split off at the end and carried into later gates.
+    summary : str
+        The way chosen, in words.
+    steers : bool
+        Whether a rotation about n before a pulse can be taken into the pulse's own axis, and so be carried behind it
+        as well: where β ≠ 0, emit α = -γ with the last factor kept and carry α + γ; no rotation about n remains.
+    """
+
+    gates: tuple[Gate, ...]
+    virtual: tuple[bool, ...]
+    axis: Real | None
+    summary: str
+    steers: bool
+    _way: _Way = field(repr=False)
+    _local: dict[int, int] = field(repr=False)
+
+    def angles(self, unitaries: ArrayLike, *, tolerance: float = ROUNDING) -> Real:
+        """Return what `emit` needs to make each unitary.
+
+        Parameters
+        ----------
+        unitaries : array_like, shape (N, 2, 2)
+        tolerance : float
+            Largest distance in operator norm that each angle may be moved by where that saves a pulse.
+
+        Returns
+        -------
+        ndarray, shape (N, 3)
+            Where the plan has an axis n: (α, β, γ) with U ∝ R_n(α) C(β) R_n(γ), C(β) depending on β alone, and α and γ
+            in (-π, π]. C(0) = 1; β is 0 where U is a rotation about n, and then γ is its whole angle and α is 0.
+            Without an axis the three numbers have no meaning outside this plan.
+
+        Raises
+        ------
+        MatrixError
+            If a matrix is not 2 × 2 or far from unitary.
+        """
+        u = np.asarray(unitaries, dtype=np.complex128)
+        if u.ndim != 3 or u.shape[1:] != (2, 2):
+            raise MatrixError("not a batch of one-qubit matrices", required="shape (N, 2, 2)", found=f"shape {u.shape}")
+        out = np.empty((len(u), 3))
+        # In blocks, here and below, so that the temporaries stay in the cache.
+        for rows in _blocks(len(u)):
+            out[rows] = self._way.angles(u[rows], tolerance)
+        return out
+
+    def emit(self, angles: ArrayLike, trailing: ArrayLike = True) -> Emission:
+        """Return the native operations for each site.
+
+        Parameters
+        ----------
+        angles : array_like, shape (N, 3)
+            From `angles`; α and γ may have been changed, by any amount, where the plan has an axis.
+        trailing : array_like of bool, shape (N,) or ()
+            Where False, the last factor R_n(α) is left out; of no effect without an axis.
+
+        Returns
+        -------
+        Emission
+            Rotations by zero are left out; all parameters lie in their ranges.
+        """
+        values = np.asarray(angles, dtype=np.float64)
+        last = np.broadcast_to(np.asarray(trailing, dtype=bool), values.shape[:1])
+        width = max(gate.n_parameters for gate in self.gates)
+        gates, parameters = [], []
+        for rows in _blocks(len(values)):
+            written = _Rows(len(values[rows]), width, self._local)
+            self._way.emit(written, values[rows], last[rows])
+            gates.append(np.stack(written.gates, axis=1))
+            parameters.append(np.stack(written.parameters, axis=1))
+        return Emission(np.concatenate(gates), np.concatenate(parameters))
+
+    def pulses(self, angles: ArrayLike, trailing: ArrayLike = True) -> NDArray[np.int64]:
+        """Return the number of operations that are not virtual, for each site, shape (N,)."""
+        physical = np.append(~np.array(self.virtual, dtype=bool), False)
+        return np.asarray(np.count_nonzero(physical[self.emit(angles, trailing).gate], axis=1))
 
 
-@dataclass(frozen=True, slots=True)
-class _Knob:
-    """Parameter number `slot`, within [low, high], that turns an angle ``scale * p + shift``."""
+def _blocks(n: int) -> Iterator[slice]:
+    return (slice(start, start + _BLOCK) for start in range(0, max(n, 1), _BLOCK))
 
-    slot: int
-    scale: float
-    shift: float
-    low: float
-    high: float
+
+class _Rows:
+    """Operations being written, one column of all sites at a time."""
+
+    def __init__(self, n: int, width: int, local: dict[int, int]) -> None:
+        self.n = n
+        self.width = width
+        self.local = local
+        self.gates: list[NDArray[np.int16]] = []
+        self.parameters: list[Real] = []
+
+    def add(self, index: int, where: Mask, values: dict[int, Real | float]) -> None:
+        parameters = np.zeros((self.n, self.width))
+        for slot, value in values.items():
+            parameters[:, slot] = np.where(where, value, 0.0)
+        self.gates.append(np.where(where, self.local[index], -1).astype(np.int16))
+        self.parameters.append(parameters)
+
+    def fixed(self, pulse: Fixed, where: Mask) -> None:
+        self.add(pulse.index, where, dict(enumerate(pulse.parameters)))
+
+    def turn(self, turn: Turn, copies: int, angle: Real, where: Mask | bool = True) -> None:
+        value, count = turn.knob.split(angle, copies)
+        for k in range(copies):
+            self.add(turn.index, (angle != 0) & (count > k) & where, {turn.knob.slot: value})
+
+    def equatorial(self, gate: Equatorial, theta: Real, phi: Real) -> None:
+        """Rotate by `theta` in [-π, π] about the equatorial axis at `phi`."""
+        back = (theta < 0) if gate.sign > 0 else (theta > 0)
+        azimuth = settle(phi + _PI * back)[0]
+        place, fits = gate.azimuth.split(azimuth)
+        if not fits.all():
+            other, _ = gate.azimuth.split(settle(azimuth + _PI)[0])
+            place, back = np.where(fits, place, other), back ^ (fits == 0)
+        value, count = gate.turn.split(np.where(back, -theta, theta), gate.copies)
+        for k in range(gate.copies):
+            self.add(gate.index, (theta != 0) & (count > k), {gate.turn.slot: value, gate.azimuth.slot: place})
+
+    def general(self, gate: General, alpha: Real, beta: Real, gamma: Real, where: Mask) -> None:
+        back = (beta < 0) if gate.sign > 0 else (beta > 0)
+        a, _ = gate.left.split(settle(alpha + _PI * back)[0])
+        b, _ = gate.middle.split(np.where(back, -beta, beta))
+        c, _ = gate.right.split(settle(gamma - _PI * back)[0])
+        self.add(gate.index, where, {gate.left.slot: a, gate.middle.slot: b, gate.right.slot: c})
+
+
+# --- Ways to combine gates --------------------------------------------------------------------------------------
+
+
+class _Way(Protocol):
+    @property
+    def summary(self) -> str: ...
 
     @property
-    def reach(self) -> tuple[float, float]:
-        a, b = self.scale * self.low + self.shift, self.scale * self.high + self.shift
-        return min(a, b), max(a, b)
+    def steers(self) -> bool: ...
 
-    def copies(self, low: float, high: float) -> int:
-        """Return the number of pulses that make every angle of [low, high] up to full turns; 0 if too many."""
-        for k in range(1, _MOST_COPIES + 1):
-            a, b = (k * end for end in self.reach)
-            fuzz = ROUNDING * max(1.0, abs(a), abs(b))
-            first = low + 2 * _PI * np.ceil((a - fuzz - low) / (2 * _PI))
-            if b - a >= 2 * _PI - fuzz or first + (high - low) <= b + fuzz:
-                return k
-        return 0
+    @property
+    def members(self) -> tuple[Kind, ...]: ...
 
-    def split(self, angle: Real, copies: int) -> tuple[Real, NDArray[np.int64]]:
-        """Return the parameter of each of the fewest equal pulses that add up to `angle`, and their number."""
-        value = np.zeros(angle.shape)
-        count = np.zeros(angle.shape, dtype=np.int64)
-        for k in range(1, copies + 1):
-            a, b = (k * end for end in self.reach)
-            fuzz = ROUNDING * max(1.0, abs(a), abs(b))
-            if a <= -_PI and b >= _PI:
-                total, fits = angle, count == 0
-            else:
-                inside = (angle >= a - fuzz) & (angle <= b + fuzz)
-                total = angle + 2 * _PI * np.where(inside, 0.0, np.ceil((a - fuzz - angle) / (2 * _PI)))
-                fits = (count == 0) & (total <= b + fuzz)
-            value = np.where(fits, total / k, value)
-            count[fits] = k
-        return np.clip((value - self.shift) / self.scale, self.low, self.high), count
+    @property
+    def frame(self) -> tuple[Real, Real]:
+        """Two orthogonal axes that the way singles out."""
 
-    def holds(self, angle: Real) -> Mask:
-        """Return where one pulse is enough."""
-        return self.split(angle, 1)[1] == 1
+    def angles(self, u: Complex, tolerance: float) -> Real: ...
+
+    def emit(self, rows: _Rows, angles: Real, trailing: Mask) -> None: ...
+
+
+def _euler(u: Complex, frame: tuple[Real, Real], tolerance: float) -> Real:
+    return euler_angles(u, outer=frame[0], inner=frame[1], tolerance=tolerance).angles
+
+
+def _gathered(angles: Real, trailing: Mask) -> tuple[Real, Real, Real]:
+    """Return α, β, γ in (-π, π] with as much as possible in γ (β = 0) or in α (β = π), and α = 0 where not wanted."""
+    beta = angles[:, 1]
+    alpha = np.where(trailing, angles[:, 0], 0.0)
+    gamma = angles[:, 2]
+    none, half = beta == 0, (np.abs(beta) == _PI) & trailing
+    gamma, alpha = gamma + np.where(none, alpha, 0.0), alpha - np.where(half, gamma, 0.0)
+    alpha[none] = 0.0
+    return settle(alpha)[0], beta, settle(np.where(half, 0.0, gamma))[0]
 
 
 @dataclass(frozen=True, eq=False, slots=True)
-class _Fixed:
-    """A gate without parameters, or one of no other kind with its parameters held nearest to zero."""
+class _TwoAxes:
+    """Rotations about two orthogonal axes: C(β) = R_m(β)."""
 
-    index: int
-    parameters: tuple[float, ...]
-    unitary: NDArray[np.complex128]
+    outer: Turn
+    inner: Turn
+    outer_copies: int
+    inner_copies: int
+    both_ways: bool
+    summary = "Euler angles about two axes"
+    steers = False
 
-    def describe(self) -> str:
-        q, _ = quaternion(self.unitary)
-        q = q if q[0] >= 0 else -q
-        sine = float(np.linalg.norm(q[1:]))
-        return f"turns by {2 * np.arctan2(sine, q[0]):.4g} about {_show(q[1:] / max(sine, 1e-300))}"
+    @property
+    def members(self) -> tuple[Kind, ...]:
+        return self.outer, self.inner
 
+    @property
+    def frame(self) -> tuple[Real, Real]:
+        return self.outer.axis, self.inner.axis
 
-@dataclass(frozen=True, eq=False, slots=True)
-class _Turn:
-    """A rotation about `axis`."""
+    def angles(self, u: Complex, tolerance: float) -> Real:
+        angles = _euler(u, self.frame, tolerance)
+        half = angles[:, 1] == _PI
+        angles[half, 0], angles[half, 2] = settle(-angles[half, 2])[0], 0.0
+        return fewest_turns(angles)[0] if self.both_ways else angles
 
-    index: int
-    axis: Real
-    knob: _Knob
-    copies: int = 0
-
-    def reversed(self) -> _Turn:
-        knob = replace(self.knob, scale=-self.knob.scale, shift=-self.knob.shift)
-        return replace(self, axis=-self.axis, knob=knob)
-
-    def describe(self) -> str:
-        low, high = self.knob.reach
-        return f"rotates by {low:.4g} to {high:.4g} about {_show(self.axis)}"
-
-
-@dataclass(frozen=True, eq=False, slots=True)
-class _Swing:
-    """An equatorial rotation ``R_pole(φ) R_reference(θ) R_pole(-φ)``."""
-
-    index: int
-    pole: Real
-    reference: Real
-    turn: _Knob
-    azimuth: _Knob
-    copies: int = 0
-    sign: int = 1
-
-    def usable(self) -> _Swing | None:
-        """Return the gate with the number of pulses it needs for any θ and φ, or None if it cannot make them."""
-        low, high = self.azimuth.reach
-        if self.azimuth.copies(-_PI, _PI) == 1:
-            ways = [(self.turn.copies(0, _PI), 1), (self.turn.copies(-_PI, 0), -1)]
-        elif high - low >= _PI - ROUNDING:
-            ways = [(self.turn.copies(-_PI, _PI), 1)]
-        else:
-            return None
-        copies, sign = min(((c, -s) for c, s in ways if c), default=(0, 0))
-        return replace(self, copies=copies, sign=-sign) if copies else None
-
-    def reversed(self) -> _Swing:
-        azimuth = replace(self.azimuth, scale=-self.azimuth.scale, shift=-self.azimuth.shift)
-        return replace(self, pole=-self.pole, azimuth=azimuth)
-
-    def describe(self) -> str:
-        low, high = self.turn.reach
-        return f"rotates by {low:.4g} to {high:.4g} about axes orthogonal to {_show(self.pole)}"
+    def emit(self, rows: _Rows, angles: Real, trailing: Mask) -> None:
+        alpha, beta, gamma = _gathered(angles, trailing)
+        if self.both_ways:
+            full = np.stack([alpha, beta, gamma], axis=1)
+            full[trailing] = fewest_turns(full[trailing])[0]
+            alpha, beta, gamma = full.T
+        rows.turn(self.outer, self.outer_copies, gamma)
+        rows.turn(self.inner, self.inner_copies, settle(beta)[0])
+        rows.turn(self.outer, self.outer_copies, alpha)
 
 
 @dataclass(frozen=True, eq=False, slots=True)
-class _Free:
-    """A general rotation ``R_outer(a) R_inner(b) R_outer(c)``."""
+class _Pulsed:
+    """Rotations about n and fixed pulses: G = R_m(π/2) R_n(g), and where there is one H = R_m(π) R_n(h).
 
-    index: int
-    outer: Real
+    C(π/2) = G, C(π) = H or else G R_n(-g) G, and C(β) = G R_n(π - β - g) G otherwise: the factors R_n that
+    R_m(β) = R_n(-π/2) R_m(π/2) R_n(π - β) R_m(π/2) R_n(-π/2) has besides are taken into α and γ.
+    """
+
+    outer: Turn
+    copies: int
     inner: Real
-    left: _Knob
-    middle: _Knob
-    right: _Knob
-    sign: int = 1
+    quarter: Fixed
+    g: float
+    half: Fixed | None = None
+    h: float = 0.0
+    steers = False
 
-    def usable(self) -> _Free | None:
-        if self.left.copies(-_PI, _PI) != 1 or self.right.copies(-_PI, _PI) != 1:
-            return None
-        if self.middle.copies(0, _PI) == 1:
-            return self
-        return replace(self, sign=-1) if self.middle.copies(-_PI, 0) == 1 else None
+    @property
+    def summary(self) -> str:
+        return "rotations about one axis and fixed quarter turns" + (" and half turns" if self.half else "")
 
-    def reversed(self) -> _Free:
-        left, right = (replace(k, scale=-k.scale, shift=-k.shift) for k in (self.left, self.right))
-        return replace(self, outer=-self.outer, left=left, right=right)
+    @property
+    def members(self) -> tuple[Kind, ...]:
+        return (self.outer, self.quarter, *([self.half] if self.half else []))
 
-    def describe(self) -> str:
-        return f"is a general rotation with outer axis {_show(self.outer)}"
+    @property
+    def frame(self) -> tuple[Real, Real]:
+        return self.outer.axis, self.inner
 
+    def angles(self, u: Complex, tolerance: float) -> Real:
+        angles = _euler(u, self.frame, tolerance)
+        beta, gamma = angles[:, 1], angles[:, 2]
+        quarter, half = beta == _QUARTER, beta == _PI
+        two = (beta != 0) & ~quarter & ~half
+        angles[half, 0] = settle((self.h if self.half else self.g) - gamma[half])[0]
+        angles[half, 2] = 0.0
+        angles[quarter, 2] = settle(gamma[quarter] - self.g)[0]
+        generic = angles[two]
+        generic[:, 0] = settle(generic[:, 0] - _QUARTER)[0]
+        generic[:, 2] = settle(generic[:, 2] - _QUARTER - self.g)[0]
+        angles[two] = fewest_turns(generic)[0]
+        return angles
 
-_Kind: TypeAlias = _Fixed | _Turn | _Swing | _Free
-
-
-def _show(axis: Real) -> str:
-    return "(" + ", ".join(f"{c + 0.0:.3g}" for c in axis) + ")"
-
-
-# --- Recognition ------------------------------------------------------------------------------------------------
-
-
-def _times(a: Real, b: Real) -> Real:
-    return np.concatenate([[a[0] * b[0] - a[1:] @ b[1:]], a[0] * b[1:] + b[0] * a[1:] + np.cross(a[1:], b[1:])])
-
-
-def _inverse(a: Real) -> Real:
-    return np.concatenate([a[:1], -a[1:]])
-
-
-def _turned(axis: Real, angle: float, vector: Real) -> Real:
-    """Rodrigues' formula."""
-    along = axis * (axis @ vector)
-    return np.asarray(along + np.cos(angle) * (vector - along) + np.sin(angle) * np.cross(axis, vector))
-
-
-def _clean(axis: Real) -> Real:
-    """Return the unit vector, with components at rounding level made zero."""
-    axis = axis / np.linalg.norm(axis)
-    axis = np.where(np.abs(axis) <= ROUNDING, 0.0, axis)
-    return np.asarray(axis / np.linalg.norm(axis))
+    def emit(self, rows: _Rows, angles: Real, trailing: Mask) -> None:
+        alpha, beta, gamma = _gathered(angles, trailing)
+        half = np.abs(beta) == _PI
+        two = (beta != 0) & (beta != _QUARTER)
+        rows.turn(self.outer, self.copies, gamma)
+        if self.half is not None:
+            two &= ~half
+            rows.fixed(self.half, half)
+        rows.fixed(self.quarter, two | (beta == _QUARTER))
+        rows.turn(self.outer, self.copies, settle(_PI - beta - self.g)[0], two)
+        rows.fixed(self.quarter, two)
+        rows.turn(self.outer, self.copies, alpha)
 
 
-def _clean_rate(rate: float) -> float:
-    """Return the simple fraction, or simple multiple of pi, within rounding of `rate`."""
-    for unit in (1.0, _PI):
-        for denominator in range(1, 13):
-            near = np.rint(rate / unit * denominator) * unit / denominator
-            if abs(near - rate) <= 4 * ROUNDING * abs(rate):
-                return float(near)
-    return rate
+@dataclass(frozen=True, eq=False, slots=True)
+class _Steered:
+    """One equatorial pulse and a rotation about its pole: C(β) = R_m(β)."""
+
+    outer: Turn
+    copies: int
+    pulse: Equatorial
+    summary = "one equatorial pulse and a rotation about the pole"
+    steers = True
+
+    @property
+    def members(self) -> tuple[Kind, ...]:
+        return self.outer, self.pulse
+
+    @property
+    def frame(self) -> tuple[Real, Real]:
+        return self.outer.axis, self.pulse.reference
+
+    def angles(self, u: Complex, tolerance: float) -> Real:
+        angles = _euler(u, self.frame, tolerance)
+        half = angles[:, 1] == _PI
+        angles[half, 0], angles[half, 2] = settle(-angles[half, 2])[0], 0.0
+        return fewest_turns(angles)[0]
+
+    def emit(self, rows: _Rows, angles: Real, trailing: Mask) -> None:
+        beta, gamma = angles[:, 1], settle(angles[:, 2])[0]
+        alpha = settle(angles[:, 0])[0]
+        # R_n(α) R_m(β) R_n(γ) = R_n(α + γ) · [R_n(-γ) R_m(β) R_n(γ)], and for β = π also [R_n(φ) R_m(β) R_n(-φ)] with
+        # φ = (α - γ)/2.
+        half = np.abs(beta) == _PI
+        after = np.where(half | ~trailing | (beta == 0), 0.0, alpha + gamma)
+        before = np.where(beta == 0, gamma + np.where(trailing, alpha, 0.0), np.where(trailing, 0.0, gamma))
+        phi = np.where(trailing, np.where(half, (alpha - gamma) / 2, -gamma), 0.0)
+        rows.turn(self.outer, self.copies, settle(before)[0])
+        rows.equatorial(self.pulse, beta, phi)
+        rows.turn(self.outer, self.copies, settle(after)[0])
 
 
-def _half_angle(sine: float, cosine: float) -> float:
-    return float(settle(np.array(2 * np.arctan2(sine, cosine)))[0])
+@dataclass(frozen=True, eq=False, slots=True)
+class _One:
+    """One general rotation; or, where that is enough and in the set, a rotation about its outer axis: C(β) = R_m(β)."""
+
+    pulse: General
+    outer: Turn | None = None
+    copies: int = 0
+    steers = False
+
+    @property
+    def summary(self) -> str:
+        return "one general rotation" + (", or one about its outer axis" if self.outer else "")
+
+    @property
+    def members(self) -> tuple[Kind, ...]:
+        return (self.pulse, *([self.outer] if self.outer else []))
+
+    @property
+    def frame(self) -> tuple[Real, Real]:
+        return self.pulse.outer, self.pulse.inner
+
+    def angles(self, u: Complex, tolerance: float) -> Real:
+        return _euler(u, self.frame, tolerance)
+
+    def emit(self, rows: _Rows, angles: Real, trailing: Mask) -> None:
+        if self.outer is None:
+            rows.general(self.pulse, angles[:, 0], angles[:, 1], angles[:, 2], np.count_nonzero(angles, axis=1) > 0)
+            return
+        alpha, beta, gamma = _gathered(angles, trailing)
+        rows.turn(self.outer, self.copies, gamma, beta == 0)
+        rows.general(self.pulse, alpha, beta, gamma, beta != 0)
 
 
-class _Samples:
-    """The quaternions of one gate over its parameter range."""
+@dataclass(frozen=True, eq=False, slots=True)
+class _TwoEquatorial:
+    """Equatorial pulses alone: two by the same angle θ at azimuths φ₁ then φ₂, or one by 2θ where φ₁ = φ₂.
 
-    def __init__(self, native: NativeOneQubit) -> None:
-        self.gate = native.gate
-        self.low = np.array([low for low, _ in native.ranges], dtype=np.float64)
-        self.high = np.array([high for _, high in native.ranges], dtype=np.float64)
-        # Generic points: the fractional parts of multiples of powers of the golden ratio.
-        golden = (np.sqrt(5) - 1) / 2
-        k = len(self.low)
-        fractions = np.mod(np.arange(1, 33)[:, None] * golden ** np.arange(1, k + 1), 1.0)
-        self.points = self.low + fractions * (self.high - self.low)
-        self.base = self.low + np.array([0.382, 0.236, 0.146][:k]) * (self.high - self.low)
+    In the Euler angles of the pole n and the reference m, U = R_n(α) R_m(β) R_n(γ) has the quaternion
+    (c cos σ, c sin σ, s cos δ, s sin δ), c = cos β/2, s = sin β/2, σ = (α + γ)/2, δ = (α - γ)/2. Two pulses by θ at
+    δ ± χ/2 have (cos² θ/2 - sin² θ/2 cos χ, ± sin² θ/2 sin χ, sin θ cos χ/2 cos δ, sin θ cos χ/2 sin δ). Hence, for
+    cos σ ≥ 0, tan χ/2 = |c sin σ| / (1 - c cos σ) and tan θ/2 = hypot(1 - c cos σ, c sin σ) / s. No two equatorial
+    pulses have a smaller total angle: with pulses by a and b, cos (a+b)/2 = c cos σ - |c sin σ| tan χ/2 falls with χ,
+    and cos (a-b)/2 = c cos σ + |c sin σ| cot χ/2 ≤ 1 holds χ up; equality is a = b.
+    """
 
-    def at(self, changes: dict[int, float]) -> Real:
-        point = self.base.copy()
-        for slot, value in changes.items():
-            point[slot] = value
-        return quaternion(self.gate.matrix(point))[0]
+    pulse: Equatorial
+    summary = "two equatorial pulses at most"
+    steers = False
 
-    def agree(self, model: Callable[[Real], NDArray[np.complex128]]) -> bool:
-        """Return whether `model` gives the gate's matrices up to phase at all sample points."""
-        a = quaternion(self.gate.matrix(self.points))[0]
-        b = quaternion(model(self.points))[0]
-        gap = np.minimum(np.abs(a - b).max(axis=0), np.abs(a + b).max(axis=0))
-        return bool(gap.max() <= _SAME)
+    @property
+    def members(self) -> tuple[Kind, ...]:
+        return (self.pulse,)
 
-    def knob(self, slot: int, scale: float, shift: float) -> _Knob:
-        return _Knob(slot, scale, shift, float(self.low[slot]), float(self.high[slot]))
+    @property
+    def frame(self) -> tuple[Real, Real]:
+        return self.pulse.pole, self.pulse.reference
 
-    def spin(self, slot: int, angle: Callable[[float], tuple[Real, float]]) -> tuple[Real, float] | None:
-        """Find the fixed axis and the rate of what turns with parameter `slot`.
+    def angles(self, u: Complex, tolerance: float) -> Real:
+        alpha, beta, gamma = _euler(u, self.frame, tolerance).T
+        half = beta == _PI
+        total, odd = settle(alpha + gamma, tolerance)
+        total, tilt = np.where(half, 0.0, total), settle((alpha - gamma) / 2 + _PI * odd)[0]
+        cosine, sine = np.where(half, 0.0, np.cos(beta / 2)), np.sin(beta / 2)
+        along, across = cosine * np.cos(total / 2), cosine * np.sin(total / 2)
+        one = np.abs(across) <= tolerance
+        # 1 - c cos σ, without cancellation.
+        less = (across * across + sine * sine) / (1 + along)
+        theta = 2 * np.arctan2(np.hypot(less, across), sine)
+        spread = np.arctan2(np.abs(across), less) * np.sign(across)
+        theta = np.where(one, beta / 2, settle(theta)[0])
+        spread = np.where(one, 0.0, spread)
+        return np.stack([theta, settle(tilt + spread)[0], settle(tilt - spread)[0]], axis=1)
 
-        `angle` maps a value of the parameter to the vector sin(a)·axis and to cos(a), a being the angle turned
-        since the base point, or half of it; the rate is that of a. A first small step tells the rate well enough
-        to choose a large one without losing count of the turns.
-        """
-        start, stop = float(self.base[slot]), float(self.high[slot])
-        step = (stop - start) / 4096
-        if step <= 0:
-            return None
-        vector, cosine = angle(start + step)
-        sine = float(np.linalg.norm(vector))
-        if sine < 1e-7:
-            return None
-        axis, rate = vector / sine, float(np.arctan2(sine, cosine)) / step
-        vector, _ = angle(min(stop, start + _PI / 2 / rate))
-        axis = _clean(vector if vector @ axis > 0 else -vector)
-        vector, cosine = angle(stop)
-        expected = rate * (stop - start)
-        # Half-angles are known modulo pi only, the sign of a quaternion being arbitrary.
-        excess = float(np.arctan2(vector @ axis, cosine)) - expected
-        return axis, _clean_rate((expected + excess - _PI * np.rint(excess / _PI)) / (stop - start))
+    def emit(self, rows: _Rows, angles: Real, trailing: Mask) -> None:
+        theta, first, second = angles.T
+        one = first == second
+        rows.equatorial(self.pulse, np.where(one, 2 * theta, theta), first)
+        rows.equatorial(self.pulse, np.where(one, 0.0, theta), second)
 
 
-def _recognise(index: int, native: NativeOneQubit) -> _Kind:
-    gate = native.gate
-    if gate.n_qubits != 1 or len(native.ranges) != gate.n_parameters:
-        raise GateSetError(
-            f"'{gate.name}' is not a one-qubit gate with a range for each parameter",
-            required="1 qubit, as many ranges as parameters",
-            found=f"{gate.n_qubits} qubits, {gate.n_parameters} parameters, {len(native.ranges)} ranges",
+# --- The choice -------------------------------------------------------------------------------------------------
+
+
+def plan_one_qubit(gates: Sequence[NativeOneQubit], *, passing: Sequence[ArrayLike] = ()) -> OneQubitPlan:
+    """Choose how to make any one-qubit unitary from native gates.
+
+    Every way that these gates allow is tried on the same unitaries: Haar-random ones, and the Clifford groups of the
+    gates' own axes. The one with the fewest pulses is taken; then an axis that passes through entanglers; then the
+    least duration (or, where a duration is not known, the least total angle); then the fewest operations.
+
+    Parameters
+    ----------
+    gates : sequence of NativeOneQubit
+    passing : sequence of array_like, shape (3,)
+        Axes whose rotations may be moved behind an entangler.
+
+    Returns
+    -------
+    OneQubitPlan
+
+    Raises
+    ------
+    UnsupportedError
+        If none of the ways is possible with these gates; it says what they do.
+    GateSetError
+        If a gate is not a one-qubit gate with a usable range for each parameter.
+
+    Examples
+    --------
+    >>> from types import SimpleNamespace
+    >>> from gatewright.gates import GATES
+    >>> rz = SimpleNamespace(gate=GATES["rz"], ranges=[(-np.pi, np.pi)], virtual=True, duration_ns=None)
+    >>> sx = SimpleNamespace(gate=GATES["sx"], ranges=[], virtual=False, duration_ns=30)
+    >>> plan = plan_one_qubit([rz, sx])
+    >>> plan.summary
+    'rotations about one axis and fixed quarter turns'
+    >>> plan.pulses(plan.angles([GATES["s"].matrix(), GATES["h"].matrix(), GATES["x"].matrix()])).tolist()
+    [0, 1, 2]
+    """
+    kinds = [recognise(index, native) for index, native in enumerate(gates)]
+    plans = [_planned(way, gates) for way in _ways(kinds)]
+    if not plans:
+        found = "; ".join(f"'{native.gate.name}' {kind.describe()}" for native, kind in zip(gates, kinds, strict=True))
+        raise UnsupportedError(
+            "cannot yet make every one-qubit unitary from these gates",
+            required="a general rotation; or equatorial rotations; or rotations by any angle about an axis, with "
+            "rotations about an orthogonal axis or with a fixed gate that turns the axis by exactly a quarter",
+            found=found or "no one-qubit gate",
+            hint=f"an angle may be made of up to 4 equal pulses; axes and angles must be right to {SAME:.0e}",
         )
-    if not all(-1e6 <= low <= high <= 1e6 for low, high in native.ranges):
-        raise GateSetError(
-            f"a parameter range of '{gate.name}' is not usable",
-            required="low ≤ high, both within ±1e6",
-            found=", ".join(f"{low:.6g} to {high:.6g}" for low, high in native.ranges),
-        )
-    samples = _Samples(native)
-    finders: dict[int, Callable[..., _Kind | None]] = {1: _find_turn, 2: _find_swing, 3: _find_free}
-    if gate.n_parameters in finders:
-        for slots in permutations(range(gate.n_parameters)):
-            kind = finders[gate.n_parameters](index, samples, *slots)
-            if kind is not None:
-                return kind
-    parameters = np.clip(0.0, samples.low, samples.high)
-    return _Fixed(index, tuple(parameters.tolist()), gate.matrix(parameters))
+    samples = _samples([plan._way.frame for plan in plans])
+    timed = all(native.virtual or native.duration_ns is not None for native in gates)
+    costs = [_cost(plan, gates, samples, passing, timed=timed) for plan in plans]
+    return plans[costs.index(min(costs))]
 
 
-def _spin_left(samples: _Samples, slot: int, others: dict[int, float]) -> tuple[Real, float] | None:
-    """Find what turns on the left of the gate, later in time, with a parameter."""
-    inverse = _inverse(samples.at(others))
-
-    def since(p: float) -> tuple[Real, float]:
-        q = _times(samples.at({**others, slot: p}), inverse)
-        return (q[1:], float(q[0])) if q[0] >= 0 else (-q[1:], -float(q[0]))
-
-    found = samples.spin(slot, since)
-    return None if found is None else (found[0], _clean_rate(2 * found[1]))
-
-
-def _spin_right(samples: _Samples, slot: int) -> tuple[Real, float] | None:
-    """Find what turns on the right of the gate, earlier in time, with a parameter."""
-    inverse = _inverse(samples.at({}))
-
-    def since(p: float) -> tuple[Real, float]:
-        q = _times(inverse, samples.at({slot: p}))
-        return (q[1:], float(q[0])) if q[0] >= 0 else (-q[1:], -float(q[0]))
-
-    found = samples.spin(slot, since)
-    return None if found is None else (found[0], _clean_rate(2 * found[1]))
-
-
-def _find_turn(index: int, samples: _Samples, slot: int) -> _Turn | None:
-    found = _spin_left(samples, slot, {})
-    if found is None:
-        return None
-    axis, rate = found
-    q = samples.at({})
-    shift = float(settle(np.array(_half_angle(axis @ q[1:], q[0]) - rate * samples.base[slot]))[0])
-    if not samples.agree(lambda p: rotation(axis, rate * p[:, slot] + shift)):
-        return None
-    return _Turn(index, axis, samples.knob(slot, rate, shift))
+def _ways(kinds: Sequence[Kind]) -> Iterator[_Way]:
+    fixed = [kind for kind in kinds if isinstance(kind, Fixed)]
+    turns = [kind for kind in kinds if isinstance(kind, Turn)]
+    equatorials = [kind for kind in kinds if isinstance(kind, Equatorial) and kind.copies]
+    generals = [kind for kind in kinds if isinstance(kind, General) and kind.sign]
+    for outer in turns:
+        copies = outer.knob.copies(-_PI, _PI)
+        if not copies:
+            continue
+        for turn in turns:
+            for inner in (turn, turn.reversed()):
+                all_round, one_way = inner.knob.copies(-_PI, _PI), inner.knob.copies(0, _PI)
+                if one_way and abs(inner.axis @ outer.axis) <= SAME:
+                    yield _TwoAxes(outer, inner, copies, all_round or one_way, all_round > 0)
+        yield from _pulsed(outer, copies, fixed)
+        for equatorial in equatorials:
+            for swung in (equatorial, equatorial.reversed()):
+                if _same(swung.pole, outer.axis):
+                    yield _Steered(outer, copies, swung)
+        for general in generals:
+            for free in (general, general.reversed()):
+                if _same(free.outer, outer.axis):
+                    yield _One(free, outer, copies)
+    yield from (_TwoEquatorial(equatorial) for equatorial in equatorials)
+    yield from (_One(general) for general in generals)
 
 
-def _find_swing(index: int, samples: _Samples, turn: int, azimuth: int) -> _Swing | None:
-    start = float(samples.base[azimuth])
-    found = _spin_left(samples, turn, {})
-    if found is None:
-        return None
-    axis, rate = found
-
-    def since(p: float) -> tuple[Real, float]:
-        now = _spin_left(samples, turn, {azimuth: p})
-        other = axis if now is None else now[0]
-        return np.cross(axis, other), float(axis @ other)
-
-    swung = samples.spin(azimuth, since)
-    if swung is None:
-        return None
-    pole, pace = swung
-    q = samples.at({})
-    shift = float(settle(np.array(_half_angle(axis @ q[1:], q[0]) - rate * samples.base[turn]))[0])
-    reference = _clean(_turned(pole, -pace * start, axis))
-
-    def model(p: Real) -> NDArray[np.complex128]:
-        around = rotation(pole, pace * p[:, azimuth])
-        return around @ rotation(reference, rate * p[:, turn] + shift) @ np.conj(np.swapaxes(around, -1, -2))
-
-    if not samples.agree(model):
-        return None
-    return _Swing(index, pole, reference, samples.knob(turn, rate, shift), samples.knob(azimuth, pace, 0.0))
+def _same(a: Real, b: Real) -> bool:
+    return float(np.abs(a - b).max()) <= SAME
 
 
-def _find_free(index: int, samples: _Samples, left: int, middle: int, right: int) -> _Free | None:
-    later, between, earlier = _spin_left(samples, left, {}), None, _spin_right(samples, right)
-    if later is None or earlier is None:
-        return None
-    outer, rate_left = later
-    rate_right = earlier[1]
-    if outer @ earlier[0] < 0:
-        rate_right = -rate_right
-    # With the base point's left rotation undone, the middle one turns about the inner axis.
-    between = _spin_left(samples, middle, {})
-    if between is None:
-        return None
-    turned, rate_middle = between
-    inner = _clean(_turned(outer, -rate_left * samples.base[left], turned))
-    if abs(inner @ outer) > _SAME:
-        return None
-    undo = [_spinor(outer, -rate_left * samples.base[left]), _spinor(outer, -rate_right * samples.base[right])]
-    q0, *vector = _times(_times(undo[0], samples.at({})), undo[1])
-    qo, qm, ql = np.array([outer, inner, np.cross(outer, inner)]) @ np.array(vector)
-    # What is left is R_inner(x) R_outer(y), with components (cos·cos, cos·sin, sin·cos, -sin·sin) of the halves.
-    y = np.arctan2(qo, q0) if np.hypot(q0, qo) >= np.hypot(qm, ql) else np.arctan2(-ql, qm)
-    x = np.arctan2(qm * np.cos(y) - ql * np.sin(y), q0 * np.cos(y) + qo * np.sin(y))
-    shift_middle = float(settle(np.array(2 * x - rate_middle * samples.base[middle]))[0])
-    shift_right = float(settle(np.array(2 * y))[0])
+def _pulsed(outer: Turn, copies: int, fixed: Sequence[Fixed]) -> Iterator[_Way]:
+    n = outer.axis
+    across = np.eye(3)[int(np.argmin(np.abs(n)))]
+    across = across - n * (n @ across)
+    angles = [euler_angles(pulse.unitary, outer=n, inner=across, tolerance=SAME).angles.tolist() for pulse in fixed]
+    halves = [(pulse, gamma) for pulse, (_, beta, gamma) in zip(fixed, angles, strict=True) if beta == _PI]
+    for quarter, (alpha, beta, gamma) in zip(fixed, angles, strict=True):
+        if beta != _QUARTER:
+            continue
+        # R_n(α) R_across(π/2) R_n(γ) = R_m(π/2) R_n(α + γ) with the inner axis m = R_n(α) across.
+        m = across / np.linalg.norm(across)
+        m = np.cos(alpha) * m + np.sin(alpha) * np.cross(n, m)
+        g = float(settle(alpha + gamma)[0])
+        yield _Pulsed(outer, copies, m, quarter, g)
+        for half, turned in halves:
+            # R_across(π) R_n(γ) = R_m(π) R_n(γ + 2α).
+            yield _Pulsed(outer, copies, m, quarter, g, half, float(settle(turned + 2 * alpha)[0]))
 
-    def model(p: Real) -> NDArray[np.complex128]:
-        first = rotation(outer, rate_right * p[:, right] + shift_right)
-        return (
-            rotation(outer, rate_left * p[:, left]) @ rotation(inner, rate_middle * p[:, middle] + shift_middle) @ first
-        )
 
-    if not samples.agree(model):
-        return None
-    return _Free(
-        index,
-        outer,
-        inner,
-        samples.knob(left, rate_left, 0.0),
-        samples.knob(middle, rate_middle, shift_middle),
-        samples.knob(right, rate_right, shift_right),
+def _planned(way: _Way, gates: Sequence[NativeOneQubit]) -> OneQubitPlan:
+    used = sorted(kind.index for kind in way.members)
+    outer = any(isinstance(kind, Turn) for kind in way.members)
+    return OneQubitPlan(
+        gates=tuple(gates[index].gate for index in used),
+        virtual=tuple(gates[index].virtual for index in used),
+        axis=way.frame[0] if outer else None,
+        summary=way.summary,
+        steers=way.steers,
+        _way=way,
+        _local={index: k for k, index in enumerate(used)},
     )
 
 
-def _spinor(axis: Real, angle: float) -> Real:
-    return np.concatenate([[np.cos(angle / 2)], np.sin(angle / 2) * axis])
+def _samples(frames: Sequence[tuple[Real, Real]]) -> tuple[Complex, Complex]:
+    """Return Haar-random unitaries, and the Clifford groups of the frames."""
+    distinct = {tuple(np.round(np.concatenate(frame), 9)): frame for frame in frames}
+    turns = _QUARTER * np.arange(4)
+    cliffords = [
+        rotation(n, a) @ rotation(m, b) @ rotation(n, c)
+        for n, m in list(distinct.values())[:6]
+        for a, b, c in product(turns, turns[:3], turns)
+    ]
+    return haar_unitary(2, 32, rng=0), np.array(cliffords)
+
+
+def _cost(
+    plan: OneQubitPlan,
+    gates: Sequence[NativeOneQubit],
+    samples: tuple[Complex, Complex],
+    passing: Sequence[ArrayLike],
+    *,
+    timed: bool,
+) -> tuple[float, ...]:
+    means = []
+    for unitaries in samples:
+        emission = plan.emit(plan.angles(unitaries))
+        counts = np.zeros(4)
+        for index, local in plan._local.items():
+            site, column = np.nonzero(emission.gate == local)
+            native = gates[index]
+            counts[3] += len(site)
+            if native.virtual:
+                continue
+            counts[0] += len(site)
+            counts[1] += len(site) * (native.duration_ns or 0.0) if timed else 0.0
+            q, _ = quaternion(native.gate.matrix(emission.parameters[site, column, : native.gate.n_parameters]))
+            counts[2] += np.sum(2 * np.arctan2(np.linalg.norm(q[1:], axis=0), np.abs(q[0])))
+        means.append(np.round(counts / len(unitaries), 6))
+    haar, special = means
+    axis = plan.axis
+    passes = axis is not None and any(abs(float(axis @ axis_vector(n))) >= 1 - 1e-9 for n in passing)
+    return (haar[0], special[0], 0.0 if passes else 1.0, haar[1], special[1], haar[2], haar[3], special[3])

@@ -12,9 +12,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from gatewright.errors import MatrixError, NotUnitaryError
-from gatewright.linalg import kron, nearest_unitary, unitarity_defect
-from gatewright.synthesis._kernels import decompose
+from gatewright.linalg import kron
+from gatewright.synthesis._kak import checked_stack, decomposed, gates
 
 __all__ = [
     "CanonicalDecomposition",
@@ -55,52 +54,6 @@ class CanonicalDecomposition:
         right = kron(self.right[..., 0, :, :], self.right[..., 1, :, :])
         phase = np.exp(1j * self.phase)[..., None, None]
         return np.asarray(phase * (left @ canonical_matrix(self.coordinates) @ right))
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class _Factors:
-    """The kernel's own form of N decompositions: local (N, 4, 4) are quaternions of left 0, 1 and right 0, 1."""
-
-    phase: NDArray[np.float64]
-    local: NDArray[np.float64]
-    coordinates: NDArray[np.float64]
-
-
-def _checked_stack(unitary: ArrayLike) -> NDArray[np.complex128]:
-    """Return the stack as complex128; raise MatrixError unless its last axes are 4 × 4."""
-    u = np.asarray(unitary, dtype=np.complex128)
-    if u.shape[-2:] != (4, 4):
-        raise MatrixError("not a stack of two-qubit matrices", required="shape (..., 4, 4)", found=f"shape {u.shape}")
-    return u
-
-
-def _factors(unitary: NDArray[np.complex128]) -> _Factors:
-    """Decompose a checked stack, its leading axes flattened."""
-    u = np.require(unitary.reshape(-1, 4, 4), requirements=["C", "A"])
-    size = u.shape[0]
-    factors = _Factors(np.empty(size), np.empty((size, 4, 4)), np.empty((size, 3)))
-    failed = decompose(u, factors.phase, factors.local, factors.coordinates)
-    if failed >= 0:
-        matrix = u[failed]
-        where = f"matrix {failed} of the stack (counted from 0)" if size > 1 else ""
-        if not np.isfinite(matrix).all():
-            raise MatrixError("the matrix has an entry that is not finite", required="finite numbers", where=where)
-        defect = distance = np.inf
-        if np.abs(matrix).max() < 1e6:
-            # Larger entries are as far from unitary as can be, and might overflow here.
-            defect = float(unitarity_defect(matrix))
-            distance = float(np.linalg.norm(matrix - nearest_unitary(matrix), ord=2))
-        raise NotUnitaryError(defect=defect, distance=distance, tolerance=1e-9, where=where)
-    return factors
-
-
-def _gates(quaternion: NDArray[np.float64]) -> NDArray[np.complex128]:
-    """Return w − i(aX + bY + cZ), shape (..., 2, 2), for unit quaternions (w, a, b, c), shape (..., 4)."""
-    gates = np.empty((*quaternion.shape[:-1], 2, 2), dtype=np.complex128)
-    w, a, b, c = np.moveaxis(quaternion, -1, 0)
-    gates[..., 0, 0], gates[..., 1, 1] = w - 1j * c, w + 1j * c
-    gates[..., 0, 1], gates[..., 1, 0] = -b - 1j * a, b - 1j * a
-    return gates
 
 
 def canonical_matrix(coordinates: ArrayLike) -> NDArray[np.complex128]:
@@ -165,15 +118,15 @@ def canonical_decomposition(unitary: ArrayLike) -> CanonicalDecomposition:
     >>> np.allclose(parts.coordinates, [np.pi / 4, 0, 0]), np.allclose(parts.matrix(), cz)
     (True, True)
     """
-    u = _checked_stack(unitary)
-    factors = _factors(u)
+    u = checked_stack(unitary)
+    factors = decomposed(u)
     batch = u.shape[:-2]
-    gates = _gates(factors.local).reshape(*batch, 4, 2, 2)
+    local = gates(factors.local).reshape(*batch, 4, 2, 2)
     return CanonicalDecomposition(
         phase=factors.phase.reshape(batch),
-        left=gates[..., :2, :, :],
+        left=local[..., :2, :, :],
         coordinates=factors.coordinates.reshape(*batch, 3),
-        right=gates[..., 2:, :, :],
+        right=local[..., 2:, :, :],
     )
 
 
@@ -199,8 +152,8 @@ def canonical_coordinates(unitary: ArrayLike) -> NDArray[np.float64]:
     >>> canonical_coordinates(np.eye(4)).tolist()
     [0.0, 0.0, 0.0]
     """
-    u = _checked_stack(unitary)
-    return _factors(u).coordinates.reshape(*u.shape[:-2], 3)
+    u = checked_stack(unitary)
+    return decomposed(u).coordinates.reshape(*u.shape[:-2], 3)
 
 
 def mirrored_coordinates(coordinates: ArrayLike) -> NDArray[np.float64]:
@@ -245,7 +198,7 @@ def local_invariants(unitary: ArrayLike) -> tuple[NDArray[np.complex128], NDArra
     Raises
     ------
     MatrixError
-        If a matrix is not 4 × 4.
+        As `canonical_decomposition`.
 
     References
     ----------
@@ -257,7 +210,7 @@ def local_invariants(unitary: ArrayLike) -> tuple[NDArray[np.complex128], NDArra
     >>> abs(g1) < 1e-15, round(float(g2), 12)
     (np.True_, 1.0)
     """
-    u = _checked_stack(unitary)
+    u = checked_stack(unitary)
     magic = _MAGIC.conj().T @ u @ _MAGIC
     m = np.swapaxes(magic, -1, -2) @ magic
     trace = np.trace(m, axis1=-2, axis2=-1)
@@ -267,7 +220,7 @@ def local_invariants(unitary: ArrayLike) -> tuple[NDArray[np.complex128], NDArra
 
 
 def entangling_power(unitary: ArrayLike) -> NDArray[np.float64]:
-    """Return the mean linear entropy that each unitary makes of random product states, (2/9)(1 − |G1|).
+    """Return the mean linear entropy that each unitary gives to random product states, (2/9)(1 − |G1|).
 
     Parameters
     ----------
@@ -284,8 +237,8 @@ def entangling_power(unitary: ArrayLike) -> NDArray[np.float64]:
 
     Examples
     --------
-    >>> float(entangling_power(np.eye(4)))
-    0.0
+    >>> round(9 * float(entangling_power(np.diag([1, 1, 1, -1]))), 12)
+    2.0
     """
     return np.asarray((2 / 9) * (1 - np.abs(local_invariants(unitary)[0])))
 

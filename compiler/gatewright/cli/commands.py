@@ -1,0 +1,266 @@
+"""Run the commands: read, call the library, write; nothing here that the library lacks."""
+
+from __future__ import annotations
+
+import argparse
+import json
+import os
+import sys
+import tempfile
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from gatewright.errors import GatewrightError, InputError
+
+if TYPE_CHECKING:
+    from gatewright.pipeline import Result
+
+__all__ = ["run"]
+
+
+def run(options: argparse.Namespace) -> int:
+    """Run the command that was parsed, and turn every error into one line and an exit code."""
+    commands: dict[str, Callable[[argparse.Namespace], int]] = {
+        "compile": _compile,
+        "count": _count,
+        "check": _check,
+        "describe": _describe,
+    }
+    try:
+        return commands[options.command](options)
+    except GatewrightError as error:
+        _say(f"gatewright: {error}")
+        return error.exit_code
+    except KeyboardInterrupt:
+        _say("gatewright: interrupted; nothing was written")
+        return 130
+    except MemoryError:
+        _say("gatewright: out of memory; try a smaller input")
+        return 1
+    except BrokenPipeError:
+        # The reader has gone: what is left to write has nowhere to go.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return 1
+
+
+def _say(line: str) -> None:
+    print(line, file=sys.stderr, flush=True)
+
+
+def _tell_of_kernels() -> None:
+    """Say on stderr that kernels are being compiled, should that be necessary: it takes seconds, and only once."""
+    from numba.core import event
+
+    class Teller(event.Listener):  # type: ignore[misc]
+        told = False
+
+        def on_start(self, _: Any) -> None:
+            if not self.told:
+                self.told = True
+                _say("gatewright: compiling numerical kernels, once for this installation: a few seconds")
+
+        def on_end(self, _: Any) -> None:
+            pass
+
+    event.register("numba:compile", Teller())
+
+
+@contextmanager
+def _progress() -> Iterator[Callable[[str], None] | None]:
+    """Show the running stage on a terminal, and nothing elsewhere."""
+    if not sys.stderr.isatty():
+        yield None
+        return
+    from rich.console import Console
+
+    with Console(stderr=True).status("reading") as status:
+        yield lambda stage: status.update(stage)
+
+
+def _write(outputs: dict[str, bytes]) -> None:
+    """Write all files, each under a temporary name first and renamed when all are complete; ``-`` is stdout."""
+    ready: list[tuple[str, str]] = []
+    try:
+        for name, data in outputs.items():
+            if name == "-":
+                continue
+            folder = Path(name).parent
+            try:
+                handle, temporary = tempfile.mkstemp(prefix=f".{Path(name).name}.", dir=folder)
+                ready.append((temporary, name))
+                with os.fdopen(handle, "wb") as file:
+                    file.write(data)
+                umask = os.umask(0)
+                os.umask(umask)
+                Path(temporary).chmod(0o666 & ~umask)
+                if Path(name).is_dir():
+                    raise IsADirectoryError(21, "Is a directory")
+            except OSError as error:
+                raise InputError(
+                    f"cannot write the file: {(error.strerror or str(error)).lower()}", where=name
+                ) from None
+        while ready:
+            temporary, name = ready[0]
+            Path(temporary).replace(name)
+            ready.pop(0)
+    finally:
+        for temporary, _ in ready:
+            Path(temporary).unlink(missing_ok=True)
+    if "-" in outputs:
+        sys.stdout.buffer.write(outputs["-"])
+        sys.stdout.buffer.flush()
+
+
+def _to_json(facts: dict[str, Any]) -> bytes:
+    return (json.dumps(facts, indent=2, ensure_ascii=False, allow_nan=False) + "\n").encode()
+
+
+def _different(names: list[str | None]) -> None:
+    given = [name for name in names if name is not None]
+    if len(set(given)) < len(given):
+        raise InputError(
+            "two outputs have the same destination", required="different files, and one '-' at most", found=", ".join(given)
+        )
+
+
+def _compiled(options: argparse.Namespace) -> Result:
+    _tell_of_kernels()
+    from gatewright.devices import read_device
+    from gatewright.inputs import load
+    from gatewright.pipeline import compile as compile_source
+
+    device = read_device(options.device)
+    source = load(
+        options.input,
+        tolerance=options.tolerance,
+        nearest_unitary=options.nearest_unitary,
+        first_qubit=options.first_qubit,
+    )
+    with _progress() as progress:
+        return compile_source(
+            source.circuit,
+            device,
+            seed=options.seed,
+            tolerance=options.tolerance,
+            effort=options.effort,
+            placement=options.placement,
+            budget=dict(options.budget),
+            progress=progress,
+            moved=source.moved,
+        )
+
+
+def _compile(options: argparse.Namespace) -> int:
+    destination = options.output or (None if options.json == "-" else "-")
+    _different([destination, options.json, options.proof])
+    result = _compiled(options)
+    met = all(entry["met"] for entry in result.budget)
+    outputs: dict[str, bytes] = {}
+    if options.json:
+        outputs[options.json] = _to_json(result.summary())
+    if met:
+        version = options.qasm or (2 if str(destination).endswith(".qasm2") else 3)
+        if destination:
+            outputs[destination] = result.to_qasm(version=version).encode()
+        if options.proof:
+            outputs[options.proof] = result.encode_proof()
+    _write(outputs)
+    return _report(result, quiet=options.quiet)
+
+
+def _report(result: Result, *, quiet: bool) -> int:
+    from gatewright.cost import require_budget
+    from gatewright.report.terminal import print_result
+
+    if not quiet:
+        print_result(result, sys.stderr)
+    require_budget(result.budget)
+    return 0
+
+
+def _count(options: argparse.Namespace) -> int:
+    from gatewright.cost import require_budget
+    from gatewright.report.terminal import print_result
+
+    result = _compiled(options)
+    if options.json:
+        _write({options.json: _to_json(result.summary())})
+    if options.json != "-":
+        print_result(result, sys.stdout)
+    require_budget(result.budget)
+    return 0
+
+
+def _check(options: argparse.Namespace) -> int:
+    _tell_of_kernels()
+    from gatewright.devices import read_device
+    from gatewright.inputs import load
+    from gatewright.pipeline import check, extra_gates
+    from gatewright.proof import read_proof
+    from gatewright.report.terminal import print_verdict
+
+    device = read_device(options.device) if options.device else None
+    source = load(
+        options.source,
+        tolerance=max(options.tolerance, 1e-12),
+        nearest_unitary=options.nearest_unitary,
+        first_qubit=options.first_qubit,
+    )
+    output = load(options.output, natives=extra_gates() if device is None else device.gate_set.natives)
+    proof = read_proof(options.proof) if options.proof else None
+    places = output.qubit_map
+    try:
+        verdict = check(
+            source.circuit,
+            output.circuit,
+            device=device,
+            proof=proof.proof if proof else None,
+            initial=places.initial if places else None,
+            final=places.final if places else None,
+            tolerance=options.tolerance,
+        )
+    except GatewrightError as error:
+        if proof is not None and error.exit_code == 3:
+            error.hint = error.hint or _changed(proof.source, proof.output, source.circuit, output.circuit)
+        raise
+    if options.json:
+        _write({options.json: _to_json(verdict.to_dict() | {"placement": {
+            "initial": list(verdict.initial), "final": list(verdict.final)}, "legality_checked": device is not None})})
+    if options.json != "-":
+        print_verdict(verdict, sys.stdout)
+    return 0
+
+
+def _changed(source_print: str, output_print: str, source: Any, output: Any) -> str:
+    """Say which of the two circuits is not the one that the proof was made for."""
+    from gatewright.proof.file import fingerprint
+
+    changed = [
+        name
+        for name, circuit, known in (("source", source, source_print), ("output", output, output_print))
+        if fingerprint(circuit) != known
+    ]
+    return f"the {' and the '.join(changed)} has been changed since the proof was made" if changed else ""
+
+
+def _describe(options: argparse.Namespace) -> int:
+    _tell_of_kernels()
+    from gatewright.description import describe
+    from gatewright.devices import read_any, shipped_gate_sets
+    from gatewright.inputs import load
+    from gatewright.report.terminal import print_description
+
+    name = options.thing
+    if name in shipped_gate_sets() or Path(name).suffix.lower() == ".toml":
+        facts = describe(read_any(name))
+    else:
+        source = load(name, nearest_unitary=options.nearest_unitary, first_qubit=options.first_qubit)
+        facts = describe(source.circuit.unitary())
+        facts["distance_moved"] = source.moved
+    if options.json:
+        _write({options.json: _to_json(facts)})
+    if options.json != "-":
+        print_description(facts, sys.stdout)
+    return 0

@@ -1,0 +1,201 @@
+"""Describe a gate set, a device or a matrix before anything is compiled."""
+
+from __future__ import annotations
+
+import math
+from typing import Any
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from gatewright.devices import Device, GateSet
+from gatewright.errors import GateSetError, GatewrightError, UnsupportedError
+from gatewright.linalg import checked_unitary, unitarity_defect
+from gatewright.synthesis.controlled_not import cnot_count, count_reason
+from gatewright.synthesis.euler import euler_angles
+from gatewright.synthesis.native import entangler_parameters, native_set
+from gatewright.synthesis.weyl import (
+    canonical_coordinates,
+    entangling_power,
+    is_perfect_entangler,
+    local_invariants,
+)
+
+__all__ = ["counting_bound", "describe"]
+
+#: Shares of Haar-random two-qubit unitaries by number of uses, for a CNOT- or iSWAP-class entangler: two uses reach
+#: only z = 0, a set of measure zero; three reach everything (Shende, Bullock, Markov, PRA 70, 012310 (2004)).
+THREE_USES = {"0": 0.0, "1": 0.0, "2": 0.0, "3": 1.0}
+
+
+def describe(thing: Device | GateSet | ArrayLike) -> dict[str, Any]:
+    """Describe a device, a native gate set or a unitary matrix.
+
+    Parameters
+    ----------
+    thing : Device, GateSet or array_like, shape (2**n, 2**n)
+
+    Returns
+    -------
+    dict
+        With an entry ``kind``; plain values, ready for JSON.
+
+    Raises
+    ------
+    MatrixError, NotUnitaryError
+        For a matrix that is not a unitary.
+
+    Examples
+    --------
+    >>> describe(np.diag([1, 1, 1, -1]))["cnot_count"]
+    1
+    """
+    if isinstance(thing, Device):
+        return _device(thing)
+    if isinstance(thing, GateSet):
+        return _gate_set(thing)
+    return _matrix(thing)
+
+
+def counting_bound(n: int) -> int:
+    """Return the least number of CNOTs that almost all `n`-qubit unitaries need, by counting parameters.
+
+    References
+    ----------
+    Shende, Markov, Bullock, PRA 69, 062321 (2004): ⌈(4ⁿ − 3n − 1)/4⌉.
+    """
+    return math.ceil((4**n - 3 * n - 1) / 4)
+
+
+def _matrix(matrix: ArrayLike) -> dict[str, Any]:
+    unitary, moved = checked_unitary(matrix)
+    n = len(unitary).bit_length() - 1
+    facts: dict[str, Any] = {
+        "kind": "matrix",
+        "qubits": n,
+        "unitarity_defect": float(unitarity_defect(np.asarray(matrix, dtype=complex))),
+        "distance_moved": moved,
+        "cnot_lower_bound_generic": counting_bound(n),
+    }
+    if n == 1:
+        angles = euler_angles(unitary, outer="z", inner="y")
+        alpha, beta, gamma = (float(a) for a in angles.angles)
+        facts["zyz_angles"] = {"first": gamma, "middle": beta, "last": alpha, "phase": float(angles.phase)}
+    if n == 2:
+        coordinates = canonical_coordinates(unitary)
+        g1, g2 = local_invariants(unitary)
+        uses = int(cnot_count(unitary))
+        facts |= {
+            "coordinates": coordinates.tolist(),
+            "coordinates_over_pi": (coordinates / np.pi).tolist(),
+            "invariants": {"G1": [float(g1.real), float(g1.imag)], "G2": float(g2)},
+            "entangling_power": float(entangling_power(unitary)),
+            "perfect_entangler": bool(is_perfect_entangler(coordinates)),
+            "cnot_count": uses,
+            "reason": count_reason(coordinates, uses),
+        }
+    return facts
+
+
+def _gate_set(gate_set: GateSet) -> dict[str, Any]:
+    facts: dict[str, Any] = {
+        "kind": "gate set",
+        "name": gate_set.name,
+        "description": gate_set.description,
+        "gates": [
+            {
+                "name": native.gate.name,
+                "qubits": native.gate.n_qubits,
+                "ranges": [list(bounds) for bounds in native.ranges],
+                "virtual": native.virtual,
+                "duration_ns": native.duration_ns,
+                "error": native.error,
+            }
+            for native in gate_set.gates.values()
+        ],
+        "entanglers": [_entangler(native) for native in gate_set.two_qubit],
+    }
+    # Loading has made sure that the one-qubit gates reach all of SU(2); any entangler then completes the set.
+    facts["universal"] = gate_set.can_entangle
+    facts["reason"] = (
+        "the one-qubit gates reach all of SU(2) and a two-qubit gate entangles (Brylinski and Brylinski 2002)"
+        if gate_set.can_entangle
+        else "the one-qubit gates reach all of SU(2), but no two-qubit gate entangles"
+    )
+    try:
+        chosen = native_set(gate_set)
+    except GatewrightError as error:
+        facts["compiles"] = False
+        facts["compiles_reason"] = str(error)
+    else:
+        facts["compiles"] = True
+        facts["entangler_used"] = chosen.entangler.gate.name if chosen.entangler else None
+    return facts
+
+
+def _entangler(native: Any) -> dict[str, Any]:
+    facts: dict[str, Any] = {"name": native.gate.name, "parameters": [], "mean_uses": None, "reach": None}
+    try:
+        parameters = entangler_parameters(native)
+        from gatewright.synthesis.entangler import classify
+
+        coordinates = canonical_coordinates(native.gate.matrix(parameters))
+        facts |= {
+            "parameters": list(parameters),
+            "coordinates": coordinates.tolist(),
+            "coordinates_over_pi": (coordinates / np.pi).tolist(),
+            "perfect_entangler": bool(is_perfect_entangler(coordinates)),
+        }
+        classify(native.gate.matrix(parameters))
+        facts |= {"mean_uses": 3.0, "reach": dict(THREE_USES)}
+    except (GateSetError, UnsupportedError) as error:
+        facts["note"] = str(error)
+    return facts
+
+
+def _device(device: Device) -> dict[str, Any]:
+    edges = device.edges
+    degrees = np.bincount(edges.ravel(), minlength=device.n_qubits)[device.active]
+    return {
+        "kind": "device",
+        "name": device.name,
+        "description": device.description,
+        "gate_set": device.gate_set.name,
+        "qubits": device.n_qubits,
+        "edges": len(edges),
+        "edge_list": edges.tolist(),
+        "directed": bool(len(device.pairs) < 2 * len(edges)),
+        "connected": device.is_connected,
+        "components": [part.tolist() for part in device.components()],
+        "out_of_service": {
+            "qubits": np.flatnonzero(~device.active).tolist(),
+            "edges": device.removed_edges.tolist(),
+        },
+        "degree": {"least": int(degrees.min(initial=0)), "most": int(degrees.max(initial=0))},
+        "health": _health(device),
+        "gate_set_facts": _gate_set(device.gate_set),
+    }
+
+
+def _health(device: Device) -> dict[str, Any]:
+    """Spread of every calibrated quantity that is known."""
+    active = device.active
+    columns: dict[str, NDArray[np.float64]] = {
+        "t1_ns": device.t1_ns[active],
+        "t2_ns": device.t2_ns[active],
+        "readout_error": device.readout_error[active],
+    }
+    for name, values in device.gate_errors.items():
+        if not device.gate_set.gates[name].virtual:
+            columns[f"{name} error"] = values[active] if len(values) == len(active) else values
+    return {
+        name: {
+            "known": int(np.count_nonzero(~np.isnan(values))),
+            "of": len(values),
+            "least": float(np.nanmin(values)),
+            "median": float(np.nanmedian(values)),
+            "most": float(np.nanmax(values)),
+        }
+        for name, values in columns.items()
+        if len(values) and not np.isnan(values).all()
+    }

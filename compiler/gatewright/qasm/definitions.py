@@ -1,0 +1,134 @@
+"""Gate definitions of an OpenQASM program: what they hold, how they expand, and when they equal a known gate."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from gatewright.circuit import Builder
+from gatewright.errors import ExpressionError
+from gatewright.expressions import Expression
+from gatewright.gates import BARRIER, Gate
+from gatewright.linalg import distance
+
+__all__ = ["MAX_DEPTH", "Definition", "Step", "equals", "expand"]
+
+#: Levels of definitions that may use each other.
+MAX_DEPTH = 100
+
+#: A definition is compared with a known gate only up to these sizes.
+MAX_COMPARED_QUBITS = 8
+MAX_COMPARED_SIZE = 10_000
+
+Emit = Callable[[Gate, Sequence[int], Sequence[float]], object]
+
+
+@dataclass(frozen=True, slots=True)
+class Step:
+    """One statement of a definition's body.
+
+    Attributes
+    ----------
+    target : Gate, Definition or None
+        What is applied; None for ``gphase``.
+    qubits : tuple of int
+        Positions among the qubits of the definition.
+    expressions : tuple of Expression
+        The parameters, in terms of those of the definition.
+    values : tuple of float or None
+        Their values where they do not depend on anything.
+    """
+
+    target: Gate | Definition | None
+    qubits: tuple[int, ...]
+    expressions: tuple[Expression, ...]
+    values: tuple[float, ...] | None
+
+
+@dataclass(frozen=True, slots=True)
+class Definition:
+    """A gate that the program defines.
+
+    Attributes
+    ----------
+    name : str
+    parameters : tuple of str
+    n_qubits : int
+    steps : tuple of Step
+    """
+
+    name: str
+    parameters: tuple[str, ...]
+    n_qubits: int
+    steps: tuple[Step, ...]
+    #: Steps taken to expand it, nested ones included, and levels of nesting.
+    size: int
+    depth: int
+
+    @property
+    def n_parameters(self) -> int:
+        """Number of parameters."""
+        return len(self.parameters)
+
+    @classmethod
+    def make(cls, name: str, parameters: tuple[str, ...], n_qubits: int, steps: Sequence[Step]) -> Definition:
+        """Return the definition with its size and depth worked out."""
+        inner = [step.target for step in steps if isinstance(step.target, Definition)]
+        size = len(steps) + sum(target.size for target in inner)
+        # Definitions that double each other would make numbers of thousands of digits.
+        size = min(size, 10**12)
+        depth = 1 + max((target.depth for target in inner), default=0)
+        return cls(name, parameters, n_qubits, tuple(steps), size, depth)
+
+
+def expand(definition: Definition, values: Sequence[float], qubits: Sequence[int], emit: Emit) -> float:
+    """Pass the table gates of one call to `emit`, in order, and return the global phase that it adds.
+
+    Raises
+    ------
+    ExpressionError
+        If a parameter has no finite real value.
+    """
+    named = dict(zip(definition.parameters, values, strict=True))
+    phase = 0.0
+    for step in definition.steps:
+        numbers = step.values
+        if numbers is None:
+            numbers = tuple([expression.real(named) for expression in step.expressions])
+        target = step.target
+        if isinstance(target, Gate):
+            emit(target, [qubits[q] for q in step.qubits], numbers)
+        elif target is None:
+            phase += numbers[0]
+        else:
+            phase += expand(target, numbers, [qubits[q] for q in step.qubits], emit)
+    return phase
+
+
+def equals(definition: Definition, gate: Gate, *, tolerance: float = 1e-9) -> bool:
+    """Return whether a definition and a gate are the same operation, up to global phase, at a few random angles.
+
+    Definitions on more than 8 qubits or of more than 10,000 steps count as different.
+    """
+    if (definition.n_qubits, definition.n_parameters) != (gate.n_qubits, gate.n_parameters):
+        return False
+    if definition.n_qubits > MAX_COMPARED_QUBITS or definition.size > MAX_COMPARED_SIZE:
+        return False
+    rng = np.random.default_rng(20)
+    for _ in range(4 if gate.n_parameters else 1):
+        values = rng.uniform(-np.pi, np.pi, gate.n_parameters).tolist()
+        builder = Builder(definition.n_qubits)
+
+        def emit(kind: Gate, qubits: Sequence[int], numbers: Sequence[float], into: Builder = builder) -> None:
+            if kind != BARRIER:
+                into.gate(kind, *qubits, parameters=numbers)
+
+        try:
+            expand(definition, values, range(definition.n_qubits), emit)
+        except ExpressionError:
+            return False
+        if not distance(builder.build().unitary(), gate.matrix(values)) <= tolerance:
+            return False
+    return True

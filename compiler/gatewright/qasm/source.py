@@ -1,0 +1,122 @@
+"""The text of an OpenQASM program: reading it from outside, blanking its comments, and naming places in it."""
+
+from __future__ import annotations
+
+import os
+import re
+import sys
+from collections.abc import Iterator
+from pathlib import Path
+from typing import TypeVar
+
+from gatewright.errors import GatewrightError, QasmError, shorten
+
+__all__ = ["MAX_BYTES", "Source", "read_text"]
+
+#: Largest text that is read, in bytes.
+MAX_BYTES = 2**28
+
+_SKIP = re.compile(r'"[^"\n]*"|//[^\n]*|/\*')
+_CHUNK = 2**20
+
+Error = TypeVar("Error", bound=GatewrightError)
+
+
+def read_text(path: str | os.PathLike[str]) -> str:
+    """Return the text of a file, or of standard input for ``-``.
+
+    Raises
+    ------
+    QasmError
+        If the file cannot be read, is larger than `MAX_BYTES`, or is not UTF-8 text.
+    """
+    where = os.fspath(path)
+    try:
+        if where == "-":
+            where = "<stdin>"
+            data = sys.stdin.buffer.read(MAX_BYTES + 1)
+        else:
+            with Path(path).open("rb") as file:
+                data = file.read(MAX_BYTES + 1)
+    except (OSError, ValueError) as problem:
+        what = problem.strerror if isinstance(problem, OSError) and problem.strerror else str(problem)
+        raise QasmError("the file cannot be read", found=what, where=shorten(where)) from None
+    if len(data) > MAX_BYTES:
+        raise QasmError(
+            "the file is too large", required=f"at most {MAX_BYTES // 2**20} MiB", found="more", where=where
+        )
+    try:
+        return data.decode("utf-8-sig")
+    except UnicodeDecodeError as problem:
+        line = data.count(b"\n", 0, problem.start) + 1
+        raise QasmError(
+            "the file is not an OpenQASM text",
+            required="UTF-8 text",
+            found=f"byte 0x{data[problem.start]:02x} at offset {problem.start}",
+            where=where,
+            line=line,
+            column=problem.start - data.rfind(b"\n", 0, problem.start),
+        ) from None
+
+
+class Source:
+    """A program's text with its comments blanked, so that offsets still name places in the original.
+
+    Parameters
+    ----------
+    text : str
+    where : str
+        File name for messages.
+    """
+
+    def __init__(self, text: str, where: str = "") -> None:
+        if len(text) > MAX_BYTES:
+            raise QasmError("the text is too large", required=f"at most {MAX_BYTES // 2**20} MiB", where=where)
+        self.where = where
+        text = text.removeprefix("\ufeff")
+        if "\r" in text:
+            text = text.replace("\r\n", "\n").replace("\r", "\n")
+        self.text = text
+        if "\0" in text:
+            raise self.error("this is not a text", text.index("\0"), required="an OpenQASM program", found="a zero byte")
+        if "//" in text or "/*" in text:
+            self.text = self._without_comments()
+        if not self.text or self.text.isspace():
+            raise QasmError("the program is empty", required="at least a declaration of qubits", where=where)
+
+    def _without_comments(self) -> str:
+        text, parts, start = self.text, [], 0
+        while match := _SKIP.search(text, start):
+            begin, end = match.span()
+            if text[begin] == '"':
+                parts.append(text[start:end])
+            else:
+                if text[begin + 1] == "*":
+                    closing = text.find("*/", end)
+                    if closing < 0:
+                        raise self.error("a comment is not closed", begin, required="'*/' behind it", found="the end")
+                    end = closing + 2
+                lines = text[begin:end].split("\n")
+                parts += [text[start:begin], "\n".join([" " * len(line) for line in lines])]
+            start = end
+        parts.append(text[start:])
+        return "".join(parts)
+
+    def pieces(self) -> Iterator[str]:
+        """Yield what lies between semicolons, from the beginning to the end of the text."""
+        text, start = self.text, 0
+        while (end := text.find(";", start + _CHUNK)) >= 0:
+            yield from text[start:end].split(";")
+            start = end + 1
+        yield from text[start:].split(";")
+
+    def locate(self, problem: Error, offset: int) -> Error:
+        """Give an error its file, line and column."""
+        problem.where = self.where
+        problem.line = self.text.count("\n", 0, offset) + 1
+        problem.column = offset - self.text.rfind("\n", 0, offset)
+        return problem
+
+    def error(self, what: str, offset: int, *, required: str = "", found: str = "", hint: str = "") -> QasmError:
+        """Return the error to raise at an offset of the text."""
+        return self.locate(QasmError(what, required=required, found=found, hint=hint), offset)

@@ -1,0 +1,111 @@
+"""Plain tables for a terminal: every count with its lower bound beside it."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from typing import TYPE_CHECKING, Any, TextIO
+
+from rich.console import Console
+from rich.table import Table
+
+if TYPE_CHECKING:
+    from gatewright.pipeline import Result
+    from gatewright.proof import Verdict
+
+__all__ = ["print_description", "print_result", "print_verdict"]
+
+
+def _console(stream: TextIO) -> Console:
+    return Console(file=stream, highlight=False, soft_wrap=True)
+
+
+def _table(rows: Iterable[tuple[str, str, str]], heads: tuple[str, str, str]) -> Table:
+    table = Table(box=None, pad_edge=False, padding=(0, 2, 0, 0))
+    for number, head in enumerate(heads):
+        table.add_column(head, justify="right" if number == 1 else "left", overflow="fold")
+    for row in rows:
+        table.add_row(*row)
+    return table
+
+
+def print_result(result: Result, stream: TextIO) -> None:
+    """Print costs, bounds, placement and proof of a compilation."""
+    console = _console(stream)
+    costs, verdict = result.costs, result.verdict
+    gates = ", ".join(f"{number} {name}" for name, number in costs.by_gate.items()) or "none"
+    rows = [
+        ("two-qubit gates", str(costs.two_qubit_gates), f"at least {result.lower_bound.two_qubit_gates} (see note)"),
+        ("one-qubit gates", str(costs.one_qubit_gates), "physical pulses; virtual ones are free"),
+        ("swaps inserted", str(costs.swaps_inserted), "merged into neighbouring windows where there are any"),
+        ("two-qubit depth", str(costs.two_qubit_depth), ""),
+        ("depth", str(costs.depth), "layers of physical operations"),
+    ]
+    if costs.duration_ns is not None:
+        rows.append(("duration", f"{costs.duration_ns:g} ns", ""))
+    if costs.success_estimate is not None:
+        rows.append(("success estimate", f"{costs.success_estimate:.4g}", "a model; trust your own calibration first"))
+    rows.append(("error bound", f"{verdict.error_bound:.2g}", f"proven: {verdict.method}, {verdict.windows} windows"))
+    if result.moved:
+        rows.append(("input moved by", f"{result.moved:.2g}", "to the nearest unitary"))
+    for entry in result.budget:
+        met = "met" if entry["met"] else "NOT MET"
+        rows.append((f"budget {entry['name']}", f"{entry['relation']} {entry['limit']:g}", met))
+    console.print(f"{result.source.n_qubits} qubits on {result.device.name} ({result.device.gate_set.name})")
+    console.print(_table(rows, ("cost", "value", "")))
+    console.print(f"operations: {gates}", markup=False)
+    for name, places in (("in", result.initial), ("out", result.final)):
+        console.print(f"placement {name}: " + _places(places), markup=False)
+    console.print(f"note on the lower bound: {result.lower_bound.how}", markup=False)
+
+
+def _places(places: tuple[int, ...]) -> str:
+    return ", ".join(f"{q}→{p}" for q, p in enumerate(places))
+
+
+def print_verdict(verdict: Verdict, stream: TextIO) -> None:
+    """Print what the checker found."""
+    console = _console(stream)
+    console.print(f"equal within {verdict.error_bound:.3g} (operator norm, up to global phase)", markup=False)
+    console.print(f"method: {verdict.method}", markup=False)
+    if verdict.windows:
+        console.print(
+            f"windows: {verdict.windows}; the worst, number {verdict.worst_window}, is {verdict.worst_distance:.3g} off",
+            markup=False,
+        )
+    console.print("placement in: " + _places(verdict.initial), markup=False)
+    console.print("placement out: " + _places(verdict.final), markup=False)
+
+
+def print_description(facts: dict[str, Any], stream: TextIO) -> None:
+    """Print facts as indented lines."""
+    console = _console(stream)
+    for line in _lines(facts, 0):
+        console.print(line, markup=False)
+
+
+def _lines(value: dict[str, Any], depth: int) -> Iterable[str]:
+    pad = "  " * depth
+    for key, entry in value.items():
+        name = key.replace("_", " ")
+        if isinstance(entry, dict):
+            yield f"{pad}{name}:"
+            yield from _lines(entry, depth + 1)
+        elif isinstance(entry, list) and entry and isinstance(entry[0], dict):
+            yield f"{pad}{name}:"
+            for item in entry:
+                lines = list(_lines(item, depth + 2))
+                yield f"{pad}  - {lines[0].strip()}"
+                yield from lines[1:]
+        elif entry not in ("", None, []):
+            yield f"{pad}{name}: {_short(entry)}"
+
+
+def _short(entry: Any) -> str:
+    if isinstance(entry, bool):
+        return "yes" if entry else "no"
+    if isinstance(entry, float):
+        return f"{entry:.10g}"
+    if isinstance(entry, list):
+        shown = ", ".join(f"({_short(item)})" if isinstance(item, list) else _short(item) for item in entry[:40])
+        return shown + (f", … ({len(entry)} in all)" if len(entry) > 40 else "")
+    return str(entry)
