@@ -172,6 +172,17 @@ def test_a_wrong_definition_is_found() -> None:
     gate["definition"] = "gate turn(theta) q { nosuch(theta) q; }"
     with pytest.raises(GateSetError, match="'gates.turn.definition' cannot be read: .*nosuch"):
         read_gate_set(made_of(turn=gate))
+    for body in (
+        "U(theta, 0, 0) q, q;",
+        'include "/etc/passwd";',
+        "defcal x q",
+        "h q; h",
+        "measure q;",
+        "turn(theta) q;",
+    ):
+        gate["definition"] = f"gate turn(theta) q {{ {body} }}"
+        with pytest.raises(GateSetError, match="'gates.turn.definition' cannot be read"):
+            read_gate_set(made_of(turn=gate))
 
 
 @given(st.sampled_from(["rad", "deg", "turn"]), st.floats(0.01, 0.5))

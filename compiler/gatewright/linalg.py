@@ -193,8 +193,9 @@ def checked_unitary(
     MatrixError, NotUnitaryError
     """
     try:
-        u = np.asarray(matrix, dtype=np.complex128)
-    except (TypeError, ValueError):
+        with np.errstate(over="ignore"):  # what is too large becomes infinite, and is refused below
+            u = np.asarray(matrix, dtype=np.complex128)
+    except (TypeError, ValueError, OverflowError):
         required = "a square array of complex numbers"
         raise MatrixError("not a matrix of numbers", required=required, where=where) from None
     if u.ndim != 2 or u.shape[0] != u.shape[1]:

@@ -24,7 +24,6 @@ from gatewright.devices.reach import Reach, one_qubit_reach
 from gatewright.devices.reading import Table, load_toml
 from gatewright.devices.resources import shipped_gate_set_files
 from gatewright.errors import (
-    CircuitError,
     ExpressionError,
     GateSetError,
     GatewrightError,
@@ -534,7 +533,7 @@ def check_definitions(gate_set: GateSet, *, where: str = "") -> None:
             )
             try:
                 matrix = qasm.read(program).unitary()
-            except (CircuitError, ExpressionError) as problem:
+            except GatewrightError as problem:
                 raise GateSetError(
                     f"'{key}' cannot be read: {problem.what}",
                     required=problem.required,

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, field
 
 import numpy as np
 
@@ -13,7 +13,7 @@ from gatewright.expressions import Expression
 from gatewright.gates import BARRIER, Gate
 from gatewright.linalg import distance
 
-__all__ = ["MAX_DEPTH", "Definition", "Step", "equals", "expand"]
+__all__ = ["MAX_DEPTH", "Definition", "Step", "equals", "expand", "same_gate"]
 
 #: Levels of definitions that may use each other.
 MAX_DEPTH = 100
@@ -21,6 +21,9 @@ MAX_DEPTH = 100
 #: A definition is compared with a known gate only up to these sizes.
 MAX_COMPARED_QUBITS = 8
 MAX_COMPARED_SIZE = 10_000
+
+#: Angles at which operations are compared: random, the same in every run.
+_TRIALS = 4
 
 Emit = Callable[[Gate, Sequence[int], Sequence[float]], object]
 
@@ -36,9 +39,9 @@ class Step:
     qubits : tuple of int
         Positions among the qubits of the definition.
     expressions : tuple of Expression
-        The parameters, in terms of those of the definition.
+        The parameters, in terms of those of the definition and of constants.
     values : tuple of float or None
-        Their values where they do not depend on anything.
+        Their values, where they do not depend on the definition's parameters.
     """
 
     target: Gate | Definition | None
@@ -57,30 +60,34 @@ class Definition:
     parameters : tuple of str
     n_qubits : int
     steps : tuple of Step
+    constants : mapping of str to float
+        Constants of the program that the steps may name.
+    size : int
+        Steps taken to expand it, nested ones included; at most 10^12.
+    depth : int
+        Levels of nesting.
     """
 
     name: str
     parameters: tuple[str, ...]
     n_qubits: int
     steps: tuple[Step, ...]
-    #: Steps taken to expand it, nested ones included, and levels of nesting.
-    size: int
-    depth: int
+    constants: Mapping[str, float] = field(default_factory=dict)
+    size: int = field(init=False)
+    depth: int = field(init=False)
+
+    def __post_init__(self) -> None:
+        """Work out the size and the depth."""
+        inner = [step.target for step in self.steps if isinstance(step.target, Definition)]
+        # Capped: definitions that double each other would make numbers of thousands of digits.
+        size = min(len(self.steps) + sum(target.size for target in inner), 10**12)
+        object.__setattr__(self, "size", size)
+        object.__setattr__(self, "depth", 1 + max((target.depth for target in inner), default=0))
 
     @property
     def n_parameters(self) -> int:
         """Number of parameters."""
         return len(self.parameters)
-
-    @classmethod
-    def make(cls, name: str, parameters: tuple[str, ...], n_qubits: int, steps: Sequence[Step]) -> Definition:
-        """Return the definition with its size and depth worked out."""
-        inner = [step.target for step in steps if isinstance(step.target, Definition)]
-        size = len(steps) + sum(target.size for target in inner)
-        # Definitions that double each other would make numbers of thousands of digits.
-        size = min(size, 10**12)
-        depth = 1 + max((target.depth for target in inner), default=0)
-        return cls(name, parameters, n_qubits, tuple(steps), size, depth)
 
 
 def expand(definition: Definition, values: Sequence[float], qubits: Sequence[int], emit: Emit) -> float:
@@ -91,7 +98,7 @@ def expand(definition: Definition, values: Sequence[float], qubits: Sequence[int
     ExpressionError
         If a parameter has no finite real value.
     """
-    named = dict(zip(definition.parameters, values, strict=True))
+    named = {**definition.constants, **dict(zip(definition.parameters, values, strict=True))}
     phase = 0.0
     for step in definition.steps:
         numbers = step.values
@@ -117,7 +124,7 @@ def equals(definition: Definition, gate: Gate, *, tolerance: float = 1e-9) -> bo
     if definition.n_qubits > MAX_COMPARED_QUBITS or definition.size > MAX_COMPARED_SIZE:
         return False
     rng = np.random.default_rng(20)
-    for _ in range(4 if gate.n_parameters else 1):
+    for _ in range(_TRIALS if gate.n_parameters else 1):
         values = rng.uniform(-np.pi, np.pi, gate.n_parameters).tolist()
         builder = Builder(definition.n_qubits)
 
@@ -132,3 +139,15 @@ def equals(definition: Definition, gate: Gate, *, tolerance: float = 1e-9) -> bo
         if not distance(builder.build().unitary(), gate.matrix(values)) <= tolerance:
             return False
     return True
+
+
+def same_gate(first: Gate, second: Gate, *, tolerance: float = 1e-9) -> bool:
+    """Return whether two gates are the same operation, up to global phase, at a few random angles."""
+    if first == second:
+        return True
+    if (first.n_qubits, first.n_parameters) != (second.n_qubits, second.n_parameters):
+        return False
+    if first.function is None or second.function is None:
+        return False
+    values = np.random.default_rng(20).uniform(-np.pi, np.pi, (_TRIALS, first.n_parameters))
+    return bool(np.all(distance(first.matrix(values), second.matrix(values)) <= tolerance))

@@ -7,70 +7,58 @@ distinct statements, which NumPy turns into columns. What is not read is refused
 
 from __future__ import annotations
 
-import math
 import os
 import re
 from collections.abc import Callable, Mapping, Sequence
 from types import MappingProxyType
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
-from gatewright.errors import ExpressionError, QasmError, UnsupportedError, nearest_name, shorten
-from gatewright.expressions import FUNCTIONS, parse
-from gatewright.gates import ANY, BARRIER, GATES, MEASURE, RESET, Gate
-from gatewright.qasm.definitions import MAX_DEPTH, Definition, Step, equals, expand
-from gatewright.qasm.library import BUILT_IN, DEFINITIONS, LIBRARIES, LIBRARY_FILES
+from gatewright.errors import ExpressionError, nearest_name, shorten
+from gatewright.gates import BARRIER, GATES, MEASURE, RESET, Gate
+from gatewright.qasm.bodies import read_definition
+from gatewright.qasm.definitions import Definition, equals, expand, same_gate
+from gatewright.qasm.library import BUILT_IN, LIBRARIES, LIBRARY_FILES
+from gatewright.qasm.scope import MAX_QUBITS, NAME, UNSUPPORTED, Scope, split
 from gatewright.qasm.source import Source, read_text
 
-__all__ = ["MAX_OPERATIONS", "MAX_QUBITS", "RESERVED", "read", "read_file"]
+__all__ = ["MAX_OPERANDS", "MAX_OPERATIONS", "read", "read_file"]
 
-#: Limits on one program: operations after expansion, qubits (and bits), and qubits named by all operations.
+#: Most operations of one program, the steps of expanded definitions included.
 MAX_OPERATIONS = 20_000_000
-MAX_QUBITS = 1_000_000
+
+#: Most qubits that all operations together may name.
 MAX_OPERANDS = 200_000_000
 
-#: Distinct statements, operand lists and numbers that are remembered.
+#: Distinct statements that are remembered.
 _REMEMBERED = 500_000
 
-_UNSUPPORTED = frozenset(
-    "if else for while switch case default def defcal cal defcalgrammar extern input output let box delay nop"
-    " durationof duration stretch int uint float angle bool complex array ctrl negctrl inv pow return break continue"
-    " end pragma void readonly mutable".split()
-)
-_KEYWORDS = frozenset(
-    "OPENQASM include qreg creg qubit bit gate opaque measure barrier reset gphase const pi π U".split()
-)
-
-#: Words that cannot name a register, a gate or a constant.
-RESERVED = _UNSUPPORTED | _KEYWORDS | frozenset(FUNCTIONS)
-
-_NAME = r"[^\W\d]\w*"
-_NUMBER = r"(?:[0-9]+\.?[0-9]*|\.[0-9]+)"
-_FLAT = re.compile(rf"\s*({_NAME})\s*(?:\(([^()]*)\))?\s*([^()]*)")
-_CALL = re.compile(rf"({_NAME})\s*(?:\((.*)\))?\s*(.*)", re.DOTALL)
-_WORD = re.compile(_NAME)
-_OPERAND = re.compile(rf"\s*(?:({_NAME})\s*(?:\[\s*(?:([0-9]{{1,9}})|([^][]*))\s*\])?|\$([0-9]{{1,9}}))\s*")
-_FLOAT = re.compile(rf"[-+]?{_NUMBER}(?:[eE][-+]?[0-9]+)?")
-_PI = re.compile(rf"([-+]?)(?:({_NUMBER})\s*\*\s*)?pi(?:\s*\*\s*({_NUMBER}))?(?:\s*/\s*({_NUMBER}))?")
+_WORD = re.compile(NAME)
+_FLAT = re.compile(rf"\s*({NAME})\s*(?:\(([^()]*)\))?\s*([^()]*)")
+_CALL = re.compile(rf"({NAME})\s*(?:\((.*)\))?\s*(.*)", re.DOTALL)
 _INCLUDE = re.compile(r"""include\s*(?:"([^"]*)"|'([^']*)')""")
-_CONST = re.compile(rf"const\s+(int|uint|float|angle)\s*(?:\[[^]]*\])?\s*({_NAME})\s*=(.*)", re.DOTALL)
-_REGISTER = re.compile(rf"(qreg|creg)\s+({_NAME})\s*(?:\[([^][]*)\])?()")
-_DECLARATION = re.compile(rf"(qubit|bit)\s*(?:\[([^][]*)\])?\s*({_NAME})\s*(?:=(.*))?", re.DOTALL)
-_GATE = re.compile(rf"(?:gate|opaque)\s+({_NAME})\s*(?:\(([^()]*)\))?\s*([^()]*)")
+_CONST = re.compile(rf"const\s+(int|uint|float|angle)\s*(?:\[[^]]*\])?\s*({NAME})\s*=(.*)", re.DOTALL)
+_REGISTER = re.compile(rf"(qreg|creg)\s+({NAME})\s*(?:\[([^][]*)\])?")
+_DECLARATION = re.compile(rf"(qubit|bit)\s*(?:\[([^][]*)\])?\s*({NAME})\s*(?:=(.*))?", re.DOTALL)
+_OPAQUE = re.compile(rf"opaque\s+({NAME})\s*(?:\([^()]*\))?\s*[^()]*")
 _BLOCK = re.compile(r"\s*gate\b")
+_MEASURE = re.compile(r"measure\b(.*)", re.DOTALL)
+_ARROW = re.compile(r"measure\b(.*)->(.*)", re.DOTALL)
 
 
 def read(text: str, *, where: str = "", natives: Mapping[str, Gate] = MappingProxyType({})) -> Circuit:
     """Read an OpenQASM program.
 
-    Versions 2.0, 3, 3.0 and 3.1 (the last two when the version line is missing); ``include`` of the version's
-    own standard library, which is never opened; registers, constants, gate definitions, gate calls with
-    broadcasting, ``gphase``, ``barrier``, ``measure`` and ``reset``. Division is of reals, also between integers.
+    Versions 2.0, 3.0 and 3.1 (3.0 where the version line is missing); ``include`` of the version's own standard
+    library, which is never opened; registers, constants, gate definitions, gate calls with broadcasting,
+    ``gphase``, ``barrier``, ``measure`` and ``reset``. Division is of reals, also between integers.
 
-    A gate that the program defines is expanded, unless its definition equals the gate of that name in the table
-    of this package (which the version's library lacks), up to global phase.
+    A gate that the program defines is expanded; but where the definition equals the gate of that name in the
+    table of this package, up to global phase, the call stays what it is. Global phase is kept as far as the
+    program tells it: OpenQASM 2 does not.
 
     Parameters
     ----------
@@ -78,8 +66,8 @@ def read(text: str, *, where: str = "", natives: Mapping[str, Gate] = MappingPro
     where : str
         File name for messages.
     natives : mapping of str to Gate
-        Native gates of a device: calls of these names stay what they are. Where the program defines such a gate,
-        the definition has to agree with the native matrix up to global phase.
+        Native gates of a device: calls of these names stay what they are. Where the program or its library
+        defines such a gate, it has to agree with the native matrix up to global phase.
 
     Returns
     -------
@@ -101,9 +89,7 @@ def read(text: str, *, where: str = "", natives: Mapping[str, Gate] = MappingPro
     return _Reader(Source(text, where), natives).read()
 
 
-def read_file(
-    path: str | os.PathLike[str], *, natives: Mapping[str, Gate] = MappingProxyType({})
-) -> Circuit:
+def read_file(path: str | os.PathLike[str], *, natives: Mapping[str, Gate] = MappingProxyType({})) -> Circuit:
     """Read an OpenQASM file, or standard input for ``-``; see `read`."""
     where = "<stdin>" if os.fspath(path) == "-" else os.fspath(path)
     return read(read_text(path), where=where, natives=natives)
@@ -114,34 +100,24 @@ class _Reader:
 
     def __init__(self, source: Source, natives: Mapping[str, Gate]) -> None:
         self.source = source
+        self.scope = Scope(source)
         self.natives = natives
         self.pieces = source.pieces()
         self.position = 0  # offset of the piece at hand
         self.started = False
-        self.version = 3
-        self.constants: dict[str, float] = {}
-        self.declared: dict[str, str] = {}
-        self.gates: dict[str, Gate | Definition] = dict(natives)
+        self.gates: dict[str, Gate | Definition] = {**{name: GATES[name] for name in BUILT_IN[3]}, **natives}
         self.refused: dict[str, str] = {}  # gates that may not be called, and why
-        self.qubit_registers: dict[str, range] = {}
-        self.bit_registers: dict[str, range] = {}
-        self.scalars: set[str] = set()
-        self.n_qubits = self.n_bits = self.n_physical = 0
-        self.total = 0
-        # What is remembered of texts.
         self.statements: dict[str, int] = {}
-        self.lists: dict[str, tuple[int, ...]] = {}
-        self.numbers: dict[str, float] = {}
-        self.kinds: dict[str, tuple[int, int, int]] = {}
+        self.kinds: dict[str, tuple[int, int, int]] = {}  # of gates called before: number, qubits, parameters
         # Operations of the distinct statements: statement k makes operations first[k] to first[k + 1].
+        self.first: list[int] = [0]
+        self.phases: dict[int, float] = {}
         self.table: dict[Gate, int] = {}
         self.op: list[int] = []
         self.width: list[int] = []
         self.qubits: list[int] = []
         self.parameters: list[float] = []
         self.link: dict[int, int] = {}
-        self.first: list[int] = [0]
-        self.phases: dict[int, float] = {}
         self.handlers: dict[str, Callable[[str, int], None]] = {
             "OPENQASM": self.version_line,
             "include": self.include,
@@ -151,13 +127,11 @@ class _Reader:
             "bit": self.register,
             "opaque": self.opaque,
             "const": self.constant,
-            "measure": self.measure_arrow,
+            "measure": self.measure,
             "barrier": self.barrier,
             "reset": self.reset,
             "gphase": self.global_phase,
         }
-        for name in BUILT_IN[3]:
-            self.gates.setdefault(name, GATES[name])
 
     # ---------------------------------------------------------------- the program as a whole
 
@@ -173,60 +147,64 @@ class _Reader:
                     number = self.any_statement(piece)
             order.append(number)
             self.position += len(piece) + 1
-        text = self.source.text
-        end = len(text.rstrip())
-        if text[end - 1] not in ";}":
-            raise self.source.error("a ';' is missing", end - 1, required="';' behind the last statement")
-        self.n_qubits = self.n_qubits or self.n_physical
-        if not self.n_qubits:
-            raise self.source.error(
-                "the program has no qubits", 0, required="a declaration of qubits", hint="such as qubit[2] q;"
-            )
+        end = len(self.source.text.rstrip()) - 1
+        if self.source.text[end] not in ";}":
+            raise self.source.error("a ';' is missing", end, required="';' behind the last statement")
+        if not self.scope.n_qubits and not self.scope.n_physical:
+            hint = "such as qubit[2] q; or qreg q[2];"
+            raise self.source.error("no qubits are declared", 0, required="a declaration of qubits", hint=hint)
         return self.circuit(np.array(order, dtype=np.int64))
 
     def circuit(self, order: NDArray[np.int64]) -> Circuit:
+        """Return the columns for the distinct statements in the order in which they occur."""
         first = np.array(self.first, dtype=np.int64)
-        rows = _ranges(first[order], np.diff(first)[order])
-        if len(rows) > MAX_OPERATIONS:
-            raise self.too_large(len(rows), 0)
+        lengths = np.diff(first)[order]
+        self.check_total(int(lengths.sum()), 0)
+        rows, _ = _spans(first[order], lengths)
         op = np.array(self.op, dtype=np.int64)
         width = np.array(self.width, dtype=np.int64)
-        n_parameters = np.array([kind.n_parameters for kind in self.table] or [0])[op]
-        if int(width[rows].sum()) > MAX_OPERANDS:
-            raise self.source.error(
-                "the program names too many qubits", 0, required=f"at most {MAX_OPERANDS} in all its operations"
-            )
-        # The kinds in order of first use.
-        used, places = np.unique(op[rows], return_index=True)
-        used = used[np.argsort(places)]
-        number = np.zeros(len(self.table), dtype=np.int16)
-        number[used] = np.arange(len(used))
-        kinds = tuple(self.table)
+        n_parameters = np.array([kind.n_parameters for kind in self.table], dtype=np.int64)[op]
+        if width[rows].sum() > MAX_OPERANDS:
+            raise self.source.error("the operations name too many qubits", 0, required=f"at most {MAX_OPERANDS} in all")
         qubits, offsets = _gather(np.array(self.qubits, dtype=np.int32), width, rows)
         parameters, parameter_offsets = _gather(np.array(self.parameters, dtype=np.float64), n_parameters, rows)
         link = np.full(len(op), -1, dtype=np.int32)
-        link[list(self.link.keys())] = list(self.link.values())
+        link[list(self.link)] = list(self.link.values())
         phase = np.zeros(len(first))
-        phase[list(self.phases.keys())] = list(self.phases.values())
+        phase[list(self.phases)] = list(self.phases.values())
+        # Number the kinds in the order in which they first occur, as a Builder does.
+        used, places = np.unique(op[rows], return_index=True)
+        used = used[np.argsort(places)]
+        number = np.zeros(len(self.table) + 1, dtype=np.int16)
+        number[used] = np.arange(len(used))
+        kinds = tuple(self.table)
+        scope = self.scope
         return Circuit(
-            n_qubits=self.n_qubits,
-            n_bits=self.n_bits,
+            n_qubits=scope.n_qubits or scope.n_physical,
+            n_bits=scope.n_bits,
             table=tuple(kinds[k] for k in used.tolist()),
-            op=number[op[rows]] if len(rows) else np.zeros(0, np.int16),
+            op=number[op[rows]],
             qubits=qubits,
             offsets=offsets,
             parameters=parameters,
             parameter_offsets=parameter_offsets,
             link=link[rows],
             phase=float(phase[order].sum()),
-            qubit_registers=tuple((name, len(span)) for name, span in self.qubit_registers.items()),
-            bit_registers=tuple((name, len(span)) for name, span in self.bit_registers.items()),
+            qubit_registers=tuple((name, len(span)) for name, span in scope.qubit_registers.items()),
+            bit_registers=tuple((name, len(span)) for name, span in scope.bit_registers.items()),
         )
+
+    def check_total(self, operations: int, offset: int) -> None:
+        """Refuse a program that is too long."""
+        if operations > MAX_OPERATIONS:
+            raise self.source.error(
+                "too many operations", offset, required=f"at most {MAX_OPERATIONS}", found=str(operations)
+            )
 
     # ---------------------------------------------------------------- one statement
 
     def flat_call(self, piece: str) -> int:
-        """Read the call of a gate already seen, on single qubits; return its number, or -1 if it is anything else."""
+        """Read the call of a gate seen before on single qubits; return its number, or -1 for anything else."""
         match = _FLAT.fullmatch(piece)
         if match is None:
             return -1
@@ -235,24 +213,18 @@ class _Reader:
         if kind is None:
             return -1
         op, n_qubits, n_parameters = kind
-        qubits = self.lists.get(operands)
-        if qubits is None:
-            found, single = self.operand_list(operands, self.position + match.start(3))
-            if not single:
-                return -1
-            qubits = found[0]
-        if len(qubits) != n_qubits:
+        qubits = self.scope.lists.get(operands) or self.scope.qubits(operands, self.position + match.start(3))
+        if qubits is None or len(qubits) != n_qubits:
             return -1
         if n_parameters == 1 and arguments:
-            value = self.numbers.get(arguments)
-            if value is None:
-                value = self.number(arguments, self.position + match.start(2))
-            self.parameters.append(value)
+            self.parameters.append(self.scope.number(arguments, self.position + match.start(2)))
         elif n_parameters:
-            texts = (arguments or "").split(",")
-            if len(texts) != n_parameters:
+            values = [
+                self.scope.number(part, begin) for part, begin in split(arguments, self.position + match.start(2))
+            ]
+            if len(values) != n_parameters:
                 return -1
-            self.parameters += self.number_list(texts, self.position + match.start(2))
+            self.parameters += values
         elif arguments:
             return -1
         self.op.append(op)
@@ -261,21 +233,20 @@ class _Reader:
         return self.finish(piece)
 
     def any_statement(self, piece: str) -> int:
-        """Read any statement; return its number."""
-        before = len(self.op)
+        """Read any statement, and the definitions in front of it; return its number."""
+        length = len(piece)
         while _BLOCK.match(piece):
             piece = self.definition(piece)
         statement = piece.strip()
-        keep = False
+        remember = False
         if statement:
-            offset = self.position + len(piece) - len(piece.lstrip())
-            keep = self.statement(statement, offset)
+            remember = self.statement(statement, self.position + len(piece) - len(piece.lstrip()))
             self.started = True
-        self.total += len(self.op) - before
-        return self.finish(piece if keep else "")
+        self.position += len(piece) - length  # the caller adds the length of the piece that it knows
+        return self.finish(piece if remember else "")
 
     def finish(self, piece: str) -> int:
-        """Close the distinct statement at hand; remember its text unless that is empty."""
+        """Close the distinct statement at hand, and remember its text unless that is empty."""
         number = len(self.first) - 1
         self.first.append(len(self.op))
         if piece and number < _REMEMBERED:
@@ -283,275 +254,284 @@ class _Reader:
         return number
 
     def statement(self, text: str, offset: int) -> bool:
-        """Read a statement that is not a definition; return whether its text may be remembered."""
+        """Read a statement that is not a definition; return whether its text means the same next time."""
         match = _WORD.match(text)
         if match is None:
-            what = {"@": "annotations", "#": "pragmas", "$": "this statement", "{": "a block"}.get(text[0])
+            what = {"@": "an annotation", "#": "a pragma", "{": "a block", "$": "assigning to a qubit"}.get(text[0])
             if what:
-                raise self.unsupported(what, offset)
+                raise self.scope.unsupported(what, offset)
             raise self.source.error("this is not a statement", offset, found=f"'{shorten(text, 30)}'")
         word = match[0]
         if word in self.handlers:
             self.handlers[word](text, offset)
             return word in ("measure", "reset", "gphase")
-        if word in _UNSUPPORTED and word not in self.gates:
-            raise self.unsupported(f"'{word}'", offset)
-        if word in self.bit_registers and "=" in text:
+        if word in UNSUPPORTED:
+            raise self.scope.unsupported(f"'{word}'", offset)
+        if word in self.scope.bit_registers and "=" in text:
             target, _, value = text.partition("=")
-            self.assignment(target, value, offset, offset + len(target) + 1)
+            self.assign(target, offset, value, offset + len(target) + 1)
         else:
             self.call(text, offset)
         return True
 
-    def unsupported(self, what: str, offset: int) -> UnsupportedError:
-        return self.source.locate(
-            UnsupportedError(f"{what} is not yet supported", required="a straight-line program of gates"), offset
-        )
+    def emit(self, gate: Gate, qubits: Sequence[int], parameters: Sequence[float] = ()) -> None:
+        """Append one operation."""
+        self.op.append(self.table.setdefault(gate, len(self.table)))
+        self.width.append(len(qubits))
+        self.qubits += qubits
+        self.parameters += parameters
 
-    def too_large(self, found: int, offset: int) -> QasmError:
-        return self.source.error(
-            "the program has too many operations", offset, required=f"at most {MAX_OPERATIONS}", found=str(found)
-        )
+    def call(self, text: str, offset: int) -> None:
+        """Read the call of a gate."""
+        match = _CALL.fullmatch(text)
+        assert match is not None  # it begins with a word, and anything may follow
+        name, arguments, operands = match.groups()
+        target = self.target(name, offset)
+        if "(" in operands:
+            raise self.source.error("a '(' is not closed", offset + match.start(3), required="a matching ')'")
+        begin = offset + match.start(2)
+        values = [self.scope.number(part, at) for part, at in split(arguments, begin)]
+        self.scope.check_count(name, "parameters", target.n_parameters, len(values), offset)
+        at = offset + match.start(3)
+        rows = self.scope.broadcast(operands, at) if operands else []
+        self.scope.check_count(name, "qubits", target.n_qubits, len(rows[0]) if rows else 0, offset)
+        if isinstance(target, Gate):
+            self.check_total(len(self.op) + len(rows), offset)
+            for row in rows:
+                self.emit(target, row, values)
+            self.kinds[name] = (self.table[target], target.n_qubits, target.n_parameters)
+            return
+        self.check_total(len(self.op) + len(rows) * target.size, offset)
+        try:
+            phase = sum(expand(target, values, row, self.emit) for row in rows)
+        except ExpressionError as problem:
+            raise self.scope.at_fault(problem, offset) from None
+        self.add_phase(phase)
 
-    def only_in(self, version: int, what: str, offset: int) -> None:
-        if self.version != version:
-            other = {2: "OPENQASM 2.0;", 3: "OPENQASM 3.0;"}[version]
+    def add_phase(self, phase: float) -> None:
+        """Add a global phase to the distinct statement at hand."""
+        if phase:
+            self.phases[len(self.first) - 1] = phase
+
+    def target(self, name: str, offset: int) -> Gate | Definition:
+        """Return the gate called `name`."""
+        if name in self.refused:
+            raise self.scope.unsupported(self.refused[name], offset)
+        gate = self.gates.get(name)
+        if gate is not None:
+            return gate
+        scope = self.scope
+        library = LIBRARY_FILES[scope.version]
+        if name in scope.declared:
+            raise self.source.error(f"'{shorten(name)}' is not a gate", offset, found=f"it is {scope.declared[name]}")
+        if name in LIBRARIES[scope.version]:
+            hint = f'put include "{library}"; in front'
+        elif name in GATES:
+            hint = f"{library} does not have it: define it with 'gate {name}'"
+        else:
+            hint = nearest_name(name, self.gates)
+        raise self.source.error(f"unknown gate '{shorten(name)}'", offset, hint=hint)
+
+    # ---------------------------------------------------------------- other operations
+
+    def global_phase(self, text: str, offset: int) -> None:
+        """Read ``gphase(angle)``."""
+        self.scope.only_in(3, "'gphase'", offset)
+        match = _CALL.fullmatch(text)
+        values = split(match[2], offset + match.start(2)) if match else []
+        if match is None or match[3] or len(values) != 1:
+            raise self.source.error("this 'gphase' cannot be read", offset, required="gphase(angle);")
+        self.add_phase(self.scope.number(*values[0]))
+
+    def reset(self, text: str, offset: int) -> None:
+        """Read ``reset``."""
+        at = offset + len("reset")
+        for part, begin in split(text[len("reset") :], at) or [("", at)]:
+            span, _ = self.scope.operand(part, begin, self.scope.qubit_registers)
+            for qubit in span:
+                self.emit(RESET, (qubit,))
+
+    def barrier(self, text: str, offset: int) -> None:
+        """Read ``barrier``, of all qubits where none is named."""
+        at = offset + len("barrier")
+        operands = text[len("barrier") :]
+        scope = self.scope
+        parts = [scope.operand(part, begin, scope.qubit_registers)[0] for part, begin in split(operands, at)]
+        if not parts:
+            scope.only_in(3, "a barrier without qubits", offset)
+            parts = [range(scope.n_qubits or scope.n_physical)]
+        qubits = [qubit for span in parts for qubit in span]
+        scope.check_distinct(qubits, operands, at)
+        if len(self.qubits) + len(qubits) > MAX_OPERANDS:
+            raise self.source.error("the operations name too many qubits", offset, required=f"at most {MAX_OPERANDS}")
+        if qubits:
+            self.emit(BARRIER, qubits)
+
+    def measure(self, text: str, offset: int) -> None:
+        """Read ``measure qubits -> bits``."""
+        match = _ARROW.fullmatch(text)
+        if match is None:
+            if self.scope.version == 2:
+                raise self.source.error("a measurement has no bit", offset, required="measure qubits -> bits;")
+            raise self.scope.unsupported("a measurement into no bit", offset)
+        self.measurement(match[1], offset + match.start(1), match[2], offset + match.start(2))
+
+    def assign(self, target: str, target_offset: int, value: str, offset: int) -> None:
+        """Read ``bits = measure qubits``."""
+        at = offset + len(value) - len(value.lstrip())
+        match = _MEASURE.fullmatch(value.strip())
+        if match is None:
+            raise self.scope.unsupported("assigning anything but a measurement", at)
+        self.scope.only_in(3, "'='", target_offset)
+        self.measurement(match[1], at + match.start(1), target, target_offset)
+
+    def measurement(self, qubits: str, qubits_offset: int, bits: str, bits_offset: int) -> None:
+        """Append the measurement of a qubit into a bit, or of a register into one of the same size."""
+        scope = self.scope
+        sources, single = scope.operand(qubits, qubits_offset, scope.qubit_registers)
+        targets, single_bit = scope.operand(bits, bits_offset, scope.bit_registers)
+        if len(sources) != len(targets) or (single != single_bit and len(sources) > 1):
             raise self.source.error(
-                f"{what} belongs to OpenQASM {version}",
-                offset,
-                found=f"a program in OpenQASM {self.version}",
-                hint=f"begin the program with {other}",
+                "a measurement of unequal sizes",
+                qubits_offset,
+                required=f"as many bits as qubits ({len(sources)})",
+                found=str(len(targets)),
             )
+        for qubit, bit in zip(sources, targets, strict=True):
+            self.link[len(self.op)] = bit
+            self.emit(MEASURE, (qubit,))
 
     # ---------------------------------------------------------------- declarations
 
     def version_line(self, text: str, offset: int) -> None:
+        """Read ``OPENQASM version``."""
         version = text[len("OPENQASM") :].strip()
         if self.started:
             raise self.source.error("the version line is not the first statement", offset)
         if version not in ("2", "2.0", "3", "3.0", "3.1"):
-            raise self.source.error(
-                "unknown version of OpenQASM", offset, required="2.0, 3.0 or 3.1", found=f"'{shorten(version, 30)}'"
-            )
-        self.version = int(version[0])
-        for name in BUILT_IN[self.version]:
+            found = f"'{shorten(version, 30)}'"
+            raise self.source.error("unknown version of OpenQASM", offset, required="2.0, 3.0 or 3.1", found=found)
+        self.scope.version = int(version[0])
+        for name in BUILT_IN[self.scope.version]:
             self.gates.setdefault(name, GATES[name])
 
     def include(self, text: str, offset: int) -> None:
+        """Read ``include`` of the version's standard library."""
         match = _INCLUDE.fullmatch(text)
         file = (match[1] or match[2] or "") if match else ""
-        wanted = LIBRARY_FILES[self.version]
-        if file != wanted:
-            required = ' or "stdgates.inc" (version 3)'
-            other = [v for v, name in LIBRARY_FILES.items() if name == file]
-            hint = f'"{file}" belongs to version {other[0]}' if other else "nothing else is ever opened"
+        version = self.scope.version
+        if file != LIBRARY_FILES[version]:
+            belongs = [
+                f'"{name}" belongs to OpenQASM {number}' for number, name in LIBRARY_FILES.items() if name == file
+            ]
             raise self.source.error(
                 "this file cannot be included",
                 offset,
-                required='"qelib1.inc" (version 2)' + required,
-                found=shorten(text[len("include") :].strip(), 40) + f" in a version {self.version} program",
-                hint=hint,
+                required='"qelib1.inc" in OpenQASM 2, "stdgates.inc" in OpenQASM 3',
+                found=shorten(text[len("include") :].strip(), 40),
+                hint=f"{belongs[0]}, this is OpenQASM {version}" if belongs else "no file is ever opened",
             )
-        for name in sorted(LIBRARIES[self.version]):
-            self.declare(name, f"a gate of {wanted}", offset)
-            native = self.natives.get(name)
-            if native is None:
-                self.gates[name] = GATES[name]
-            elif not _same_gate(native, GATES[name]):
-                self.refused[name] = f"the native gate '{name}' differs from the one in {wanted}"
-
-    def declare(self, name: str, what: str, offset: int) -> None:
-        if name in RESERVED:
-            raise self.source.error(f"'{shorten(name)}' is a reserved word", offset, required="another name")
-        if name in self.declared:
-            raise self.source.error(
-                f"'{shorten(name)}' is already defined", offset, found=f"it is {self.declared[name]}"
-            )
-        self.declared[name] = what
+        for name in sorted(LIBRARIES[version]):
+            self.scope.declare(name, f"a gate of {file}", offset)
+            native = self.natives.get(name, GATES[name])
+            self.gates[name] = native
+            if not same_gate(native, GATES[name]):
+                self.refused[name] = f"a native gate '{name}' that differs from the one of {file}"
 
     def register(self, text: str, offset: int) -> None:
-        word = text[:5].split("[")[0].split()[0]
+        """Read a declaration of qubits or bits."""
+        word = _WORD.match(text)[0]  # type: ignore[index]
         old = word in ("qreg", "creg")
         match = (_REGISTER if old else _DECLARATION).fullmatch(text)
         if match is None:
-            example = f"{word} name[4]" if old else f"{word}[4] name"
-            raise self.source.error(f"this '{word}' cannot be read", offset, required=f"{example};", found=shorten(text))
+            required = f"{word} name[size];" if old else f"{word}[size] name;"
+            raise self.source.error(f"this '{word}' cannot be read", offset, required=required, found=shorten(text))
         if not old:
-            self.only_in(3, f"'{word}'", offset)
-        name_group, size_group = (2, 3) if old else (3, 2)
-        name, size_text = match[name_group], match[size_group]
-        at = offset + match.start(name_group)
-        if size_text is None:
-            if old and self.version == 2:
-                raise self.source.error(f"the register '{shorten(name)}' has no size", at, required=f"{name}[size]")
-            size = 1
-            self.scalars.add(name)
-        else:
-            size = self.integer(size_text, offset + match.start(size_group), 1, MAX_QUBITS)
-        quantum = word in ("qreg", "qubit")
-        self.declare(name, "a register", at)
-        start = self.n_qubits if quantum else self.n_bits
-        if start + size > MAX_QUBITS:
-            raise self.source.error("too many qubits or bits", at, required=f"at most {MAX_QUBITS}")
-        if quantum:
-            if self.n_physical:
-                raise self.unsupported("declaring qubits beside physical qubits", at)
-            self.qubit_registers[name] = range(start, start + size)
-            self.n_qubits += size
-        else:
-            self.bit_registers[name] = range(start, start + size)
-            self.n_bits += size
-        if match[4]:
-            if quantum:
+            self.scope.only_in(3, f"'{word}'", offset)
+        name, size_text = (match[2], match[3]) if old else (match[3], match[2])
+        at = offset + match.start(2 if old else 3)
+        size = None
+        if size_text is not None:
+            size = self.scope.integer(size_text, offset + match.start(3 if old else 2), 1, MAX_QUBITS)
+        elif old and self.scope.version == 2:
+            raise self.source.error(f"the register '{shorten(name)}' has no size", at, required=f"{word} name[size];")
+        self.scope.add_register(name, size, at, quantum=word in ("qreg", "qubit"))
+        if not old and match[4] is not None:
+            if word == "qubit":
                 raise self.source.error("a qubit has no initial value", offset + match.start(4))
-            self.assignment(name, match[4], at, offset + match.start(4))
+            self.assign(name, at, match[4], offset + match.start(4))
 
     def constant(self, text: str, offset: int) -> None:
+        """Read ``const type name = expression``."""
         match = _CONST.fullmatch(text)
         if match is None:
-            raise self.unsupported("this 'const'", offset)
-        self.only_in(3, "'const'", offset)
+            raise self.scope.unsupported("this 'const'", offset)
+        self.scope.only_in(3, "'const'", offset)
         kind, name, value = match.groups()
-        self.declare(name, "a constant", offset + match.start(2))
         at = offset + match.start(3)
         if kind in ("int", "uint"):
-            self.constants[name] = self.integer(value, at, -(2**53) if kind == "int" else 0, 2**53)
+            number: float = self.scope.integer(value, at, -(2**53) if kind == "int" else 0, 2**53)
         else:
-            self.constants[name] = self.number(value, at)
+            number = self.scope.number(value, at)
+        self.scope.declare(name, "a constant", offset + match.start(2))
+        self.scope.constants[name] = number
 
     def opaque(self, text: str, offset: int) -> None:
-        match = _GATE.fullmatch(text)
+        """Read ``opaque``: a name that may not be called, unless it is a native gate."""
+        match = _OPAQUE.fullmatch(text)
         if match is None:
             raise self.source.error("this 'opaque' cannot be read", offset, required="opaque name(parameters) qubits;")
-        name = match[1]
-        self.only_in(2, "'opaque'", offset)
-        self.declare(name, "an opaque gate", offset + match.start(1))
-        if name not in self.natives:
-            self.refused[name] = f"the gate '{shorten(name)}' is opaque: it has no matrix"
+        self.scope.only_in(2, "'opaque'", offset)
+        self.scope.declare(match[1], "an opaque gate", offset + match.start(1))
+        if match[1] not in self.natives:
+            self.refused[match[1]] = f"the opaque gate '{shorten(match[1])}'"
 
     # ---------------------------------------------------------------- gate definitions
 
     def definition(self, piece: str) -> str:
-        """Read the gate definition at the beginning of a piece; return the rest of the piece where it ends."""
+        """Read the gate definition that a piece begins with; return what follows it up to a semicolon."""
         start = self.position + len(piece) - len(piece.lstrip())
         self.started = True
         header, brace, _ = piece.partition("{")
         if not brace:
             raise self.source.error("a gate definition has no body", start, required="gate name(parameters) qubits { }")
         body_start = self.position + len(header) + 1
-        while "}" not in piece:
-            self.position += len(piece) + 1
+        inside = piece[len(header) + 1 :]
+        self.position = body_start
+        while "}" not in inside:
+            self.position += len(inside) + 1
             following = next(self.pieces, None)
             if following is None:
                 raise self.source.error("a gate definition is not closed", start, required="'}'", found="the end")
-            piece = following
-        inside, _, rest = piece.partition("}")
-        end = self.position + len(inside)
+            inside = following
+        last, _, rest = inside.partition("}")
+        end = self.position + len(last)
         self.position = end + 1
-        if end < body_start:
-            raise self.source.error("a gate definition has no body", start, required="'{' before '}'")
         body = self.source.text[body_start:end]
-        match = _GATE.fullmatch(header.strip())
-        if match is None:
+        made = read_definition(self.scope, header.strip(), start, body, body_start, self.target)
+        name = made.name
+        known = self.natives.get(name) or GATES.get(name)
+        same = known is not None and equals(made, known)
+        if name in self.natives and not same:
             raise self.source.error(
-                "this gate definition cannot be read",
+                f"the definition of '{shorten(name)}' differs from the device's native gate",
                 start,
-                required="gate name(parameters) qubits { }",
-                found=shorten(header),
+                required="the same matrix up to global phase",
+                hint="rename the gate in the program",
             )
-        name = match[1]
-        parameters = self.formal(match[2] or "", start + match.start(2), "parameter")
-        wires = self.formal(match[3], start + match.start(3), "qubit")
-        if not wires:
-            raise self.source.error(f"the gate '{shorten(name)}' has no qubits", start)
-        self.declare(name, "a gate", start + match.start(1))
-        steps = self.body(name, body, body_start, parameters, {wire: k for k, wire in enumerate(wires)})
-        made = Definition.make(name, parameters, len(wires), steps)
-        if made.depth > MAX_DEPTH:
-            raise self.source.error(
-                f"the gate '{shorten(name)}' is nested too deeply", start, required=f"{MAX_DEPTH} levels at most"
-            )
-        native = self.natives.get(name)
-        if native is not None:
-            if not equals(made, native):
-                raise self.source.error(
-                    f"the definition of '{shorten(name)}' differs from the device's native gate",
-                    start,
-                    required=f"the native matrix up to global phase ({native.n_parameters} parameters, "
-                    f"{native.n_qubits} qubits)",
-                )
-        elif name in DEFINITIONS[self.version] and equals(made, GATES[name]) or (
-            name in LIBRARIES[self.version] and equals(made, GATES[name])
-        ):
-            self.gates[name] = GATES[name]
-        else:
-            self.gates[name] = made
+        self.gates[name] = known if known is not None and same else made
         return rest
 
-    def formal(self, text: str, offset: int, what: str) -> tuple[str, ...]:
-        """Read the names of a definition's parameters or qubits."""
-        if not text.strip():
-            return ()
-        names = [name.strip() for name in text.split(",")]
-        for name in names:
-            if not _WORD.fullmatch(name) or name in RESERVED:
-                raise self.source.error(f"'{shorten(name)}' cannot name a {what}", offset, required="names")
-        if len(set(names)) < len(names):
-            raise self.source.error(f"a {what} is named twice", offset, found=shorten(text))
-        return tuple(names)
 
-    def body(
-        self, own: str, text: str, offset: int, parameters: tuple[str, ...], wires: dict[str, int]
-    ) -> list[Step]:
-        """Read the statements of a definition."""
-        steps = []
-        names = {**{name: 0.0 for name in self.constants if name not in parameters}, **dict.fromkeys(parameters, 0.0)}
-        pieces = text.split(";")
-        for number, piece in enumerate(pieces):
-            statement = piece.strip()
-            at = offset + len(piece) - len(piece.lstrip())
-            offset += len(piece) + 1
-            if not statement:
-                continue
-            if number == len(pieces) - 1:
-                raise self.source.error("a ';' is missing", at, required="';' behind each statement of a definition")
-            match = _CALL.fullmatch(statement)
-            if match is None or "{" in statement:
-                raise self.source.error("this is not a statement", at, found=f"'{shorten(statement, 30)}'")
-            word = match[1]
-            if word == own:
-                raise self.source.error(f"the gate '{shorten(own)}' is defined by itself", at)
-            if (word in _UNSUPPORTED and word not in self.gates) or "@" in statement:
-                raise self.unsupported(f"'{word}'", at)
-            target = None if word == "gphase" else BARRIER if word == "barrier" else self.target(word, at)
-            expressions = []
-            for part, begin in _split(match[2], at + match.start(2)):
-                try:
-                    expressions.append(parse(part, names=names, power=self.power, imaginary=False))
-                except ExpressionError as problem:
-                    raise self.expression_error(problem, begin) from None
-            self.check_count(word, "parameters", target.n_parameters if target else 1, len(expressions), at)
-            used = []
-            for part, begin in _split(match[3].strip() or None, at + match.start(3)):
-                wire = wires.get(part.strip())
-                if wire is None:
-                    raise self.source.error(
-                        f"unknown qubit '{shorten(part.strip())}' in a definition",
-                        begin,
-                        hint=nearest_name(part.strip(), wires),
-                    )
-                used.append(wire)
-            if target is BARRIER:
-                used = used or list(wires.values())
-            else:
-                self.check_count(word, "qubits", target.n_qubits if target else 0, len(used), at)
-            self.check_distinct(used, at + match.start(3))
-            bound = [e for e in expressions if any(name in parameters for name in e.names)]
-            values = None
-            if not bound:
-                try:
-                    values = tuple(expression.real(self.constants) for expression in expressions)
-                except ExpressionError as problem:
-                    raise self.expression_error(problem, at + match.start(2)) from None
-            steps.append(Step(target, tuple(used), tuple(expressions), values))
-        return steps
+def _spans(starts: NDArray[np.int64], lengths: NDArray[np.int64]) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Return the indices of spans one after another, and the offsets of the spans among them."""
+    offsets = np.zeros(len(lengths) + 1, dtype=np.int64)
+    np.cumsum(lengths, out=offsets[1:])
+    return np.arange(offsets[-1]) + np.repeat(starts - offsets[:-1], lengths), offsets
+
+
+def _gather(flat: NDArray[Any], lengths: NDArray[np.int64], rows: NDArray[np.int64]) -> tuple[NDArray[Any], Any]:
+    """Select rows of a ragged array: the new flat array and its offsets."""
+    starts = np.cumsum(lengths) - lengths
+    index, offsets = _spans(starts[rows], lengths[rows])
+    return flat[index], offsets

@@ -78,7 +78,9 @@ class Source:
             text = text.replace("\r\n", "\n").replace("\r", "\n")
         self.text = text
         if "\0" in text:
-            raise self.error("this is not a text", text.index("\0"), required="an OpenQASM program", found="a zero byte")
+            raise self.error(
+                "this is not a text", text.index("\0"), required="an OpenQASM program", found="a zero byte"
+            )
         if "//" in text or "/*" in text:
             self.text = self._without_comments()
         if not self.text or self.text.isspace():
