@@ -21,7 +21,7 @@ from gatewright.devices import Device, GateSet, grid, line, read_any, read_devic
 from gatewright.devices.reading import MAX_BYTES
 from gatewright.errors import DeviceError, GateSetError, GatewrightError
 
-EXAMPLES = Path(__file__).parent.parent / "examples" / "devices"
+EXAMPLES = Path(__file__).parent.parent / "examples"
 
 GOOD: dict[str, Any] = {
     "name": "five",

@@ -187,7 +187,8 @@ def _health(device: Device) -> dict[str, Any]:
     }
     for name, values in device.gate_errors.items():
         if not device.gate_set.gates[name].virtual:
-            columns[f"{name} error"] = values[active] if len(values) == len(active) else values
+            of_qubits = device.gate_set.gates[name].gate.n_qubits == 1
+            columns[f"{name} error"] = values[active] if of_qubits else values
     return {
         name: {
             "known": int(np.count_nonzero(~np.isnan(values))),

@@ -107,6 +107,8 @@ class _Body:
         word = match[1]
         if word in UNSUPPORTED:
             raise scope.unsupported(f"'{word}'", offset)
+        if word in RESERVED and word not in ("barrier", "gphase", "U"):
+            raise scope.source.error(f"'{word}' cannot stand in a definition", offset, required="gates and barriers")
         if word == self.own:
             raise scope.source.error(f"the gate '{shorten(word)}' is defined by itself", offset)
         target: Gate | Definition | None = None

@@ -106,7 +106,8 @@ class _Reader:
         self.position = 0  # offset of the piece at hand
         self.started = False
         self.gates: dict[str, Gate | Definition] = {**{name: GATES[name] for name in BUILT_IN[3]}, **natives}
-        self.refused: dict[str, str] = {}  # gates that may not be called, and why
+        self.opaque: set[str] = set()
+        self.clashes: set[str] = set()  # native gates that differ from the library's
         self.statements: dict[str, int] = {}
         self.kinds: dict[str, tuple[int, int, int]] = {}  # of gates called before: number, qubits, parameters
         # Operations of the distinct statements: statement k makes operations first[k] to first[k + 1].
@@ -125,7 +126,7 @@ class _Reader:
             "creg": self.register,
             "qubit": self.register,
             "bit": self.register,
-            "opaque": self.opaque,
+            "opaque": self.opaque_gate,
             "const": self.constant,
             "measure": self.measure,
             "barrier": self.barrier,
@@ -151,7 +152,7 @@ class _Reader:
         if self.source.text[end] not in ";}":
             raise self.source.error("a ';' is missing", end, required="';' behind the last statement")
         if not self.scope.n_qubits and not self.scope.n_physical:
-            hint = "such as qubit[2] q; or qreg q[2];"
+            hint = "such as 'qubit[2] q;' or 'qreg q[2];'"
             raise self.source.error("no qubits are declared", 0, required="a declaration of qubits", hint=hint)
         return self.circuit(np.array(order, dtype=np.int64))
 
@@ -238,18 +239,18 @@ class _Reader:
         while _BLOCK.match(piece):
             piece = self.definition(piece)
         statement = piece.strip()
-        remember = False
+        remember = len(piece) == length
         if statement:
-            remember = self.statement(statement, self.position + len(piece) - len(piece.lstrip()))
+            remember &= self.statement(statement, self.position + len(piece) - len(piece.lstrip()))
             self.started = True
         self.position += len(piece) - length  # the caller adds the length of the piece that it knows
-        return self.finish(piece if remember else "")
+        return self.finish(piece if remember else None)
 
-    def finish(self, piece: str) -> int:
-        """Close the distinct statement at hand, and remember its text unless that is empty."""
+    def finish(self, piece: str | None) -> int:
+        """Close the distinct statement at hand, and remember its text if it is given."""
         number = len(self.first) - 1
         self.first.append(len(self.op))
-        if piece and number < _REMEMBERED:
+        if piece is not None and number < _REMEMBERED:
             self.statements[piece] = number
         return number
 
@@ -289,12 +290,11 @@ class _Reader:
         target = self.target(name, offset)
         if "(" in operands:
             raise self.source.error("a '(' is not closed", offset + match.start(3), required="a matching ')'")
-        begin = offset + match.start(2)
-        values = [self.scope.number(part, at) for part, at in split(arguments, begin)]
-        self.scope.check_count(name, "parameters", target.n_parameters, len(values), offset)
-        at = offset + match.start(3)
-        rows = self.scope.broadcast(operands, at) if operands else []
-        self.scope.check_count(name, "qubits", target.n_qubits, len(rows[0]) if rows else 0, offset)
+        given = arguments.count(",") + 1 if arguments and not arguments.isspace() else 0
+        self.scope.check_count(name, "parameters", target.n_parameters, given, offset)
+        self.scope.check_count(name, "qubits", target.n_qubits, operands.count(",") + 1 if operands else 0, offset)
+        values = [self.scope.number(part, at) for part, at in split(arguments, offset + match.start(2))]
+        rows = self.scope.broadcast(operands, offset + match.start(3))
         if isinstance(target, Gate):
             self.check_total(len(self.op) + len(rows), offset)
             for row in rows:
@@ -315,8 +315,11 @@ class _Reader:
 
     def target(self, name: str, offset: int) -> Gate | Definition:
         """Return the gate called `name`."""
-        if name in self.refused:
-            raise self.scope.unsupported(self.refused[name], offset)
+        if name in self.opaque:
+            raise self.scope.unsupported(f"calling the opaque gate '{shorten(name)}'", offset)
+        if name in self.clashes:
+            library = LIBRARY_FILES[self.scope.version]
+            raise self.source.error(f"the device's native gate '{name}' differs from the one of {library}", offset)
         gate = self.gates.get(name)
         if gate is not None:
             return gate
@@ -340,7 +343,7 @@ class _Reader:
         match = _CALL.fullmatch(text)
         values = split(match[2], offset + match.start(2)) if match else []
         if match is None or match[3] or len(values) != 1:
-            raise self.source.error("this 'gphase' cannot be read", offset, required="gphase(angle);")
+            raise self.source.error("this 'gphase' cannot be read", offset, required="gphase(angle)")
         self.add_phase(self.scope.number(*values[0]))
 
     def reset(self, text: str, offset: int) -> None:
@@ -372,7 +375,7 @@ class _Reader:
         match = _ARROW.fullmatch(text)
         if match is None:
             if self.scope.version == 2:
-                raise self.source.error("a measurement has no bit", offset, required="measure qubits -> bits;")
+                raise self.source.error("a measurement has no bit", offset, required="measure qubits -> bits")
             raise self.scope.unsupported("a measurement into no bit", offset)
         self.measurement(match[1], offset + match.start(1), match[2], offset + match.start(2))
 
@@ -414,6 +417,7 @@ class _Reader:
         self.scope.version = int(version[0])
         for name in BUILT_IN[self.scope.version]:
             self.gates.setdefault(name, GATES[name])
+            self.scope.declared.setdefault(name, "a gate of the language")
 
     def include(self, text: str, offset: int) -> None:
         """Read ``include`` of the version's standard library."""
@@ -436,7 +440,7 @@ class _Reader:
             native = self.natives.get(name, GATES[name])
             self.gates[name] = native
             if not same_gate(native, GATES[name]):
-                self.refused[name] = f"a native gate '{name}' that differs from the one of {file}"
+                self.clashes.add(name)
 
     def register(self, text: str, offset: int) -> None:
         """Read a declaration of qubits or bits."""
@@ -444,8 +448,11 @@ class _Reader:
         old = word in ("qreg", "creg")
         match = (_REGISTER if old else _DECLARATION).fullmatch(text)
         if match is None:
-            required = f"{word} name[size];" if old else f"{word}[size] name;"
-            raise self.source.error(f"this '{word}' cannot be read", offset, required=required, found=shorten(text))
+            required = f"{word} name[size]" if old else f"{word}[size] name"
+            hint = "is a ';' missing?" if "\n" in text else ""
+            raise self.source.error(
+                f"this '{word}' cannot be read", offset, required=required, found=shorten(text), hint=hint
+            )
         if not old:
             self.scope.only_in(3, f"'{word}'", offset)
         name, size_text = (match[2], match[3]) if old else (match[3], match[2])
@@ -454,7 +461,7 @@ class _Reader:
         if size_text is not None:
             size = self.scope.integer(size_text, offset + match.start(3 if old else 2), 1, MAX_QUBITS)
         elif old and self.scope.version == 2:
-            raise self.source.error(f"the register '{shorten(name)}' has no size", at, required=f"{word} name[size];")
+            raise self.source.error(f"the register '{shorten(name)}' has no size", at, required=f"{word} name[size]")
         self.scope.add_register(name, size, at, quantum=word in ("qreg", "qubit"))
         if not old and match[4] is not None:
             if word == "qubit":
@@ -476,15 +483,15 @@ class _Reader:
         self.scope.declare(name, "a constant", offset + match.start(2))
         self.scope.constants[name] = number
 
-    def opaque(self, text: str, offset: int) -> None:
+    def opaque_gate(self, text: str, offset: int) -> None:
         """Read ``opaque``: a name that may not be called, unless it is a native gate."""
         match = _OPAQUE.fullmatch(text)
         if match is None:
-            raise self.source.error("this 'opaque' cannot be read", offset, required="opaque name(parameters) qubits;")
+            raise self.source.error("this 'opaque' cannot be read", offset, required="opaque name(parameters) qubits")
         self.scope.only_in(2, "'opaque'", offset)
         self.scope.declare(match[1], "an opaque gate", offset + match.start(1))
         if match[1] not in self.natives:
-            self.refused[match[1]] = f"the opaque gate '{shorten(match[1])}'"
+            self.opaque.add(match[1])
 
     # ---------------------------------------------------------------- gate definitions
 

@@ -32,7 +32,7 @@ NAME = r"[^\W\d]\w*"
 _UNSIGNED = r"(?:[0-9]+\.?[0-9]*|\.[0-9]+)"
 _FLOAT = re.compile(rf"[-+]?{_UNSIGNED}(?:[eE][-+]?[0-9]+)?")
 _PI = re.compile(rf"([-+]?)(?:({_UNSIGNED})\s*\*\s*)?pi(?:\s*\*\s*({_UNSIGNED}))?(?:\s*/\s*({_UNSIGNED}))?")
-_OPERAND = re.compile(rf"(?:({NAME})\s*(?:\[(.*)\])?|\$([0-9]+))", re.DOTALL)
+_OPERAND = re.compile(rf"(?:({NAME})\s*(?:\[([^][]*)\])?|\$([0-9]+))")
 
 #: Texts of numbers and lists of operands that are remembered.
 _REMEMBERED = 500_000
@@ -68,6 +68,7 @@ class Scope:
         self.n_physical = 0
         #: Lists of distinct single qubits, by their text.
         self.lists: dict[str, tuple[int, ...]] = {}
+        self._singles: dict[str, int] = {}  # single qubits, by their text
         #: Values of parameters, by their text.
         self.numbers: dict[str, float] = {}
 
@@ -159,6 +160,14 @@ class Scope:
                 self.numbers[text] = value
         return value
 
+    def number_list(self, texts: Sequence[str], offset: int) -> list[float]:
+        """Return the values of parameters with one character between them."""
+        values = []
+        for text in texts:
+            values.append(self.number(text, offset))
+            offset += len(text) + 1
+        return values
+
     def _number(self, text: str, offset: int) -> float:
         bare = text.strip()
         if _FLOAT.fullmatch(bare):
@@ -198,10 +207,15 @@ class Scope:
 
     def qubits(self, text: str, offset: int) -> tuple[int, ...] | None:
         """Return a list of distinct single qubits, remembered by its text, or None if it names a whole register."""
-        parts = [self.operand(part, begin, self.qubit_registers) for part, begin in split(text, offset)]
-        if not all(single for _, single in parts):
-            return None
-        found = tuple([span[0] for span, _ in parts])
+        found = tuple(map(self._singles.get, text.split(",")))
+        if None in found:
+            parts = split(text, offset)
+            spans = [self.operand(part, begin, self.qubit_registers) for part, begin in parts]
+            if not all(single for _, single in spans):
+                return None
+            found = tuple([span[0] for span, _ in spans])
+            for part, qubit in zip(parts, found, strict=True):
+                self._singles[part[0]] = qubit
         if len(set(found)) < len(found):
             self.check_distinct(found, text, offset)
         if len(self.lists) < _REMEMBERED:
@@ -232,13 +246,12 @@ class Scope:
         what = "qubit" if quantum else "bit"
         match = _OPERAND.fullmatch(bare)
         if match is None:
-            missing = "\n" in bare and "is a ';' missing?"
             raise self.source.error(
                 f"a {what} is missing" if not bare else f"this does not name a {what}",
                 offset,
                 required="name or name[index]",
                 found=f"'{shorten(bare, 30)}'" if bare else "nothing",
-                hint=missing or "",
+                hint="is a ';' missing?" if "\n" in bare else "",
             )
         name, index, physical = match.groups()
         if physical is not None:

@@ -16,7 +16,9 @@ __all__ = ["MAX_BYTES", "Source", "read_text"]
 #: Largest text that is read, in bytes.
 MAX_BYTES = 2**28
 
-_SKIP = re.compile(r'"[^"\n]*"|//[^\n]*|/\*')
+# The last alternative meets only a comment that is not closed.
+_SKIP = re.compile(r'"[^"\n]*"|//[^\n]*|/\*(?s:.*?)\*/|/\*')
+_VISIBLE = re.compile(r"[^\n]")
 _CHUNK = 2**20
 
 Error = TypeVar("Error", bound=GatewrightError)
@@ -82,27 +84,17 @@ class Source:
                 "this is not a text", text.index("\0"), required="an OpenQASM program", found="a zero byte"
             )
         if "//" in text or "/*" in text:
-            self.text = self._without_comments()
+            self.text = _SKIP.sub(self._blank, text)
         if not self.text or self.text.isspace():
             raise QasmError("the program is empty", required="at least a declaration of qubits", where=where)
 
-    def _without_comments(self) -> str:
-        text, parts, start = self.text, [], 0
-        while match := _SKIP.search(text, start):
-            begin, end = match.span()
-            if text[begin] == '"':
-                parts.append(text[start:end])
-            else:
-                if text[begin + 1] == "*":
-                    closing = text.find("*/", end)
-                    if closing < 0:
-                        raise self.error("a comment is not closed", begin, required="'*/' behind it", found="the end")
-                    end = closing + 2
-                lines = text[begin:end].split("\n")
-                parts += [text[start:begin], "\n".join([" " * len(line) for line in lines])]
-            start = end
-        parts.append(text[start:])
-        return "".join(parts)
+    def _blank(self, match: re.Match[str]) -> str:
+        found = match[0]
+        if found[0] == '"':
+            return found
+        if found == "/*":
+            raise self.error("a comment is not closed", match.start(), required="'*/' behind it", found="the end")
+        return " " * len(found) if "\n" not in found else _VISIBLE.sub(" ", found)
 
     def pieces(self) -> Iterator[str]:
         """Yield what lies between semicolons, from the beginning to the end of the text."""
