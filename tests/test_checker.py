@@ -8,6 +8,7 @@ import sys
 from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pytest
@@ -109,7 +110,7 @@ OUTPUT_DAMAGE: dict[str, Callable[[Circuit], Circuit]] = {
     "a pulse moved to another qubit": lambda c: requbited(c, "sx", [(c.qubits_of(row(c, "sx"))[0] + 1) % 5]),
     "an entangler on an absent edge": lambda c: requbited(c, "cz", [0, 4]),
     "a measurement into the wrong bit": lambda c: relinked(c, (int(c.link[row(c, "measure")]) + 1) % 4),
-    "a measurement of the wrong qubit": lambda c: requbited(c, "measure", [4]),
+    "a measurement of the wrong qubit": lambda c: requbited(c, "measure", [(c.qubits_of(row(c, "measure"))[0] + 1) % 5]),
     "a measurement dropped": lambda c: c.take(np.delete(np.arange(len(c)), row(c, "measure"))),
     "a barrier dropped": lambda c: c.take(np.delete(np.arange(len(c)), row(c, "barrier"))),
 }
@@ -208,26 +209,24 @@ def test_a_measurement_may_not_overtake_another_into_the_same_bit() -> None:
 def test_a_bug_planted_in_a_stage_is_caught_by_the_checker(stage: str) -> None:
     from gatewright.pipeline import CHAIN
 
-    def sabotaged(real: Callable[[gw.circuit.Draft], object]) -> Callable[..., object]:  # type: ignore[name-defined]
-        def wrapper(draft: object) -> object:
-            made = real(draft)  # type: ignore[arg-type]
-            circuit = made.circuit  # type: ignore[attr-defined]
-            kinds = circuit.is_unitary & (circuit.widths == 2)
+    def sabotaged(real: Callable[..., Any]) -> Callable[..., Any]:
+        def wrapper(draft: Any) -> Any:
+            made = real(draft)
+            circuit = made.circuit
             keep = np.ones(len(circuit), dtype=bool)
-            keep[np.flatnonzero(kinds)[0]] = False
+            keep[np.flatnonzero(circuit.is_unitary & (circuit.widths == 2))[0]] = False
             index = np.flatnonzero(keep)
-            changes: dict[str, object] = {"circuit": circuit.take(index)}
+            changes: dict[str, Any] = {"circuit": circuit.take(index)}
             if stage in ("synthesise", "schedule"):
-                step = made.steps[-1]  # type: ignore[attr-defined]
-                last = replace(step, output_window=step.output_window[index])
-                changes["steps"] = (*made.steps[:-1], last)  # type: ignore[attr-defined]
+                last = replace(made.steps[-1], output_window=made.steps[-1].output_window[index])
+                changes["steps"] = (*made.steps[:-1], last)
             if stage == "schedule":
-                changes["starts"] = made.starts[index]  # type: ignore[attr-defined]
+                changes["starts"] = made.starts[index]
             if stage == "route":
-                changes["origin"] = made.origin[index]  # type: ignore[attr-defined]
+                changes["origin"] = made.origin[index]
             if stage == "expand":
                 changes["expanded"] = changes["circuit"]
-            return replace(made, **changes)  # type: ignore[type-var]
+            return replace(made, **changes)
 
         wrapper.__name__ = real.__name__
         return wrapper

@@ -19,6 +19,7 @@ from hypothesis import strategies as st
 
 from gatewright.devices import Device, GateSet, grid, line, read_any, read_device, read_gate_set
 from gatewright.devices.reading import MAX_BYTES
+from gatewright.devices.resources import shipped_gate_set_files
 from gatewright.errors import DeviceError, GateSetError, GatewrightError
 
 EXAMPLES = Path(__file__).parent.parent / "examples"
@@ -317,7 +318,7 @@ def test_what_is_no_file_is_refused(tmp_path: Path) -> None:
 
 
 def test_gate_sets_by_relative_path_and_in_the_file(tmp_path: Path) -> None:
-    shipped = (EXAMPLES.parent.parent / "gatesets" / "iswap-virtual-z.toml").read_text()
+    shipped = shipped_gate_set_files()["iswap-virtual-z"].read_text()
     (tmp_path / "sets").mkdir()
     (tmp_path / "sets" / "ours.toml").write_text("# ... our own\n" + shipped)
     (tmp_path / "a.toml").write_text(
@@ -334,7 +335,7 @@ def test_gate_sets_by_relative_path_and_in_the_file(tmp_path: Path) -> None:
 
 def test_either_kind_of_file_is_told_by_its_keys(tmp_path: Path) -> None:
     assert isinstance(read_any("cz-rz-rx"), GateSet)
-    assert isinstance(read_any(EXAMPLES.parent.parent / "gatesets" / "cz-rz-rx.toml"), GateSet)
+    assert isinstance(read_any(shipped_gate_set_files()["cz-rz-rx"]), GateSet)
     assert isinstance(read_any(EXAMPLES / "grid-9.toml"), Device)
     (tmp_path / "x.toml").write_text("name = 'x'\n")
     with pytest.raises(DeviceError, match="x.toml: the file is neither a gate set nor a device; required: 'gates', or"):

@@ -119,9 +119,9 @@ def test_counts_by_swaps_and_cnots(x, y, z):
     straight, crossed = int(cnot_count(unitary)), int(cnot_count(SWAP @ unitary))
     cz, iswap = classify(CZ), classify(ISWAP)
     assert cz.count(unitary) == straight
-    assert iswap.count(unitary) == min([k for k in (0, 2) if straight == k] + [k for k in (1, 3) if crossed == k] + [
-        2 if straight == 1 else 3
-    ])
+    assert iswap.count(unitary) == min(
+        [k for k in (0, 2) if straight == k] + [k for k in (1, 3) if crossed == k] + [2 if straight == 1 else 3]
+    )
     assert cz.count_exchanged(unitary) == min(straight, crossed)
     assert iswap.count_exchanged(unitary) == min(int(iswap.count(unitary)), int(iswap.count(SWAP @ unitary)))
 

@@ -138,7 +138,30 @@ class Circuit:
     @property
     def is_unitary(self) -> NDArray[np.bool_]:
         """Whether each operation is a unitary gate (no barrier, measurement or reset), shape (m,)."""
-        kinds = [gate.function is not None or gate.name == UNITARY.name for gate in self.table]
+        return self._of_kind([gate.function is not None or gate.name == UNITARY.name for gate in self.table])
+
+    def lanes(self) -> tuple[Integers, NDArray[np.int64]]:
+        """Return `qubits` and `offsets` with the classical bit of each measurement as one more wire, n_qubits + bit.
+
+        What keeps the order along these wires keeps the order of measurements into the same bit as well.
+        """
+        measured = self.is_named(MEASURE.name)
+        if not measured.any():
+            return self.qubits, self.offsets
+        offsets = _offsets(self.widths + measured, len(self))
+        wires = np.empty(offsets[-1], dtype=np.int32)
+        bit_at = offsets[1:][measured] - 1
+        is_bit = np.zeros(len(wires), dtype=bool)
+        is_bit[bit_at] = True
+        wires[~is_bit] = self.qubits
+        wires[bit_at] = self.n_qubits + self.link[measured]
+        return wires, offsets
+
+    def is_named(self, name: str) -> NDArray[np.bool_]:
+        """Return which operations are called `name`, shape (m,)."""
+        return self._of_kind([gate.name == name for gate in self.table])
+
+    def _of_kind(self, kinds: list[bool]) -> NDArray[np.bool_]:
         return np.asarray(np.array(kinds, dtype=bool)[self.op] if len(self.op) else np.zeros(0, dtype=bool))
 
     def count(self, name: str) -> int:

@@ -101,15 +101,15 @@ class Bound:
 @nb.njit(
     "f8(i4[::1], i8[::1], f8[::1], f8[::1], f8[::1])", cache=True, nogil=True
 )
-def _asap(qubits: Any, offsets: Any, durations: Any, free: Any, starts: Any) -> float:
+def _asap(wires: Any, offsets: Any, durations: Any, free: Any, starts: Any) -> float:
     end = 0.0
     for k in range(len(starts)):
         start = 0.0
         for j in range(offsets[k], offsets[k + 1]):
-            start = max(start, free[qubits[j]])
+            start = max(start, free[wires[j]])
         starts[k] = start
         for j in range(offsets[k], offsets[k + 1]):
-            free[qubits[j]] = start + durations[k]
+            free[wires[j]] = start + durations[k]
         end = max(end, start + durations[k])
     return end
 
@@ -124,14 +124,16 @@ def as_soon_as_possible(circuit: Circuit, durations: Vector) -> tuple[Vector, fl
         With ones for the operations that count and zeros for the rest, the end is a depth.
     """
     starts = np.empty(len(circuit))
-    return starts, float(_asap(circuit.qubits, circuit.offsets, durations, np.zeros(circuit.n_qubits), starts))
+    wires, offsets = circuit.lanes()
+    free = np.zeros(circuit.n_qubits + circuit.n_bits)
+    return starts, float(_asap(wires, offsets, durations, free, starts))
 
 
 def is_virtual(circuit: Circuit, device: Device) -> NDArray[np.bool_]:
     """Return which operations take no action on the device: virtual gates and barriers."""
     gates = device.gate_set.gates
-    kinds = [g.name == BARRIER.name or (g.name in gates and gates[g.name].virtual) for g in circuit.table]
-    return np.asarray(np.array(kinds, dtype=bool)[circuit.op] if len(circuit) else np.zeros(0, dtype=bool))
+    names = [gate.name for gate in circuit.table if gate.name == BARRIER.name or (g := gates.get(gate.name)) and g.virtual]
+    return np.isin(circuit.op, [k for k, gate in enumerate(circuit.table) if gate.name in names])
 
 
 def operation_durations(circuit: Circuit, device: Device) -> Vector:
@@ -142,7 +144,7 @@ def operation_durations(circuit: Circuit, device: Device) -> Vector:
 def operation_errors(circuit: Circuit, device: Device) -> Vector:
     """Return each operation's error probability, NaN where the device does not state it; resets are taken as exact."""
     errors = _per_operation(circuit, device, device.errors)
-    return np.where(_named(circuit, RESET.name), 0.0, errors)
+    return np.where(circuit.is_named(RESET.name), 0.0, errors)
 
 
 def _per_operation(circuit: Circuit, device: Device, look_up: Callable[[str, Any], Vector]) -> Vector:
@@ -170,7 +172,7 @@ def count_costs(circuit: Circuit, device: Device, *, starts: Vector, swaps_inser
     """
     free = is_virtual(circuit, device)
     gate = circuit.is_unitary
-    barrier = _named(circuit, BARRIER.name)
+    barrier = circuit.is_named(BARRIER.name)
     two = gate & (circuit.widths == 2)
     durations = operation_durations(circuit, device)
     known = not np.isnan(durations).any()
@@ -186,11 +188,6 @@ def count_costs(circuit: Circuit, device: Device, *, starts: Vector, swaps_inser
         duration_ns=float((starts + durations).max(initial=0.0)) if known else None,
         success_estimate=success_estimate(circuit, device, starts if known else None, durations),
     )
-
-
-def _named(circuit: Circuit, name: str) -> NDArray[np.bool_]:
-    kinds = np.array([g.name == name for g in circuit.table], dtype=bool)
-    return np.asarray(kinds[circuit.op] if len(circuit) else np.zeros(0, dtype=bool))
 
 
 def success_estimate(circuit: Circuit, device: Device, starts: Vector | None, durations: Vector) -> float | None:

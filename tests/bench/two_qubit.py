@@ -146,9 +146,7 @@ def rounded_families(total: int, rng: np.random.Generator) -> Iterator[Family]:
     for name, (_, cnots, iswaps) in PLACES.items():
         exact = local_gates(size, rng) @ canonical_matrix(points(name, size, rng)) @ local_gates(size, rng)
         for how, rough in (("8 digits", exact.round(8)), ("float32", exact.astype(np.complex64))):
-            yield Family(
-                f"{name}, {how}", nearest_unitary(rough), np.full(size, cnots), np.full(size, iswaps)
-            )
+            yield Family(f"{name}, {how}", nearest_unitary(rough), np.full(size, cnots), np.full(size, iswaps))
 
 
 def faults(

@@ -172,7 +172,8 @@ def _check_step(source: Circuit, output: Circuit, step: Step, tolerance: float) 
     fixed = _fixed_windows(source, output, step, source_slots, output_slots)
     before, after = _chain(step, slot_window, fixed)
     distances = np.zeros(step.windows)
-    sides = [_Side(output, step.output_window, output_slots), _Side(source, step.source_window, source_slots)]
+    n = step.windows
+    sides = [_Side(output, step.output_window, output_slots, n), _Side(source, step.source_window, source_slots, n)]
     widths = np.diff(step.offsets)
     for width in np.unique(widths[~fixed]).tolist():
         for block in _blocks(np.flatnonzero((widths == width) & ~fixed), width, sides):
@@ -279,20 +280,16 @@ def _slots_in_order(
             qubits=_window_qubits(step, int(of_wire[bad])),
             found=f"qubit {circuit.qubits[bad]}",
         )
+    measured = circuit.is_named(MEASURE.name)
     for lane, windows, name in (
         (circuit.qubits, of_wire, "wire"),
-        (circuit.link[_measures(circuit)], window[_measures(circuit)], "classical bit"),
+        (circuit.link[measured], window[measured], "classical bit"),
     ):
         by_lane = np.argsort(lane, kind="stable")
         falls = (np.diff(windows[by_lane]) < 0) & (np.diff(lane[by_lane]) == 0)
         if falls.any():
             _refuse(f"windows are out of order on {name} {lane[by_lane][np.flatnonzero(falls)[0]]} of the {side}")
     return np.asarray(order[found] - step.offsets[of_wire])
-
-
-def _measures(circuit: Circuit) -> NDArray[np.bool_]:
-    kinds = np.array([gate.name == MEASURE.name for gate in circuit.table], dtype=bool)
-    return np.asarray(kinds[circuit.op] if len(circuit) else np.zeros(0, dtype=bool))
 
 
 def _fixed_windows(
@@ -417,11 +414,11 @@ def _blocks(windows: Rows, width: int, sides: list[_Side]) -> Iterator[Rows]:
 class _Side:
     """One circuit with its operations sorted by window."""
 
-    def __init__(self, circuit: Circuit, window: NDArray[np.int32], slots: Rows) -> None:
+    def __init__(self, circuit: Circuit, window: NDArray[np.int32], slots: Rows, windows: int) -> None:
         self.circuit = circuit
         self.slots = slots
         self.rows = np.argsort(window, kind="stable")
-        self.counts = np.bincount(window, minlength=int(window.max(initial=-1)) + 1)
+        self.counts = np.bincount(window, minlength=windows)
         self.starts = np.concatenate([[0], np.cumsum(self.counts)])
 
     def products(self, windows: Rows, width: int) -> Array:

@@ -25,8 +25,7 @@ MAX_LOG_ENTRIES = 24
 
 def touched_qubits(output: Circuit, initial: Sequence[int], final: Sequence[int]) -> list[int]:
     """Return the output's qubits that an operation or a source qubit touches, in order."""
-    barrier = np.array([gate.name == BARRIER.name for gate in output.table], dtype=bool)
-    acting = np.repeat(~barrier[output.op], output.widths) if len(output) else np.zeros(0, dtype=bool)
+    acting = np.repeat(~output.is_named(BARRIER.name), output.widths)
     return sorted({*output.qubits[acting].tolist(), *initial, *final})
 
 

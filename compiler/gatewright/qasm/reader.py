@@ -34,7 +34,7 @@ MAX_OPERATIONS = 20_000_000
 MAX_OPERANDS = 200_000_000
 
 #: Distinct statements that are remembered.
-_REMEMBERED = 500_000
+_REMEMBERED = 100_000
 
 _WORD = re.compile(NAME)
 _FLAT = re.compile(rf"\s*({NAME})\s*(?:\(([^()]*)\))?\s*([^()]*)")
@@ -217,15 +217,11 @@ class _Reader:
         qubits = self.scope.lists.get(operands) or self.scope.qubits(operands, self.position + match.start(3))
         if qubits is None or len(qubits) != n_qubits:
             return -1
-        if n_parameters == 1 and arguments:
-            self.parameters.append(self.scope.number(arguments, self.position + match.start(2)))
-        elif n_parameters:
-            values = [
-                self.scope.number(part, begin) for part, begin in split(arguments, self.position + match.start(2))
-            ]
-            if len(values) != n_parameters:
+        if n_parameters:
+            texts = (arguments or "").split(",")
+            if len(texts) != n_parameters:
                 return -1
-            self.parameters += values
+            self.parameters += self.scope.number_list(texts, self.position + match.start(2))
         elif arguments:
             return -1
         self.op.append(op)

@@ -35,7 +35,7 @@ _PI = re.compile(rf"([-+]?)(?:({_UNSIGNED})\s*\*\s*)?pi(?:\s*\*\s*({_UNSIGNED}))
 _OPERAND = re.compile(rf"(?:({NAME})\s*(?:\[([^][]*)\])?|\$([0-9]+))")
 
 #: Texts of numbers and lists of operands that are remembered.
-_REMEMBERED = 500_000
+_REMEMBERED = 100_000
 
 
 def split(text: str | None, offset: int) -> list[tuple[str, int]]:
@@ -152,13 +152,17 @@ class Scope:
         )
 
     def number(self, text: str, offset: int) -> float:
-        """Return the value of a parameter; its text is remembered."""
-        value = self.numbers.get(text)
-        if value is None:
-            value = self._number(text, offset)
+        """Return the value of a parameter; the text of anything but a plain number is remembered."""
+        if _FLOAT.fullmatch(text):
+            value = float(text)
+            if value not in (math.inf, -math.inf):
+                return value
+        known = self.numbers.get(text)
+        if known is None:
+            known = self._number(text, offset)
             if len(self.numbers) < _REMEMBERED:
-                self.numbers[text] = value
-        return value
+                self.numbers[text] = known
+        return known
 
     def number_list(self, texts: Sequence[str], offset: int) -> list[float]:
         """Return the values of parameters with one character between them."""
@@ -207,20 +211,20 @@ class Scope:
 
     def qubits(self, text: str, offset: int) -> tuple[int, ...] | None:
         """Return a list of distinct single qubits, remembered by its text, or None if it names a whole register."""
-        found = tuple(map(self._singles.get, text.split(",")))
-        if None in found:
+        found = [self._singles.get(part, -1) for part in text.split(",")]
+        if -1 in found:
             parts = split(text, offset)
             spans = [self.operand(part, begin, self.qubit_registers) for part, begin in parts]
             if not all(single for _, single in spans):
                 return None
-            found = tuple([span[0] for span, _ in spans])
-            for part, qubit in zip(parts, found, strict=True):
-                self._singles[part[0]] = qubit
+            found = [span[0] for span, _ in spans]
+            self._singles.update((part, qubit) for (part, _), qubit in zip(parts, found, strict=True))
         if len(set(found)) < len(found):
             self.check_distinct(found, text, offset)
+        qubits = tuple(found)
         if len(self.lists) < _REMEMBERED:
-            self.lists[text] = found
-        return found
+            self.lists[text] = qubits
+        return qubits
 
     def broadcast(self, text: str, offset: int) -> list[tuple[int, ...]]:
         """Return the lists of qubits that a list of operands stands for, registers taken element by element."""

@@ -10,7 +10,6 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
-from itertools import product
 from typing import Protocol, TypeAlias
 
 import numpy as np
@@ -559,13 +558,9 @@ def _planned(way: _Way, gates: Sequence[NativeOneQubit]) -> OneQubitPlan:
 def _samples(frames: Sequence[tuple[Real, Real]]) -> tuple[Complex, Complex]:
     """Return Haar-random unitaries, and the Clifford groups of the frames."""
     distinct = {tuple(np.round(np.concatenate(frame), 9)): frame for frame in frames}
-    turns = _QUARTER * np.arange(4)
-    cliffords = [
-        rotation(n, a) @ rotation(m, b) @ rotation(n, c)
-        for n, m in list(distinct.values())[:6]
-        for a, b, c in product(turns, turns[:3], turns)
-    ]
-    return haar_unitary(2, 32, rng=0), np.array(cliffords)
+    a, b, c = (_QUARTER * np.ravel(k) for k in np.meshgrid(np.arange(4), np.arange(3), np.arange(4)))
+    cliffords = [rotation(n, a) @ rotation(m, b) @ rotation(n, c) for n, m in list(distinct.values())[:6]]
+    return haar_unitary(2, 32, rng=0), np.concatenate(cliffords)
 
 
 def _cost(

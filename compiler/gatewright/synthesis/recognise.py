@@ -284,6 +284,8 @@ class _Samples:
             return None
         axis, rate = vector / sine, float(np.arctan2(sine, cosine)) / step
         vector, _ = since(min(stop, start + _PI / 2 / rate))
+        if np.linalg.norm(vector) < 1e-7:
+            return None
         axis = _clean(vector if vector @ axis > 0 else -vector)
         vector, cosine = since(stop)
         expected = rate * (stop - start)
