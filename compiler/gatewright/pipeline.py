@@ -22,6 +22,7 @@ from gatewright.cost import (
 )
 from gatewright.devices import Device
 from gatewright.errors import DeviceError, InputError, ProofError, nearest_name
+from gatewright.gates import GATES
 from gatewright.linalg import checked_unitary
 from gatewright.proof import Proof, Verdict, check_legal, check_proof, encode_proof
 from gatewright.proof.dense import dense_distance, dense_work, touched_qubits
@@ -33,6 +34,7 @@ from gatewright.stages.route import route
 from gatewright.stages.schedule import schedule
 from gatewright.stages.synthesise import synthesise
 from gatewright.stages.windows import TWO, fuse_circuit, window_unitaries
+from gatewright.synthesis.definition import definition_of
 from gatewright.synthesis.native import NativeSet, native_set
 
 __all__ = ["CHAIN", "EFFORTS", "Result", "check", "compile", "count"]
@@ -42,8 +44,10 @@ CHAIN: tuple[Stage, ...] = (expand, place, route, fuse, synthesise, schedule)
 
 EFFORTS = ("quick", "standard", "deep")
 
-#: A window of a proof may be this far off by rounding, beyond the tolerance that the user allows.
+#: A window of a proof may be this far off by rounding, beyond the tolerance that the user allows: once for its
+#: entanglers, and three times for each of its at most eight one-qubit runs.
 ROUNDING = 1e-11
+USES_OF_TOLERANCE = 25
 #: Full unitaries are compared as well below this many qubits, where that takes less than this many matrix entries.
 DENSE_QUBITS = 9
 DENSE_WORK = 2.5e8
@@ -140,7 +144,11 @@ class Result:
         """
         from gatewright.qasm import map_lines, write
 
-        gates = self.device.gate_set.gates
+        definitions = {
+            name: native.definition or definition_of(native.gate)
+            for name, native in self.device.gate_set.gates.items()
+            if native.definition or name not in GATES
+        }
         header = [
             f"gatewright {__version__}, seed {self.seed}, device {self.device.name}",
             f"proven equal to its source within {self.verdict.error_bound:.3g} (operator norm, up to global phase)",
@@ -148,7 +156,7 @@ class Result:
         return write(
             self.circuit,
             version=version,
-            definitions={name: native.definition for name, native in gates.items() if native.definition},
+            definitions=definitions,
             header=[f"// {line}" for line in header] + map_lines(self.initial, self.final),
         )
 
@@ -176,9 +184,9 @@ def compile(  # noqa: A001
     seed : int
         The same input, seed and version give the same output.
     tolerance : float
-        Where a two-qubit window lies within this distance (operator norm) of a class that needs fewer entanglers, the
-        fewer are used and the distance is part of the error bound. Nothing else is approximated. A matrix may be
-        non-unitary by as much.
+        Where a two-qubit window lies within this distance (operator norm) of a class that needs fewer entanglers, or a
+        one-qubit run of one that needs fewer pulses, the fewer are used and the distance is part of the error bound.
+        Nothing else is approximated. A matrix may be non-unitary by as much.
     effort : {"standard", "quick", "deep"}
         How long to search for placements.
     placement : sequence of int, optional
@@ -239,7 +247,7 @@ def compile(  # noqa: A001
         draft = stage(draft)
     clock.start("prove")
     proof = Proof(draft.steps)
-    window_tolerance = ROUNDING + 2 * tolerance
+    window_tolerance = ROUNDING + USES_OF_TOLERANCE * tolerance
     verdict = check_proof(circuit, draft.circuit, proof, device=device, tolerance=window_tolerance)
     verdict = _second_opinion(circuit, draft.circuit, verdict, len(proof.steps), window_tolerance)
     clock.start("count")

@@ -21,6 +21,7 @@ from gatewright.linalg import dagger
 from gatewright.proof.windows import Step
 from gatewright.stages.draft import Draft
 from gatewright.stages.windows import FIXED, ONE, TWO, Fused, window_unitaries
+from gatewright.synthesis.euler import ROUNDING
 from gatewright.synthesis.native import NativeEntangler, NativeSet
 
 __all__ = ["synthesise"]
@@ -188,7 +189,9 @@ def synthesise(draft: Draft) -> Draft:
         made = native.entangler.entangler.synthesise(two, tolerance=draft.settings.tolerance)
         uses[fused.kind == TWO] = made.uses
         layers = np.ascontiguousarray(made.layers)
-    sites, seams, window_event = _runs(fused, one, layers, uses, native, circuit.n_qubits)
+    sites, seams, window_event = _runs(
+        fused, one, layers, uses, native, circuit.n_qubits, draft.settings.tolerance
+    )
     output, windows = _emit(circuit, fused, sites, uses, window_event, native)
     step, final = _claim(draft, fused, windows, seams)
     return replace(draft, circuit=output, fused=fused, final=final, steps=(*draft.steps, step))
@@ -211,7 +214,7 @@ def _oriented(fused: Fused, draft: Draft) -> Fused:
 
 
 def _runs(
-    fused: Fused, one: Array, layers: Array, uses: NDArray[np.int32], native: NativeSet, n_wires: int
+    fused: Fused, one: Array, layers: Array, uses: NDArray[np.int32], native: NativeSet, n_wires: int, tolerance: float
 ) -> tuple[_Sites, NDArray[np.float64], NDArray[np.int64]]:
     """Merge layers along the wires, find their angles, carry phases on; return the runs and each slot's seam."""
     kind, offsets, wires = fused.kind, fused.offsets, fused.wires
@@ -229,7 +232,7 @@ def _runs(
     total = _merge(
         kind, offsets, wires, row, uses, flush, layers, one, matrix, event, window, wire, owed, window_event, n_wires
     )
-    angles = np.ascontiguousarray(native.plan.angles(matrix[:total]))
+    angles = np.ascontiguousarray(native.plan.angles(matrix[:total], tolerance=max(tolerance, ROUNDING)))
     trailing = np.zeros(total, dtype=np.bool_)
     phases = np.zeros(len(wires))
     axis = native.plan.axis

@@ -79,25 +79,26 @@ def native_set(gate_set: GateSet, *, tolerance: float = 1e-12) -> NativeSet:
     GateSetError, UnsupportedError
         No two-qubit gate of the set belongs to a class that can be used; the reason for each is given.
     """
-    plan = plan_one_qubit(gate_set.one_qubit)
-    usable: list[tuple[float, NativeEntangler]] = []
+    usable: list[tuple[float, NativeGate, tuple[float, ...], Entangler]] = []
     reasons: list[str] = []
     for native in gate_set.two_qubit:
         try:
             parameters = entangler_parameters(native)
-            matrix = native.gate.matrix(parameters)
-            entangler = classify(matrix, tolerance=tolerance)
+            entangler = classify(native.gate.matrix(parameters), tolerance=tolerance)
         except (GateSetError, UnsupportedError) as error:
             reasons.append(f"'{native.gate.name}': {error}")
-            continue
-        passes = _passages(matrix, plan.axis)
-        usable.append((native.error or 0.0, NativeEntangler(native.gate, parameters, entangler, *passes)))
-    if usable:
-        return NativeSet(plan, min(usable, key=lambda entry: entry[0])[1])
-    if reasons:
-        what = f"gate set '{gate_set.name}' has no entangler that can be used yet"
-        raise UnsupportedError(what, found="; ".join(reasons))
-    return NativeSet(plan, None)
+        else:
+            usable.append((native.error or 0.0, native, parameters, entangler))
+    if not usable:
+        if reasons:
+            what = f"gate set '{gate_set.name}' has no entangler that can be used yet"
+            raise UnsupportedError(what, found="; ".join(reasons))
+        return NativeSet(plan_one_qubit(gate_set.one_qubit), None)
+    _, native, parameters, entangler = min(usable, key=lambda entry: entry[0])
+    matrix = native.gate.matrix(parameters)
+    passing = [name for name, axis in zip("xyz", np.eye(3), strict=True) if max(_passages(matrix, axis)[0]) >= 0]
+    plan = plan_one_qubit(gate_set.one_qubit, passing=passing)
+    return NativeSet(plan, NativeEntangler(native.gate, parameters, entangler, *_passages(matrix, plan.axis)))
 
 
 def entangler_parameters(native: NativeGate) -> tuple[float, ...]:
