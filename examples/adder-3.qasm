@@ -1,4 +1,4 @@
-// Adds two three-bit numbers in place: b becomes a + b, the carry ends in z. OpenQASM 2.
+// Adds two three-bit numbers in place: b becomes a + b, the carry ends in carry_out. OpenQASM 2.
 OPENQASM 2.0;
 include "qelib1.inc";
 
@@ -16,8 +16,8 @@ gate unmajority a, b, c {
 
 qreg a[3];
 qreg b[3];
-qreg x[1];
-qreg z[1];
+qreg carry_in[1];
+qreg carry_out[1];
 creg sum[4];
 
 // a = 5, b = 3
@@ -26,15 +26,15 @@ x a[2];
 x b[0];
 x b[1];
 
-majority x[0], b[0], a[0];
+majority carry_in[0], b[0], a[0];
 majority a[0], b[1], a[1];
 majority a[1], b[2], a[2];
-cx a[2], z[0];
+cx a[2], carry_out[0];
 unmajority a[1], b[2], a[2];
 unmajority a[0], b[1], a[1];
-unmajority x[0], b[0], a[0];
+unmajority carry_in[0], b[0], a[0];
 
 measure b[0] -> sum[0];
 measure b[1] -> sum[1];
 measure b[2] -> sum[2];
-measure z[0] -> sum[3];
+measure carry_out[0] -> sum[3];

@@ -132,7 +132,7 @@ def as_soon_as_possible(circuit: Circuit, durations: Vector) -> tuple[Vector, fl
 def is_virtual(circuit: Circuit, device: Device) -> NDArray[np.bool_]:
     """Return which operations take no action on the device: virtual gates and barriers."""
     gates = device.gate_set.gates
-    names = [gate.name for gate in circuit.table if gate.name == BARRIER.name or (g := gates.get(gate.name)) and g.virtual]
+    names = {BARRIER.name, *(name for name, native in gates.items() if native.virtual)}
     return np.isin(circuit.op, [k for k, gate in enumerate(circuit.table) if gate.name in names])
 
 

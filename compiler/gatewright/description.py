@@ -171,7 +171,7 @@ def _device(device: Device) -> dict[str, Any]:
             "qubits": np.flatnonzero(~device.active).tolist(),
             "edges": device.removed_edges.tolist(),
         },
-        "degree": {"least": int(degrees.min(initial=0)), "most": int(degrees.max(initial=0))},
+        "degree": {"least": int(degrees.min()), "most": int(degrees.max())},
         "health": _health(device),
         "gate_set_facts": _gate_set(device.gate_set),
     }

@@ -3,25 +3,29 @@
 from __future__ import annotations
 
 import os
+import re
 import sys
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
-from typing import TYPE_CHECKING
+from types import MappingProxyType
+from typing import Literal
 
 from gatewright.circuit import Circuit
 from gatewright.errors import InputError
 from gatewright.gates import Gate
+from gatewright.matrices import read_matrix
+from gatewright.qasm import QubitMap, read_map
+from gatewright.qasm import read as read_program
+from gatewright.qasm.source import MAX_BYTES, decode
 
-if TYPE_CHECKING:
-    from gatewright.qasm import QubitMap
+__all__ = ["Source", "load", "read"]
 
-__all__ = ["MAX_BYTES", "Source", "load", "read", "read_bytes"]
-
-#: Largest file that is read.
-MAX_BYTES = 1 << 28
 MATRIX_SUFFIXES = (".npy", ".npz", ".csv", ".txt", ".json")
-PROGRAM_SUFFIXES = (".qasm", ".qasm2", ".qasm3", ".inc")
+PROGRAM_SUFFIXES = (".qasm", ".qasm2", ".qasm3")
+
+#: How a matrix begins: NumPy's files and archives, or (after blanks and # comments) a number, sign or bracket.
+_MATRIX = re.compile(rb"\x93NUMPY|PK[\x03\x05]|(?:\xef\xbb\xbf)?(?:\s|#[^\n]*\n)*[-+.\d(\[{]")
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,40 +46,13 @@ class Source:
     qubit_map: QubitMap | None = None
 
 
-def read_bytes(path: str | os.PathLike[str]) -> bytes:
-    """Read a file, or standard input for ``-``.
-
-    Raises
-    ------
-    InputError
-        Missing, a directory, unreadable, empty or too large.
-    """
-    name = os.fspath(path)
-    where = "<stdin>" if name == "-" else name
-    try:
-        if name == "-":
-            data = sys.stdin.buffer.read(MAX_BYTES + 1)
-        else:
-            if Path(name).is_dir():
-                raise InputError("this is a directory", required="a file", where=where)
-            with Path(name).open("rb") as file:
-                data = file.read(MAX_BYTES + 1)
-    except OSError as error:
-        raise InputError(f"cannot read the file: {(error.strerror or str(error)).lower()}", where=where) from None
-    if len(data) > MAX_BYTES:
-        raise InputError("the file is too large", required=f"{MAX_BYTES} bytes at most", where=where)
-    if not data.strip():
-        raise InputError("the file is empty", required="an OpenQASM program or a unitary matrix", where=where)
-    return data
-
-
 def load(
     path: str | os.PathLike[str],
     *,
     tolerance: float = 1e-12,
     nearest_unitary: bool = False,
-    first_qubit: str = "left",
-    natives: Mapping[str, Gate] | None = None,
+    qubit_order: Literal["first", "last"] = "first",
+    natives: Mapping[str, Gate] = MappingProxyType({}),
 ) -> Source:
     """Read a program or a matrix, with what else is known about it.
 
@@ -88,8 +65,8 @@ def load(
         How far from unitary a matrix may be.
     nearest_unitary : bool
         Take the nearest unitary for a matrix beyond the tolerance.
-    first_qubit : {"left", "right"}
-        Which factor of the Kronecker product is qubit 0 of a matrix.
+    qubit_order : {"first", "last"}
+        Where qubit 0 stands among the Kronecker factors of a matrix.
     natives : mapping of str to Gate, optional
         Gates that stay as they are where the program defines them.
 
@@ -97,18 +74,38 @@ def load(
     ------
     InputError
     """
-    from gatewright import matrices, qasm
-
-    data = read_bytes(path)
     name = os.fspath(path)
-    where = "<stdin>" if name == "-" else name
     suffix = Path(name).suffix.lower()
-    if suffix in MATRIX_SUFFIXES or (suffix not in PROGRAM_SUFFIXES and matrices.looks_like_matrix(data)):
-        given = matrices.decode_matrix(data, suffix=suffix, where=where, first_qubit=first_qubit)
-        unitary, moved = matrices.checked(given, tolerance=tolerance, nearest=nearest_unitary, where=where)
-        return Source(Circuit.from_unitary(unitary), moved)
-    text = qasm.decode_text(data, where=where)
-    return Source(qasm.read(text, where=where, natives=natives), qubit_map=qasm.read_map(text))
+    where = "<stdin>" if name == "-" else name
+    data = _read_bytes(name, where)
+    if suffix in MATRIX_SUFFIXES or (suffix not in PROGRAM_SUFFIXES and _MATRIX.match(data)):
+        source = path if suffix in MATRIX_SUFFIXES else data
+        given = read_matrix(
+            source, qubit_order=qubit_order, tolerance=tolerance, nearest=nearest_unitary, where=where
+        )
+        return Source(Circuit.from_unitary(given.matrix), given.moved)
+    text = decode(data, where=where)
+    return Source(read_program(text, where=where, natives=natives), qubit_map=read_map(text, where=where))
+
+
+def _read_bytes(name: str, where: str) -> bytes:
+    try:
+        if name == "-":
+            data = sys.stdin.buffer.read(MAX_BYTES + 1)
+        else:
+            if Path(name).is_dir():
+                raise InputError("this is a directory", required="a file", where=where)
+            with Path(name).open("rb") as file:
+                data = file.read(MAX_BYTES + 1)
+    except (OSError, ValueError) as error:
+        reason = getattr(error, "strerror", None) or str(error)
+        raise InputError("the file cannot be read", found=reason.lower(), where=where) from None
+    if len(data) > MAX_BYTES:
+        raise InputError("the file is too large", required=f"{MAX_BYTES >> 20} MiB at most", where=where)
+    if not data.strip():
+        required = "an OpenQASM program or a unitary matrix"
+        raise InputError("the file is empty", required=required, where=where)
+    return data
 
 
 def read(
@@ -116,7 +113,7 @@ def read(
     *,
     tolerance: float = 1e-12,
     nearest_unitary: bool = False,
-    first_qubit: str = "left",
+    qubit_order: Literal["first", "last"] = "first",
 ) -> Circuit:
     """Read an OpenQASM program or a unitary matrix as a circuit.
 
@@ -128,12 +125,12 @@ def read(
         How far from unitary a matrix may be.
     nearest_unitary : bool
         Take the nearest unitary for a matrix beyond the tolerance.
-    first_qubit : {"left", "right"}
-        Which factor of the Kronecker product is qubit 0 of a matrix.
+    qubit_order : {"first", "last"}
+        Where qubit 0 stands among the Kronecker factors of a matrix.
 
     Raises
     ------
     InputError
         With file, line and column where there is one.
     """
-    return load(path, tolerance=tolerance, nearest_unitary=nearest_unitary, first_qubit=first_qubit).circuit
+    return load(path, tolerance=tolerance, nearest_unitary=nearest_unitary, qubit_order=qubit_order).circuit

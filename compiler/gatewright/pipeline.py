@@ -252,7 +252,7 @@ def compile(  # noqa: A001
     verdict = _second_opinion(circuit, draft.circuit, verdict, len(proof.steps), window_tolerance)
     clock.start("count")
     costs = count_costs(draft.circuit, device, starts=draft.starts, swaps_inserted=draft.swaps)
-    bound = _lower_bound(draft.expanded, native, tolerance, stays=verdict.initial == verdict.final)
+    bound = _lower_bound(circuit, draft.expanded, native, tolerance, stays=verdict.initial == verdict.final)
     clock.stop()
     return Result(
         circuit=draft.circuit,
@@ -375,26 +375,28 @@ def _second_opinion(source: Circuit, output: Circuit, verdict: Verdict, steps: i
     return replace(verdict, method=verdict.method + "; full unitaries compared as well")
 
 
-def _lower_bound(expanded: Circuit, native: NativeSet, tolerance: float, *, stays: bool) -> Bound:
+def _lower_bound(
+    circuit: Circuit, expanded: Circuit, native: NativeSet, tolerance: float, *, stays: bool
+) -> Bound:
     """Sum the least number of entanglers over the input's own windows."""
     fused = fuse_circuit(expanded)
     if native.entangler is None or not np.count_nonzero(fused.kind == TWO):
         return Bound(0, "no two-qubit windows in the input")
     _, two = window_unitaries(expanded, fused)
     counts = native.entangler.entangler.count(two, tolerance=tolerance)
-    name = native.entangler.gate.name
-    windows = (
-        f"sum over the two-qubit windows of the input of the exact least number of '{name}' that each needs on its own, "
-        "with free one-qubit gates and all-to-all connectivity"
+    of_what = "the input" if expanded is circuit else "the input, written in gates of one and two qubits"
+    how = (
+        f"sum over the two-qubit windows of {of_what}, of the exact least number of '{native.entangler.gate.name}' "
+        "that each needs on its own, with free one-qubit gates and all-to-all connectivity"
     )
-    larger = (
-        "a bound for circuits that keep this partition into windows, not the optimum of the whole circuit: "
+    if not stays:
+        counts = np.minimum(counts, native.entangler.entangler.count_exchanged(two, tolerance=tolerance))
+        how += ", its two wires exchanged where that needs fewer"
+    how += (
+        "; a bound for circuits that keep this partition into windows, not the optimum of the whole circuit: "
         "larger windows may need fewer"
     )
-    if stays:
-        return Bound(int(counts.sum()), f"{windows}; {larger}")
-    exchanged = np.minimum(counts, native.entangler.entangler.count_exchanged(two, tolerance=tolerance))
-    return Bound(int(exchanged.sum()), f"{windows}, its two wires exchanged where that needs fewer; {larger}")
+    return Bound(int(counts.sum()), how)
 
 
 class _Clock:

@@ -88,10 +88,10 @@ def _matrix_options(parser: argparse.ArgumentParser) -> None:
         "--nearest-unitary", action="store_true", help="accept a matrix that is not unitary: take the nearest one"
     )
     parser.add_argument(
-        "--first-qubit",
-        choices=("left", "right"),
-        default="left",
-        help="which Kronecker factor of a matrix is qubit 0 (default: left)",
+        "--qubit-order",
+        choices=("first", "last"),
+        default="first",
+        help="which Kronecker factor of a matrix is qubit 0: the first (leftmost, the default) or the last",
     )
 
 

@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING, Any
 from gatewright.errors import GatewrightError, InputError
 
 if TYPE_CHECKING:
+    from gatewright.gates import Gate
     from gatewright.pipeline import Result
 
 __all__ = ["run"]
@@ -121,7 +122,9 @@ def _different(names: list[str | None]) -> None:
     given = [name for name in names if name is not None]
     if len(set(given)) < len(given):
         raise InputError(
-            "two outputs have the same destination", required="different files, and one '-' at most", found=", ".join(given)
+            "two outputs have the same destination",
+            required="different files, and one '-' at most",
+            found=", ".join(given),
         )
 
 
@@ -136,7 +139,7 @@ def _compiled(options: argparse.Namespace) -> Result:
         options.input,
         tolerance=options.tolerance,
         nearest_unitary=options.nearest_unitary,
-        first_qubit=options.first_qubit,
+        qubit_order=options.qubit_order,
     )
     with _progress() as progress:
         return compile_source(
@@ -197,7 +200,7 @@ def _check(options: argparse.Namespace) -> int:
     _tell_of_kernels()
     from gatewright.devices import read_device
     from gatewright.inputs import load
-    from gatewright.pipeline import check, extra_gates
+    from gatewright.pipeline import check
     from gatewright.proof import read_proof
     from gatewright.report.terminal import print_verdict
 
@@ -206,9 +209,9 @@ def _check(options: argparse.Namespace) -> int:
         options.source,
         tolerance=max(options.tolerance, 1e-12),
         nearest_unitary=options.nearest_unitary,
-        first_qubit=options.first_qubit,
+        qubit_order=options.qubit_order,
     )
-    output = load(options.output, natives=extra_gates() if device is None else device.gate_set.natives)
+    output = load(options.output, natives=beyond_the_library() if device is None else device.gate_set.natives)
     proof = read_proof(options.proof) if options.proof else None
     places = output.qubit_map
     try:
@@ -231,6 +234,14 @@ def _check(options: argparse.Namespace) -> int:
     if options.json != "-":
         print_verdict(verdict, sys.stdout)
     return 0
+
+
+def beyond_the_library() -> dict[str, Gate]:
+    """Return the named gates that a program has to define: their calls are kept where no device says what is native."""
+    from gatewright.devices.gateset import STANDARD_LIBRARY
+    from gatewright.gates import GATES
+
+    return {name: gate for name, gate in GATES.items() if name not in STANDARD_LIBRARY}
 
 
 def _changed(source_print: str, output_print: str, source: Any, output: Any) -> str:
@@ -256,7 +267,7 @@ def _describe(options: argparse.Namespace) -> int:
     if name in shipped_gate_sets() or Path(name).suffix.lower() == ".toml":
         facts = describe(read_any(name))
     else:
-        source = load(name, nearest_unitary=options.nearest_unitary, first_qubit=options.first_qubit)
+        source = load(name, nearest_unitary=options.nearest_unitary, qubit_order=options.qubit_order)
         facts = describe(source.circuit.unitary())
         facts["distance_moved"] = source.moved
     if options.json:

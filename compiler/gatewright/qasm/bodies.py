@@ -62,11 +62,10 @@ def _formal(scope: Scope, text: str, offset: int, what: str) -> tuple[str, ...]:
     """Read the names of a definition's parameters or qubits."""
     names: dict[str, None] = {}
     for part, begin in split(text, offset):
-        name = part.strip()
-        if not _NAME.fullmatch(name) or name in RESERVED or name in names:
+        if not _NAME.fullmatch(part) or part in RESERVED or part in names:
             required = f"a name for each {what}, none of them twice"
-            raise scope.source.error(f"'{shorten(name)}' cannot name a {what}", begin, required=required)
-        names[name] = None
+            raise scope.source.error(f"'{shorten(part)}' cannot name a {what}", begin, required=required)
+        names[part] = None
     return tuple(names)
 
 
@@ -117,29 +116,29 @@ class _Body:
         else:
             target = BARRIER if word == "barrier" else self.target(word, offset)
         parts = split(match[2], offset + match.start(2))
-        expressions = tuple(scope.expression(part.strip(), begin, self.names) for part, begin in parts)
-        scope.check_count(word, "parameters", target.n_parameters if target else 1, len(expressions), offset)
+        expressions = tuple(scope.expression(part, begin, self.names) for part, begin in parts)
+        scope.check_count(word, "parameters", target.n_parameters if target else 1, match[2], offset)
         qubits = self.qubits(match[3], offset + match.start(3))
         if target is BARRIER:
             qubits = qubits or tuple(self.wires.values())
         else:
-            scope.check_count(word, "qubits", target.n_qubits if target else 0, len(qubits), offset)
+            scope.check_count(word, "qubits", target.n_qubits if target else 0, match[3], offset)
         if any(name in self.parameters for expression in expressions for name in expression.names):
             return Step(target, qubits, expressions, None)
         try:
             values = tuple([expression.real(scope.constants) for expression in expressions])
         except ExpressionError as problem:
-            raise scope.at_fault(problem, offset + match.start(2)) from None
+            raise scope.at_fault(problem, offset, inside=False) from None
         return Step(target, qubits, expressions, values)
 
     def qubits(self, text: str, offset: int) -> tuple[int, ...]:
         """Read the qubits of a statement."""
         places = []
         for part, begin in split(text, offset):
-            place = self.wires.get(part.strip())
+            place = self.wires.get(part)
             if place is None:
-                what = f"unknown qubit '{shorten(part.strip(), 30)}' in the definition of '{shorten(self.own)}'"
-                raise self.scope.source.error(what, begin, hint=nearest_name(part.strip(), self.wires))
+                what = f"unknown qubit '{shorten(part, 30)}' in the definition of '{shorten(self.own)}'"
+                raise self.scope.source.error(what, begin, hint=nearest_name(part, self.wires))
             places.append(place)
         self.scope.check_distinct(places, text, offset)
         return tuple(places)

@@ -10,7 +10,7 @@ from gatewright.errors import QasmError, shorten
 
 __all__ = ["QubitMap", "map_lines", "read_map"]
 
-_HEAD = re.compile(r"\ufeff?(?:\s*//[^\n]*)*")
+_HEAD = re.compile(r"(?:\s*//[^\n]*)*")
 _LINE = re.compile(r"^\s*//\s*qubit map (in|out)\s*:(.*)$", re.MULTILINE)
 _PAIR = re.compile(r"\s*([0-9]{1,9})\s*->\s*([0-9]{1,9})\s*")
 
@@ -61,6 +61,7 @@ def read_map(text: str, *, where: str = "") -> QubitMap | None:
     >>> read_map("// qubit map in: 0 -> 4, 1 -> 3\n// qubit map out: 0 -> 3, 1 -> 4\nOPENQASM 3.0;")
     QubitMap(initial=(4, 3), final=(3, 4))
     """
+    text = text.removeprefix("\ufeff")
     head = _HEAD.match(text)
     found: dict[str, tuple[int, ...]] = {}
     for match in _LINE.finditer(head[0] if head else ""):

@@ -28,10 +28,10 @@ from gatewright.qasm.source import Source, read_text
 __all__ = ["MAX_OPERANDS", "MAX_OPERATIONS", "read", "read_file"]
 
 #: Most operations of one program, the steps of expanded definitions included.
-MAX_OPERATIONS = 20_000_000
+MAX_OPERATIONS = 10_000_000
 
 #: Most qubits that all operations together may name.
-MAX_OPERANDS = 200_000_000
+MAX_OPERANDS = 40_000_000
 
 #: Distinct statements that are remembered.
 _REMEMBERED = 100_000
@@ -261,7 +261,7 @@ class _Reader:
         word = match[0]
         if word in self.handlers:
             self.handlers[word](text, offset)
-            return word in ("measure", "reset", "gphase")
+            return word in ("measure", "reset", "gphase") or (word == "barrier" and text != word)
         if word in UNSUPPORTED:
             raise self.scope.unsupported(f"'{word}'", offset)
         if word in self.scope.bit_registers and "=" in text:
@@ -286,9 +286,8 @@ class _Reader:
         target = self.target(name, offset)
         if "(" in operands:
             raise self.source.error("a '(' is not closed", offset + match.start(3), required="a matching ')'")
-        given = arguments.count(",") + 1 if arguments and not arguments.isspace() else 0
-        self.scope.check_count(name, "parameters", target.n_parameters, given, offset)
-        self.scope.check_count(name, "qubits", target.n_qubits, operands.count(",") + 1 if operands else 0, offset)
+        self.scope.check_count(name, "parameters", target.n_parameters, arguments, offset)
+        self.scope.check_count(name, "qubits", target.n_qubits, operands, offset)
         values = [self.scope.number(part, at) for part, at in split(arguments, offset + match.start(2))]
         rows = self.scope.broadcast(operands, offset + match.start(3))
         if isinstance(target, Gate):
@@ -301,7 +300,7 @@ class _Reader:
         try:
             phase = sum(expand(target, values, row, self.emit) for row in rows)
         except ExpressionError as problem:
-            raise self.scope.at_fault(problem, offset) from None
+            raise self.scope.at_fault(problem, offset, inside=False) from None
         self.add_phase(phase)
 
     def add_phase(self, phase: float) -> None:
@@ -392,7 +391,7 @@ class _Reader:
         if len(sources) != len(targets) or (single != single_bit and len(sources) > 1):
             raise self.source.error(
                 "a measurement of unequal sizes",
-                qubits_offset,
+                qubits_offset + len(qubits) - len(qubits.lstrip()),
                 required=f"as many bits as qubits ({len(sources)})",
                 found=str(len(targets)),
             )

@@ -13,7 +13,7 @@ from gatewright.qasm.source import Source
 __all__ = ["MAX_QUBITS", "NAME", "RESERVED", "UNSUPPORTED", "Scope", "split"]
 
 #: Most qubits, and most bits, of one program.
-MAX_QUBITS = 1_000_000
+MAX_QUBITS = 100_000
 
 #: Words of OpenQASM that begin what is not read.
 UNSUPPORTED = frozenset(
@@ -39,10 +39,12 @@ _REMEMBERED = 100_000
 
 
 def split(text: str | None, offset: int) -> list[tuple[str, int]]:
-    """Split a list at its commas; give each part with its offset. No text at all is an empty list."""
-    parts = []
-    for part in text.split(",") if text is not None and not text.isspace() and text else ():
-        parts.append((part, offset + len(part) - len(part.lstrip())))
+    """Split a list at its commas; give each part, without blanks around it, with its offset."""
+    parts: list[tuple[str, int]] = []
+    if text is None or not text or text.isspace():
+        return parts
+    for part in text.split(","):
+        parts.append((part.strip(), offset + len(part) - len(part.lstrip())))
         offset += len(part) + 1
     return parts
 
@@ -89,11 +91,16 @@ class Scope:
                 hint=f"begin the program with OPENQASM {version}.0;",
             )
 
-    def check_count(self, name: str, what: str, required: int, found: int, offset: int) -> None:
-        """Refuse a wrong number of parameters or qubits."""
+    def check_count(self, name: str, what: str, required: int, given: str | None, offset: int) -> None:
+        """Refuse a wrong number of parameters or qubits in a list of them."""
+        found = given.count(",") + 1 if given and not given.isspace() else 0
         if required != found:
             raise self.source.error(
-                f"wrong number of {what} for '{shorten(name)}'", offset, required=str(required), found=str(found)
+                f"wrong number of {what} for '{shorten(name)}'",
+                offset,
+                required=str(required),
+                found=str(found),
+                hint="is a ';' missing?" if given and "\n" in given.strip() else "",
             )
 
     def check_distinct(self, qubits: Sequence[int], text: str, offset: int) -> None:
@@ -141,11 +148,11 @@ class Scope:
         except ExpressionError as problem:
             raise self.at_fault(problem, offset) from None
 
-    def at_fault(self, problem: ExpressionError, offset: int) -> QasmError:
-        """Return the error of an expression whose text begins at `offset`."""
+    def at_fault(self, problem: ExpressionError, offset: int, *, inside: bool = True) -> QasmError:
+        """Return the error of an expression whose text begins at `offset`, or that was used there."""
         return self.source.error(
             problem.what,
-            offset + (problem.column or 1) - 1,
+            offset + (problem.column or 1) - 1 if inside else offset,
             required=problem.required,
             found=problem.found,
             hint=problem.hint,
@@ -218,7 +225,7 @@ class Scope:
             if not all(single for _, single in spans):
                 return None
             found = [span[0] for span, _ in spans]
-            self._singles.update((part, qubit) for (part, _), qubit in zip(parts, found, strict=True))
+            self._singles.update(zip(text.split(","), found, strict=True))
         if len(set(found)) < len(found):
             self.check_distinct(found, text, offset)
         qubits = tuple(found)
@@ -245,6 +252,7 @@ class Scope:
 
     def operand(self, text: str, offset: int, registers: dict[str, range]) -> tuple[range, bool]:
         """Return the indices that an operand names, and whether it is a single one."""
+        offset += len(text) - len(text.lstrip())
         bare = text.strip()
         quantum = registers is self.qubit_registers
         what = "qubit" if quantum else "bit"

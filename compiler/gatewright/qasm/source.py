@@ -11,7 +11,7 @@ from typing import TypeVar
 
 from gatewright.errors import GatewrightError, QasmError, shorten
 
-__all__ = ["MAX_BYTES", "Source", "read_text"]
+__all__ = ["MAX_BYTES", "Source", "decode", "read_text"]
 
 #: Largest text that is read, in bytes.
 MAX_BYTES = 2**28
@@ -47,6 +47,17 @@ def read_text(path: str | os.PathLike[str]) -> str:
         raise QasmError(
             "the file is too large", required=f"at most {MAX_BYTES // 2**20} MiB", found="more", where=where
         )
+    return decode(data, where=where)
+
+
+def decode(data: bytes, *, where: str = "") -> str:
+    """Return the text that `data` holds in UTF-8.
+
+    Raises
+    ------
+    QasmError
+        With the place of the first byte that is not text.
+    """
     try:
         return data.decode("utf-8-sig")
     except UnicodeDecodeError as problem:

@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from gatewright.circuit import Circuit
-from gatewright.errors import CircuitError, QasmError, shorten
+from gatewright.errors import CircuitError, QasmError, UnsupportedError, shorten
 from gatewright.gates import BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
 from gatewright.qasm.definitions import same_gate
 from gatewright.qasm.library import BUILT_IN, DEFINITIONS, LIBRARIES, LIBRARY_FILES
@@ -111,16 +111,24 @@ def angle_texts(values: ArrayLike) -> list[str]:
     # Unique by bits, which keeps -0.0 apart from 0.0.
     bits, inverse = np.unique(given.view(np.int64), return_inverse=True)
     unique = bits.view(np.float64)
-    texts = [_decimal(repr(value)) for value in unique.tolist()]
-    turns = unique / np.pi
-    rest = np.flatnonzero((unique != 0) & (np.abs(turns) <= _LARGEST_FACTOR))
+    texts = list(map(repr, unique.tolist()))
+    size = np.abs(unique)
+    for place in np.flatnonzero((size < 1e-3) | (size > 1e15)).tolist():
+        texts[place] = _decimal(texts[place])
+    rest = np.flatnonzero((size > 0) & (size <= _LARGEST_FACTOR * np.pi))
+    angles, turns = unique[rest], unique[rest] / np.pi
     for divisor in _DIVISORS:
-        factor = np.rint(turns[rest] * divisor)
-        same = (factor * np.pi / divisor == unique[rest]) & (factor != 0) & (np.abs(factor) <= _LARGEST_FACTOR)
+        factor = np.rint(turns * divisor)
+        same = factor * np.pi / divisor == angles
+        if not same.any():
+            continue
+        # In lowest terms only: 13*pi/13 is the neighbour of pi, and no better than its decimals.
+        small = (factor != 0) & (np.abs(factor) <= _LARGEST_FACTOR)
+        same[same] = small[same] & (np.gcd(factor[same].astype(np.int64), divisor) == 1)
         for place, k in zip(rest[same].tolist(), factor[same].astype(int).tolist(), strict=True):
             number = {1: "pi", -1: "-pi"}.get(k, f"{k}*pi")
             texts[place] = number if divisor == 1 else f"{number}/{divisor}"
-        rest = rest[~same]
+        rest, angles, turns = rest[~same], angles[~same], turns[~same]
     return [texts[k] for k in inverse.tolist()]
 
 
@@ -179,7 +187,7 @@ def _check(version: int, texts: Mapping[str, str], gates: Mapping[str, Gate]) ->
     end = "qreg only[1];" if version == 2 else "qubit[1] only;"
     try:
         read("\n".join([start, *texts.values(), end]), natives=gates)
-    except QasmError as problem:
+    except (QasmError, UnsupportedError) as problem:
         raise CircuitError(
             "a definition of a native gate cannot be used", found=problem.what, hint=problem.hint
         ) from None

@@ -5,9 +5,6 @@ from __future__ import annotations
 from collections.abc import Iterable
 from typing import TYPE_CHECKING, Any, TextIO
 
-from rich.console import Console
-from rich.table import Table
-
 if TYPE_CHECKING:
     from gatewright.pipeline import Result
     from gatewright.proof import Verdict
@@ -15,22 +12,8 @@ if TYPE_CHECKING:
 __all__ = ["print_description", "print_result", "print_verdict"]
 
 
-def _console(stream: TextIO) -> Console:
-    return Console(file=stream, highlight=False, soft_wrap=True)
-
-
-def _table(rows: Iterable[tuple[str, str, str]], heads: tuple[str, str, str]) -> Table:
-    table = Table(box=None, pad_edge=False, padding=(0, 2, 0, 0))
-    for number, head in enumerate(heads):
-        table.add_column(head, justify="right" if number == 1 else "left", overflow="fold")
-    for row in rows:
-        table.add_row(*row)
-    return table
-
-
 def print_result(result: Result, stream: TextIO) -> None:
     """Print costs, bounds, placement and proof of a compilation."""
-    console = _console(stream)
     costs, verdict = result.costs, result.verdict
     gates = ", ".join(f"{number} {name}" for name, number in costs.by_gate.items()) or "none"
     rows = [
@@ -50,12 +33,14 @@ def print_result(result: Result, stream: TextIO) -> None:
     for entry in result.budget:
         met = "met" if entry["met"] else "NOT MET"
         rows.append((f"budget {entry['name']}", f"{entry['relation']} {entry['limit']:g}", met))
-    console.print(f"{result.source.n_qubits} qubits on {result.device.name} ({result.device.gate_set.name})")
-    console.print(_table(rows, ("cost", "value", "")))
-    console.print(f"operations: {gates}", markup=False)
-    for name, places in (("in", result.initial), ("out", result.final)):
-        console.print(f"placement {name}: " + _places(places), markup=False)
-    console.print(f"note on the lower bound: {result.lower_bound.how}", markup=False)
+    print(f"{result.source.n_qubits} qubits on {result.device.name} ({result.device.gate_set.name})", file=stream)
+    name_width, value_width = (max(len(row[column]) for row in rows) for column in (0, 1))
+    for name, value, remark in rows:
+        print(f"  {name:<{name_width}}  {value:>{value_width}}  {remark}".rstrip(), file=stream)
+    print(f"operations: {gates}", file=stream)
+    print(f"placement in: {_places(result.initial)}", file=stream)
+    print(f"placement out: {_places(result.final)}", file=stream)
+    print(f"note on the lower bound: {result.lower_bound.how}", file=stream)
 
 
 def _places(places: tuple[int, ...]) -> str:
@@ -64,23 +49,19 @@ def _places(places: tuple[int, ...]) -> str:
 
 def print_verdict(verdict: Verdict, stream: TextIO) -> None:
     """Print what the checker found."""
-    console = _console(stream)
-    console.print(f"equal within {verdict.error_bound:.3g} (operator norm, up to global phase)", markup=False)
-    console.print(f"method: {verdict.method}", markup=False)
+    print(f"equal within {verdict.error_bound:.3g} (operator norm, up to global phase)", file=stream)
+    print(f"method: {verdict.method}", file=stream)
     if verdict.windows:
-        console.print(
-            f"windows: {verdict.windows}; the worst, number {verdict.worst_window}, is {verdict.worst_distance:.3g} off",
-            markup=False,
-        )
-    console.print("placement in: " + _places(verdict.initial), markup=False)
-    console.print("placement out: " + _places(verdict.final), markup=False)
+        worst = f"the worst, number {verdict.worst_window}, is {verdict.worst_distance:.3g} off"
+        print(f"windows: {verdict.windows}; {worst}", file=stream)
+    print(f"placement in: {_places(verdict.initial)}", file=stream)
+    print(f"placement out: {_places(verdict.final)}", file=stream)
 
 
 def print_description(facts: dict[str, Any], stream: TextIO) -> None:
     """Print facts as indented lines."""
-    console = _console(stream)
     for line in _lines(facts, 0):
-        console.print(line, markup=False)
+        print(line, file=stream)
 
 
 def _lines(value: dict[str, Any], depth: int) -> Iterable[str]:
@@ -88,8 +69,8 @@ def _lines(value: dict[str, Any], depth: int) -> Iterable[str]:
     for key, entry in value.items():
         name = key.replace("_", " ")
         if isinstance(entry, dict):
-            yield f"{pad}{name}:"
-            yield from _lines(entry, depth + 1)
+            lines = list(_lines(entry, depth + 1))
+            yield from [f"{pad}{name}:", *lines] if lines else []
         elif isinstance(entry, list) and entry and isinstance(entry[0], dict):
             yield f"{pad}{name}:"
             for item in entry:

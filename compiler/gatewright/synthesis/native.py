@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -65,6 +66,7 @@ class NativeSet:
     entangler: NativeEntangler | None
 
 
+@lru_cache(maxsize=64)
 def native_set(gate_set: GateSet, *, tolerance: float = 1e-12) -> NativeSet:
     """Plan the use of a gate set.
 
