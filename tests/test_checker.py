@@ -110,7 +110,9 @@ OUTPUT_DAMAGE: dict[str, Callable[[Circuit], Circuit]] = {
     "a pulse moved to another qubit": lambda c: requbited(c, "sx", [(c.qubits_of(row(c, "sx"))[0] + 1) % 5]),
     "an entangler on an absent edge": lambda c: requbited(c, "cz", [0, 4]),
     "a measurement into the wrong bit": lambda c: relinked(c, (int(c.link[row(c, "measure")]) + 1) % 4),
-    "a measurement of the wrong qubit": lambda c: requbited(c, "measure", [(c.qubits_of(row(c, "measure"))[0] + 1) % 5]),
+    "a measurement of the wrong qubit": lambda c: requbited(
+        c, "measure", [(c.qubits_of(row(c, "measure"))[0] + 1) % 5]
+    ),
     "a measurement dropped": lambda c: c.take(np.delete(np.arange(len(c)), row(c, "measure"))),
     "a barrier dropped": lambda c: c.take(np.delete(np.arange(len(c)), row(c, "barrier"))),
 }

@@ -177,7 +177,9 @@ def test_budgets() -> None:
 
 def test_the_summary_has_every_promised_entry() -> None:
     summary = json.loads(json.dumps(gw.compile(random_circuit(3, 12, 1), line(4)).summary(), allow_nan=False))
-    assert {"version", "seed", "input", "output", "lower_bound", "placement", "proof", "budget", "seconds"} <= set(summary)
+    assert {"version", "seed", "input", "output", "lower_bound", "placement", "proof", "budget", "seconds"} <= set(
+        summary
+    )
     assert {"qubits", "operations", "two_qubit_gates"} <= set(summary["input"])
     assert {
         "qubits",

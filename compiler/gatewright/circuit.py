@@ -460,9 +460,7 @@ class Builder:
         """Append a barrier on `qubits`, or on all of them if none is given."""
         return self._append(BARRIER, qubits or tuple(range(self.n_qubits)))
 
-    def _append(
-        self, kind: Gate, qubits: Sequence[int], parameters: Sequence[float] = (), link: int = -1
-    ) -> Builder:
+    def _append(self, kind: Gate, qubits: Sequence[int], parameters: Sequence[float] = (), link: int = -1) -> Builder:
         if kind.n_qubits not in (ANY, len(qubits)):
             raise CircuitError(
                 f"wrong number of qubits for '{kind.name}'", required=str(kind.n_qubits), found=str(len(qubits))

@@ -98,9 +98,7 @@ class Bound:
     how: str
 
 
-@nb.njit(
-    "f8(i4[::1], i8[::1], f8[::1], f8[::1], f8[::1])", cache=True, nogil=True
-)
+@nb.njit("f8(i4[::1], i8[::1], f8[::1], f8[::1], f8[::1])", cache=True, nogil=True)
 def _asap(wires: Any, offsets: Any, durations: Any, free: Any, starts: Any) -> float:
     end = 0.0
     for k in range(len(starts)):

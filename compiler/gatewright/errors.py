@@ -50,7 +50,8 @@ __all__ = [
 
 def shorten(text: object, limit: int = 60) -> str:
     """Return `text` as one printable line of at most `limit` characters, for quoting in a message."""
-    line = "".join(c if c.isprintable() else "\N{REPLACEMENT CHARACTER}" for c in str(text)[: 4 * limit])
+    start = str(text)[: 4 * limit]
+    line = "".join(c if c.isprintable() else " " if c.isspace() else "\N{REPLACEMENT CHARACTER}" for c in start)
     line = " ".join(line.split())
     return line if len(line) <= limit else line[: limit - 1] + "\N{HORIZONTAL ELLIPSIS}"
 
@@ -225,9 +226,7 @@ class ProofError(GatewrightError):
         self.window = window
         self.qubits = qubits
         self.distance = distance
-        super().__init__(
-            what, required=required, found=found, hint=hint, where=where, line=line, column=column
-        )
+        super().__init__(what, required=required, found=found, hint=hint, where=where, line=line, column=column)
 
 
 class BudgetError(GatewrightError):

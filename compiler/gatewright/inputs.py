@@ -80,9 +80,7 @@ def load(
     data = _read_bytes(name, where)
     if suffix in MATRIX_SUFFIXES or (suffix not in PROGRAM_SUFFIXES and _MATRIX.match(data)):
         source = path if suffix in MATRIX_SUFFIXES else data
-        given = read_matrix(
-            source, qubit_order=qubit_order, tolerance=tolerance, nearest=nearest_unitary, where=where
-        )
+        given = read_matrix(source, qubit_order=qubit_order, tolerance=tolerance, nearest=nearest_unitary, where=where)
         return Source(Circuit.from_unitary(given.matrix), given.moved)
     text = decode(data, where=where)
     return Source(read_program(text, where=where, natives=natives), qubit_map=read_map(text, where=where))

@@ -229,7 +229,5 @@ def checked_unitary(
     if defect > max(tolerance, 1e-12) and not nearest:
         raise NotUnitaryError(defect=defect, distance=moved, tolerance=max(tolerance, 1e-12), where=where)
     if moved > 0.999 and float(np.linalg.svd(u, compute_uv=False)[-1]) < 1e-6:
-        raise MatrixError(
-            "the matrix is singular, and has no unitary nearest to it", required="full rank", where=where
-        )
+        raise MatrixError("the matrix is singular, and has no unitary nearest to it", required="full rank", where=where)
     return unitary, moved

@@ -375,9 +375,7 @@ def _second_opinion(source: Circuit, output: Circuit, verdict: Verdict, steps: i
     return replace(verdict, method=verdict.method + "; full unitaries compared as well")
 
 
-def _lower_bound(
-    circuit: Circuit, expanded: Circuit, native: NativeSet, tolerance: float, *, stays: bool
-) -> Bound:
+def _lower_bound(circuit: Circuit, expanded: Circuit, native: NativeSet, tolerance: float, *, stays: bool) -> Bound:
     """Sum the least number of entanglers over the input's own windows."""
     fused = fuse_circuit(expanded)
     if native.entangler is None or not np.count_nonzero(fused.kind == TWO):

@@ -229,8 +229,17 @@ def _check(options: argparse.Namespace) -> int:
             error.hint = error.hint or _changed(proof.source, proof.output, source.circuit, output.circuit)
         raise
     if options.json:
-        _write({options.json: _to_json(verdict.to_dict() | {"placement": {
-            "initial": list(verdict.initial), "final": list(verdict.final)}, "legality_checked": device is not None})})
+        _write(
+            {
+                options.json: _to_json(
+                    verdict.to_dict()
+                    | {
+                        "placement": {"initial": list(verdict.initial), "final": list(verdict.final)},
+                        "legality_checked": device is not None,
+                    }
+                )
+            }
+        )
     if options.json != "-":
         print_verdict(verdict, sys.stdout)
     return 0

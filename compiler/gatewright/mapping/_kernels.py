@@ -43,7 +43,19 @@ def link(wires, offsets, n_all):
     nogil=True,
 )
 def sweep(
-    wires, offsets, owner, onward, coupled, n_all, starts, neighbours, distance, weight, position, settings, state,
+    wires,
+    offsets,
+    owner,
+    onward,
+    coupled,
+    n_all,
+    starts,
+    neighbours,
+    distance,
+    weight,
+    position,
+    settings,
+    state,
     record,
 ):
     """Run one pass over the operations in the direction of `onward`; `position` is moved to where the wires end.

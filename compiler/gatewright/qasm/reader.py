@@ -10,7 +10,6 @@ from __future__ import annotations
 import os
 import re
 from collections.abc import Callable, Mapping, Sequence
-from types import MappingProxyType
 from typing import Any
 
 import numpy as np
@@ -49,7 +48,7 @@ _MEASURE = re.compile(r"measure\b(.*)", re.DOTALL)
 _ARROW = re.compile(r"measure\b(.*)->(.*)", re.DOTALL)
 
 
-def read(text: str, *, where: str = "", natives: Mapping[str, Gate] = MappingProxyType({})) -> Circuit:
+def read(text: str, *, where: str = "", natives: Mapping[str, Gate] | None = None) -> Circuit:
     """Read an OpenQASM program.
 
     Versions 2.0, 3.0 and 3.1 (3.0 where the version line is missing); ``include`` of the version's own standard
@@ -65,7 +64,7 @@ def read(text: str, *, where: str = "", natives: Mapping[str, Gate] = MappingPro
     text : str
     where : str
         File name for messages.
-    natives : mapping of str to Gate
+    natives : mapping of str to Gate, optional
         Native gates of a device: calls of these names stay what they are. Where the program or its library
         defines such a gate, it has to agree with the native matrix up to global phase.
 
@@ -86,10 +85,10 @@ def read(text: str, *, where: str = "", natives: Mapping[str, Gate] = MappingPro
     >>> [(op.name, op.qubits) for op in c]
     [('h', (0,)), ('cx', (0, 1)), ('rz', (0,)), ('rz', (1,))]
     """
-    return _Reader(Source(text, where), natives).read()
+    return _Reader(Source(text, where), natives or {}).read()
 
 
-def read_file(path: str | os.PathLike[str], *, natives: Mapping[str, Gate] = MappingProxyType({})) -> Circuit:
+def read_file(path: str | os.PathLike[str], *, natives: Mapping[str, Gate] | None = None) -> Circuit:
     """Read an OpenQASM file, or standard input for ``-``; see `read`."""
     where = "<stdin>" if os.fspath(path) == "-" else os.fspath(path)
     return read(read_text(path), where=where, natives=natives)

@@ -1,20 +1,44 @@
-"""temp."""
+"""Second stage: choose the physical qubit on which each source qubit starts."""
+
+from __future__ import annotations
+
 from dataclasses import replace
+
 import numpy as np
-from gatewright.stages import _temp_mapping as T
-def place(draft):
-    n=draft.device.n_qubits; c=draft.circuit
-    g=T.graph(draft.device.edges,n)
-    two=np.flatnonzero(c.is_unitary&(c.widths==2))
-    w=c.qubits[c.offsets[two][:,None]+np.arange(2)].ravel().astype(np.int32)
-    off=np.arange(0,2*len(two)+1,2,dtype=np.int32)
-    cp=np.ones(len(two),np.uint8)
-    best=None; r=np.random.default_rng(draft.settings.seed)
-    for t in range(6):
-        pos=r.permutation(n).astype(np.int32)
-        for k in range(2):
-            T.sweep(g,w,off,cp,n,pos,t); T.sweep(g,w,off,cp,n,pos,t,back=True)
-        start=pos.copy()
-        x=T.sweep(g,w,off,cp,n,pos,t)
-        if best is None or x[2]<best[0]: best=(x[2],start)
-    return replace(draft,initial=best[1])
+
+from gatewright.mapping.placement import place as choose
+from gatewright.mapping.routing import Graph, Operations, make_graph, make_operations
+from gatewright.stages.draft import Draft
+
+__all__ = ["place"]
+
+
+def place(draft: Draft) -> Draft:
+    """Choose a start placement; on a device where all pairs are coupled any will do.
+
+    Raises
+    ------
+    DisconnectedError, InputError
+        See `gatewright.mapping.placement.place`.
+    """
+    graph, operations = mapping_task(draft)
+    initial = choose(
+        graph,
+        operations,
+        n_source=draft.circuit.n_qubits,
+        active=np.asarray(draft.device.active),
+        effort=draft.settings.effort,
+        seed=draft.settings.seed,
+        fixed=draft.settings.placement,
+    )
+    return replace(draft, initial=initial)
+
+
+def mapping_task(draft: Draft) -> tuple[Graph, Operations]:
+    """Return the coupling graph, and the circuit's operations on as many wires as the device has qubits."""
+    circuit, n = draft.circuit, draft.device.n_qubits
+    wires, offsets = circuit.lanes()
+    # Bits are numbered behind the circuit's own qubits; make room for the idle ones.
+    wires = np.where(wires >= circuit.n_qubits, wires + (n - circuit.n_qubits), wires)
+    coupled = circuit.is_unitary & (circuit.widths == 2)
+    return make_graph(draft.device.edges, n), make_operations(wires, offsets, coupled, n + circuit.n_bits)

@@ -1,39 +1,66 @@
-"""temp."""
+"""Third stage: insert swaps, and rename the qubits to physical ones."""
+
+from __future__ import annotations
+
 from dataclasses import replace
+
 import numpy as np
-from gatewright.circuit import *
+from numpy.typing import NDArray
+
+from gatewright.circuit import Piece, assemble
 from gatewright.gates import GATES
-from gatewright.stages import _temp_mapping as T
-from gatewright.mapping import _kernels as K
-def route(draft):
-    n=draft.device.n_qubits; c=draft.circuit
-    g=T.graph(draft.device.edges,n)
-    two=np.flatnonzero(c.is_unitary&(c.widths==2))
-    w=c.qubits[c.offsets[two][:,None]+np.arange(2)].ravel().astype(np.int32)
-    off=np.arange(0,2*len(two)+1,2,dtype=np.int32)
-    pos=draft.initial.copy()
-    x=T.sweep(g,w,off,np.ones(len(two),np.uint8),n,pos,1,rec=True)
-    ev=x[3].copy(); ev[ev>=0]=two[ev[ev>=0]]
-    lw,lo=c.lanes(); ev=K.weave(ev,lw,lo.astype(np.int32),n+c.n_bits)
-    swaps=ev<0
-    return relabel(draft, ev, pos)
-def relabel(draft,ev,final):
-    n=draft.device.n_qubits; c=draft.circuit
-    key=np.arange(len(ev),dtype=np.int64)
-    # place at each event
-    pos=draft.initial.copy(); occ=np.empty(n,int); occ[pos]=np.arange(n)
-    pieces=[];org=[]
-    rows=np.flatnonzero(ev>=0)
-    phys=np.empty(len(c.qubits),np.int32)
-    sw=[]
-    for e in ev.tolist():
-        if e>=0:
-            s=slice(c.offsets[e],c.offsets[e+1]); phys[s]=pos[c.qubits[s]]
-        else:
-            p,q=divmod(-1-e,n); u,v=occ[p],occ[q]; occ[p],occ[q]=v,u; pos[u],pos[v]=q,p; sw.append((p,q))
-    cc=replace(c,qubits=phys)
-    for chosen,piece in cc.pieces(ev[rows],key[rows]): pieces.append(piece); org.append(ev[rows][chosen])
-    if sw:
-        pieces.append(Piece(GATES["swap"],key[ev<0],np.array(sw))); org.append(np.full(len(sw),-1))
-    out,order=assemble(c,n,pieces)
-    return replace(draft,circuit=out,origin=np.concatenate(org)[order] if org else np.zeros(0,np.int64),swaps=len(sw),final=final)
+from gatewright.mapping.routing import Routing
+from gatewright.mapping.routing import route as find_route
+from gatewright.stages.draft import Draft
+from gatewright.stages.place import mapping_task
+
+__all__ = ["route"]
+
+
+def route(draft: Draft) -> Draft:
+    """Route the circuit from its start placement.
+
+    The result acts on all physical qubits of the device; ``origin`` says which operation each comes from.
+    """
+    graph, operations = mapping_task(draft)
+    routing = find_route(graph, operations, draft.initial, seed=draft.settings.seed)
+    circuit = draft.circuit
+    key = np.arange(len(routing.events), dtype=np.int64)
+    is_swap = routing.events < 0
+    rows = routing.events[~is_swap]
+    moved = replace(circuit, qubits=_physical(draft, routing))
+    pieces: list[Piece] = []
+    origins: list[NDArray[np.int64]] = []
+    for chosen, piece in moved.pieces(rows, key[~is_swap]):
+        pieces.append(piece)
+        origins.append(rows[chosen])
+    if len(routing.swaps):
+        pieces.append(Piece(GATES["swap"], key[is_swap], routing.swaps))
+        origins.append(np.full(len(routing.swaps), -1))
+    routed, order = assemble(circuit, graph.n, pieces)
+    origin = np.concatenate(origins)[order] if origins else np.zeros(0, dtype=np.int64)
+    return replace(draft, circuit=routed, origin=origin, final=routing.final, swaps=len(routing.swaps))
+
+
+def _physical(draft: Draft, routing: Routing) -> NDArray[np.int32]:
+    """Return the circuit's qubits at the time of each operation as physical qubits."""
+    circuit = draft.circuit
+    position = draft.initial.copy()
+    occupant = np.empty_like(position)
+    occupant[position] = np.arange(len(position))
+    qubits = np.empty_like(circuit.qubits)
+    events = routing.events
+    swap_at = np.flatnonzero(events < 0)
+    start = 0
+    # Between two swaps nothing moves: one gather serves all operations there.
+    for at, (p, q) in zip([*swap_at.tolist(), len(events)], [*routing.swaps.tolist(), (0, 0)], strict=True):
+        rows = events[start:at]
+        if len(rows):
+            first, width = circuit.offsets[rows], circuit.widths[rows]
+            flat = np.repeat(first - (np.cumsum(width) - width), width) + np.arange(int(width.sum()))
+            qubits[flat] = position[circuit.qubits[flat]]
+        u, v = occupant[p], occupant[q]
+        if at < len(events):
+            occupant[p], occupant[q], position[u], position[v] = v, u, q, p
+        start = at + 1
+    return qubits

@@ -189,9 +189,7 @@ def synthesise(draft: Draft) -> Draft:
         made = native.entangler.entangler.synthesise(two, tolerance=draft.settings.tolerance)
         uses[fused.kind == TWO] = made.uses
         layers = np.ascontiguousarray(made.layers)
-    sites, seams, window_event = _runs(
-        fused, one, layers, uses, native, circuit.n_qubits, draft.settings.tolerance
-    )
+    sites, seams, window_event = _runs(fused, one, layers, uses, native, circuit.n_qubits, draft.settings.tolerance)
     output, windows = _emit(circuit, fused, sites, uses, window_event, native)
     step, final = _claim(draft, fused, windows, seams)
     return replace(draft, circuit=output, fused=fused, final=final, steps=(*draft.steps, step))
@@ -242,9 +240,7 @@ def _runs(
         entangler = native.entangler
         passes = np.array(entangler.passes_to if entangler else (-1, -1), dtype=np.int64)
         sign = np.array(entangler.sign if entangler else (1, 1), dtype=np.int64)
-        _carry(
-            kind, offsets, wires, uses, flush, passes, sign, native.plan.steers, angles, trailing, phases, n_wires
-        )
+        _carry(kind, offsets, wires, uses, flush, passes, sign, native.plan.steers, angles, trailing, phases, n_wires)
         angles[:, ::2] = _snapped(angles[:, ::2])
     # The output lacks what is owed: it is ahead of the source by the inverse.
     half = -phases / 2
@@ -274,15 +270,18 @@ def _quaternions(u: Array) -> NDArray[np.float64]:
     """Return (a, b, c, d) with u ∝ a − i(b X + c Y + d Z)."""
     determinant = u[:, 0, 0] * u[:, 1, 1] - u[:, 0, 1] * u[:, 1, 0]
     m = u / np.sqrt(determinant)[:, None, None]
-    return np.stack(
-        [
-            (m[:, 0, 0] + m[:, 1, 1]).real,
-            -(m[:, 0, 1] + m[:, 1, 0]).imag,
-            (m[:, 1, 0] - m[:, 0, 1]).real,
-            (m[:, 1, 1] - m[:, 0, 0]).imag,
-        ],
-        axis=1,
-    ) / 2
+    return (
+        np.stack(
+            [
+                (m[:, 0, 0] + m[:, 1, 1]).real,
+                -(m[:, 0, 1] + m[:, 1, 0]).imag,
+                (m[:, 1, 0] - m[:, 0, 1]).real,
+                (m[:, 1, 1] - m[:, 0, 0]).imag,
+            ],
+            axis=1,
+        )
+        / 2
+    )
 
 
 def _quaternion_product(p: NDArray[np.float64], q: NDArray[np.float64]) -> NDArray[np.float64]:

@@ -46,9 +46,7 @@ class Fused:
     wires: NDArray[np.int32]
 
 
-@nb.njit(
-    "Tuple((i4[::1], i1[::1], i8[::1], i8))(i4[::1], i8[::1], b1[::1], i8)", cache=True, nogil=True
-)
+@nb.njit("Tuple((i4[::1], i1[::1], i8[::1], i8))(i4[::1], i8[::1], b1[::1], i8)", cache=True, nogil=True)
 def _assign(qubits: Any, offsets: Any, unitary: Any, n_wires: int) -> Any:
     m = len(unitary)
     window = np.empty(m, np.int32)
