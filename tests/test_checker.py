@@ -12,11 +12,11 @@ from typing import Any
 
 import numpy as np
 import pytest
-from circuits import random_circuit
 from hypothesis import given
 from hypothesis import strategies as st
 
 import gatewright as gw
+from circuits import random_circuit
 from gatewright.circuit import Builder, Circuit
 from gatewright.errors import ProofError
 from gatewright.gates import GATES

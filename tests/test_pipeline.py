@@ -7,11 +7,11 @@ import threading
 
 import numpy as np
 import pytest
-from circuits import random_circuit
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 import gatewright as gw
+from circuits import random_circuit
 from gatewright.circuit import Builder
 from gatewright.errors import (
     BudgetError,
@@ -64,7 +64,8 @@ def test_h_then_cnot_makes_a_bell_pair() -> None:
     result = gw.compile(Builder(2).gate("h", 0).gate("cx", 0, 1).build(), complete(2))
     state = result.circuit.unitary()[:, 0]
     assert np.allclose(np.abs(state), [np.sqrt(0.5), 0, 0, np.sqrt(0.5)], atol=1e-14)
-    assert result.circuit.count("sx") == 2
+    # H is one quarter turn between frame changes; a CNOT is a CZ between two of them on the target.
+    assert result.circuit.count("sx") == 3
     assert result.circuit.count("cz") == 1
 
 
@@ -84,17 +85,21 @@ def test_unitaries_of_any_size(n: int, gate_set: str) -> None:
     result = gw.compile(u, complete(max(n, 2), gate_set))
     source = gw.Circuit.from_unitary(u)
     assert dense_distance(source, result.circuit, result.initial, result.final) < 1e-13 * 4**n
-    # Shende, Bullock, Markov, IEEE TCAD 25, 1000 (2006): 9/16 4ⁿ − 3/2 2ⁿ by the plain Shannon decomposition.
-    if n > 1:
+    # Shende, Bullock, Markov, IEEE TCAD 25, 1000 (2006): 9/16 4ⁿ − 3/2 2ⁿ CNOTs by the plain Shannon decomposition.
+    if n > 1 and gate_set != "iswap-virtual-z":
         assert result.costs.two_qubit_gates <= 9 * 4**n // 16 - 3 * 2**n // 2 + 3 * (n == 2)
 
 
 def test_special_unitaries_cost_little() -> None:
     device = complete(3)
     assert gw.compile(np.eye(8), device).costs.operations == 0
-    assert gw.compile(np.kron(haar_unitary(2, rng=1), np.eye(4)), device).costs.two_qubit_gates == 0
+    assert gw.compile(np.kron(np.eye(2), haar_unitary(4, rng=1)), device).costs.two_qubit_gates == 3
+    diagonal = np.diag(np.exp(1j * np.random.default_rng(1).normal(size=8)))
+    # A diagonal on n qubits takes at most 2ⁿ − 2: Bullock and Markov, QIC 4, 27 (2004); six here.
+    assert gw.compile(diagonal, device).costs.two_qubit_gates <= 6
 
 
+@settings(max_examples=20)
 @given(st.integers(0, 2**32))
 def test_the_same_seed_gives_the_same_bytes(seed: int) -> None:
     circuit = random_circuit(5, 20, seed, measured=True)

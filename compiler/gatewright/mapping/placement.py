@@ -90,7 +90,9 @@ def place(
     )
     task.home[:] = _homes(task, pairs, active)
     joint = np.flatnonzero((np.diff(operations.offsets) > 1) | (operations.coupled == 1))
-    perfect = embed(graph, task.weight > 0, task.fixed, task.home, active, steps=EMBEDDING_STEPS[effort], rng=rng)
+    perfect = _where_they_are(task, pairs, active)
+    if perfect is None:
+        perfect = embed(graph, task.weight > 0, task.fixed, task.home, active, steps=EMBEDDING_STEPS[effort], rng=rng)
     if perfect is not None:
         return _completed(perfect, task, active, rng)
     if (task.fixed[:n_source] >= 0).all():
@@ -110,6 +112,15 @@ def place(
             start = router.run(forwards.end, seed=seed + 97 * trial + round_, backwards=True).end
     assert best is not None
     return best[2]
+
+
+def _where_they_are(task: _Task, pairs: Integers, active: NDArray[np.bool_]) -> Integers | None:
+    """Return the placement of every wire on the qubit of its own number, if no gate needs a swap there."""
+    own = np.full(task.graph.n, -1, dtype=np.int32)
+    own[task.used] = task.used
+    as_fixed = np.array_equal(task.fixed[task.fixed >= 0], np.flatnonzero(task.fixed >= 0))
+    meet = bool((task.graph.distance[pairs[:, 0], pairs[:, 1]] == 1).all())
+    return own if meet and as_fixed and active[task.used].all() else None
 
 
 def _interactions(pairs: Integers, n: int) -> NDArray[np.float64]:

@@ -20,7 +20,7 @@ __all__ = ["Graph", "Operations", "Pass", "Routing", "make_graph", "make_operati
 
 Integers = NDArray[np.int32]
 
-#: Gates looked at beyond the blocked ones, their share in a swap's score and its fading, what repeats and swaps cost.
+#: Gates looked at beyond the blocked ones, their share in a swap's score, its fading, and the costs of haste.
 AHEAD, AHEAD_SHARE, FADING, DECAY, PRICE = 20, 0.5, 1.0, 0.001, 0.0
 #: Distance of qubits without a path.
 FAR = 30_000
