@@ -77,6 +77,8 @@ def _decompose(unitary: Array, wires: tuple[int, ...]) -> list[_Term]:
     left, theta, right = cossin(unitary, p=half, q=half, separate=True)
     angles = 2 * np.asarray(theta, dtype=np.float64)
     u1, u2, v1, v2 = (np.asarray(block, dtype=np.complex128) for block in (*left, *right))
+    if np.abs(angles).max() <= NEGLIGIBLE:
+        return _demultiplex(u1 @ v1, u2 @ v2, wires)
     return [
         *_demultiplex(v1, v2, wires),
         *_multiplexed_rotation("ry", angles, wires[1:], wires[0]),
