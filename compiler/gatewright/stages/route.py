@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from typing import Any
 
+import numba as nb
 import numpy as np
 from numpy.typing import NDArray
 
 from gatewright.circuit import Piece, assemble
 from gatewright.gates import GATES
-from gatewright.mapping.routing import Routing
 from gatewright.mapping.routing import route as find_route
 from gatewright.stages.draft import Draft
 from gatewright.stages.place import mapping_task
@@ -28,7 +29,8 @@ def route(draft: Draft) -> Draft:
     key = np.arange(len(routing.events), dtype=np.int64)
     is_swap = routing.events < 0
     rows = routing.events[~is_swap]
-    moved = replace(circuit, qubits=_physical(draft, routing))
+    physical = _physical(routing.events, routing.swaps, circuit.qubits, circuit.offsets, draft.initial)
+    moved = replace(circuit, qubits=physical)
     pieces: list[Piece] = []
     origins: list[NDArray[np.int64]] = []
     for chosen, piece in moved.pieces(rows, key[~is_swap]):
@@ -42,25 +44,20 @@ def route(draft: Draft) -> Draft:
     return replace(draft, circuit=routed, origin=origin, final=routing.final, swaps=len(routing.swaps))
 
 
-def _physical(draft: Draft, routing: Routing) -> NDArray[np.int32]:
-    """Return the circuit's qubits at the time of each operation as physical qubits."""
-    circuit = draft.circuit
-    position = draft.initial.copy()
+@nb.njit("i4[::1](i8[::1], i4[:,::1], i4[::1], i8[::1], i4[::1])", cache=True, nogil=True)
+def _physical(events: Any, swaps: Any, qubits: Any, offsets: Any, initial: Any) -> Any:
+    """Return the qubits of each operation as the physical qubits that hold them at its time."""
+    position = initial.copy()
     occupant = np.empty_like(position)
-    occupant[position] = np.arange(len(position))
-    qubits = np.empty_like(circuit.qubits)
-    events = routing.events
-    swap_at = np.flatnonzero(events < 0)
-    start = 0
-    # Between two swaps nothing moves: one gather serves all operations there.
-    for at, (p, q) in zip([*swap_at.tolist(), len(events)], [*routing.swaps.tolist(), (0, 0)], strict=True):
-        rows = events[start:at]
-        if len(rows):
-            first, width = circuit.offsets[rows], circuit.widths[rows]
-            flat = np.repeat(first - (np.cumsum(width) - width), width) + np.arange(int(width.sum()))
-            qubits[flat] = position[circuit.qubits[flat]]
-        u, v = occupant[p], occupant[q]
-        if at < len(events):
+    for wire in range(len(position)):
+        occupant[position[wire]] = wire
+    moved = np.empty_like(qubits)
+    for event in events:
+        if event >= 0:
+            for j in range(offsets[event], offsets[event + 1]):
+                moved[j] = position[qubits[j]]
+        else:
+            p, q = swaps[-1 - event, 0], swaps[-1 - event, 1]
+            u, v = occupant[p], occupant[q]
             occupant[p], occupant[q], position[u], position[v] = v, u, q, p
-        start = at + 1
-    return qubits
+    return moved
