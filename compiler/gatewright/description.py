@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 from typing import Any
 
 import numpy as np
@@ -64,7 +63,7 @@ def counting_bound(n: int) -> int:
     ----------
     Shende, Markov, Bullock, PRA 69, 062321 (2004): ⌈(4ⁿ − 3n − 1)/4⌉.
     """
-    return math.ceil((4**n - 3 * n - 1) / 4)
+    return max(0, (int(4**n) - 3 * n + 2) // 4)
 
 
 def _matrix(matrix: ArrayLike) -> dict[str, Any]:

@@ -50,22 +50,10 @@ def _say(line: str) -> None:
     print(line, file=sys.stderr, flush=True)
 
 
-def _tell_of_kernels() -> None:
-    """Say on stderr that kernels are being compiled, should that be necessary: it takes seconds, and only once."""
-    from numba.core import event
+def _prepare() -> None:
+    from gatewright.kernels import load_kernels
 
-    class Teller(event.Listener):  # type: ignore[misc]
-        told = False
-
-        def on_start(self, _: Any) -> None:
-            if not self.told:
-                self.told = True
-                _say("gatewright: compiling numerical kernels, once for this installation: a few seconds")
-
-        def on_end(self, _: Any) -> None:
-            pass
-
-    event.register("numba:compile", Teller())
+    load_kernels(lambda line: _say(f"gatewright: {line}"))
 
 
 @contextmanager
@@ -129,10 +117,8 @@ def _different(names: list[str | None]) -> None:
 
 
 def _compiled(options: argparse.Namespace) -> Result:
-    _tell_of_kernels()
     from gatewright.devices import read_device
     from gatewright.inputs import load
-    from gatewright.pipeline import compile as compile_source
 
     device = read_device(options.device)
     source = load(
@@ -141,6 +127,10 @@ def _compiled(options: argparse.Namespace) -> Result:
         nearest_unitary=options.nearest_unitary,
         qubit_order=options.qubit_order,
     )
+    # What is wrong with the input has been said before this: the kernels take longer to load than all of that.
+    _prepare()
+    from gatewright.pipeline import compile as compile_source
+
     with _progress() as progress:
         return compile_source(
             source.circuit,
@@ -197,10 +187,8 @@ def _count(options: argparse.Namespace) -> int:
 
 
 def _check(options: argparse.Namespace) -> int:
-    _tell_of_kernels()
     from gatewright.devices import read_device
     from gatewright.inputs import load
-    from gatewright.pipeline import check
     from gatewright.proof import read_proof
     from gatewright.report.terminal import print_verdict
 
@@ -214,6 +202,9 @@ def _check(options: argparse.Namespace) -> int:
     output = load(options.output, natives=beyond_the_library() if device is None else device.gate_set.natives)
     proof = read_proof(options.proof) if options.proof else None
     places = output.qubit_map
+    _prepare()
+    from gatewright.pipeline import check
+
     try:
         verdict = check(
             source.circuit,
@@ -266,18 +257,23 @@ def _changed(source_print: str, output_print: str, source: Any, output: Any) -> 
 
 
 def _describe(options: argparse.Namespace) -> int:
-    _tell_of_kernels()
-    from gatewright.description import describe
     from gatewright.devices import read_any, shipped_gate_sets
     from gatewright.inputs import load
     from gatewright.report.terminal import print_description
 
     name = options.thing
-    if name in shipped_gate_sets() or Path(name).suffix.lower() == ".toml":
-        facts = describe(read_any(name))
+    of_data = name in shipped_gate_sets() or Path(name).suffix.lower() == ".toml"
+    thing: Any = None
+    if of_data:
+        thing = read_any(name)
     else:
         source = load(name, nearest_unitary=options.nearest_unitary, qubit_order=options.qubit_order)
-        facts = describe(source.circuit.unitary())
+        thing = source.circuit.unitary()
+    _prepare()
+    from gatewright.description import describe
+
+    facts = describe(thing)
+    if not of_data:
         facts["distance_moved"] = source.moved
     if options.json:
         _write({options.json: _to_json(facts)})

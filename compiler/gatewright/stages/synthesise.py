@@ -8,6 +8,7 @@ at the end of a window in this way is its seam in the proof.
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, replace
 from typing import Any
 
@@ -31,7 +32,7 @@ Array = NDArray[np.complex128]
 
 @nb.njit(
     "i8(i1[::1], i8[::1], i4[::1], i4[::1], i4[::1], b1[::1], c16[:,:,:,:,::1], c16[:,:,::1], c16[:,:,::1], i8[::1],"
-    " i4[::1], i4[::1], c16[:,:,::1], i8[::1], i8)",
+    " i4[::1], i4[::1], c16[:,:,::1], i8[::1], c16[:,:,::1])",
     cache=True,
     nogil=True,
 )
@@ -50,12 +51,9 @@ def _merge(
     site_wire: Any,
     owed: Any,
     window_event: Any,
-    n_wires: int,
+    pending: Any,
 ) -> int:
     """Multiply one-qubit layers together along the wires; return the number of sites."""
-    pending = np.zeros((n_wires, 2, 2), np.complex128)
-    for p in range(n_wires):
-        pending[p, 0, 0] = pending[p, 1, 1] = 1
     site, event = 0, 0
     for w in range(len(kind)):
         window_event[w] = event
@@ -84,19 +82,24 @@ def _merge(
                     site += 1
                     event += 1
                     if layer == k:
-                        pending[p] = 0
+                        pending[p, 0, 1] = pending[p, 1, 0] = 0
                         pending[p, 0, 0] = pending[p, 1, 1] = 1
                 else:
-                    pending[p] = site_matrix[site]
+                    for a in range(2):
+                        for b in range(2):
+                            pending[p, a, b] = site_matrix[site, a, b]
             if layer < k:
                 event += 1
-        for j in range(width):
-            owed[offsets[w] + j] = pending[wires[offsets[w] + j]]
+        for j in range(offsets[w], offsets[w + 1]):
+            for a in range(2):
+                for b in range(2):
+                    owed[j, a, b] = pending[wires[j], a, b]
     return site
 
 
 @nb.njit(
-    "void(i1[::1], i8[::1], i4[::1], i4[::1], b1[::1], i8[::1], i8[::1], b1, f8[:,::1], b1[::1], f8[::1], i8)",
+    "void(i1[::1], i8[::1], i4[::1], i4[::1], b1[::1], i8[::1], i8[::1], b1, f8[:,::1], b1[::1], f8[::1], f8[::1],"
+    " f8[::1])",
     cache=True,
     nogil=True,
 )
@@ -112,11 +115,10 @@ def _carry(
     angles: Any,
     trailing: Any,
     owed: Any,
-    n_wires: int,
+    phase: Any,
+    moved: Any,
 ) -> None:
     """Move rotations about the plan's axis behind the entanglers that let them pass."""
-    phase = np.zeros(n_wires)
-    moved = np.zeros(2)
     site = 0
     for w in range(len(kind)):
         if kind[w] == 0:
@@ -150,7 +152,7 @@ def _carry(
             if layer < uses[w]:
                 for j in range(kind[w]):
                     p = wires[offsets[w] + j]
-                    phase[p] = moved[j] - 2 * np.pi * np.round(moved[j] / (2 * np.pi))
+                    phase[p] = moved[j] - 2 * np.pi * math.floor(moved[j] / (2 * np.pi) + 0.5)
         for j in range(kind[w]):
             owed[offsets[w] + j] = phase[wires[offsets[w] + j]]
 
@@ -227,8 +229,9 @@ def _runs(
     window, wire = np.empty(most, dtype=np.int32), np.empty(most, dtype=np.int32)
     owed = np.tile(np.eye(2, dtype=np.complex128), (len(wires), 1, 1))
     window_event = np.empty(len(kind), dtype=np.int64)
+    pending = np.tile(np.eye(2, dtype=np.complex128), (n_wires, 1, 1))
     total = _merge(
-        kind, offsets, wires, row, uses, flush, layers, one, matrix, event, window, wire, owed, window_event, n_wires
+        kind, offsets, wires, row, uses, flush, layers, one, matrix, event, window, wire, owed, window_event, pending
     )
     angles = np.ascontiguousarray(native.plan.angles(matrix[:total], tolerance=max(tolerance, ROUNDING)))
     trailing = np.zeros(total, dtype=np.bool_)
@@ -240,7 +243,8 @@ def _runs(
         entangler = native.entangler
         passes = np.array(entangler.passes_to if entangler else (-1, -1), dtype=np.int64)
         sign = np.array(entangler.sign if entangler else (1, 1), dtype=np.int64)
-        _carry(kind, offsets, wires, uses, flush, passes, sign, native.plan.steers, angles, trailing, phases, n_wires)
+        steers, phase = native.plan.steers, np.zeros(n_wires)
+        _carry(kind, offsets, wires, uses, flush, passes, sign, steers, angles, trailing, phases, phase, np.zeros(2))
         angles[:, ::2] = _snapped(angles[:, ::2])
     # The output lacks what is owed: it is ahead of the source by the inverse.
     half = -phases / 2

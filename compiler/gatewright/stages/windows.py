@@ -46,14 +46,12 @@ class Fused:
     wires: NDArray[np.int32]
 
 
-@nb.njit("Tuple((i4[::1], i1[::1], i8[::1], i8))(i4[::1], i8[::1], b1[::1], i8)", cache=True, nogil=True)
-def _assign(qubits: Any, offsets: Any, unitary: Any, n_wires: int) -> Any:
+@nb.njit("i8(i4[::1], i8[::1], b1[::1], i4[::1], i1[::1], i8[::1], i4[::1], i4[::1])", cache=True, nogil=True)
+def _assign(
+    qubits: Any, offsets: Any, unitary: Any, window: Any, kind: Any, creator: Any, merged: Any, last: Any
+) -> int:
+    """Fill `window`, `kind` and `creator`; `merged` and `last` come filled with -1. Return the number of windows."""
     m = len(unitary)
-    window = np.empty(m, np.int32)
-    kind = np.empty(m, np.int8)
-    creator = np.empty(m, np.int64)
-    merged = np.full(m, -1, np.int32)
-    last = np.full(n_wires, -1, np.int32)
     total = 0
     for k in range(m):
         start, width = offsets[k], offsets[k + 1] - offsets[k]
@@ -78,18 +76,17 @@ def _assign(qubits: Any, offsets: Any, unitary: Any, n_wires: int) -> Any:
             last[qubits[j]] = total
         total += 1
     # Number the windows that are left by their creation: that order holds along every wire.
-    number = np.empty(total, np.int32)
     alive = 0
     for w in range(total):
         if merged[w] < 0:
-            number[w] = alive
+            merged[w] = -1 - alive
             kind[alive] = kind[w]
             creator[alive] = creator[w]
             alive += 1
     for k in range(m):
         w = window[k]
-        window[k] = number[merged[w]] if merged[w] >= 0 else number[w]
-    return window, kind[:alive].copy(), creator[:alive].copy(), alive
+        window[k] = -1 - (merged[merged[w]] if merged[w] >= 0 else merged[w])
+    return alive
 
 
 def fuse_circuit(circuit: Circuit) -> Fused:
@@ -104,18 +101,23 @@ def fuse_circuit(circuit: Circuit) -> Fused:
     -------
     Fused
     """
-    window, kind, creator, _ = _assign(circuit.qubits, circuit.offsets, circuit.is_unitary, circuit.n_qubits)
-    created = circuit.take(creator)
-    return Fused(window, kind, created.offsets, created.qubits)
+    m = len(circuit)
+    window, kind, creator = np.empty(m, np.int32), np.empty(m, np.int8), np.empty(m, np.int64)
+    merged, last = np.full(m, -1, np.int32), np.full(circuit.n_qubits, -1, np.int32)
+    count = _assign(circuit.qubits, circuit.offsets, circuit.is_unitary, window, kind, creator, merged, last)
+    created = circuit.take(creator[:count])
+    return Fused(window, kind[:count].copy(), created.offsets, created.qubits)
 
 
 @nb.njit(
-    "void(i4[::1], i4[::1], i4[::1], c16[:,:,::1], c16[:,:,::1], i4[::1], c16[:,:,::1], c16[:,:,::1])",
+    "void(i4[::1], i4[::1], i4[::1], c16[:,:,::1], c16[:,:,::1], i4[::1], c16[:,:,::1], c16[:,:,::1], c16[:,::1])",
     cache=True,
     nogil=True,
 )
-def _multiply(place: Any, slot: Any, row: Any, one: Any, two: Any, width: Any, out_one: Any, out_two: Any) -> None:
-    old = np.empty((4, 4), np.complex128)
+def _multiply(
+    place: Any, slot: Any, row: Any, one: Any, two: Any, width: Any, out_one: Any, out_two: Any, old: Any
+) -> None:
+    """Multiply each operation onto the window at `place`; `slot` is -1 in a window of one wire, `old` is scratch."""
     for k in range(len(place)):
         w = place[k]
         if width[k] == 0:
@@ -137,7 +139,10 @@ def _multiply(place: Any, slot: Any, row: Any, one: Any, two: Any, width: Any, o
                     out_two[w, i, j] = a * x + b * y
                     out_two[w, i + step, j] = c * x + d * y
             continue
-        old[:] = out_two[w]
+        # Element by element: assigning slices would compile for seconds.
+        for i in range(4):
+            for j in range(4):
+                old[i, j] = out_two[w, i, j]
         for i in range(4):
             # With the wires exchanged, basis states 01 and 10 change places.
             p = i if slot[k] == 0 or i == 0 or i == 3 else 3 - i
@@ -178,5 +183,5 @@ def window_unitaries(circuit: Circuit, fused: Fused) -> tuple[Array, Array]:
         rank[chosen] = np.arange(np.count_nonzero(chosen))
     one = np.tile(np.eye(2, dtype=np.complex128), (int(np.sum(fused.kind == ONE)), 1, 1))
     two = np.tile(np.eye(4, dtype=np.complex128), (int(np.sum(fused.kind == TWO)), 1, 1))
-    _multiply(rank[fused.window], slot, row, tables[1], tables[2], widths, one, two)
+    _multiply(rank[fused.window], slot, row, tables[1], tables[2], widths, one, two, np.empty((4, 4), complex))
     return one, two

@@ -1,0 +1,56 @@
+"""Compile the numerical kernels when that is needed, say so, and use two cores for it.
+
+numba compiles a kernel once for an installation and keeps it in its cache. Loading what is in the cache takes a
+fraction of a second; compiling all of it, many seconds. The mapping kernels are then compiled by a second process while
+this one does the others.
+"""
+
+from __future__ import annotations
+
+import subprocess
+import sys
+from collections.abc import Callable
+from typing import Any
+
+__all__ = ["load_kernels"]
+
+_OTHERS = "import gatewright.mapping._kernels"
+
+
+def load_kernels(tell: Callable[[str], None]) -> None:
+    """Load every module with kernels, compiling them if need be.
+
+    Parameters
+    ----------
+    tell : callable
+        Called with one line if kernels have to be compiled.
+    """
+    import numba.core.event
+
+    event: Any = numba.core.event
+
+    helpers: list[subprocess.Popen[bytes]] = []
+
+    class Listener(event.Listener):  # type: ignore[misc]
+        def on_start(self, _: Any) -> None:
+            if not helpers:
+                tell("compiling numerical kernels, once for this installation: some seconds")
+                quiet = subprocess.DEVNULL
+                helpers.append(subprocess.Popen([sys.executable, "-c", _OTHERS], stdout=quiet, stderr=quiet))
+
+        def on_end(self, _: Any) -> None:
+            pass
+
+    listener = Listener()
+    event.register("numba:compile", listener)
+    try:
+        import gatewright.stages.synthesise
+
+        for helper in helpers:
+            helper.wait()
+        import gatewright.pipeline  # noqa: F401
+    finally:
+        event.unregister("numba:compile", listener)
+        for helper in helpers:
+            if helper.poll() is None:
+                helper.kill()
