@@ -25,7 +25,7 @@ from gatewright.errors import DeviceError, InputError, ProofError, nearest_name
 from gatewright.gates import GATES
 from gatewright.linalg import checked_unitary
 from gatewright.proof import Proof, Verdict, check_legal, check_proof, encode_proof
-from gatewright.proof.dense import dense_distance, dense_work, touched_qubits
+from gatewright.proof.dense import dense_distance, dense_work
 from gatewright.stages.draft import Draft, Settings, Stage
 from gatewright.stages.expand import expand
 from gatewright.stages.fuse import fuse
@@ -48,7 +48,7 @@ EFFORTS = ("quick", "standard", "deep")
 #: entanglers, and three times for each of its at most eight one-qubit runs.
 ROUNDING = 1e-11
 USES_OF_TOLERANCE = 25
-#: Full unitaries are compared as well below this many qubits, where that takes less than this many matrix entries.
+#: Full unitaries are compared as well up to this many qubits, where no more than this many matrix entries are computed.
 DENSE_QUBITS = 9
 DENSE_WORK = 2.5e8
 
@@ -249,7 +249,7 @@ def compile(  # noqa: A001
     proof = Proof(draft.steps)
     window_tolerance = ROUNDING + USES_OF_TOLERANCE * tolerance
     verdict = check_proof(circuit, draft.circuit, proof, device=device, tolerance=window_tolerance)
-    verdict = _second_opinion(circuit, draft.circuit, verdict, len(proof.steps), window_tolerance)
+    verdict = _second_opinion(circuit, draft.circuit, verdict)
     clock.start("count")
     costs = count_costs(draft.circuit, device, starts=draft.starts, swaps_inserted=draft.swaps)
     bound = _lower_bound(circuit, draft.expanded, native, tolerance, stays=verdict.initial == verdict.final)
@@ -353,13 +353,13 @@ def _placement(given: Sequence[int] | None, circuit: Circuit) -> tuple[int, ...]
     return placement
 
 
-def _second_opinion(source: Circuit, output: Circuit, verdict: Verdict, steps: int, tolerance: float) -> Verdict:
+def _second_opinion(source: Circuit, output: Circuit, verdict: Verdict) -> Verdict:
     """Compare the full unitaries of small circuits as well: this tests the checker."""
     places = verdict.initial, verdict.final
-    touched = len(touched_qubits(output, *places))
-    straight = all(gate.name not in ("reset",) for gate in source.table)
-    if touched > DENSE_QUBITS or not straight or dense_work(source, output, *places) > DENSE_WORK:
+    if source.n_qubits > DENSE_QUBITS:
         return verdict
+    if dense_work(source, output, *places) > DENSE_WORK:
+        return replace(verdict, method=verdict.method + "; too much for comparing full unitaries as well")
     try:
         distance = dense_distance(source, output, *places)
     except InputError:

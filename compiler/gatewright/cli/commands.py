@@ -217,7 +217,7 @@ def _check(options: argparse.Namespace) -> int:
         )
     except GatewrightError as error:
         if proof is not None and error.exit_code == 3:
-            error.hint = error.hint or _changed(proof.source, proof.output, source.circuit, output.circuit)
+            error.hint = _changed(proof.source, proof.output, source.circuit, output.circuit) or error.hint
         raise
     if options.json:
         _write(

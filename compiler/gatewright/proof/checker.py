@@ -209,6 +209,7 @@ def _differs(step: Step, window: int, distance: float, tolerance: float) -> NoRe
         distance=distance,
         required=f"distance at most {tolerance:.3g}",
         found=f"{distance:.6g}",
+        hint="what was compiled with a --tolerance may differ by 25 times that in a window" if distance < 1e-4 else "",
     )
 
 
