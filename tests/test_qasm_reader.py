@@ -19,7 +19,7 @@ from gatewright.errors import GatewrightError, QasmError, UnsupportedError
 from gatewright.expressions import parse as parse_expression
 from gatewright.gates import GATES, Gate
 from gatewright.linalg import distance
-from gatewright.qasm import read, read_file, read_text
+from gatewright.qasm import read, read_text
 from gatewright.qasm.library import LIBRARIES
 
 V2 = 'OPENQASM 2.0;\ninclude "qelib1.inc";\n'
@@ -501,18 +501,18 @@ def test_any_text_is_read_or_refused(text: str) -> None:
 def test_files(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     file = tmp_path / "a.qasm"
     file.write_bytes((V3 + "qubit q; h q;").encode())
-    assert rows(read_file(file)) == [("h", (0,))]
+    assert rows(read(read_text(file), where=str(file))) == [("h", (0,))]
     monkeypatch.setattr(sys, "stdin", io.TextIOWrapper(io.BytesIO(file.read_bytes())))
-    assert rows(read_file("-")) == [("h", (0,))]
+    assert rows(read(read_text("-"), where="-")) == [("h", (0,))]
     file.write_bytes((V3 + "qubit q; hh q;").encode())
     with pytest.raises(QasmError, match=r"a\.qasm:3:10: unknown gate 'hh'"):
-        read_file(file)
+        read(read_text(file), where=str(file))
 
 
 def test_files_that_cannot_be_read(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     for path in (tmp_path, tmp_path / "missing.qasm", "nul\0name"):
         with pytest.raises(QasmError, match="cannot be read"):
-            read_file(path)
+            read(read_text(path), where=str(path))
     for data in (b"\x89PNG\r\n\x1a\n\xff", "qubit ä;".encode("utf-16"), b"OPENQASM 3.0;\n// \xff"):
         (tmp_path / "binary").write_bytes(data)
         with pytest.raises(QasmError, match="not an OpenQASM text"):

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import os
 import re
-import sys
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -12,12 +11,11 @@ from types import MappingProxyType
 from typing import Literal
 
 from gatewright.circuit import Circuit
-from gatewright.errors import InputError
 from gatewright.gates import Gate
 from gatewright.matrices import read_matrix
 from gatewright.qasm import QubitMap, read_map
 from gatewright.qasm import read as read_program
-from gatewright.qasm.source import MAX_BYTES, decode
+from gatewright.qasm.source import decode, read_bytes
 
 __all__ = ["Source", "load", "read"]
 
@@ -77,33 +75,15 @@ def load(
     name = os.fspath(path)
     suffix = Path(name).suffix.lower()
     where = "<stdin>" if name == "-" else name
-    data = _read_bytes(name, where)
-    if suffix in MATRIX_SUFFIXES or (suffix not in PROGRAM_SUFFIXES and _MATRIX.match(data)):
-        source = path if suffix in MATRIX_SUFFIXES else data
-        given = read_matrix(source, qubit_order=qubit_order, tolerance=tolerance, nearest=nearest_unitary, where=where)
-        return Source(Circuit.from_unitary(given.matrix), given.moved)
-    text = decode(data, where=where)
-    return Source(read_program(text, where=where, natives=natives), qubit_map=read_map(text, where=where))
-
-
-def _read_bytes(name: str, where: str) -> bytes:
-    try:
-        if name == "-":
-            data = sys.stdin.buffer.read(MAX_BYTES + 1)
-        else:
-            if Path(name).is_dir():
-                raise InputError("this is a directory", required="a file", where=where)
-            with Path(name).open("rb") as file:
-                data = file.read(MAX_BYTES + 1)
-    except (OSError, ValueError) as error:
-        reason = getattr(error, "strerror", None) or str(error)
-        raise InputError("the file cannot be read", found=reason.lower(), where=where) from None
-    if len(data) > MAX_BYTES:
-        raise InputError("the file is too large", required=f"{MAX_BYTES >> 20} MiB at most", where=where)
-    if not data.strip():
-        required = "an OpenQASM program or a unitary matrix"
-        raise InputError("the file is empty", required=required, where=where)
-    return data
+    source: str | os.PathLike[str] | bytes = path
+    if suffix not in MATRIX_SUFFIXES:
+        data = read_bytes(path)
+        if suffix in PROGRAM_SUFFIXES or not _MATRIX.match(data):
+            text = decode(data, where=where)
+            return Source(read_program(text, where=where, natives=natives), qubit_map=read_map(text, where=where))
+        source = data
+    given = read_matrix(source, qubit_order=qubit_order, tolerance=tolerance, nearest=nearest_unitary, where=where)
+    return Source(Circuit.from_unitary(given.matrix), given.moved)
 
 
 def read(

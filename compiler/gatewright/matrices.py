@@ -111,7 +111,7 @@ def read_matrix(
                 entries = _read(file, where)
         except (OSError, ValueError) as problem:
             found = (problem.strerror if isinstance(problem, OSError) else None) or str(problem)
-            raise MatrixError("the file cannot be read", found=found, where=shorten(where)) from None
+            raise MatrixError("the file cannot be read", found=found, where=shorten(where, 300)) from None
     matrix, moved = checked_unitary(entries, tolerance=tolerance, nearest=nearest, where=where)
     if qubit_order == "last":
         matrix = reorder_qubits(matrix, tuple(reversed(range(len(matrix).bit_length() - 1))))

@@ -217,7 +217,9 @@ def _check(options: argparse.Namespace) -> int:
         )
     except GatewrightError as error:
         if proof is not None and error.exit_code == 3:
-            error.hint = _changed(proof.source, proof.output, source.circuit, output.circuit) or error.hint
+            changed = _changed(proof.source, proof.output, source.circuit, output.circuit)
+            own = "native gates of a device are known only with its --device" if changed and device is None else ""
+            error.hint = "; ".join(filter(None, (changed or error.hint, own)))
         raise
     if options.json:
         _write(

@@ -493,6 +493,7 @@ def _read_definition(table: Table, gate: Gate) -> str:
             raise table.fail(
                 f"'{table.path('definition')}' is missing",
                 required=f"an OpenQASM definition, as '{gate.name}' is not a well-known gate",
+                hint=f'such as definition = "gate {gate.name}(t) q {{ ry(t) q; }}"',
             )
         return ""
     text = table.get("definition")

@@ -1,20 +1,23 @@
 """Choose where a circuit's wires start on the device.
 
-Three sources of starts: an embedding of the whole interaction graph (no swap is needed then), found by bounded
-backtracking with forward checking, smallest domain first (Haralick and Elliott, Artif. Intell. 14, 263 (1980)); greedy
-growth along the strongest interactions; compact random regions. Each is improved by passes to and fro over the circuit
-(Li, Ding, Xie, ASPLOS 2019, arXiv:1809.02573), and the cheapest wins.
+Three sources of starts: an embedding of the interaction graph, or of as much of its beginning as embeds, found by
+bounded backtracking, the wire with the fewest places first (Haralick and Elliott, Artif. Intell. 14, 263 (1980));
+greedy growth along the strongest interactions; compact random regions. Each is improved by passes to and fro over the
+circuit (Li, Ding, Xie, ASPLOS 2019, arXiv:1809.02573), and the cheapest wins.
 """
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.sparse import coo_array
+from scipy.sparse.csgraph import connected_components
 
 from gatewright.errors import DisconnectedError, InputError
+from gatewright.mapping import _kernels
 from gatewright.mapping.routing import Graph, Operations, Router
 
 __all__ = ["TRIALS", "embed", "place"]
@@ -22,13 +25,15 @@ __all__ = ["TRIALS", "embed", "place"]
 Integers = NDArray[np.int32]
 
 #: Starts tried, by effort.
-TRIALS = {"quick": 2, "standard": 10, "deep": 80}
+TRIALS = {"quick": 2, "standard": 8, "deep": 64}
 #: Passes to and fro from each start.
-ROUNDS = {"quick": 1, "standard": 2, "deep": 4}
-#: A placement is chosen on so many joint operations at most; what comes later hardly depends on it.
-PREFIX = 20_000
-#: Steps of the search for an embedding.
-EMBEDDING_STEPS = {"quick": 2_000, "standard": 20_000, "deep": 400_000}
+ROUNDS = {"quick": 2, "standard": 5, "deep": 12}
+#: Starts are improved on so many joint operations of the beginning; what comes later hardly depends on them.
+PREFIX = 2_000
+#: Work spent on passes over the whole circuit to compare the best of them, in gates times qubits, by effort.
+WHOLE = {"quick": 1e6, "standard": 1e7, "deep": 3e7}
+#: Restarts of the search for an embedding.
+RESTARTS = {"quick": 4, "standard": 16, "deep": 200}
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -36,10 +41,14 @@ class _Task:
     """What every start must respect."""
 
     graph: Graph
+    pairs: Integers
     weight: NDArray[np.float64]
     fixed: Integers
     home: Integers
     used: Integers
+    active: NDArray[np.bool_]
+    rng: np.random.Generator
+    expense: NDArray[np.float64]
 
 
 def place(
@@ -54,9 +63,12 @@ def place(
 ) -> Integers:
     """Return a start placement.
 
+    `gatewright.mapping.routing.route` with the same seed finds again what the winner cost here.
+
     Parameters
     ----------
     graph : Graph
+        With weights, regions of low cost are preferred, and the weighted cost decides.
     operations : Operations
     n_source : int
         Wires of the circuit; those beyond it, up to ``graph.n``, are idle.
@@ -78,49 +90,100 @@ def place(
         Wires that interact do not fit into one connected part of the device.
     InputError
         `fixed` names a qubit twice, or one that does not exist or is out of service.
+
+    Examples
+    --------
+    >>> from gatewright.mapping.routing import make_graph, make_operations, route
+    >>> graph = make_graph([(0, 1), (1, 2), (2, 3)], 4)
+    >>> star = make_operations([3, 0, 3, 1], [0, 2, 4], [1, 1], 4)
+    >>> len(route(graph, star, place(graph, star, n_source=4, active=np.ones(4, bool))).swaps)
+    0
     """
     rng = np.random.default_rng(seed)
+    active = np.asarray(active, dtype=bool)
     pairs = operations.pairs
-    task = _Task(
-        graph=graph,
-        weight=_interactions(pairs, graph.n),
-        fixed=_checked(fixed, n_source, active),
-        home=np.full(graph.n, -1, dtype=np.int32),
-        used=np.arange(n_source, dtype=np.int32),
-    )
-    task.home[:] = _homes(task, pairs, active)
-    joint = np.flatnonzero((np.diff(operations.offsets) > 1) | (operations.coupled == 1))
-    perfect = _where_they_are(task, pairs, active)
-    if perfect is None:
-        perfect = embed(graph, task.weight > 0, task.fixed, task.home, active, steps=EMBEDDING_STEPS[effort], rng=rng)
-    if perfect is not None:
-        return _completed(perfect, task, active, rng)
-    if (task.fixed[:n_source] >= 0).all():
-        return _completed(task.fixed, task, active, rng)
-    router = Router(graph, operations.take(joint[:PREFIX]))
-    free = not (task.fixed >= 0).any()
+    pinned = _checked(fixed, n_source, active)
+    used = np.arange(n_source, dtype=np.int32)
+    home = _homes(graph, pairs, pinned, used, active)
+    task = _Task(graph, pairs, _interactions(pairs, graph.n), pinned, home, used, active, rng, _expense(graph))
+    own = _where_they_are(task)
+    if own is not None and not graph.uneven:
+        return _completed(own, task)
+    if (pinned[used] >= 0).all():
+        return _completed(pinned, task)
+    perfect = [] if own is None else [own]
+    for _ in range(8 if graph.uneven else 1):  # where costs differ, one embedding may be better than the next
+        found = embed(graph, task.weight > 0, pinned, home, active, restarts=RESTARTS[effort], rng=rng)
+        if found is None:
+            break
+        perfect.append(found)
+    if perfect:
+        return min((_completed(start, task) for start in perfect), key=lambda start: _cost_in_place(task, start))
+
+    joint = operations.joint
+    whole = Router(graph, operations.take(joint))
+    first = np.argsort(whole.layer, kind="stable")[:PREFIX]
+    short = len(first) == len(joint)
+    router = whole if short else Router(graph, operations.take(joint[np.sort(first)]))
+    improved: list[tuple[float, int, Integers]] = []
+    for start in _starts(task, TRIALS[effort]):
+        improved.append(_improved(router, start, task, rounds=ROUNDS[effort], seed=seed))
+    improved.sort(key=lambda entry: entry[:2])
+    if short:
+        return improved[0][2]
+    passes = max(1, min(len(improved), int(WHOLE[effort] / (len(joint) * graph.n))))
+    finalists = [start for _, _, start in improved[:passes]]
+    if passes == 1:
+        return finalists[0]
+    outcomes = [whole.run(start, seed=seed) for start in finalists]
+    return finalists[min(range(passes), key=lambda k: (outcomes[k].cost, outcomes[k].swaps))]
+
+
+def _improved(router: Router, start: Integers, task: _Task, *, rounds: int, seed: int) -> tuple[float, int, Integers]:
+    """Run to and fro from `start`; return the cost, the swaps and the start of the cheapest pass forwards."""
     best: tuple[float, int, Integers] | None = None
-    for trial in range(TRIALS[effort]):
-        grown = trial % 2 == 0
-        start = _completed(_grow(task, active, rng) if grown else _region(task, active, rng), task, active, rng)
-        for round_ in range(ROUNDS[effort] + 1):
-            forwards = router.run(start, seed=seed + 97 * trial + round_)
-            if best is None or (forwards.cost, forwards.swaps) < best[:2]:
-                best = (forwards.cost, forwards.swaps, start)
-            if not free or round_ == ROUNDS[effort]:
-                break
-            start = router.run(forwards.end, seed=seed + 97 * trial + round_, backwards=True).end
+    for round_ in range(rounds + 1):
+        made = router.run(start, seed=seed)
+        if best is None or (made.cost, made.swaps) < best[:2]:
+            best = (made.cost, made.swaps, start)
+        if round_ < rounds:
+            start = _restored(router.run(made.end, seed=seed + 1 + round_, backwards=True).end, task.fixed)
     assert best is not None
-    return best[2]
+    return best
 
 
-def _where_they_are(task: _Task, pairs: Integers, active: NDArray[np.bool_]) -> Integers | None:
+def _restored(placement: Integers, fixed: Integers) -> Integers:
+    """Put fixed wires back on their qubits, in exchange with whatever stands there."""
+    out = placement.copy()
+    for wire in np.flatnonzero(fixed >= 0).tolist():
+        other = int(np.flatnonzero(out == fixed[wire])[0])
+        out[other], out[wire] = out[wire], out[other]
+    return out
+
+
+def _cost_in_place(task: _Task, start: Integers) -> float:
+    """Return the weighted cost of all gates on a placement where each meets an edge."""
+    weight = np.zeros((task.graph.n, task.graph.n))
+    weight[np.repeat(np.arange(task.graph.n), np.diff(task.graph.starts)), task.graph.neighbours] = task.graph.weight
+    gates = weight[start[task.pairs[:, 0]], start[task.pairs[:, 1]]].sum()
+    return float(gates + 1e-3 * task.expense[start[task.used]].sum())
+
+
+def _expense(graph: Graph) -> NDArray[np.float64]:
+    """Return the mean weight of each qubit's edges, 1 where it has none."""
+    degree = np.diff(graph.starts)
+    source = np.repeat(np.arange(graph.n), degree)
+    total = np.bincount(source, weights=graph.weight, minlength=graph.n)
+    return np.where(degree > 0, total / np.maximum(degree, 1), 1.0)
+
+
+def _where_they_are(task: _Task) -> Integers | None:
     """Return the placement of every wire on the qubit of its own number, if no gate needs a swap there."""
     own = np.full(task.graph.n, -1, dtype=np.int32)
     own[task.used] = task.used
     as_fixed = np.array_equal(task.fixed[task.fixed >= 0], np.flatnonzero(task.fixed >= 0))
-    meet = bool((task.graph.distance[pairs[:, 0], pairs[:, 1]] == 1).all())
-    return own if meet and as_fixed and active[task.used].all() else None
+    meet = bool((task.graph.distance[task.pairs[:, 0], task.pairs[:, 1]] == 1).all())
+    return own if meet and as_fixed and task.active[task.used].all() else None
 
 
 def _interactions(pairs: Integers, n: int) -> NDArray[np.float64]:
@@ -151,99 +214,166 @@ def _checked(fixed: Sequence[int] | None, n_source: int, active: NDArray[np.bool
     return placement
 
 
-def _homes(task: _Task, pairs: Integers, active: NDArray[np.bool_]) -> Integers:
-    """Assign every group of interacting wires to a component of the device, the largest groups first."""
-    from scipy.sparse import coo_array
-    from scipy.sparse.csgraph import connected_components
-
-    n, component = task.graph.n, task.graph.component
+def _homes(graph: Graph, pairs: Integers, fixed: Integers, used: Integers, active: NDArray[np.bool_]) -> Integers:
+    """Assign every group of interacting wires to a component of the device: those with a fixed place, then the rest."""
+    n, component = graph.n, graph.component
     links = coo_array((np.ones(len(pairs)), (pairs[:, 0], pairs[:, 1])), shape=(n, n))
     _, group = connected_components(links, directed=False)
     homes = np.full(n, -1, dtype=np.int32)
     room = np.bincount(component[active], minlength=int(component.max(initial=0)) + 1)
-    members = [task.used[group[task.used] == g] for g in np.unique(group[task.used])]
-    bound = [np.unique(component[task.fixed[m][task.fixed[m] >= 0]]) for m in members]
-    # Groups that the user has tied to a place come first, then the large ones.
-    for k in sorted(range(len(members)), key=lambda k: (len(bound[k]) == 0, -len(members[k]))):
-        wires, tied = members[k], bound[k]
-        choices = tied if len(tied) else np.argsort(-room, kind="stable")
-        fitting = [c for c in choices.tolist() if room[c] >= len(wires)]
-        if len(tied) > 1 or not fitting:
-            parts = sorted((int(r) for r in np.bincount(component[active]) if r), reverse=True)
+    parts = ", ".join(str(r) for r in sorted(room[room > 0].tolist(), reverse=True)[:12])
+    order = np.argsort(group[used], kind="stable")
+    members = np.split(used[order], np.flatnonzero(np.diff(group[used][order])) + 1) if len(used) else []
+    free: list[Integers] = []
+    for wires in members:
+        tied = np.unique(component[fixed[wires][fixed[wires] >= 0]])
+        if len(tied) == 0:
+            free.append(wires)
+            continue
+        room[tied[0]] -= len(wires)
+        homes[wires] = tied[0]
+        if len(tied) > 1 or room[tied[0]] < 0:
             raise DisconnectedError(
-                f"{len(wires)} qubits of the circuit interact, and no connected part of the device can hold them",
-                required=f"a connected part with {len(wires)} free qubits"
-                + (", holding all that the placement fixes" if len(tied) else ""),
-                found=f"parts of {', '.join(map(str, parts[:12]))} qubits",
+                f"{len(wires)} qubits of the circuit must meet, and the placement leaves them no connected part",
+                required=f"a connected part with {len(wires)} free qubits, holding all that the placement fixes",
+                found=f"parts of {parts} qubits",
                 hint=f"qubits {', '.join(map(str, wires[:12].tolist()))} must meet",
             )
-        # The tightest part that holds the group, so that large ones stay free for large groups.
-        chosen = min(fitting, key=lambda c: room[c])
-        homes[wires] = chosen
-        room[chosen] -= len(wires)
+    free.sort(key=len, reverse=True)
+    packed = _packed([len(wires) for wires in free], room.tolist())
+    if packed is None:
+        wires = free[0]
+        raise DisconnectedError(
+            f"{len(wires)} qubits of the circuit must meet, and no connected part of the device has room"
+            if len(wires) > room.max(initial=0)
+            else f"the circuit's {len(used)} qubits do not fit into the connected parts of the device",
+            required="connected parts for groups of {} qubits".format(", ".join(str(len(w)) for w in free[:12])),
+            found=f"parts of {parts} qubits",
+            hint=f"the largest group has qubits {', '.join(map(str, wires[:12].tolist()))}",
+        )
+    for wires, part in zip(free, packed, strict=True):
+        homes[wires] = part
     return homes
 
 
-def _completed(placement: Integers, task: _Task, active: NDArray[np.bool_], rng: np.random.Generator) -> Integers:
+def _packed(sizes: list[int], room: list[int], budget: int = 20_000) -> list[int] | None:
+    """Return a part for each size, sizes falling, by a bounded search: the tightest part that has room comes first."""
+    left = list(room)
+    chosen: list[int] = []
+    options: list[list[int]] = []
+    while len(chosen) < len(sizes):
+        size = sizes[len(chosen)]
+        if len(options) == len(chosen):
+            # Parts of equal room are alike.
+            by_room = {r: part for part, r in enumerate(left) if r >= size}
+            options.append([by_room[r] for r in sorted(by_room, reverse=True)])
+        budget -= 1
+        if options[-1] and budget > 0:
+            part = options[-1].pop()
+            left[part] -= size
+            chosen.append(part)
+        elif chosen and budget > 0:
+            options.pop()
+            left[chosen[-1]] += sizes[len(chosen) - 1]
+            chosen.pop()
+        else:
+            return None
+    return chosen
+
+
+def _completed(placement: Integers, task: _Task) -> Integers:
     """Put wires that have no place yet, idle ones last, on the qubits that are left."""
     out = placement.copy()
     taken = np.zeros(task.graph.n, dtype=bool)
     taken[out[out >= 0]] = True
     for wire in task.used[out[task.used] < 0].tolist():
-        free = np.flatnonzero(~taken & active & (task.graph.component == task.home[wire]))
-        out[wire] = free[rng.integers(len(free))]
+        free = np.flatnonzero(~taken & task.active & (task.graph.component == task.home[wire]))
+        if task.graph.uneven:
+            free = free[np.argsort(task.expense[free])[:1]]
+        out[wire] = free[task.rng.integers(len(free))]
         taken[out[wire]] = True
     idle = np.flatnonzero(out < 0)
     out[idle] = np.flatnonzero(~taken)
     return out
 
 
-def _grow(task: _Task, active: NDArray[np.bool_], rng: np.random.Generator) -> Integers:
+def _starts(task: _Task, trials: int) -> Iterator[Integers]:
+    """Yield starts of the three kinds in turn, the embedded beginning first."""
+    for trial in range(trials):
+        if trial % 3 == 0 and (trial == 0 or task.graph.n <= 200):
+            yield _completed(_grow(task, _embedded_beginning(task)), task)
+        elif trial % 3 < 2:
+            yield _completed(_grow(task, task.fixed), task)
+        else:
+            yield _completed(_region(task), task)
+
+
+def _embedded_beginning(task: _Task) -> Integers:
+    """Embed the longest run of first interactions that is found to embed."""
+    low, high = np.minimum(*task.pairs.T), np.maximum(*task.pairs.T)
+    _, first = np.unique(low.astype(np.int64) * task.graph.n + high, return_index=True)
+    distinct = task.pairs[np.sort(first)]
+    best, good, bad = task.fixed, 0, min(len(distinct), len(task.graph.edges)) + 1
+    while good + 1 < bad:
+        middle = (good + bad) // 2
+        linked = np.zeros_like(task.weight, dtype=bool)
+        linked[distinct[:middle, 0], distinct[:middle, 1]] = True
+        linked |= linked.T
+        found = embed(task.graph, linked, task.fixed, task.home, task.active, restarts=1, rng=task.rng)
+        if found is None:
+            bad = middle
+        else:
+            best, good = found, middle
+    return best
+
+
+def _grow(task: _Task, placed: Integers) -> Integers:
     """Place wire after wire, the one bound most to those placed, where its partners are nearest."""
-    graph, weight = task.graph, task.weight
-    out = task.fixed.copy()
-    taken = ~active
+    graph, weight, rng = task.graph, task.weight, task.rng
+    out = placed.copy()
+    taken = ~task.active
     taken[out[out >= 0]] = True
-    degree = np.diff(graph.starts)
     attached = weight[:, out >= 0].sum(axis=1)
-    remaining = {int(w) for w in task.used if out[w] < 0 and weight[w].any()}
-    while remaining:
-        wires = np.array(sorted(remaining))
+    total = weight.sum(axis=1)
+    waiting = np.zeros(graph.n, dtype=bool)
+    waiting[task.used] = (out[task.used] < 0) & (total[task.used] > 0)
+    source = np.repeat(np.arange(graph.n), np.diff(graph.starts))
+    while waiting.any():
+        wires = np.flatnonzero(waiting)
         noise = 1 + 0.2 * rng.random(len(wires))
-        best = np.lexsort((weight[wires].sum(axis=1) * noise, attached[wires] * noise))[-1]
-        wire = int(wires[best])
+        wire = int(wires[np.lexsort((total[wires] * noise, attached[wires] * noise))[-1]])
         free = np.flatnonzero(~taken & (graph.component == task.home[wire]))
         partners = np.flatnonzero((weight[wire] > 0) & (out >= 0))
+        open_ = np.bincount(source, weights=~taken[graph.neighbours], minlength=graph.n)[free]
         if len(partners):
-            away = graph.distance[np.ix_(free, out[partners])].astype(float) @ weight[wire, partners]
-            open_ = np.array([np.count_nonzero(~taken[_neighbours(graph, q)]) for q in free.tolist()])
+            away = graph.distance[np.ix_(free, out[partners])] @ weight[wire, partners]
             # Among equally near qubits, one that leaves room for the partners still to come.
             score = away * (1 + 0.1 * rng.random(len(free))) - 1e-3 * open_
         else:
-            middle = graph.distance[np.ix_(free, free)].astype(float).mean(axis=1)
-            score = middle * (1 + 0.5 * rng.random(len(free))) - 0.1 * degree[free]
+            middle = graph.distance[np.ix_(free, free)].mean(axis=1)
+            score = middle * (1 + 0.5 * rng.random(len(free))) - 0.1 * open_
+        if graph.uneven:
+            score += 0.5 * task.expense[free] * max(total[wire], 1.0)
         out[wire] = free[int(np.argmin(score))]
         taken[out[wire]] = True
         attached += weight[:, wire]
-        remaining.discard(wire)
+        waiting[wire] = False
     return out
 
 
-def _neighbours(graph: Graph, q: int) -> Integers:
-    return np.asarray(graph.neighbours[graph.starts[q] : graph.starts[q + 1]])
-
-
-def _region(task: _Task, active: NDArray[np.bool_], rng: np.random.Generator) -> Integers:
+def _region(task: _Task) -> Integers:
     """Place the wires of each component at random in a compact region around a random qubit."""
     out = task.fixed.copy()
-    taken = ~active
+    taken = ~task.active
     taken[out[out >= 0]] = True
     waiting = task.used[out[task.used] < 0]
     for home in np.unique(task.home[waiting]).tolist():
-        wires = rng.permutation(waiting[task.home[waiting] == home])
+        wires = task.rng.permutation(waiting[task.home[waiting] == home])
         free = np.flatnonzero(~taken & (task.graph.component == home))
-        distance = task.graph.distance[rng.choice(free), free].astype(float)
-        region = free[np.argsort(distance + 0.5 * rng.random(len(free)))[: len(wires)]]
+        distance = task.graph.distance[task.rng.choice(free), free] + 0.5 * task.rng.random(len(free))
+        if task.graph.uneven:
+            distance += 2.0 * task.expense[free]
+        region = free[np.argsort(distance)[: len(wires)]]
         out[wires] = region
         taken[region] = True
     return out
@@ -256,7 +386,7 @@ def embed(
     home: Integers,
     active: NDArray[np.bool_],
     *,
-    steps: int,
+    restarts: int,
     rng: np.random.Generator,
 ) -> Integers | None:
     """Search for a placement of all interacting wires on which every gate meets an edge.
@@ -265,12 +395,12 @@ def embed(
     ----------
     graph : Graph
     linked : ndarray of bool, shape (n, n)
-        Which wires interact.
+        Which wires interact; symmetric.
     fixed, home : ndarray of int32, shape (n,)
         Qubit of a wire that has its place, else -1; component of each wire.
     active : ndarray of bool, shape (n,)
-    steps : int
-        Wires placed in all, over several restarts, before the search is given up.
+    restarts : int
+        Bounded searches, each with another order among equals, before the search is given up.
     rng : numpy.random.Generator
 
     Returns
@@ -278,89 +408,33 @@ def embed(
     ndarray of int32, shape (n,), or None
         -1 for wires that do not interact. None where nothing was found, which proves nothing.
     """
-    wires = np.flatnonzero(linked.any(axis=1))
-    degrees = linked.sum(axis=1)
-    degree = np.diff(graph.starts)
-    if len(wires) == 0:
-        return fixed.copy()
-    if degrees.max() > degree.max(initial=0) or linked.sum() // 2 > len(graph.edges):
+    n = graph.n
+    wires, peers = np.nonzero(linked)
+    degrees, degree = np.bincount(wires, minlength=n), np.diff(graph.starts)
+    together = linked & (fixed[:, None] >= 0) & (fixed[None, :] >= 0)
+    if (
+        len(wires) > 2 * len(graph.edges)
+        or (np.sort(degrees)[::-1] > np.sort(degree)[::-1]).any()
+        or (graph.distance[fixed[:, None], fixed[None, :]][together] != 1).any()
+    ):
         return None
-    masks = [sum(1 << int(q) for q in _neighbours(graph, p)) for p in range(graph.n)]
-    domains: dict[int, int] = {}
-    for w in wires.tolist():
-        if fixed[w] >= 0:
-            domains[w] = 1 << int(fixed[w])
-        else:
-            fits = active & (graph.component == home[w]) & (degree >= degrees[w])
-            fits[fixed[fixed >= 0]] = False
-            domains[w] = sum(1 << int(q) for q in np.flatnonzero(fits))
-    partners = {w: np.flatnonzero(linked[w]).tolist() for w in wires.tolist()}
-    budget = 200
-    spent = 0
-    while spent < steps:
-        found, used = _search(domains, partners, masks, min(budget, steps - spent), rng)
-        spent += used
-        budget *= 2
-        if found is not None:
-            out = fixed.copy()
-            out[list(found)] = list(found.values())
-            return out
-        if used < budget // 2:
-            return None
+    begin = np.concatenate([[0], np.cumsum(degrees)]).astype(np.int32)
+    component = np.where(active, graph.component, -1).astype(np.int32)
+    expense = _expense(graph)
+    options = np.empty((np.count_nonzero(degrees) + 1, min(n, max(64, degree.max()))), dtype=np.int32)
+    work = np.empty((7, n + 1), dtype=np.int32)
+    budget = min(max(100_000, 100 * n * n), 8_000_000)  # a fraction of a second
+    for trial in range(restarts):
+        # The first tries prefer qubits with few free neighbours, the others leave that more and more to chance.
+        appeal = rng.random(n) * (1 + trial % 4)
+        if graph.uneven:
+            appeal += 8 * expense
+        found = fixed.copy()
+        arrays = (begin, peers.astype(np.int32), graph.starts, graph.neighbours, graph.distance, component, home)
+        outcome = _kernels.embed(*arrays, appeal, found, work, options, budget)
+        if outcome >= 0:
+            found[(degrees == 0) & (fixed < 0)] = -1
+            return found
+        if outcome == -1 and options.shape[1] == n:
+            return None  # all options were tried
     return None
-
-
-def _search(
-    domains: dict[int, int], partners: dict[int, list[int]], masks: list[int], budget: int, rng: np.random.Generator
-) -> tuple[dict[int, int] | None, int]:
-    """Backtrack without recursion; domains are bit sets. Return the embedding, if found, and the steps taken."""
-    # One level a placed wire: the wire, its qubits left to try, the domains before it was placed.
-    levels: list[tuple[int, list[int], dict[int, int]]] = []
-    placed: dict[int, int] = {}
-    current = dict(domains)
-    used = 0
-    while True:
-        if len(placed) == len(domains):
-            return placed, used
-        wire = min((w for w in current if w not in placed), key=lambda w: (current[w].bit_count(), -len(partners[w])))
-        values = [q for q in range(current[wire].bit_length()) if current[wire] >> q & 1]
-        levels.append((wire, rng.permutation(values).tolist(), current))
-        while levels:
-            wire, values, before = levels[-1]
-            if not values:
-                levels.pop()
-                placed.pop(wire, None)
-                continue
-            if used >= budget:
-                return None, used
-            used += 1
-            q = values.pop()
-            narrowed = _narrowed(before, wire, q, placed, partners, masks)
-            if narrowed is not None:
-                placed[wire] = q
-                current = narrowed
-                break
-            placed.pop(wire, None)
-        else:
-            return None, used
-
-
-def _narrowed(
-    before: dict[int, int], wire: int, q: int, placed: dict[int, int], partners: dict[int, list[int]], masks: list[int]
-) -> dict[int, int] | None:
-    """Return the domains after placing `wire` on `q`, or None if one of them is empty."""
-    near = set(partners[wire])
-    after: dict[int, int] = {}
-    for other, domain in before.items():
-        if other == wire:
-            after[other] = 1 << q
-        elif other in placed:
-            after[other] = domain
-        else:
-            left = domain & ~(1 << q)
-            if other in near:
-                left &= masks[q]
-            if not left:
-                return None
-            after[other] = left
-    return after

@@ -1,8 +1,8 @@
 """OpenQASM 2 and 3: straight-line programs into circuits, and circuits into programs."""
 
 from gatewright.qasm.maps import QubitMap, map_lines, read_map
-from gatewright.qasm.reader import read, read_file
+from gatewright.qasm.reader import read
 from gatewright.qasm.source import read_text
 from gatewright.qasm.writer import write
 
-__all__ = ["QubitMap", "map_lines", "read", "read_file", "read_map", "read_text", "write"]
+__all__ = ["QubitMap", "map_lines", "read", "read_map", "read_text", "write"]

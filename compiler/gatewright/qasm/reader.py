@@ -7,7 +7,6 @@ distinct statements, which NumPy turns into columns. What is not read is refused
 
 from __future__ import annotations
 
-import os
 import re
 from collections.abc import Callable, Mapping, Sequence
 from typing import Any
@@ -22,9 +21,9 @@ from gatewright.qasm.bodies import read_definition
 from gatewright.qasm.definitions import Definition, equals, expand, same_gate
 from gatewright.qasm.library import BUILT_IN, LIBRARIES, LIBRARY_FILES
 from gatewright.qasm.scope import MAX_QUBITS, NAME, UNSUPPORTED, Scope, split
-from gatewright.qasm.source import Source, read_text
+from gatewright.qasm.source import Source
 
-__all__ = ["MAX_OPERANDS", "MAX_OPERATIONS", "read", "read_file"]
+__all__ = ["MAX_OPERANDS", "MAX_OPERATIONS", "read"]
 
 #: Most operations of one program, the steps of expanded definitions included.
 MAX_OPERATIONS = 10_000_000
@@ -86,12 +85,6 @@ def read(text: str, *, where: str = "", natives: Mapping[str, Gate] | None = Non
     [('h', (0,)), ('cx', (0, 1)), ('rz', (0,)), ('rz', (1,))]
     """
     return _Reader(Source(text, where), natives or {}).read()
-
-
-def read_file(path: str | os.PathLike[str], *, natives: Mapping[str, Gate] | None = None) -> Circuit:
-    """Read an OpenQASM file, or standard input for ``-``; see `read`."""
-    where = "<stdin>" if os.fspath(path) == "-" else os.fspath(path)
-    return read(read_text(path), where=where, natives=natives)
 
 
 class _Reader:

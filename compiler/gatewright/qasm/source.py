@@ -11,7 +11,7 @@ from typing import TypeVar
 
 from gatewright.errors import GatewrightError, QasmError, shorten
 
-__all__ = ["MAX_BYTES", "Source", "decode", "read_text"]
+__all__ = ["MAX_BYTES", "Source", "decode", "read_bytes", "read_text"]
 
 #: Largest text that is read, in bytes.
 MAX_BYTES = 2**28
@@ -24,13 +24,13 @@ _CHUNK = 2**20
 Error = TypeVar("Error", bound=GatewrightError)
 
 
-def read_text(path: str | os.PathLike[str]) -> str:
-    """Return the text of a file, or of standard input for ``-``.
+def read_bytes(path: str | os.PathLike[str]) -> bytes:
+    """Return the content of a file, or of standard input for ``-``.
 
     Raises
     ------
     QasmError
-        If the file cannot be read, is larger than `MAX_BYTES`, or is not UTF-8 text.
+        If the file cannot be read, is empty, or is larger than `MAX_BYTES`.
     """
     where = os.fspath(path)
     try:
@@ -42,12 +42,25 @@ def read_text(path: str | os.PathLike[str]) -> str:
                 data = file.read(MAX_BYTES + 1)
     except (OSError, ValueError) as problem:
         what = problem.strerror if isinstance(problem, OSError) and problem.strerror else str(problem)
-        raise QasmError("the file cannot be read", found=what, where=shorten(where)) from None
+        raise QasmError("the file cannot be read", found=what.lower(), where=shorten(where, 300)) from None
     if len(data) > MAX_BYTES:
         raise QasmError(
             "the file is too large", required=f"at most {MAX_BYTES // 2**20} MiB", found="more", where=where
         )
-    return decode(data, where=where)
+    if not data.strip():
+        raise QasmError("the file is empty", required="an OpenQASM program or a unitary matrix", where=where)
+    return data
+
+
+def read_text(path: str | os.PathLike[str]) -> str:
+    """Return the text of a file, or of standard input for ``-``.
+
+    Raises
+    ------
+    QasmError
+        As `read_bytes`, and if it is not UTF-8 text.
+    """
+    return decode(read_bytes(path), where="<stdin>" if os.fspath(path) == "-" else os.fspath(path))
 
 
 def decode(data: bytes, *, where: str = "") -> str:
