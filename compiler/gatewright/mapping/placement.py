@@ -24,8 +24,8 @@ __all__ = ["TRIALS", "embed", "place"]
 
 Integers = NDArray[np.int32]
 
-#: Starts tried, by effort.
-TRIALS = {"quick": 2, "standard": 8, "deep": 64}
+#: Starts tried, by effort: at least and at most, and between them as many as fit into so many gates times qubits.
+TRIALS = {"quick": (2, 8, 5e4), "standard": (4, 32, 6e5), "deep": (16, 256, 1e7)}
 #: Passes to and fro from each start.
 ROUNDS = {"quick": 2, "standard": 5, "deep": 12}
 #: Starts are improved on so many joint operations of the beginning; what comes later hardly depends on them.
@@ -126,7 +126,9 @@ def place(
     short = len(first) == len(joint)
     router = whole if short else Router(graph, operations.take(joint[np.sort(first)]))
     improved: list[tuple[float, int, Integers]] = []
-    for start in _starts(task, TRIALS[effort]):
+    least, most, work = TRIALS[effort]
+    trials = max(least, min(most, int(work / (len(first) * graph.n))))
+    for start in _starts(task, trials):
         improved.append(_improved(router, start, task, rounds=ROUNDS[effort], seed=seed))
     improved.sort(key=lambda entry: entry[:2])
     if short:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import replace
 
 import numpy as np
+from numpy.typing import NDArray
 
 from gatewright.mapping.placement import place as choose
 from gatewright.mapping.routing import Graph, Operations, make_graph, make_operations
@@ -14,7 +15,7 @@ __all__ = ["place"]
 
 
 def place(draft: Draft) -> Draft:
-    """Choose a start placement; on a device where all pairs are coupled any will do.
+    """Choose a start placement that needs few swaps and, where the device states the entangler's errors, good edges.
 
     Raises
     ------
@@ -41,4 +42,17 @@ def mapping_task(draft: Draft) -> tuple[Graph, Operations]:
     # Bits are numbered behind the circuit's own qubits; make room for the idle ones.
     wires = np.where(wires >= circuit.n_qubits, wires + (n - circuit.n_qubits), wires)
     coupled = circuit.is_unitary & (circuit.widths == 2)
-    return make_graph(draft.device.edges, n), make_operations(wires, offsets, coupled, n + circuit.n_bits)
+    graph = make_graph(draft.device.edges, n, edge_cost=_edge_costs(draft))
+    return graph, make_operations(wires, offsets, coupled, n + circuit.n_bits)
+
+
+def _edge_costs(draft: Draft) -> NDArray[np.float64] | None:
+    """Return −log of the entangler's process fidelity on each edge, or None if it is not known on all of them."""
+    if draft.native.entangler is None:
+        return None
+    edges, name = draft.device.edges, draft.native.entangler.gate.name
+    # On a directed edge the gate is known in one order only.
+    errors = np.fmin(draft.device.errors(name, edges), draft.device.errors(name, edges[:, ::-1]))
+    if not len(edges) or np.isnan(errors).any():
+        return None
+    return -np.log(np.maximum(1 - 1.25 * errors, 1e-9))
