@@ -16,9 +16,9 @@ from numpy.typing import ArrayLike, NDArray
 
 from gatewright.errors import CircuitError, nearest_name
 from gatewright.gates import ANY, BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
-from gatewright.linalg import checked_unitary
+from gatewright.linalg import checked_unitary, kron
 
-__all__ = ["Builder", "Circuit", "Operation", "Piece", "apply_matrix", "assemble"]
+__all__ = ["Builder", "Circuit", "Operation", "Piece", "apply_matrix", "apply_operations", "assemble"]
 
 Array = NDArray[np.complex128]
 Integers = NDArray[np.int32]
@@ -255,14 +255,12 @@ class Circuit:
             raise CircuitError(
                 "too many qubits for a full matrix", required=f"{MAX_DENSE_QUBITS} at most", found=str(self.n_qubits)
             )
-        size = 2**self.n_qubits
-        state: Array = np.eye(size, dtype=np.complex128) * np.exp(1j * self.phase)
-        for operation in self:
-            if operation.matrix is not None:
-                state = apply_matrix(operation.matrix, operation.qubits, state, self.n_qubits)
-            elif operation.name != BARRIER.name:
-                raise CircuitError(f"'{operation.name}' is not unitary", required="a circuit of unitary gates")
-        return state
+        other = np.flatnonzero(~self.is_unitary & ~self.is_named(BARRIER.name))
+        if len(other):
+            name = self.table[self.op[other[0]]].name
+            raise CircuitError(f"'{name}' is not unitary", required="a circuit of unitary gates")
+        start: Array = np.eye(2**self.n_qubits, dtype=np.complex128) * np.exp(1j * self.phase)
+        return apply_operations(self, np.flatnonzero(self.is_unitary).tolist(), range(self.n_qubits), start)
 
     def __repr__(self) -> str:
         """Return a short summary."""
@@ -357,6 +355,41 @@ def apply_matrix(matrix: Array, qubits: Sequence[int], state: Array, n_qubits: i
     gate = np.asarray(matrix).reshape((2,) * (2 * k))
     moved = np.tensordot(gate, tensor, axes=(range(k, 2 * k), qubits))
     return np.asarray(np.moveaxis(moved, range(k), qubits), order="C").reshape(state.shape)
+
+
+def apply_operations(circuit: Circuit, rows: Sequence[int], places: Sequence[int], state: Array) -> Array:
+    """Apply unitary operations in order to a stack of states.
+
+    One-qubit gates wait for the next wider one on their qubit, so that the states are passed over less often.
+
+    Parameters
+    ----------
+    circuit : Circuit
+    rows : sequence of int
+        The operations.
+    places : sequence of int
+        Which qubit of the states each qubit of the circuit is.
+    state : ndarray, shape (2**n, columns)
+    """
+    n = len(state).bit_length() - 1
+    waiting: dict[int, Array] = {}
+    matrices: dict[int, Array] = {}
+    for of_kind, stack in circuit.matrix_groups(rows):
+        matrices.update(zip(of_kind.tolist(), stack, strict=True))
+    for k in rows:
+        qubits = [places[q] for q in circuit.qubits_of(k)]
+        matrix = matrices[k]
+        if len(qubits) == 1:
+            before = waiting.get(qubits[0])
+            waiting[qubits[0]] = matrix if before is None else matrix @ before
+            continue
+        local = np.eye(1, dtype=np.complex128)
+        for q in qubits:
+            local = kron(local, waiting.pop(q, np.eye(2)))
+        state = apply_matrix(matrix @ local, qubits, state, n)
+    for q, matrix in waiting.items():
+        state = apply_matrix(matrix, [q], state, n)
+    return state
 
 
 def _gather(flat: NDArray[Any], offsets: NDArray[np.int64], rows: NDArray[np.int64]) -> tuple[Any, NDArray[np.int64]]:

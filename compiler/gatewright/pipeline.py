@@ -53,7 +53,7 @@ DENSE_QUBITS = 9
 DENSE_WORK = 2.5e8
 
 
-@dataclass(frozen=True, eq=False, slots=True)
+@dataclass(frozen=True, eq=False, slots=True, repr=False)
 class Result:
     """A compiled circuit with everything that is known about it; it exists only if the proof holds.
 
@@ -95,6 +95,11 @@ class Result:
     effort: str
     moved: float = 0.0
     seconds: dict[str, float] = field(default_factory=dict)
+
+    def __repr__(self) -> str:
+        """Return a short summary."""
+        cost = f"{self.costs.two_qubit_gates} two-qubit gates, at least {self.lower_bound.two_qubit_gates}"
+        return f"Result({self.circuit!r} on {self.device.name}: {cost}; error bound {self.verdict.error_bound:.2g})"
 
     @property
     def initial(self) -> tuple[int, ...]:

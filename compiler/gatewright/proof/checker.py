@@ -21,7 +21,7 @@ from typing import TYPE_CHECKING, NoReturn
 import numpy as np
 from numpy.typing import NDArray
 
-from gatewright.circuit import Circuit, apply_matrix
+from gatewright.circuit import Circuit, apply_operations
 from gatewright.errors import ProofError
 from gatewright.gates import BARRIER, MEASURE, RESET
 from gatewright.linalg import kron, reorder_qubits
@@ -430,7 +430,7 @@ class _Side:
         rows = self.rows[places]
         size = 2**width
         if width > BATCH_WIDTH:
-            return self._one_after_another(rows, width)[None]
+            return self._one_window(rows, width)[None]
         factors = np.empty((len(rows), size, size), dtype=np.complex128)
         position = np.empty(len(self.circuit), dtype=np.int64)
         position[rows] = np.arange(len(rows))
@@ -443,13 +443,12 @@ class _Side:
                 factors[position[of_kind[same]]] = _embed(matrices[same], slots[same][0].tolist(), width)
         return _multiply_out(factors, counts)
 
-    def _one_after_another(self, rows: Rows, width: int) -> Array:
-        state = np.eye(2**width, dtype=np.complex128)
+    def _one_window(self, rows: Rows, width: int) -> Array:
+        places = np.zeros(self.circuit.n_qubits, dtype=np.int64)
         for row in rows.tolist():
-            matrix = self.circuit.operation(row).matrix
-            slots = self.slots[self.circuit.offsets[row] : self.circuit.offsets[row + 1]].tolist()
-            state = apply_matrix(np.asarray(matrix), slots, state, width)
-        return state
+            span = slice(self.circuit.offsets[row], self.circuit.offsets[row + 1])
+            places[self.circuit.qubits[span]] = self.slots[span]
+        return apply_operations(self.circuit, rows.tolist(), places.tolist(), np.eye(2**width, dtype=np.complex128))
 
 
 def _embed(matrices: Array, slots: list[int], width: int) -> Array:

@@ -1,4 +1,4 @@
-"""Compare two small circuits by their full matrices: a second opinion that shares nothing with the windows.
+"""Compare two small circuits by their full matrices: a second opinion, without windows or seams.
 
 Qubits of the output that carry no source qubit are taken to start in |0⟩, and must end there.
 """
@@ -10,10 +10,10 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
-from gatewright.circuit import Circuit, apply_matrix
+from gatewright.circuit import Circuit, apply_operations
 from gatewright.errors import CircuitError, ProofError
 from gatewright.gates import BARRIER, MEASURE
-from gatewright.linalg import dagger, kron
+from gatewright.linalg import dagger
 
 __all__ = ["dense_distance", "dense_work", "touched_qubits"]
 
@@ -70,9 +70,9 @@ def dense_distance(source: Circuit, output: Circuit, initial: Sequence[int], fin
             found=_listed(made_bits),
         )
     rank = {q: k for k, q in enumerate(held)}
-    meant = _spread(_run(source, meant_unitary, range(n), np.eye(2**n, dtype=np.complex128), n), final, rank)
+    meant = _spread(apply_operations(source, meant_unitary, range(n), np.eye(2**n, dtype=np.complex128)), final, rank)
     start = _spread(np.eye(2**n, dtype=np.complex128), initial, rank)
-    made = _run(output, made_unitary, [rank.get(q, 0) for q in range(output.n_qubits)], start, len(held))
+    made = apply_operations(output, made_unitary, [rank.get(q, 0) for q in range(output.n_qubits)], start)
     overlap = complex(np.vdot(meant, made))
     phase = overlap / abs(overlap) if overlap else 1.0
     difference = made - phase * meant
@@ -89,6 +89,7 @@ def _split(circuit: Circuit) -> tuple[list[int], list[tuple[int, int]]]:
     unitary: list[int] = []
     measured: list[tuple[int, int]] = []
     done: set[int] = set()
+    is_unitary = circuit.is_unitary.tolist()
     for k in range(len(circuit)):
         name = circuit.table[circuit.op[k]].name
         if name == BARRIER.name:
@@ -98,7 +99,7 @@ def _split(circuit: Circuit) -> tuple[list[int], list[tuple[int, int]]]:
         if name == MEASURE.name and not again:
             measured.append((qubits[0], int(circuit.link[k])))
             done.add(qubits[0])
-        elif again or not circuit.is_unitary[k]:
+        elif again or not is_unitary[k]:
             raise CircuitError(
                 "cannot compare full matrices of a circuit that measures or resets before its end",
                 found=f"operation {k} ('{name}') on qubit {qubits[0]}",
@@ -122,25 +123,3 @@ def _spread(columns: Array, places: Sequence[int], rank: dict[int, int]) -> Arra
     out = np.zeros((2**total, columns.shape[1]), dtype=np.complex128)
     out[rows] = columns
     return out
-
-
-def _run(circuit: Circuit, rows: list[int], rank: Sequence[int], state: Array, n: int) -> Array:
-    """Apply operations to a stack of states; one-qubit gates wait for the next wider one on their qubit."""
-    pending: dict[int, Array] = {}
-    matrices: dict[int, Array] = {}
-    for of_kind, stack in circuit.matrix_groups(rows):
-        matrices.update(zip(of_kind.tolist(), stack, strict=True))
-    for k in rows:
-        qubits = [rank[q] for q in circuit.qubits_of(k)]
-        matrix = matrices[k]
-        if len(qubits) == 1:
-            before = pending.get(qubits[0])
-            pending[qubits[0]] = matrix if before is None else matrix @ before
-            continue
-        local = np.eye(1, dtype=np.complex128)
-        for q in qubits:
-            local = kron(local, pending.pop(q, np.eye(2)))
-        state = apply_matrix(matrix @ local, qubits, state, n)
-    for q, matrix in pending.items():
-        state = apply_matrix(matrix, [q], state, n)
-    return state

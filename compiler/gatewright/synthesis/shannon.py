@@ -22,8 +22,8 @@ __all__ = ["MAX_QUBITS", "shannon_pieces"]
 
 Array = NDArray[np.complex128]
 
-#: Above this the matrix itself, and a window of its size in the proof, become unwieldy.
-MAX_QUBITS = 10
+#: Above this (4ⁿ/2 CNOTs, each checked on a 2ⁿ × 2ⁿ matrix) the proof takes hours.
+MAX_QUBITS = 8
 #: Rotations all below this (radians) are rounding; leaving them out is part of the measured distance.
 NEGLIGIBLE = 4e-15
 
