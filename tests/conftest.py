@@ -3,9 +3,13 @@
 from __future__ import annotations
 
 import os
-from pathlib import Path
 
-import pytest
+# Before NumPy is loaded: with a test process on every core, threads of linear algebra only get in each other's way.
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+
+from pathlib import Path  # noqa: E402
+
+import pytest  # noqa: E402
 from hypothesis import HealthCheck, settings
 
 EXAMPLES = Path(__file__).resolve().parent.parent / "examples"

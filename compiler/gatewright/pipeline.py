@@ -21,7 +21,7 @@ from gatewright.cost import (
     require_budget,
 )
 from gatewright.devices import Device
-from gatewright.errors import DeviceError, InputError, ProofError, nearest_name
+from gatewright.errors import InputError, ProofError, nearest_name
 from gatewright.gates import GATES
 from gatewright.linalg import checked_unitary
 from gatewright.proof import Proof, Verdict, check_legal, check_proof, encode_proof
@@ -237,12 +237,7 @@ def compile(  # noqa: A001
     else:
         unitary, moved = checked_unitary(source, tolerance=tolerance, nearest=nearest_unitary)
         circuit = Circuit.from_unitary(unitary)
-    if circuit.n_qubits > int(np.count_nonzero(device.active)):
-        raise DeviceError(
-            "the circuit has more qubits than the device",
-            required=f"{int(np.count_nonzero(device.active))} at most on {device.name}",
-            found=str(circuit.n_qubits),
-        )
+    device.require_room(circuit.n_qubits)
     settings = Settings(seed=seed, tolerance=tolerance, effort=effort, placement=_placement(placement, circuit))
     clock.start("plan")
     native = native_set(device.gate_set, tolerance=tolerance)

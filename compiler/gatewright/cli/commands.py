@@ -127,6 +127,7 @@ def _compiled(options: argparse.Namespace) -> Result:
         nearest_unitary=options.nearest_unitary,
         qubit_order=options.qubit_order,
     )
+    device.require_room(source.circuit.n_qubits)
     # What is wrong with the input has been said before this: the kernels take longer to load than all of that.
     _prepare()
     from gatewright.pipeline import compile as compile_source

@@ -166,6 +166,21 @@ class Device:
         """Whether there is a path between any two active qubits."""
         return len(self._components) == 1
 
+    def require_room(self, n_qubits: int) -> None:
+        """Check that a circuit of `n_qubits` finds as many qubits in service.
+
+        Raises
+        ------
+        DeviceError
+        """
+        in_service = int(np.count_nonzero(self.active))
+        if n_qubits > in_service:
+            raise DeviceError(
+                "the circuit has more qubits than the device",
+                required=f"{in_service} at most on {self.name}",
+                found=str(n_qubits),
+            )
+
     def native(self, gate_name: str) -> NativeGate:
         """Return a native gate by name.
 
