@@ -98,7 +98,7 @@ def check_proof(
         worst_distance=worst,
         initial=tuple(initial.tolist()),
         final=tuple(place.tolist()),
-        method="windows with seams, each multiplied out",
+        method="windows multiplied out with their seams",
     )
 
 

@@ -27,7 +27,7 @@ def print_result(result: Result, stream: TextIO) -> None:
         rows.append(("duration", f"{costs.duration_ns:g} ns", ""))
     if costs.success_estimate is not None:
         rows.append(("success estimate", f"{costs.success_estimate:.4g}", "a model; trust your own calibration first"))
-    rows.append(("error bound", f"{verdict.error_bound:.2g}", f"proven in {verdict.windows} windows: {verdict.method}"))
+    rows.append(("error bound", f"{verdict.error_bound:.2g}", f"proven: {verdict.windows} {verdict.method}"))
     if result.moved:
         rows.append(("input moved by", f"{result.moved:.2g}", "to the nearest unitary"))
     for entry in result.budget:
