@@ -7,6 +7,7 @@ this one does the others.
 
 from __future__ import annotations
 
+import gc
 import subprocess
 import sys
 from collections.abc import Callable
@@ -14,7 +15,7 @@ from typing import Any
 
 __all__ = ["load_kernels"]
 
-_OTHERS = "import gatewright.mapping._kernels"
+_OTHERS = "import gc; gc.disable(); import gatewright.mapping._kernels"
 
 
 def load_kernels(tell: Callable[[str], None]) -> None:
@@ -43,6 +44,9 @@ def load_kernels(tell: Callable[[str], None]) -> None:
 
     listener = Listener()
     event.register("numba:compile", listener)
+    collecting = gc.isenabled()
+    # Compiling makes garbage by the million objects; looking for it all the while would take a quarter of the time.
+    gc.disable()
     try:
         import gatewright.stages.synthesise
 
@@ -51,6 +55,8 @@ def load_kernels(tell: Callable[[str], None]) -> None:
         import gatewright.pipeline  # noqa: F401
     finally:
         event.unregister("numba:compile", listener)
+        if collecting:
+            gc.enable()
         for helper in helpers:
             if helper.poll() is None:
                 helper.kill()
