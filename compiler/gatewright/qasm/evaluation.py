@@ -70,6 +70,7 @@ class Evaluator:
         self.source = scope.source
         self.start = 0  # offset of the statement at hand: columns of its nodes count from there
         self.steps = 0
+        self.methods: dict[type, Any] = {}  # what evaluates or carries out each type of node
         self.globals: dict[str, Any] = {}
         self.frames: list[dict[str, Any]] = []
         self.enclosed = False  # inside a gate or a subroutine, where global variables are out of sight
@@ -199,9 +200,12 @@ class Evaluator:
 
     def evaluate(self, node: Any, *, real: bool = False) -> Value | Array | Pending:
         """Return the value of an expression."""
-        method = getattr(self, f"_{type(node).__name__}", None)
+        method = self.methods.get(type(node))
         if method is None:
-            raise self.unsupported(f"this expression ({type(node).__name__})", node)
+            method = getattr(self, f"_{type(node).__name__}", None)
+            if method is None:
+                raise self.unsupported(f"this expression ({type(node).__name__})", node)
+            self.methods[type(node)] = method
         try:
             value: Value | Array | Pending = method(node, real)
         except ExpressionError as problem:
@@ -282,7 +286,7 @@ class Evaluator:
         if name in RESERVED or name not in self.scope.declared:
             inside = real or name != "mod"
             values = [self.scalar(argument, real=inside) for argument in node.arguments]
-            result = function(name, values, real=real)
+            result = function(name, values)
             if result is None:
                 raise self.error(f"unknown function '{shorten(name)}'", node)
             return result

@@ -124,12 +124,15 @@ class FullLane(Operations):
     def execute(self, node: Any) -> str | _Return | None:
         """Carry out a statement; return how it leaves the block that it stands in, if it does."""
         self.charge(1, node)
-        name = type(node).__name__
-        if name in _REFUSED:
-            raise self.unsupported(_REFUSED[name] or f"'{node.io_identifier.name}'", node)
-        method: Callable[[Any], str | _Return | None] | None = getattr(self, f"do_{name}", None)
+        method: Callable[[Any], str | _Return | None] | None = self.methods.get(type(node))
         if method is None:
-            raise self.unsupported(f"this statement ({name})", node)
+            name = type(node).__name__
+            if name in _REFUSED:
+                raise self.unsupported(_REFUSED[name] or f"'{node.io_identifier.name}'", node)
+            method = getattr(self, f"do_{name}", None)
+            if method is None:
+                raise self.unsupported(f"this statement ({name})", node)
+            self.methods[type(node)] = method
         try:
             return method(node)
         except ExpressionError as problem:

@@ -23,7 +23,7 @@ _LEADING = re.compile(rf"\s*({NAME}|\S)")
 _ARGUMENTS = re.compile(r"\([^;]*\)")
 #: What the fast lane leaves to the full one: ranges, sets, blocks, modifiers, operators, casts and functions.
 _RICH = re.compile(
-    r"[:{@%&|<~!]|(?<!-)>|==|\+\+|\[\s*-|\b(?:mod|ceiling|floor|popcount|rotl|rotr|pow|sizeof)\s*\("
+    r"[:{@%&|<~!]|(?<!-)>|==|\+\+|\[\s*-|\b(?:mod|ceiling|floor|popcount|rotl|rotr|sizeof)\s*\("
     r"|\b(?:int|uint|float|angle|bool|bit)\s*(?:\[[^]]*\]\s*)?\("
 )
 _RICH_BODY = re.compile(r"[@%&|<~!]|\b(?:for|if|while|switch|mod|ceiling|floor|popcount|rotl|rotr|pow)\b")

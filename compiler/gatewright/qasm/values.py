@@ -302,7 +302,7 @@ _REALS: dict[str, Callable[[float], float]] = {
 }
 
 
-def function(name: str, values: Sequence[Value], *, real: bool = False) -> Value | None:
+def function(name: str, values: Sequence[Value]) -> Value | None:
     """Return the value of a built-in function, or None if there is none of that name.
 
     Raises
@@ -315,8 +315,8 @@ def function(name: str, values: Sequence[Value], *, real: bool = False) -> Value
     >>> function("popcount", [Value(Kind("bit", 4), 0b1011)]).data
     3
     """
-    wanted = {"mod": 2, "pow": 2, "rotl": 2, "rotr": 2}.get(name, 1)
-    if name not in _REALS and name not in ("mod", "pow", "rotl", "rotr", "popcount", "ceiling", "floor"):
+    wanted = {"mod": 2, "rotl": 2, "rotr": 2}.get(name, 1)
+    if name not in _REALS and name not in ("mod", "rotl", "rotr", "popcount", "ceiling", "floor"):
         return None
     if len(values) != wanted:
         raise ExpressionError(f"wrong number of arguments for '{name}'", required=str(wanted), found=str(len(values)))
@@ -328,8 +328,6 @@ def function(name: str, values: Sequence[Value], *, real: bool = False) -> Value
             raise ExpressionError(f"'{name}' has no finite value here", found=shorten(a.data, 30)) from None
     if name == "mod":
         return binary("%", a, values[1])
-    if name == "pow":
-        return binary("**", a, values[1], real=real)
     if name == "popcount":
         return Value(Kind("uint"), (_integer(a) & ((1 << a.bits) - 1)).bit_count())
     if name in ("ceiling", "floor"):
