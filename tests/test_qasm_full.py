@@ -16,7 +16,7 @@ from hypothesis import strategies as st
 
 from gatewright.circuit import Circuit
 from gatewright.errors import GatewrightError, QasmError, UnsupportedError
-from gatewright.gates import GATES
+from gatewright.gates import GATES, Gate
 from gatewright.qasm import read, write
 from gatewright.qasm.definitions import Definition
 from gatewright.qasm.modifiers import matrix_of, passage_of
@@ -232,6 +232,25 @@ def test_gates_of_the_standard_library_as_published(monkeypatch: pytest.MonkeyPa
             values = rng.uniform(-3, 3, definition.n_parameters)
             found = matrix_of(passage_of(definition, tuple(values.tolist())))
             assert np.abs(found - GATES[name].matrix(values)).max() < 1e-12, name
+
+
+def test_modified_gates_that_a_device_has_otherwise() -> None:
+    other = Gate("cx", 2, 0, GATES["cz"].function)
+    alike = Gate("ccx", 3, 0, GATES["ccx"].function)
+    text = "OPENQASM 3.0; gate x a { U(pi, 0, pi) a; gphase(-pi/2); } qubit[3] q;"
+    text += "ctrl @ x q[0], q[1]; ctrl(2) @ x q[0], q[1], q[2];"
+    circuit = read(text, natives={"cx": other, "ccx": alike})
+    assert [op.name for op in circuit] == ["unitary", "ccx"]
+    assert alike in circuit.table
+    expected = GATES["ccx"].matrix() @ np.kron(GATES["cx"].matrix(), np.eye(2))
+    assert np.abs(circuit.unitary() - expected).max() < 1e-12
+
+
+def test_a_definition_without_values_at_some_angles() -> None:
+    text = "OPENQASM 3.0; gate rz(t) a { inv @ U(0, 0, sqrt(t - 100)) a; } qubit q;"
+    assert len(read(f"{text} rz(101) q;")) == 1
+    with pytest.raises(QasmError, match="no finite value"):
+        read(f"{text} rz(1) q;")
 
 
 def test_large_gates_are_inverted_and_controlled_gate_by_gate() -> None:

@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gatewright.circuit import Builder
-from gatewright.errors import ExpressionError
+from gatewright.errors import ExpressionError, QasmError
 from gatewright.expressions import Expression
 from gatewright.gates import BARRIER, Gate
 from gatewright.linalg import distance
@@ -183,7 +183,7 @@ def equals(definition: Definition, gate: Gate, *, tolerance: float = 1e-9, exact
 
         try:
             builder.phase = expand(definition, values, range(definition.n_qubits), _into(builder), exact=exact)
-        except ExpressionError:
+        except (ExpressionError, QasmError):
             return False
         made, wanted = builder.build().unitary(), gate.matrix(values)
         if not (np.abs(made - wanted).max() if exact else distance(made, wanted)) <= tolerance:
@@ -209,8 +209,8 @@ def _into(builder: Builder) -> Emit:
     return emit
 
 
-def same_gate(first: Gate, second: Gate, *, tolerance: float = 1e-9) -> bool:
-    """Return whether two gates are the same operation, up to global phase, at a few random angles."""
+def same_gate(first: Gate, second: Gate, *, tolerance: float = 1e-9, exact: bool = False) -> bool:
+    """Return whether two gates are the same operation at a few random angles, up to global phase unless `exact`."""
     if first == second:
         return True
     if (first.n_qubits, first.n_parameters) != (second.n_qubits, second.n_parameters):
@@ -218,4 +218,5 @@ def same_gate(first: Gate, second: Gate, *, tolerance: float = 1e-9) -> bool:
     if first.function is None or second.function is None:
         return False
     values = np.random.default_rng(20).uniform(-np.pi, np.pi, (_TRIALS, first.n_parameters))
-    return bool(np.all(distance(first.matrix(values), second.matrix(values)) <= tolerance))
+    a, b = first.matrix(values), second.matrix(values)
+    return bool(np.all((np.abs(a - b) if exact else distance(a, b)) <= tolerance))

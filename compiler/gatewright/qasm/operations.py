@@ -3,11 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
+import numpy as np
+
 from gatewright.errors import CannotError, CircuitError, QasmError, shorten
-from gatewright.gates import BARRIER, MEASURE, RESET, Gate
-from gatewright.qasm.definitions import MAX_DEPTH, Definition, Op, expand
+from gatewright.gates import BARRIER, MEASURE, RESET, UNITARY, Gate
+from gatewright.qasm.definitions import MAX_DEPTH, Definition, Op, expand, same_gate
 from gatewright.qasm.evaluation import Evaluator, Places, ValueFault, Variable
 from gatewright.qasm.modifiers import Passage, controlled, inverse, passage_of, power
 from gatewright.qasm.scope import MAX_QUBITS, RESERVED
@@ -140,7 +143,17 @@ class Operations(Evaluator):
             if problem.line is not None or isinstance(problem, QasmError):
                 raise
             raise self.source.locate(problem, self.at(node)) from None
-        return passage
+        return replace(passage, operations=tuple([self.native(op) for op in passage.operations]))
+
+    def native(self, op: Op) -> Op:
+        """Return an operation as the device has it: its gate of that name, or a matrix where that one differs."""
+        gate = op.target
+        native = self.reader.natives.get(gate.name)
+        if native is None or native is gate or not isinstance(gate, Gate) or gate.function is None:
+            return op
+        if same_gate(native, gate, exact=True):
+            return op._replace(target=native)
+        return Op(UNITARY, op.qubits, (), np.array(gate.matrix(op.parameters), dtype=np.complex128))
 
     def place(self, passage: Passage, rows: Sequence[Sequence[int]], node: Any) -> None:
         """Append a passage on each list of qubits."""

@@ -146,7 +146,17 @@ class Reader:
         for piece in self.pieces:
             number = known(piece)
             if number is None:
-                number = self.new_statement(piece)
+                try:
+                    # What is plainly for the full lane is spared the complaint of the fast one.
+                    full = self.full
+                    plain = full is None or not (":" in piece or (full.globals and full.concerns(piece)))
+                    number = self.flat_call(piece) if plain and not self.only_full else -1
+                except (QasmError, UnsupportedError):
+                    if not beyond(piece, self.scope, self.full):
+                        raise
+                    number = -1
+                if number < 0:
+                    number = self.any_statement(piece)
             order.append(number)
             self.position += len(piece) + 1
             if self.ended:
@@ -167,18 +177,6 @@ class Reader:
             )
 
     # ---------------------------------------------------------------- one statement
-
-    def new_statement(self, piece: str) -> int:
-        """Read a statement not seen before; return its number."""
-        if self.only_full:
-            return self.any_statement(piece)
-        try:
-            number = self.flat_call(piece)
-        except (QasmError, UnsupportedError):
-            if not beyond(piece, self.scope, self.full):
-                raise
-            number = -1
-        return self.any_statement(piece) if number < 0 else number
 
     def hand_over(self, piece: str) -> str | None:
         """Let the full lane carry out the statement that a piece begins with, or pass over an annotation or a pragma.
