@@ -82,7 +82,7 @@ class FullLane(Operations):
 
     def concerns(self, text: str) -> bool:
         """Whether a text names something that only this lane knows."""
-        return any(word in self.globals for word in _WORD.findall(text))
+        return bool(self.globals) and not self.globals.keys().isdisjoint(_WORD.findall(text))
 
     def statement(self, start: int) -> tuple[int, bool]:
         """Carry out the statement that begins at an offset.

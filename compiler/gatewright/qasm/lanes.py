@@ -22,8 +22,10 @@ _WORD = re.compile(NAME)
 _LEADING = re.compile(rf"\s*({NAME}|\S)")
 _ARGUMENTS = re.compile(r"\([^;]*\)")
 #: What the fast lane leaves to the full one: ranges, sets, blocks, modifiers, operators, casts and functions.
-_RICH = re.compile(
-    r"[:{@%&|<~!]|(?<!-)>|==|\+\+|\[\s*-|\b(?:mod|ceiling|floor|popcount|rotl|rotr|sizeof)\s*\("
+_RICH = re.compile(r"[:{@%&|<~!>]")
+_NEGATIVE = re.compile(r"\[\s*-")
+_CALLS = re.compile(
+    r"\b(?:mod|ceiling|floor|popcount|rotl|rotr|sizeof)\s*\("
     r"|\b(?:int|uint|float|angle|bool|bit)\s*(?:\[[^]]*\]\s*)?\("
 )
 _RICH_BODY = re.compile(r"[@%&|<~!]|\b(?:for|if|while|switch|mod|ceiling|floor|popcount|rotl|rotr|pow)\b")
@@ -40,7 +42,11 @@ def beyond(text: str, scope: Scope, full: FullLane | None) -> bool:
     """Whether a statement is one for the full lane, as far as its text tells."""
     if scope.version != 3:
         return False
-    if _RICH.search(text) is not None or (full is not None and full.concerns(text)):
+    if _RICH.search(text.replace("->", "")) or "==" in text or "++" in text:
+        return True
+    if ("-" in text and _NEGATIVE.search(text)) or ("(" in text and _CALLS.search(text)):
+        return True
+    if full is not None and full.concerns(text):
         return True
     if not scope.bit_registers or "(" not in text:
         return False
