@@ -4,16 +4,18 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
+from typing import NamedTuple, Protocol
 
 import numpy as np
+from numpy.typing import NDArray
 
 from gatewright.circuit import Builder
-from gatewright.errors import ExpressionError
+from gatewright.errors import ExpressionError, QasmError
 from gatewright.expressions import Expression
 from gatewright.gates import BARRIER, Gate
 from gatewright.linalg import distance
 
-__all__ = ["MAX_DEPTH", "Definition", "Step", "equals", "expand", "same_gate"]
+__all__ = ["MAX_DEPTH", "Definition", "Emit", "Op", "Record", "Step", "equals", "expand", "same_gate"]
 
 #: Levels of definitions that may use each other.
 MAX_DEPTH = 100
@@ -25,7 +27,32 @@ MAX_COMPARED_SIZE = 10_000
 #: Angles at which operations are compared: random, the same in every run.
 _TRIALS = 4
 
-Emit = Callable[[Gate, Sequence[int], Sequence[float]], object]
+
+class Emit(Protocol):
+    """What takes the table gates of an expansion; `matrix` is that of an explicit unitary."""
+
+    def __call__(
+        self,
+        gate: Gate,
+        qubits: Sequence[int],
+        parameters: Sequence[float] = (),
+        matrix: NDArray[np.complex128] | None = None,
+        /,
+    ) -> object:
+        """Take one operation."""
+
+
+class Op(NamedTuple):
+    """One operation of a definition at given parameters: a table gate, a definition, or an explicit unitary."""
+
+    target: Gate | Definition
+    qubits: tuple[int, ...]
+    parameters: tuple[float, ...] = ()
+    matrix: NDArray[np.complex128] | None = None
+
+
+#: Operations and global phase of a definition, by its parameters.
+Record = Callable[[tuple[float, ...]], tuple[Sequence[Op], float]]
 
 
 @dataclass(frozen=True, slots=True)
@@ -62,6 +89,11 @@ class Definition:
     steps : tuple of Step
     constants : mapping of str to float
         Constants of the program that the steps may name.
+    record : callable or None
+        Makes the operations at given parameters, in place of `steps`.
+    stands_for : Gate or None
+        The known gate that calls become: the same operation up to global phase. Modifiers look at the definition
+        itself, for a phase matters under a control.
     size : int
         Steps taken to expand it, nested ones included; at most 10^12.
     depth : int
@@ -73,11 +105,15 @@ class Definition:
     n_qubits: int
     steps: tuple[Step, ...]
     constants: Mapping[str, float] = field(default_factory=dict)
-    size: int = field(init=False)
-    depth: int = field(init=False)
+    record: Record | None = None
+    stands_for: Gate | None = None
+    size: int = 0
+    depth: int = 0
 
     def __post_init__(self) -> None:
         """Work out the size and the depth."""
+        if self.record is not None:
+            return
         inner = [step.target for step in self.steps if isinstance(step.target, Definition)]
         # Capped: definitions that double each other would make numbers of thousands of digits.
         size = min(len(self.steps) + sum(target.size for target in inner), 10**12)
@@ -90,33 +126,50 @@ class Definition:
         return len(self.parameters)
 
 
-def expand(definition: Definition, values: Sequence[float], qubits: Sequence[int], emit: Emit) -> float:
+def expand(
+    definition: Definition, values: Sequence[float], qubits: Sequence[int], emit: Emit, *, exact: bool = False
+) -> float:
     """Pass the table gates of one call to `emit`, in order, and return the global phase that it adds.
+
+    With `exact`, definitions that stand for a known gate up to global phase are expanded as well.
 
     Raises
     ------
     ExpressionError
         If a parameter has no finite real value.
     """
+    if definition.stands_for is not None and not exact:
+        emit(definition.stands_for, qubits, values)
+        return 0.0
+    if definition.record is not None:
+        operations, phase = definition.record(tuple(values))
+        for target, places, numbers, matrix in operations:
+            on = [qubits[q] for q in places]
+            if isinstance(target, Definition):
+                phase += expand(target, numbers, on, emit, exact=exact)
+            else:
+                emit(target, on, numbers, matrix)
+        return phase
     named = {**definition.constants, **dict(zip(definition.parameters, values, strict=True))}
     phase = 0.0
     for step in definition.steps:
-        numbers = step.values
-        if numbers is None:
+        numbers = step.values or ()
+        if step.values is None:
             numbers = tuple([expression.real(named) for expression in step.expressions])
-        target = step.target
-        if isinstance(target, Gate):
-            emit(target, [qubits[q] for q in step.qubits], numbers)
-        elif target is None:
+        target_of_step = step.target
+        if isinstance(target_of_step, Gate):
+            emit(target_of_step, [qubits[q] for q in step.qubits], numbers)
+        elif target_of_step is None:
             phase += numbers[0]
         else:
-            phase += expand(target, numbers, [qubits[q] for q in step.qubits], emit)
+            phase += expand(target_of_step, numbers, [qubits[q] for q in step.qubits], emit, exact=exact)
     return phase
 
 
-def equals(definition: Definition, gate: Gate, *, tolerance: float = 1e-9) -> bool:
-    """Return whether a definition and a gate are the same operation, up to global phase, at a few random angles.
+def equals(definition: Definition, gate: Gate, *, tolerance: float = 1e-9, exact: bool = False) -> bool:
+    """Return whether a definition and a gate are the same operation at a few random angles.
 
+    Up to global phase, unless `exact`: then phases count, also those of the definitions that it calls.
     Definitions on more than 8 qubits or of more than 10,000 steps count as different.
     """
     if (definition.n_qubits, definition.n_parameters) != (gate.n_qubits, gate.n_parameters):
@@ -128,21 +181,36 @@ def equals(definition: Definition, gate: Gate, *, tolerance: float = 1e-9) -> bo
         values = rng.uniform(-np.pi, np.pi, gate.n_parameters).tolist()
         builder = Builder(definition.n_qubits)
 
-        def emit(kind: Gate, qubits: Sequence[int], numbers: Sequence[float], into: Builder = builder) -> None:
-            if kind != BARRIER:
-                into.gate(kind, *qubits, parameters=numbers)
-
         try:
-            expand(definition, values, range(definition.n_qubits), emit)
-        except ExpressionError:
+            builder.phase = expand(definition, values, range(definition.n_qubits), _into(builder), exact=exact)
+        except (ExpressionError, QasmError):
             return False
-        if not distance(builder.build().unitary(), gate.matrix(values)) <= tolerance:
+        made, wanted = builder.build().unitary(), gate.matrix(values)
+        if not (np.abs(made - wanted).max() if exact else distance(made, wanted)) <= tolerance:
             return False
     return True
 
 
-def same_gate(first: Gate, second: Gate, *, tolerance: float = 1e-9) -> bool:
-    """Return whether two gates are the same operation, up to global phase, at a few random angles."""
+def _into(builder: Builder) -> Emit:
+    """Return what appends operations to a builder, barriers left out."""
+
+    def emit(
+        kind: Gate,
+        qubits: Sequence[int],
+        numbers: Sequence[float] = (),
+        matrix: NDArray[np.complex128] | None = None,
+        /,
+    ) -> None:
+        if matrix is not None:
+            builder.unitary(matrix, *qubits, check=False)
+        elif kind != BARRIER:
+            builder.gate(kind, *qubits, parameters=numbers)
+
+    return emit
+
+
+def same_gate(first: Gate, second: Gate, *, tolerance: float = 1e-9, exact: bool = False) -> bool:
+    """Return whether two gates are the same operation at a few random angles, up to global phase unless `exact`."""
     if first == second:
         return True
     if (first.n_qubits, first.n_parameters) != (second.n_qubits, second.n_parameters):
@@ -150,4 +218,5 @@ def same_gate(first: Gate, second: Gate, *, tolerance: float = 1e-9) -> bool:
     if first.function is None or second.function is None:
         return False
     values = np.random.default_rng(20).uniform(-np.pi, np.pi, (_TRIALS, first.n_parameters))
-    return bool(np.all(distance(first.matrix(values), second.matrix(values)) <= tolerance))
+    a, b = first.matrix(values), second.matrix(values)
+    return bool(np.all((np.abs(a - b) if exact else distance(a, b)) <= tolerance))

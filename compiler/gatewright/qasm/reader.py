@@ -1,35 +1,39 @@
-"""Read straight-line programs in OpenQASM 2 and 3 into circuits.
+"""Read programs in OpenQASM 2 and 3 into circuits.
 
 The languages are those of Cross et al., arXiv:1707.03429 (version 2) and ACM Trans. Quantum Comput. 3, 12 (2022),
-arXiv:2104.14722 (version 3). Each distinct statement is analysed once; a program is then a list of numbers of
-distinct statements, which NumPy turns into columns. What is not read is refused by name, line and column.
+arXiv:2104.14722 (version 3). Each distinct plain statement is analysed once; a program is then a list of numbers of
+distinct statements, which NumPy turns into columns. Statements of OpenQASM 3 beyond the plain ones are handed to
+`gatewright.qasm.full`, one by one. What is not read is refused by name, line and column.
 """
 
 from __future__ import annotations
 
 import re
 from collections.abc import Callable, Mapping, Sequence
-from typing import Any
+from dataclasses import replace
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
-from gatewright.errors import ExpressionError, nearest_name, shorten
+from gatewright.errors import ExpressionError, QasmError, UnsupportedError, nearest_name, shorten
 from gatewright.gates import BARRIER, GATES, MEASURE, RESET, Gate
 from gatewright.qasm.bodies import read_definition
+from gatewright.qasm.columns import MAX_OPERANDS, circuit
 from gatewright.qasm.definitions import Definition, equals, expand, same_gate
+from gatewright.qasm.lanes import CONST, EITHER, FAST, beyond, lane, leading_word
 from gatewright.qasm.library import BUILT_IN, LIBRARIES, LIBRARY_FILES
 from gatewright.qasm.scope import MAX_QUBITS, NAME, UNSUPPORTED, Scope, split
 from gatewright.qasm.source import Source
 
-__all__ = ["MAX_OPERANDS", "MAX_OPERATIONS", "read"]
+if TYPE_CHECKING:
+    from gatewright.qasm.full import FullLane
+
+__all__ = ["MAX_OPERANDS", "MAX_OPERATIONS", "Reader", "read"]
 
 #: Most operations of one program, the steps of expanded definitions included.
 MAX_OPERATIONS = 10_000_000
-
-#: Most qubits that all operations together may name.
-MAX_OPERANDS = 40_000_000
 
 #: Distinct statements that are remembered.
 _REMEMBERED = 100_000
@@ -38,7 +42,6 @@ _WORD = re.compile(NAME)
 _FLAT = re.compile(rf"\s*({NAME})\s*(?:\(([^()]*)\))?\s*([^()]*)")
 _CALL = re.compile(rf"({NAME})\s*(?:\((.*)\))?\s*(.*)", re.DOTALL)
 _INCLUDE = re.compile(r"""include\s*(?:"([^"]*)"|'([^']*)')""")
-_CONST = re.compile(rf"const\s+(int|uint|float|angle)\s*(?:\[[^]]*\])?\s*({NAME})\s*=(.*)", re.DOTALL)
 _REGISTER = re.compile(rf"(qreg|creg)\s+({NAME})\s*(?:\[([^][]*)\])?")
 _DECLARATION = re.compile(rf"(qubit|bit)\s*(?:\[([^][]*)\])?\s*({NAME})\s*(?:=(.*))?", re.DOTALL)
 _OPAQUE = re.compile(rf"opaque\s+({NAME})\s*(?:\([^()]*\))?\s*[^()]*")
@@ -52,11 +55,14 @@ def read(text: str, *, where: str = "", natives: Mapping[str, Gate] | None = Non
 
     Versions 2.0, 3.0 and 3.1 (3.0 where the version line is missing); ``include`` of the version's own standard
     library, which is never opened; registers, constants, gate definitions, gate calls with broadcasting,
-    ``gphase``, ``barrier``, ``measure`` and ``reset``. Division is of reals, also between integers.
+    ``gphase``, ``barrier``, ``measure`` and ``reset``. Of OpenQASM 3 also modifiers, classical variables, aliases,
+    control flow and subroutines, as far as all is known when compiling: they are carried out while reading, and
+    the circuit holds the gates that come of it. Annotations and pragmas are passed over. Division is of reals in
+    gate parameters, also between integers.
 
     A gate that the program defines is expanded; but where the definition equals the gate of that name in the
     table of this package, up to global phase, the call stays what it is. Global phase is kept as far as the
-    program tells it: OpenQASM 2 does not.
+    program tells it: OpenQASM 2 does not. Under modifiers the definition counts, phase included.
 
     Parameters
     ----------
@@ -84,14 +90,18 @@ def read(text: str, *, where: str = "", natives: Mapping[str, Gate] | None = Non
     >>> [(op.name, op.qubits) for op in c]
     [('h', (0,)), ('cx', (0, 1)), ('rz', (0,)), ('rz', (1,))]
     """
-    return _Reader(Source(text, where), natives or {}).read()
+    return Reader(Source(text, where), natives or {}).read()
 
 
-class _Reader:
-    """One program being read."""
+class Reader:
+    """One program being read; with `only_full` the full lane takes every statement that it can."""
 
-    def __init__(self, source: Source, natives: Mapping[str, Gate]) -> None:
+    def __init__(self, source: Source, natives: Mapping[str, Gate], *, only_full: bool = False) -> None:
         self.source = source
+        self.only_full = only_full
+        self.full: FullLane | None = None
+        self.closed = 0  # offset behind the last statement of the full lane
+        self.ended = False
         self.scope = Scope(source)
         self.natives = natives
         self.pieces = source.pieces()
@@ -110,7 +120,8 @@ class _Reader:
         self.width: list[int] = []
         self.qubits: list[int] = []
         self.parameters: list[float] = []
-        self.link: dict[int, int] = {}
+        self.link: dict[int, int] = {}  # bits of measurements
+        self.matrices: dict[int, NDArray[np.complex128]] = {}  # of explicit unitaries
         self.handlers: dict[str, Callable[[str, int], None]] = {
             "OPENQASM": self.version_line,
             "include": self.include,
@@ -135,57 +146,28 @@ class _Reader:
         for piece in self.pieces:
             number = known(piece)
             if number is None:
-                number = self.flat_call(piece)
+                try:
+                    # What is plainly for the full lane is spared the complaint of the fast one.
+                    full = self.full
+                    plain = full is None or not (":" in piece or (full.globals and full.concerns(piece)))
+                    number = self.flat_call(piece) if plain and not self.only_full else -1
+                except (QasmError, UnsupportedError):
+                    if not beyond(piece, self.scope, self.full):
+                        raise
+                    number = -1
                 if number < 0:
                     number = self.any_statement(piece)
             order.append(number)
             self.position += len(piece) + 1
+            if self.ended:
+                break
         end = len(self.source.text.rstrip()) - 1
-        if self.source.text[end] not in ";}":
+        if self.source.text[end] not in ";}" and self.closed <= end and not self.ended:
             raise self.source.error("a ';' is missing", end, required="';' behind the last statement")
         if not self.scope.n_qubits and not self.scope.n_physical:
             hint = "such as 'qubit[2] q;' or 'qreg q[2];'"
             raise self.source.error("no qubits are declared", 0, required="a declaration of qubits", hint=hint)
-        return self.circuit(np.array(order, dtype=np.int64))
-
-    def circuit(self, order: NDArray[np.int64]) -> Circuit:
-        """Return the columns for the distinct statements in the order in which they occur."""
-        first = np.array(self.first, dtype=np.int64)
-        lengths = np.diff(first)[order]
-        self.check_total(int(lengths.sum()), 0)
-        rows, _ = _spans(first[order], lengths)
-        op = np.array(self.op, dtype=np.int64)
-        width = np.array(self.width, dtype=np.int64)
-        n_parameters = np.array([kind.n_parameters for kind in self.table], dtype=np.int64)[op]
-        if width[rows].sum() > MAX_OPERANDS:
-            raise self.source.error("the operations name too many qubits", 0, required=f"at most {MAX_OPERANDS} in all")
-        qubits, offsets = _gather(np.array(self.qubits, dtype=np.int32), width, rows)
-        parameters, parameter_offsets = _gather(np.array(self.parameters, dtype=np.float64), n_parameters, rows)
-        link = np.full(len(op), -1, dtype=np.int32)
-        link[list(self.link)] = list(self.link.values())
-        phase = np.zeros(len(first))
-        phase[list(self.phases)] = list(self.phases.values())
-        # Number the kinds in the order in which they first occur, as a Builder does.
-        used, places = np.unique(op[rows], return_index=True)
-        used = used[np.argsort(places)]
-        number = np.zeros(len(self.table) + 1, dtype=np.int16)
-        number[used] = np.arange(len(used))
-        kinds = tuple(self.table)
-        scope = self.scope
-        return Circuit(
-            n_qubits=scope.n_qubits or scope.n_physical,
-            n_bits=scope.n_bits,
-            table=tuple(kinds[k] for k in used.tolist()),
-            op=number[op[rows]],
-            qubits=qubits,
-            offsets=offsets,
-            parameters=parameters,
-            parameter_offsets=parameter_offsets,
-            link=link[rows],
-            phase=float(phase[order].sum()),
-            qubit_registers=tuple((name, len(span)) for name, span in scope.qubit_registers.items()),
-            bit_registers=tuple((name, len(span)) for name, span in scope.bit_registers.items()),
-        )
+        return circuit(self, np.array(order, dtype=np.int64))
 
     def check_total(self, operations: int, offset: int) -> None:
         """Refuse a program that is too long."""
@@ -195,6 +177,44 @@ class _Reader:
             )
 
     # ---------------------------------------------------------------- one statement
+
+    def hand_over(self, piece: str) -> str | None:
+        """Let the full lane carry out the statement that a piece begins with, or pass over an annotation or a pragma.
+
+        Returns
+        -------
+        str or None
+            What follows it up to a semicolon; None for a statement that the fast lane reads.
+        """
+        leading = leading_word(piece)
+        if leading is None or self.scope.version != 3:
+            return None
+        word, start = leading[0], self.position + leading[1]
+        if word in ("@", "#", "pragma"):
+            end = self.source.text.find("\n", start)
+            return self.behind(piece, len(self.source.text) if end < 0 else end)
+        choice = lane(word, piece, start, self.scope, self.full)
+        if choice == FAST or (choice == EITHER and not self.only_full):
+            return None
+        if self.full is None:
+            from gatewright.qasm.full import FullLane
+
+            self.full = FullLane(self)
+        end, self.ended = self.full.statement(start)
+        return self.behind(piece, end)
+
+    def behind(self, piece: str, end: int) -> str:
+        """Go on behind the offset `end`; return what follows it up to a semicolon."""
+        self.closed = end
+        self.started = True
+        if end and self.source.text[end - 1] == ";":
+            end -= 1
+        while self.position + len(piece) < end:
+            self.position += len(piece) + 1
+            piece = next(self.pieces)
+        rest = piece[end - self.position :]
+        self.position = end
+        return rest
 
     def flat_call(self, piece: str) -> int:
         """Read the call of a gate seen before on single qubits; return its number, or -1 for anything else."""
@@ -224,11 +244,16 @@ class _Reader:
     def any_statement(self, piece: str) -> int:
         """Read any statement, and the definitions in front of it; return its number."""
         length = len(piece)
-        while _BLOCK.match(piece):
-            piece = self.definition(piece)
+        remember = True
+        while not self.ended:
+            rest = self.hand_over(piece)
+            if rest is None and _BLOCK.match(piece):
+                rest = self.definition(piece)
+            if rest is None:
+                break
+            piece, remember = rest, False
         statement = piece.strip()
-        remember = len(piece) == length
-        if statement:
+        if statement and not self.ended:
             remember &= self.statement(statement, self.position + len(piece) - len(piece.lstrip()))
             self.started = True
         self.position += len(piece) - length  # the caller adds the length of the piece that it knows
@@ -263,8 +288,19 @@ class _Reader:
             self.call(text, offset)
         return True
 
-    def emit(self, gate: Gate, qubits: Sequence[int], parameters: Sequence[float] = ()) -> None:
-        """Append one operation."""
+    def emit(
+        self,
+        gate: Gate,
+        qubits: Sequence[int],
+        parameters: Sequence[float] = (),
+        matrix: NDArray[np.complex128] | None = None,
+        /,
+    ) -> None:
+        """Append one operation; `matrix` is that of an explicit unitary."""
+        if matrix is not None:
+            self.matrices[len(self.op)] = matrix
+        if len(self.op) >= MAX_OPERATIONS:
+            self.check_total(len(self.op) + 1, self.position)
         self.op.append(self.table.setdefault(gate, len(self.table)))
         self.width.append(len(qubits))
         self.qubits += qubits
@@ -276,6 +312,8 @@ class _Reader:
         assert match is not None  # it begins with a word, and anything may follow
         name, arguments, operands = match.groups()
         target = self.target(name, offset)
+        if isinstance(target, Definition) and target.stands_for is not None:
+            target = target.stands_for
         if "(" in operands:
             raise self.source.error("a '(' is not closed", offset + match.start(3), required="a matching ')'")
         self.scope.check_count(name, "parameters", target.n_parameters, arguments, offset)
@@ -298,7 +336,8 @@ class _Reader:
     def add_phase(self, phase: float) -> None:
         """Add a global phase to the distinct statement at hand."""
         if phase:
-            self.phases[len(self.first) - 1] = phase
+            number = len(self.first) - 1
+            self.phases[number] = self.phases.get(number, 0.0) + phase
 
     def target(self, name: str, offset: int) -> Gate | Definition:
         """Return the gate called `name`."""
@@ -388,6 +427,8 @@ class _Reader:
                 found=str(len(targets)),
             )
         for qubit, bit in zip(sources, targets, strict=True):
+            if self.full is not None:
+                self.full.bits.pop(bit, None)
             self.link[len(self.op)] = bit
             self.emit(MEASURE, (qubit,))
 
@@ -457,7 +498,7 @@ class _Reader:
 
     def constant(self, text: str, offset: int) -> None:
         """Read ``const type name = expression``."""
-        match = _CONST.fullmatch(text)
+        match = CONST.fullmatch(text)
         if match is None:
             raise self.scope.unsupported("this 'const'", offset)
         self.scope.only_in(3, "'const'", offset)
@@ -469,6 +510,8 @@ class _Reader:
             number = self.scope.number(value, at)
         self.scope.declare(name, "a constant", offset + match.start(2))
         self.scope.constants[name] = number
+        if kind in ("int", "uint"):
+            self.scope.integers.add(name)
 
     def opaque_gate(self, text: str, offset: int) -> None:
         """Read ``opaque``: a name that may not be called, unless it is a native gate."""
@@ -502,7 +545,11 @@ class _Reader:
         end = self.position + len(last)
         self.position = end + 1
         body = self.source.text[body_start:end]
-        made = read_definition(self.scope, header.strip(), start, body, body_start, self.target)
+        self.define(read_definition(self.scope, header.strip(), start, body, body_start, self.target), start)
+        return rest
+
+    def define(self, made: Definition, start: int) -> None:
+        """Make a definition known; where it is a known gate up to global phase, calls stay calls of that."""
         name = made.name
         known = self.natives.get(name) or GATES.get(name)
         same = known is not None and equals(made, known)
@@ -513,19 +560,9 @@ class _Reader:
                 required="the same matrix up to global phase",
                 hint="rename the gate in the program",
             )
-        self.gates[name] = known if known is not None and same else made
-        return rest
-
-
-def _spans(starts: NDArray[np.int64], lengths: NDArray[np.int64]) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
-    """Return the indices of spans one after another, and the offsets of the spans among them."""
-    offsets = np.zeros(len(lengths) + 1, dtype=np.int64)
-    np.cumsum(lengths, out=offsets[1:])
-    return np.arange(offsets[-1]) + np.repeat(starts - offsets[:-1], lengths), offsets
-
-
-def _gather(flat: NDArray[Any], lengths: NDArray[np.int64], rows: NDArray[np.int64]) -> tuple[NDArray[Any], Any]:
-    """Select rows of a ragged array: the new flat array and its offsets."""
-    starts = np.cumsum(lengths) - lengths
-    index, offsets = _spans(starts[rows], lengths[rows])
-    return flat[index], offsets
+        if known is None or not same:
+            self.gates[name] = made
+        elif self.scope.version == 2 or equals(made, known, exact=True):
+            self.gates[name] = known
+        else:
+            self.gates[name] = replace(made, stands_for=known)

@@ -15,7 +15,7 @@ __all__ = ["MAX_QUBITS", "NAME", "RESERVED", "UNSUPPORTED", "Scope", "split"]
 #: Most qubits, and most bits, of one program.
 MAX_QUBITS = 100_000
 
-#: Words of OpenQASM that begin what is not read.
+#: Words of OpenQASM that begin what the fast lane does not read.
 UNSUPPORTED = frozenset(
     "if else for while switch case default def defcal cal defcalgrammar extern input output let box delay nop"
     " durationof duration stretch int uint float angle bool complex array ctrl negctrl inv pow return break continue"
@@ -61,6 +61,7 @@ class Scope:
         self.source = source
         self.version = 3
         self.constants: dict[str, float] = {}
+        self.integers: set[str] = set()  # constants that are integers
         self.declared: dict[str, str] = {}
         self.qubit_registers: dict[str, range] = {}
         self.bit_registers: dict[str, range] = {}
@@ -78,7 +79,9 @@ class Scope:
 
     def unsupported(self, what: str, offset: int) -> UnsupportedError:
         """Return the error for what is OpenQASM, but not read."""
-        problem = UnsupportedError(f"{what} is not yet supported", required="a straight-line program of gates")
+        problem = UnsupportedError(
+            f"{what} is not yet supported", required="gates, and control flow that is known when compiling"
+        )
         return self.source.locate(problem, offset)
 
     def only_in(self, version: int, what: str, offset: int) -> None:

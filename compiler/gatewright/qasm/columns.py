@@ -1,0 +1,74 @@
+"""Put the distinct statements of a program together into the columns of a circuit."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from gatewright.circuit import Circuit
+
+if TYPE_CHECKING:
+    from gatewright.qasm.reader import Reader
+
+__all__ = ["MAX_OPERANDS", "circuit"]
+
+#: Most qubits that all operations together may name.
+MAX_OPERANDS = 40_000_000
+
+
+def circuit(reader: Reader, order: NDArray[np.int64]) -> Circuit:
+    """Return the columns for the distinct statements in the order in which they occur."""
+    first = np.array(reader.first, dtype=np.int64)
+    lengths = np.diff(first)[order]
+    reader.check_total(int(lengths.sum()), 0)
+    rows, _ = _spans(first[order], lengths)
+    op = np.array(reader.op, dtype=np.int64)
+    width = np.array(reader.width, dtype=np.int64)
+    n_parameters = np.array([kind.n_parameters for kind in reader.table], dtype=np.int64)[op]
+    if width[rows].sum() > MAX_OPERANDS:
+        raise reader.source.error("the operations name too many qubits", 0, required=f"at most {MAX_OPERANDS} in all")
+    qubits, offsets = _gather(np.array(reader.qubits, dtype=np.int32), width, rows)
+    parameters, parameter_offsets = _gather(np.array(reader.parameters, dtype=np.float64), n_parameters, rows)
+    link = np.full(len(op), -1, dtype=np.int32)
+    link[list(reader.link)] = list(reader.link.values())
+    link[list(reader.matrices)] = range(len(reader.matrices))
+    phase = np.zeros(len(first))
+    phase[list(reader.phases)] = list(reader.phases.values())
+    # Number the kinds in the order in which they first occur, as a Builder does.
+    used, places = np.unique(op[rows], return_index=True)
+    used = used[np.argsort(places)]
+    number = np.zeros(len(reader.table) + 1, dtype=np.int16)
+    number[used] = np.arange(len(used))
+    kinds = tuple(reader.table)
+    scope = reader.scope
+    return Circuit(
+        n_qubits=scope.n_qubits or scope.n_physical,
+        n_bits=scope.n_bits,
+        table=tuple(kinds[k] for k in used.tolist()),
+        op=number[op[rows]],
+        qubits=qubits,
+        offsets=offsets,
+        parameters=parameters,
+        parameter_offsets=parameter_offsets,
+        link=link[rows],
+        matrices=tuple(reader.matrices.values()),
+        phase=float(phase[order].sum()),
+        qubit_registers=tuple((name, len(span)) for name, span in scope.qubit_registers.items()),
+        bit_registers=tuple((name, len(span)) for name, span in scope.bit_registers.items()),
+    )
+
+
+def _spans(starts: NDArray[np.int64], lengths: NDArray[np.int64]) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Return the indices of spans one after another, and the offsets of the spans among them."""
+    offsets = np.zeros(len(lengths) + 1, dtype=np.int64)
+    np.cumsum(lengths, out=offsets[1:])
+    return np.arange(offsets[-1]) + np.repeat(starts - offsets[:-1], lengths), offsets
+
+
+def _gather(flat: NDArray[Any], lengths: NDArray[np.int64], rows: NDArray[np.int64]) -> tuple[NDArray[Any], Any]:
+    """Select rows of a ragged array: the new flat array and its offsets."""
+    starts = np.cumsum(lengths) - lengths
+    index, offsets = _spans(starts[rows], lengths[rows])
+    return flat[index], offsets

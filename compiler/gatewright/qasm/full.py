@@ -1,0 +1,518 @@
+"""The full lane: statements of OpenQASM 3 beyond the plain ones, executed as far as they are known when compiling.
+
+Each statement is parsed by the standard's reference parser and carried out on the names and columns that the fast
+lane has: loops are unrolled, branches decided, subroutines written out in place, modifiers resolved. After the
+OpenQASM 3 specification (arXiv:2104.14722). What depends on a measurement, timing, inputs and calibrations is refused.
+"""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from gatewright.errors import CannotError, ExpressionError, shorten
+from gatewright.qasm.evaluation import MAX_ELEMENTS, Pending, Places, Variable
+from gatewright.qasm.grammar import parse_statement, statement_end
+from gatewright.qasm.operations import Operations
+from gatewright.qasm.scope import MAX_QUBITS, NAME, RESERVED
+from gatewright.qasm.values import Array, Kind, Value, binary, cast
+
+if TYPE_CHECKING:
+    from gatewright.qasm.reader import Reader
+
+__all__ = ["MAX_CALLS", "FullLane"]
+
+#: Subroutine calls open at once.
+MAX_CALLS = 40
+
+#: Parsed statements that are remembered.
+_REMEMBERED = 10_000
+
+_WORD = re.compile(NAME)
+_REFUSED = {
+    "IODeclaration": "",
+    "ExternDeclaration": "'extern'",
+    "CalibrationGrammarDeclaration": "'defcalgrammar'",
+    "CalibrationStatement": "'cal'",
+    "CalibrationDefinition": "'defcal'",
+    "DelayInstruction": "'delay'",
+    "Box": "'box'",
+}
+
+
+@dataclass(frozen=True, slots=True)
+class Subroutine:
+    """A subroutine, and the offset that the columns of its nodes count from."""
+
+    node: Any
+    start: int
+
+
+@dataclass(frozen=True, slots=True)
+class _Return:
+    """The end of a subroutine."""
+
+    value: Value | Array | Pending | None
+
+
+class _End(Exception):
+    """The end of the program."""
+
+
+class FullLane(Operations):
+    """Carries out the statements that the fast lane hands over.
+
+    Parameters
+    ----------
+    reader : Reader
+        Whose names, gates and columns are shared.
+    """
+
+    def __init__(self, reader: Reader) -> None:
+        super().__init__(reader)
+        self.calls = 0
+        self.returning: Any = None  # the type that the subroutine at hand returns
+        self.parsed: dict[str, Any] = {}
+
+    # ---------------------------------------------------------------- one statement of the program
+
+    def concerns(self, text: str) -> bool:
+        """Whether a text names something that only this lane knows."""
+        return bool(self.globals) and not self.globals.keys().isdisjoint(_WORD.findall(text))
+
+    def statement(self, start: int) -> tuple[int, bool]:
+        """Carry out the statement that begins at an offset.
+
+        Returns
+        -------
+        end : int
+            Offset behind it.
+        ended : bool
+            Whether the program ends with it.
+
+        Raises
+        ------
+        QasmError, UnsupportedError
+        """
+        end, skipped = statement_end(self.source, start)
+        text = self.source.text[start:end]
+        node = self.parsed.get(text)
+        if node is None:
+            node = parse_statement(self.source, start, end, skipped)
+            if len(self.parsed) < _REMEMBERED:
+                self.parsed[text] = node
+        self.start = start
+        self.phase = 0.0
+        self.frames, self.enclosed, self.calls = [], False, 0
+        try:
+            self.execute(node)
+        except _End:
+            return end, True
+        except RecursionError:
+            raise self.source.error(
+                "statements or calls are nested too deeply", start, required=f"at most {MAX_CALLS} calls in each other"
+            ) from None
+        finally:
+            if self.phase:
+                self.reader.add_phase(self.phase)
+        return end, False
+
+    def execute(self, node: Any) -> str | _Return | None:
+        """Carry out a statement; return how it leaves the block that it stands in, if it does."""
+        self.charge(1, node)
+        method: Callable[[Any], str | _Return | None] | None = self.methods.get(type(node))
+        if method is None:
+            name = type(node).__name__
+            if name in _REFUSED:
+                raise self.unsupported(_REFUSED[name] or f"'{node.io_identifier.name}'", node)
+            method = getattr(self, f"do_{name}", None)
+            if method is None:
+                raise self.unsupported(f"this statement ({name})", node)
+            self.methods[type(node)] = method
+        try:
+            return method(node)
+        except ExpressionError as problem:
+            raise self.fault(problem, node) from None
+
+    def block(self, statements: Sequence[Any], names: dict[str, Any] | None = None) -> str | _Return | None:
+        """Carry out the statements of a block in a frame of their own."""
+        self.frames.append(names or {})
+        try:
+            for statement in statements:
+                left = self.execute(statement)
+                if left is not None:
+                    return left
+            return None
+        finally:
+            self.frames.pop()
+
+    def do_Pragma(self, node: Any) -> None:
+        """Pass over a pragma."""
+
+    def do_CompoundStatement(self, node: Any) -> str | _Return | None:
+        """Carry out a block."""
+        return self.block(node.statements)
+
+    # ---------------------------------------------------------------- control flow
+
+    def do_BranchingStatement(self, node: Any) -> str | _Return | None:
+        """Carry out the branch of ``if`` that is taken."""
+        return self.block(node.if_block if self.condition(node.condition, "if", node) else node.else_block)
+
+    def do_WhileLoop(self, node: Any) -> str | _Return | None:
+        """Unroll ``while``."""
+        while self.condition(node.while_condition, "while", node):
+            self.charge(1, node)
+            left = self.block(node.block)
+            if left == "break":
+                break
+            if isinstance(left, _Return):
+                return left
+        return None
+
+    def do_ForInLoop(self, node: Any) -> str | _Return | None:
+        """Unroll ``for``."""
+        kind = self.kind(node.type)
+        declared = node.set_declaration
+        what = type(declared).__name__
+        values: Sequence[Any]
+        if what == "RangeDefinition":
+            span = self.span(declared, None)
+            self.charge(len(span), node)
+            values = [Value(Kind("int"), k) for k in span]
+        elif what == "DiscreteSet":
+            values = [self.scalar(item, real=kind.name in ("float", "angle")) for item in declared.values]
+        else:
+            whole = self.evaluate(declared)
+            if isinstance(whole, Array):
+                values = list(whole.items)
+            elif isinstance(whole, Value) and whole.kind.name == "bit":
+                values = [Value(Kind("bit"), int(whole.data) >> k & 1) for k in range(whole.bits)]
+            else:
+                raise self.error("'for' over what is not a range, a set or an array", declared)
+        name = node.identifier.name
+        if name in RESERVED:
+            raise self.error(f"'{shorten(name)}' is a reserved word", node.identifier, required="another name")
+        for value in values:
+            if isinstance(value, Array):
+                raise self.error("'for' over the rows of an array", declared, required="an array of one dimension")
+            left = self.block(node.block, {name: Variable(kind, cast(value, kind))})
+            if left == "break":
+                break
+            if isinstance(left, _Return):
+                return left
+        return None
+
+    def do_SwitchStatement(self, node: Any) -> str | _Return | None:
+        """Carry out the case of ``switch`` that is met."""
+        try:
+            wanted = self.integer(node.target)
+        except CannotError:
+            raise self.unsupported("'switch' on a bit that is not known when compiling", node) from None
+        for labels, body in node.cases:
+            if any(self.integer(label) == wanted for label in labels):
+                return self.block(body.statements)
+        return None if node.default is None else self.block(node.default.statements)
+
+    def do_BreakStatement(self, node: Any) -> str:
+        """Leave a loop."""
+        return "break"
+
+    def do_ContinueStatement(self, node: Any) -> str:
+        """Go to the next round of a loop."""
+        return "continue"
+
+    def do_EndStatement(self, node: Any) -> None:
+        """End the program."""
+        raise _End
+
+    def do_ReturnStatement(self, node: Any) -> _Return:
+        """Leave a subroutine."""
+        if node.expression is None:
+            return _Return(None)
+        if type(node.expression).__name__ == "QuantumMeasurement":
+            return _Return(Pending(self.places(node.expression.qubit)))
+        real = type(self.returning).__name__ in ("FloatType", "AngleType")
+        return _Return(self.evaluate(node.expression, real=real))
+
+    # ---------------------------------------------------------------- declarations and assignments
+
+    def do_QubitDeclaration(self, node: Any) -> None:
+        """Declare qubits."""
+        self.register(node.qubit, node.size, quantum=True)
+
+    def register(self, identifier: Any, size: Any, *, quantum: bool) -> None:
+        """Declare a register of qubits or bits."""
+        if self.frames:
+            raise self.error("qubits are declared inside a block", identifier, required="a declaration outside")
+        number = None if size is None else self.integer(size, 1, MAX_QUBITS)
+        self.scope.add_register(identifier.name, number, self.at(identifier), quantum=quantum)
+
+    def do_ConstantDeclaration(self, node: Any) -> None:
+        """Declare a constant."""
+        variable = self.variable(node, constant=True)
+        value = variable.value
+        if not self.frames and isinstance(value, Value) and value.kind.name in ("int", "uint", "float", "angle"):
+            if abs(value.data) <= 2**53:
+                self.scope.constants[node.identifier.name] = float(value.data)
+
+    def do_ClassicalDeclaration(self, node: Any) -> None:
+        """Declare a variable, or bits."""
+        if type(node.type).__name__ != "BitType" or self.frames:
+            if type(node.init_expression).__name__ == "QuantumMeasurement":
+                raise self.unsupported("a measurement into a bit of a block or a subroutine", node)
+            self.variable(node, constant=False)
+            return
+        value = None
+        given = node.init_expression
+        measured = type(given).__name__ == "QuantumMeasurement"
+        if given is not None and not measured:
+            value = self.evaluate(given)
+        self.register(node.identifier, node.type.size, quantum=False)
+        if measured:
+            value = Pending(self.places(given.qubit))
+        if value is not None:
+            self.set_bits(self.places(node.identifier, quantum=False), value, node)
+
+    def variable(self, node: Any, *, constant: bool) -> Variable:
+        """Declare a variable or a constant with its value."""
+        given = node.init_expression
+        value: Value | Array | None = None
+        if type(node.type).__name__ == "ArrayType":
+            kind = self.kind(node.type.base_type)
+            sizes = [self.integer(size, 1, MAX_ELEMENTS) for size in node.type.dimensions]
+            if float(np.prod(np.array(sizes, dtype=np.float64))) > MAX_ELEMENTS:
+                raise self.error("an array is too large", node, required=f"at most {MAX_ELEMENTS} elements")
+            self.charge(int(np.prod(sizes)), node)
+            value = _blank(kind, sizes) if given is None else self.array(kind, sizes, given)
+        else:
+            kind = self.kind(node.type)
+            if given is not None:
+                value = self.assigned(kind, self.evaluate(given, real=kind.name in ("float", "angle")), given)
+        made = Variable(kind, value, constant)
+        self.declare(node.identifier.name, made, "a constant" if constant else "a variable", node.identifier)
+        return made
+
+    def assigned(self, kind: Kind, value: Any, node: Any) -> Value:
+        """Return a value as a variable of a type takes it."""
+        if isinstance(value, Pending):
+            raise self.unsupported("a variable that depends on a measurement", node)
+        if isinstance(value, Array):
+            raise self.error("an array cannot stand here", node, required=f"a value of type {kind}")
+        try:
+            return cast(value, kind, implicit=True)
+        except ExpressionError as problem:
+            raise self.fault(problem, node) from None
+
+    def do_AliasStatement(self, node: Any) -> None:
+        """Declare an alias of qubits, or of bits."""
+        first = node.value
+        while type(first).__name__ in ("Concatenation", "IndexExpression"):
+            first = first.lhs if hasattr(first, "lhs") else first.collection
+        found = self.find(first.name, first) if hasattr(first, "name") else None
+        quantum = not (isinstance(found, Places) and not found.quantum)
+        places = self.places(node.value, quantum=quantum)
+        if len(places.indices) > MAX_QUBITS:
+            raise self.error("an alias is too long", node, required=f"at most {MAX_QUBITS} elements")
+        self.declare(node.target.name, places, "an alias", node.target)
+
+    def do_ClassicalAssignment(self, node: Any) -> None:
+        """Assign to a variable, an element of an array, or bits."""
+        indexed = type(node.lvalue).__name__ == "IndexedIdentifier"
+        name = node.lvalue.name.name if indexed else node.lvalue.name
+        found = self.find(name, node.lvalue)
+        op = node.op.name.removesuffix("=")
+        if isinstance(found, Places):
+            places = self.places(node.lvalue, quantum=False)
+            value = self.evaluate(node.rvalue)
+            if op:
+                if isinstance(value, Array | Pending):
+                    raise self.unsupported("this assignment", node)
+                value = binary(op, self.read_bits(places, node.lvalue), value)
+            self.set_bits(places, value, node)
+            return
+        if not isinstance(found, Variable):
+            raise self.error(f"'{shorten(name)}' is not a variable", node.lvalue)
+        if found.constant:
+            raise self.error(f"'{shorten(name)}' is a constant", node.lvalue, required="a variable")
+        real = found.kind.name in ("float", "angle")
+        if not indexed and isinstance(found.value, Array) and not op:
+            found.value = self.array(found.kind, _shape(found.value), node.rvalue)
+            return
+        value = self.evaluate(node.rvalue, real=real)
+        if isinstance(value, Array | Pending):
+            raise self.unsupported("assigning an array or a measurement here", node)
+        old = found.value
+        if not indexed:
+            if op:
+                if not isinstance(old, Value):
+                    raise self.error(f"'{shorten(name)}' has no value yet", node.lvalue)
+                value = binary(op, old, value, real=real)
+            found.value = self.assigned(found.kind, value, node.rvalue)
+            return
+        self.set_element(found, node, value, op, real)
+
+    def set_element(self, variable: Variable, node: Any, value: Value, op: str, real: bool) -> None:
+        """Assign to an element of an array, or to bits of a variable."""
+        flat = [part for index in node.lvalue.indices for part in (index if isinstance(index, list) else [index])]
+        holder = variable.value
+        if isinstance(holder, Value) or holder is None:
+            if (
+                holder is None
+                or len(flat) != 1
+                or not holder.kind.width
+                or holder.kind.name not in ("bit", "uint", "int")
+            ):
+                raise self.error("this has no elements to assign to", node.lvalue)
+            chosen, _ = self.positions(holder.bits, flat[0], node.lvalue)
+            old = self.element(holder, flat[0], node.lvalue)
+            if op:
+                assert isinstance(old, Value)
+                value = binary(op, old, value)
+            bits = int(cast(value, Kind("bit", len(chosen)), implicit=True).data)
+            data = int(holder.data)
+            for k, place in enumerate(chosen):
+                data = data & ~(1 << place) | (bits >> k & 1) << place
+            variable.value = cast(Value(Kind("int"), data), holder.kind)
+            return
+        for number, part in enumerate(flat):
+            chosen, single = self.positions(len(holder.items), part, node.lvalue)
+            if not single:
+                raise self.unsupported("assigning to a slice of an array", node)
+            item = holder.items[chosen[0]]
+            if number < len(flat) - 1:
+                if not isinstance(item, Array):
+                    raise self.error("too many indices", node.lvalue)
+                holder = item
+            elif isinstance(item, Array):
+                raise self.unsupported("assigning to a row of an array", node)
+            else:
+                value = binary(op, item, value, real=real) if op else value
+                holder.items[chosen[0]] = self.assigned(variable.kind, value, node.rvalue)
+
+    def set_bits(self, places: Places, value: Any, node: Any) -> None:
+        """Give bits a value, or the outcome of a measurement."""
+        if isinstance(value, Pending):
+            self.measurement(value.qubits, places, node)
+            return
+        if isinstance(value, Array):
+            raise self.error("an array cannot become bits", node)
+        kind = Kind("bit", 0 if places.single else len(places.indices))
+        measured = set(self.reader.link.values())
+        if not measured.isdisjoint(places.indices):
+            raise self.unsupported("assigning to a bit that was measured", node)
+        data = int(self.assigned(kind, value, node).data)
+        for k, place in enumerate(places.indices):
+            self.bits[place] = data >> k & 1
+
+    # ---------------------------------------------------------------- subroutines
+
+    def do_SubroutineDefinition(self, node: Any) -> None:
+        """Declare a subroutine."""
+        if self.frames:
+            raise self.error("a subroutine is defined inside a block", node, required="a definition outside")
+        self.declare(node.name.name, Subroutine(node, self.start), "a subroutine", node.name)
+
+    def do_ExpressionStatement(self, node: Any) -> None:
+        """Call a subroutine for its effect."""
+        call = node.expression
+        known = self.globals.get(call.name.name) if type(call).__name__ == "FunctionCall" else None
+        if not isinstance(known, Subroutine):
+            raise self.error("this is not a statement", node, required="a call of a subroutine")
+        if isinstance(self.call_subroutine(call), Pending):
+            raise self.unsupported("a measurement into no bit", node)
+
+    def call_subroutine(self, node: Any) -> Value | Array | Pending | None:
+        """Write a subroutine out in place."""
+        name = node.name.name
+        known = self.globals.get(name)
+        if not isinstance(known, Subroutine):
+            raise self.error(f"'{shorten(name)}' is not a subroutine", node, found=f"it is {self.scope.declared[name]}")
+        definition = known.node
+        if len(node.arguments) != len(definition.arguments):
+            raise self.error(
+                f"wrong number of arguments for '{shorten(name)}'",
+                node,
+                required=str(len(definition.arguments)),
+                found=str(len(node.arguments)),
+            )
+        if self.calls >= MAX_CALLS:
+            raise self.error("subroutines call each other too deeply", node, required=f"at most {MAX_CALLS} levels")
+        self.charge(1, node)
+        names: dict[str, Any] = {}
+        for formal, given in zip(definition.arguments, node.arguments, strict=True):
+            if formal.name.name in names or formal.name.name in RESERVED:
+                raise self.error(f"'{shorten(formal.name.name)}' cannot name an argument", node)
+            names[formal.name.name] = self.argument(formal, given, known)
+        taken = [place for thing in names.values() if isinstance(thing, Places) for place in thing.indices]
+        if len(set(taken)) < len(taken):
+            raise self.error("a qubit is repeated", node, required="distinct qubits")
+        saved = self.frames, self.enclosed, self.start, self.returning
+        self.frames, self.enclosed, self.start, self.returning = [], True, known.start, definition.return_type
+        self.calls += 1
+        try:
+            left = self.block(definition.body, names)
+            value = left.value if isinstance(left, _Return) else None
+            if definition.return_type is None or value is None:
+                return None
+            kind = self.kind(definition.return_type)
+            if isinstance(value, Pending):
+                if kind.name != "bit":
+                    raise self.unsupported("a value that depends on a measurement", definition)
+                return value
+            return self.assigned(kind, value, definition)
+        finally:
+            self.frames, self.enclosed, self.start, self.returning = saved
+            self.calls -= 1
+
+    def argument(self, formal: Any, given: Any, known: Subroutine) -> Variable | Places:
+        """Return what a subroutine's argument stands for in one call."""
+        start = self.start
+        self.start = known.start
+        try:
+            if type(formal).__name__ == "QuantumArgument":
+                size = None if formal.size is None else self.integer(formal.size, 1, MAX_QUBITS)
+                kind = None
+            else:
+                size = None
+                by_array = type(formal.type).__name__ in ("ArrayType", "ArrayReferenceType")
+                kind = self.kind(formal.type.base_type if by_array else formal.type)
+        finally:
+            self.start = start
+        if kind is None:
+            places = self.places(given)
+            if (size is None) != places.single or len(places.indices) != (size or 1):
+                raise self.error(
+                    "an argument of another size",
+                    given,
+                    required="a single qubit" if size is None else f"{size} qubits",
+                    found="a single qubit" if places.single else f"{len(places.indices)} qubits",
+                )
+            return Places(places.indices, places.single, True)
+        value = self.evaluate(given, real=kind.name in ("float", "angle"))
+        if by_array:
+            if not isinstance(value, Array) or value.kind != kind:
+                raise self.error("an argument of another type", given, required=f"an array of {kind}")
+            mutable = formal.access is not None and formal.access.name == "mutable"
+            return Variable(kind, value if mutable else value.copy(), constant=not mutable)
+        return Variable(kind, self.assigned(kind, value, given))
+
+
+def _blank(kind: Kind, sizes: Sequence[int]) -> Array:
+    """Return an array of zeros: the language leaves the first values open."""
+    if len(sizes) == 1:
+        return Array(kind, [cast(Value(Kind("bit"), 0) if kind.name != "angle" else Value(kind, 0), kind)] * sizes[0])
+    return Array(kind, [_blank(kind, sizes[1:]) for _ in range(sizes[0])])
+
+
+def _shape(array: Array) -> list[int]:
+    """Return the sizes of an array."""
+    sizes = [len(array.items)]
+    while array.items and isinstance(array.items[0], Array):
+        array = array.items[0]
+        sizes.append(len(array.items))
+    return sizes
