@@ -1,7 +1,7 @@
 """Compile the numerical kernels when that is needed, say so, and use two cores for it.
 
 numba compiles a kernel once for an installation and keeps it in its cache. Loading what is in the cache takes a
-fraction of a second; compiling all of it, many seconds. The mapping kernels are then compiled by a second process while
+fraction of a second; compiling all of it, many seconds. A second process then compiles half of the kernels while
 this one does the others.
 """
 
@@ -15,7 +15,7 @@ from typing import Any
 
 __all__ = ["load_kernels"]
 
-_OTHERS = "import gc; gc.disable(); import gatewright.mapping._kernels"
+_OTHERS = "import gc; gc.disable(); import gatewright.mapping._kernels, gatewright.stages.windows"
 
 
 def load_kernels(tell: Callable[[str], None]) -> None:
@@ -48,7 +48,9 @@ def load_kernels(tell: Callable[[str], None]) -> None:
     # Compiling makes garbage by the million objects; looking for it all the while would take a quarter of the time.
     gc.disable()
     try:
-        import gatewright.stages.synthesise
+        import gatewright.cost
+        import gatewright.stages._kernels
+        import gatewright.synthesis._kernels
 
         for helper in helpers:
             helper.wait()

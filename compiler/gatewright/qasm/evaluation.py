@@ -17,7 +17,7 @@ if TYPE_CHECKING:
 __all__ = ["MAX_ELEMENTS", "MAX_STEPS", "Evaluator", "Pending", "Places", "Unknown", "ValueFault", "Variable"]
 
 #: Most statements that unrolling executes, and operations that it writes, in one program.
-MAX_STEPS = 1_000_000
+MAX_STEPS = 100_000
 
 #: Most elements of one array, set or index range.
 MAX_ELEMENTS = 1_000_000

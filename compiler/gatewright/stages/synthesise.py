@@ -8,11 +8,9 @@ at the end of a window in this way is its seam in the proof.
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass, replace
 from typing import Any
 
-import numba as nb
 import numpy as np
 from numpy.typing import NDArray
 
@@ -20,6 +18,7 @@ from gatewright.circuit import Circuit, Piece, assemble
 from gatewright.errors import GateSetError
 from gatewright.linalg import dagger
 from gatewright.proof.windows import Step
+from gatewright.stages._kernels import carry_phases, merge_runs
 from gatewright.stages.draft import Draft
 from gatewright.stages.windows import FIXED, ONE, TWO, Fused, window_unitaries
 from gatewright.synthesis.euler import ROUNDING
@@ -28,133 +27,6 @@ from gatewright.synthesis.native import NativeEntangler, NativeSet
 __all__ = ["synthesise"]
 
 Array = NDArray[np.complex128]
-
-
-@nb.njit(
-    "i8(i1[::1], i8[::1], i4[::1], i4[::1], i4[::1], b1[::1], c16[:,:,:,:,::1], c16[:,:,::1], c16[:,:,::1], i8[::1],"
-    " i4[::1], i4[::1], c16[:,:,::1], i8[::1], c16[:,:,::1])",
-    cache=True,
-    nogil=True,
-)
-def _merge(
-    kind: Any,
-    offsets: Any,
-    wires: Any,
-    row: Any,
-    uses: Any,
-    flush: Any,
-    layers: Any,
-    one: Any,
-    site_matrix: Any,
-    site_event: Any,
-    site_window: Any,
-    site_wire: Any,
-    owed: Any,
-    window_event: Any,
-    pending: Any,
-) -> int:
-    """Multiply one-qubit layers together along the wires; return the number of sites."""
-    site, event = 0, 0
-    for w in range(len(kind)):
-        window_event[w] = event
-        if kind[w] == 0:
-            event += 1
-            continue
-        width = kind[w]
-        k = uses[w]
-        for layer in range(k + 1):
-            for j in range(width):
-                p = wires[offsets[w] + j]
-                for a in range(2):
-                    for b in range(2):
-                        if layer > 0:
-                            site_matrix[site, a, b] = layers[row[w], layer, j, a, b]
-                            continue
-                        total = 0j
-                        for c in range(2):
-                            left = one[row[w], a, c] if width == 1 else layers[row[w], 0, j, a, c]
-                            total += left * pending[p, c, b]
-                        site_matrix[site, a, b] = total
-                if layer < k or flush[offsets[w] + j]:
-                    site_event[site] = event
-                    site_window[site] = w
-                    site_wire[site] = p
-                    site += 1
-                    event += 1
-                    if layer == k:
-                        pending[p, 0, 1] = pending[p, 1, 0] = 0
-                        pending[p, 0, 0] = pending[p, 1, 1] = 1
-                else:
-                    for a in range(2):
-                        for b in range(2):
-                            pending[p, a, b] = site_matrix[site, a, b]
-            if layer < k:
-                event += 1
-        for j in range(offsets[w], offsets[w + 1]):
-            for a in range(2):
-                for b in range(2):
-                    owed[j, a, b] = pending[wires[j], a, b]
-    return site
-
-
-@nb.njit(
-    "void(i1[::1], i8[::1], i4[::1], i4[::1], b1[::1], i8[::1], i8[::1], b1, f8[:,::1], b1[::1], f8[::1], f8[::1],"
-    " f8[::1])",
-    cache=True,
-    nogil=True,
-)
-def _carry(
-    kind: Any,
-    offsets: Any,
-    wires: Any,
-    uses: Any,
-    flush: Any,
-    passes_to: Any,
-    sign: Any,
-    steers: bool,
-    angles: Any,
-    trailing: Any,
-    owed: Any,
-    phase: Any,
-    moved: Any,
-) -> None:
-    """Move rotations about the plan's axis behind the entanglers that let them pass."""
-    site = 0
-    for w in range(len(kind)):
-        if kind[w] == 0:
-            continue
-        for layer in range(uses[w] + 1):
-            moved[0] = moved[1] = 0.0
-            for j in range(kind[w]):
-                p = wires[offsets[w] + j]
-                if layer == uses[w]:
-                    if flush[offsets[w] + j]:
-                        angles[site, 2] += phase[p]
-                        phase[p] = 0.0
-                        trailing[site] = True
-                        site += 1
-                    continue
-                angles[site, 2] += phase[p]
-                phase[p] = 0.0
-                if passes_to[j] < 0:
-                    trailing[site] = True
-                elif angles[site, 1] == 0.0:
-                    moved[passes_to[j]] += sign[j] * (angles[site, 0] + angles[site, 2])
-                    angles[site, 0] = angles[site, 2] = 0.0
-                elif steers:
-                    # The rotation before the pulse turns the pulse's axis and comes out behind it.
-                    moved[passes_to[j]] += sign[j] * (angles[site, 0] + angles[site, 2])
-                    angles[site, 0] = -angles[site, 2]
-                    trailing[site] = True
-                else:
-                    moved[passes_to[j]] += sign[j] * angles[site, 0]
-                site += 1
-            if layer < uses[w]:
-                for j in range(kind[w]):
-                    p = wires[offsets[w] + j]
-                    phase[p] = moved[j] - 2 * np.pi * math.floor(moved[j] / (2 * np.pi) + 0.5)
-        for j in range(kind[w]):
-            owed[offsets[w] + j] = phase[wires[offsets[w] + j]]
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -230,7 +102,7 @@ def _runs(
     owed = np.tile(np.eye(2, dtype=np.complex128), (len(wires), 1, 1))
     window_event = np.empty(len(kind), dtype=np.int64)
     pending = np.tile(np.eye(2, dtype=np.complex128), (n_wires, 1, 1))
-    total = _merge(
+    total = merge_runs(
         kind, offsets, wires, row, uses, flush, layers, one, matrix, event, window, wire, owed, window_event, pending
     )
     angles = np.ascontiguousarray(native.plan.angles(matrix[:total], tolerance=max(tolerance, ROUNDING)))
@@ -244,7 +116,9 @@ def _runs(
         passes = np.array(entangler.passes_to if entangler else (-1, -1), dtype=np.int64)
         sign = np.array(entangler.sign if entangler else (1, 1), dtype=np.int64)
         steers, phase = native.plan.steers, np.zeros(n_wires)
-        _carry(kind, offsets, wires, uses, flush, passes, sign, steers, angles, trailing, phases, phase, np.zeros(2))
+        carry_phases(
+            kind, offsets, wires, uses, flush, passes, sign, steers, angles, trailing, phases, phase, np.zeros(2)
+        )
         angles[:, ::2] = _snapped(angles[:, ::2])
     # The output lacks what is owed: it is ahead of the source by the inverse.
     half = -phases / 2
