@@ -12,8 +12,8 @@ __all__ = ["carry_phases", "merge_runs"]
 
 
 @nb.njit(
-    "i8(i1[::1], i8[::1], i4[::1], i4[::1], i4[::1], b1[::1], c16[:,:,:,:,::1], c16[:,:,::1], c16[:,:,::1], i8[::1],"
-    " i4[::1], i4[::1], c16[:,:,::1], i8[::1], c16[:,:,::1])",
+    "i8(i1[::1], i8[::1], i4[::1], i4[::1], b1[::1], c16[:,:,:,:,::1], c16[:,:,::1], i8[::1], i4[::1], i4[::1],"
+    " c16[:,:,::1], i8[::1], c16[:,:,::1])",
     cache=True,
     nogil=True,
 )
@@ -21,11 +21,9 @@ def merge_runs(
     kind: Any,
     offsets: Any,
     wires: Any,
-    row: Any,
     uses: Any,
     flush: Any,
     layers: Any,
-    one: Any,
     site_matrix: Any,
     site_event: Any,
     site_window: Any,
@@ -34,47 +32,33 @@ def merge_runs(
     window_event: Any,
     pending: Any,
 ) -> int:
-    """Multiply one-qubit layers together along the wires; return the number of sites."""
+    """Multiply one-qubit layers together along the wires; `pending` comes as identities. Return the number of sites."""
     site, event = 0, 0
     for w in range(len(kind)):
         window_event[w] = event
         if kind[w] == 0:
             event += 1
-            continue
-        width = kind[w]
-        k = uses[w]
-        for layer in range(k + 1):
-            for j in range(width):
-                p = wires[offsets[w] + j]
+        for layer in range(uses[w] + 1):
+            for j in range(kind[w]):
+                slot = offsets[w] + j
+                p = wires[slot]
+                played = layer < uses[w] or flush[slot]
                 for a in range(2):
                     for b in range(2):
-                        if layer > 0:
-                            site_matrix[site, a, b] = layers[row[w], layer, j, a, b]
-                            continue
                         total = 0j
                         for c in range(2):
-                            left = one[row[w], a, c] if width == 1 else layers[row[w], 0, j, a, c]
-                            total += left * pending[p, c, b]
+                            total += layers[w, layer, j, a, c] * pending[p, c, b]
                         site_matrix[site, a, b] = total
-                if layer < k or flush[offsets[w] + j]:
-                    site_event[site] = event
-                    site_window[site] = w
-                    site_wire[site] = p
+                for a in range(2):
+                    for b in range(2):
+                        pending[p, a, b] = (1.0 if a == b else 0.0) if played else site_matrix[site, a, b]
+                        owed[slot, a, b] = pending[p, a, b]
+                if played:
+                    site_event[site], site_window[site], site_wire[site] = event, w, p
                     site += 1
                     event += 1
-                    if layer == k:
-                        pending[p, 0, 1] = pending[p, 1, 0] = 0
-                        pending[p, 0, 0] = pending[p, 1, 1] = 1
-                else:
-                    for a in range(2):
-                        for b in range(2):
-                            pending[p, a, b] = site_matrix[site, a, b]
-            if layer < k:
+            if layer < uses[w]:
                 event += 1
-        for j in range(offsets[w], offsets[w + 1]):
-            for a in range(2):
-                for b in range(2):
-                    owed[j, a, b] = pending[wires[j], a, b]
     return site
 
 

@@ -53,7 +53,9 @@ def synthesise(draft: Draft) -> Draft:
     fused = _oriented(draft.fused, draft)
     one, two = window_unitaries(circuit, fused)
     uses = np.zeros(len(fused.kind), dtype=np.int32)
-    layers = np.zeros((0, 4, 2, 2, 2), dtype=np.complex128)
+    # Layers of every window; one of a single wire has one, on its first slot.
+    layers = np.zeros((len(uses), 4, 2, 2, 2), dtype=np.complex128)
+    layers[fused.kind == ONE, 0, 0] = one
     if len(two):
         if native.entangler is None:
             raise GateSetError(
@@ -62,8 +64,8 @@ def synthesise(draft: Draft) -> Draft:
             )
         made = native.entangler.entangler.synthesise(two, tolerance=draft.settings.tolerance)
         uses[fused.kind == TWO] = made.uses
-        layers = np.ascontiguousarray(made.layers)
-    sites, seams, window_event = _runs(fused, one, layers, uses, native, circuit.n_qubits, draft.settings.tolerance)
+        layers[fused.kind == TWO] = made.layers
+    sites, seams, window_event = _runs(fused, layers, uses, native, circuit.n_qubits, draft.settings.tolerance)
     output, windows = _emit(circuit, fused, sites, uses, window_event, native)
     step, final = _claim(draft, fused, windows, seams)
     return replace(draft, circuit=output, fused=fused, final=final, steps=(*draft.steps, step))
@@ -86,15 +88,12 @@ def _oriented(fused: Fused, draft: Draft) -> Fused:
 
 
 def _runs(
-    fused: Fused, one: Array, layers: Array, uses: NDArray[np.int32], native: NativeSet, n_wires: int, tolerance: float
+    fused: Fused, layers: Array, uses: NDArray[np.int32], native: NativeSet, n_wires: int, tolerance: float
 ) -> tuple[_Sites, NDArray[np.float64], NDArray[np.int64]]:
     """Merge layers along the wires, find their angles, carry phases on; return the runs and each slot's seam."""
     kind, offsets, wires = fused.kind, fused.offsets, fused.wires
     slot_window = np.repeat(np.arange(len(kind)), np.diff(offsets))
     flush = _last_before_fixed(wires, kind[slot_window] == FIXED)
-    row = np.zeros(len(kind), dtype=np.int32)
-    for each in (ONE, TWO):
-        row[kind == each] = np.arange(np.count_nonzero(kind == each))
     most = int(np.sum(np.where(kind == TWO, 2 * uses, 0)) + len(wires)) + 1
     matrix = np.empty((most, 2, 2), dtype=np.complex128)
     event = np.empty(most, dtype=np.int64)
@@ -103,7 +102,7 @@ def _runs(
     window_event = np.empty(len(kind), dtype=np.int64)
     pending = np.tile(np.eye(2, dtype=np.complex128), (n_wires, 1, 1))
     total = merge_runs(
-        kind, offsets, wires, row, uses, flush, layers, one, matrix, event, window, wire, owed, window_event, pending
+        kind, offsets, wires, uses, flush, layers, matrix, event, window, wire, owed, window_event, pending
     )
     angles = np.ascontiguousarray(native.plan.angles(matrix[:total], tolerance=max(tolerance, ROUNDING)))
     trailing = np.zeros(total, dtype=np.bool_)
