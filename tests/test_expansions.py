@@ -19,7 +19,8 @@ from gatewright.synthesis.shannon import shannon_pieces
 
 WIDE = sorted(name for name, gate in GATES.items() if gate.n_qubits > 2)
 
-#: CNOTs of each expansion: Toffoli 6 (Shende, Markov, QIC 9, 461), diagonal 2ⁿ − 2 (Bullock, Markov, QIC 4, 27); rccx 3 and rc3x 6 as qelib1.inc writes them.
+#: CNOTs of each expansion: Toffoli 6 (Shende, Markov, QIC 9, 461 (2009)), diagonal 2ⁿ − 2 (Bullock, Markov, QIC 4, 27
+#: (2004)); rccx 3 and rc3x 6 as qelib1.inc writes them.
 CNOTS = {"ccx": 6, "ccz": 6, "cswap": 8, "rccx": 3, "rc3x": 6, "c3x": 14, "c3sqrtx": 14, "c4x": 30}
 
 

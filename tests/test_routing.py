@@ -181,7 +181,7 @@ def test_no_livelock(name: str) -> None:
 
 @pytest.mark.parametrize("n", [3, 4, 5, 6, 7])
 def test_all_pairs_once_on_a_line(n: int) -> None:
-    # At least (n-1)(n-2)/2 swaps even if the gates commuted (no published source at hand: exhaustive search, n = 3 to 7).
+    # At least (n-1)(n-2)/2 swaps even if the gates commuted (no source; exhaustive search, n = 3 to 7).
     graph = nx.path_graph(n)
     ops: list[Op] = [((a, b), True) for a in range(n) for b in range(a + 1, n)]
     counts = []
