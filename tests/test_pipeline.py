@@ -53,8 +53,8 @@ def test_published_counts(gate_set: str) -> None:
 
 
 def test_swap_beside_a_gate_is_one_iswap() -> None:
-    # CNOT · SWAP is one iSWAP, a CNOT alone takes two: (π/4, 0, 0) and its mirror (π/4, π/4, 0) in the chamber; no source,
-    # recomputed.
+    # CNOT · SWAP is one iSWAP, a CNOT alone takes two: (π/4, 0, 0) and its mirror (π/4, π/4, 0) in the chamber.
+    # No source; recomputed.
     device = complete(2, "iswap-virtual-z")
     assert two_qubit_gates(Builder(2).gate("cx", 0, 1).gate("swap", 0, 1), device) == (1, 1)
     assert two_qubit_gates(Builder(2).gate("cx", 0, 1), device) == (2, 2)
