@@ -378,8 +378,8 @@ def test_a_circuit_with_modified_gates_is_written_and_read_back() -> None:
 
 REFUSED = [
     ("qubit q;\nfor int i in [0:10**12] x q;", 4, 15, QasmError, "at most 1000000"),
-    ("qubit q; while (true) { }", 3, 10, QasmError, "at most 1000000 statements"),
-    ("qubit[100000] q; for int i in [0:10**5] { h q; }", 3, 43, QasmError, "at most 1000000 statements"),
+    ("qubit q; while (true) { }", 3, 10, QasmError, "at most 1000000 gates"),
+    ("qubit[100000] q; for int i in [0:10**4] { h q; }", 3, 43, QasmError, "at most 1000000 gates"),
     ("def f(qubit a) { f(a); } qubit q;\nf(q);", 3, 18, QasmError, "too deeply"),
     ("bit c; qubit q; c = measure q;\nif (c) x q;", 4, 1, UnsupportedError, "'if' on a bit"),
     ("bit c; qubit q; c = measure q;\nwhile (c) x q;", 4, 1, UnsupportedError, "'while' on a bit"),

@@ -14,10 +14,22 @@ from gatewright.qasm.values import BUILT_IN, Array, Kind, Value, binary, cast, f
 if TYPE_CHECKING:
     from openqasm3 import ast
 
-__all__ = ["MAX_ELEMENTS", "MAX_STEPS", "Evaluator", "Pending", "Places", "Unknown", "ValueFault", "Variable"]
+__all__ = [
+    "MAX_ELEMENTS",
+    "MAX_STEPS",
+    "STATEMENT",
+    "Evaluator",
+    "Pending",
+    "Places",
+    "Unknown",
+    "ValueFault",
+    "Variable",
+]
 
-#: Most statements that unrolling executes, and operations that it writes, in one program.
-MAX_STEPS = 100_000
+#: Most gates that unrolling writes in one program, what else it executes counted in.
+MAX_STEPS = 1_000_000
+#: What a statement or a round of a loop counts for; a gate counts for one.
+STATEMENT = 10
 
 #: Most elements of one array, set or index range.
 MAX_ELEMENTS = 1_000_000
@@ -101,7 +113,9 @@ class Evaluator:
         self.steps += steps
         if self.steps > MAX_STEPS:
             raise self.error(
-                "unrolling the program takes too many steps", node, required=f"at most {MAX_STEPS} statements and gates"
+                "unrolling the program takes too many steps",
+                node,
+                required=f"at most {MAX_STEPS} gates, a statement counting for {STATEMENT}",
             )
 
     # ---------------------------------------------------------------- names

@@ -15,7 +15,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from gatewright.errors import CannotError, ExpressionError, shorten
-from gatewright.qasm.evaluation import MAX_ELEMENTS, Pending, Places, Variable
+from gatewright.qasm.evaluation import MAX_ELEMENTS, STATEMENT, Pending, Places, Variable
 from gatewright.qasm.grammar import parse_statement, statement_end
 from gatewright.qasm.operations import Operations
 from gatewright.qasm.scope import MAX_QUBITS, NAME, RESERVED
@@ -123,7 +123,7 @@ class FullLane(Operations):
 
     def execute(self, node: Any) -> str | _Return | None:
         """Carry out a statement; return how it leaves the block that it stands in, if it does."""
-        self.charge(1, node)
+        self.charge(STATEMENT, node)
         method: Callable[[Any], str | _Return | None] | None = self.methods.get(type(node))
         if method is None:
             name = type(node).__name__
@@ -166,7 +166,7 @@ class FullLane(Operations):
     def do_WhileLoop(self, node: Any) -> str | _Return | None:
         """Unroll ``while``."""
         while self.condition(node.while_condition, "while", node):
-            self.charge(1, node)
+            self.charge(STATEMENT, node)
             left = self.block(node.block)
             if left == "break":
                 break
@@ -182,7 +182,7 @@ class FullLane(Operations):
         values: Sequence[Any]
         if what == "RangeDefinition":
             span = self.span(declared, None)
-            self.charge(len(span), node)
+            self.charge(STATEMENT * len(span), node)
             values = [Value(Kind("int"), k) for k in span]
         elif what == "DiscreteSet":
             values = [self.scalar(item, real=kind.name in ("float", "angle")) for item in declared.values]
@@ -442,7 +442,7 @@ class FullLane(Operations):
             )
         if self.calls >= MAX_CALLS:
             raise self.error("subroutines call each other too deeply", node, required=f"at most {MAX_CALLS} levels")
-        self.charge(1, node)
+        self.charge(STATEMENT, node)
         names: dict[str, Any] = {}
         for formal, given in zip(definition.arguments, node.arguments, strict=True):
             if formal.name.name in names or formal.name.name in RESERVED:
