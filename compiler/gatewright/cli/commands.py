@@ -175,10 +175,10 @@ def _report(result: Result, *, quiet: bool) -> int:
 
 
 def _count(options: argparse.Namespace) -> int:
+    result = _compiled(options)
     from gatewright.cost import require_budget
     from gatewright.report.terminal import print_result
 
-    result = _compiled(options)
     if options.json:
         _write({options.json: _to_json(result.summary())})
     if options.json != "-":
