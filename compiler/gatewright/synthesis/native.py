@@ -13,7 +13,6 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.optimize import minimize_scalar
 
 from gatewright.errors import GateSetError, UnsupportedError
 from gatewright.gates import Gate
@@ -113,6 +112,9 @@ def entangler_parameters(native: NativeGate) -> tuple[float, ...]:
             required="one parameter at most",
             found=str(native.gate.n_parameters),
         )
+    # Only parametrised entanglers need it, and it takes a fifth of a second to load.
+    from scipy.optimize import minimize_scalar
+
     low, high = native.ranges[0]
     low, high = max(low, -2 * np.pi), min(high, 2 * np.pi)
     grid = np.linspace(low, high, SAMPLES)
