@@ -14,8 +14,8 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from gatewright.errors import CircuitError, nearest_name
-from gatewright.gates import ANY, BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
+from gatewright.errors import CircuitError
+from gatewright.gates import ANY, BARRIER, GATES, MEASURE, RESET, UNITARY, Gate, find_gate
 from gatewright.linalg import checked_unitary, kron
 
 __all__ = ["Builder", "Circuit", "Operation", "Piece", "apply_matrix", "apply_operations", "assemble"]
@@ -453,12 +453,7 @@ class Builder:
         CircuitError
             Unknown gate, wrong number of qubits or parameters, repeated qubit, index out of range.
         """
-        if isinstance(gate, str):
-            kind = self._gates.get(gate)
-            if kind is None:
-                raise CircuitError(f"unknown gate '{gate[:60]}'", hint=nearest_name(gate, self._gates))
-        else:
-            kind = gate
+        kind = find_gate(gate, self._gates) if isinstance(gate, str) else gate
         if len(parameters) != kind.n_parameters:
             raise CircuitError(
                 f"wrong number of parameters for '{kind.name}'",

@@ -8,7 +8,7 @@ the trade's usual native gates. Qubit 0 is the leftmost factor of the Kronecker 
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -264,7 +264,7 @@ BARRIER = Gate("barrier", ANY)
 UNITARY = Gate("unitary", ANY)
 
 
-def find_gate(name: str, gates: dict[str, Gate] | None = None) -> Gate:
+def find_gate(name: str, gates: Mapping[str, Gate] | None = None) -> Gate:
     """Return the gate called `name`.
 
     Raises

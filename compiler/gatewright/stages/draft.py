@@ -63,7 +63,7 @@ class Draft:
     origin : ndarray of int64, shape (operations,)
         Operation of `expanded` behind each operation of the routed circuit, -1 for an inserted swap.
     fused : Fused
-    starts, durations : ndarray of float64, shape (operations,)
+    starts : ndarray of float64, shape (operations,)
         Of the scheduled circuit: nanoseconds where the device states durations, else layers.
     swaps : int
         Swaps inserted.
@@ -80,7 +80,6 @@ class Draft:
     origin: NDArray[np.int64] = field(default_factory=lambda: np.zeros(0, np.int64))
     fused: Fused | None = None
     starts: NDArray[np.float64] = field(default_factory=lambda: np.zeros(0))
-    durations: NDArray[np.float64] = field(default_factory=lambda: np.zeros(0))
     swaps: int = 0
 
 

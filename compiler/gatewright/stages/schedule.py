@@ -27,5 +27,4 @@ def schedule(draft: Draft) -> Draft:
         circuit=circuit.take(order),
         steps=(*draft.steps[:-1], step),
         starts=starts[order],
-        durations=durations[order],
     )
