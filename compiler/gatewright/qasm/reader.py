@@ -24,6 +24,7 @@ from gatewright.qasm.columns import MAX_OPERANDS, circuit
 from gatewright.qasm.definitions import Definition, equals, expand, same_gate
 from gatewright.qasm.lanes import CONST, EITHER, FAST, beyond, lane, leading_word
 from gatewright.qasm.library import BUILT_IN, LIBRARIES, LIBRARY_FILES
+from gatewright.qasm.scanner import Scanner, pays
 from gatewright.qasm.scope import MAX_QUBITS, NAME, UNSUPPORTED, Scope, split
 from gatewright.qasm.source import Source
 
@@ -143,13 +144,16 @@ class Reader:
         """Read all statements and put the columns together."""
         order: list[int] = []
         known = self.statements.get
-        for piece in self.pieces:
+        scanner = Scanner(self) if not self.only_full and pays(self.source.text) else None
+        while (piece := next(self.pieces, None)) is not None:
             number = known(piece)
             if number is None:
                 try:
                     # What is plainly for the full lane is spared the complaint of the fast one.
                     full = self.full
-                    plain = full is None or not (":" in piece or (full.globals and full.concerns(piece)))
+                    plain = "++" not in piece and (
+                        full is None or not (":" in piece or (full.globals and full.concerns(piece)))
+                    )
                     number = self.flat_call(piece) if plain and not self.only_full else -1
                 except (QasmError, UnsupportedError):
                     if not beyond(piece, self.scope, self.full):
@@ -161,13 +165,17 @@ class Reader:
             self.position += len(piece) + 1
             if self.ended:
                 break
+            if scanner is not None:
+                scanner.advance(order)
         end = len(self.source.text.rstrip()) - 1
         if self.source.text[end] not in ";}" and self.closed <= end and not self.ended:
             raise self.source.error("a ';' is missing", end, required="';' behind the last statement")
         if not self.scope.n_qubits and not self.scope.n_physical:
             hint = "such as 'qubit[2] q;' or 'qreg q[2];'"
             raise self.source.error("no qubits are declared", 0, required="a declaration of qubits", hint=hint)
-        return circuit(self, np.array(order, dtype=np.int64))
+        if scanner is None or not scanner.count:
+            return circuit(self, np.array(order, dtype=np.int64))
+        return circuit(self, scanner.order(order), scanner.columns())
 
     def check_total(self, operations: int, offset: int) -> None:
         """Refuse a program that is too long."""
