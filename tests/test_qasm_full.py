@@ -299,7 +299,7 @@ BY_HAND: list[tuple[str, list[tuple[object, ...]]]] = [
     ("def f(mutable array[int[8], #dim = 1] a) { a[0] = 7; } array[int[8], 2] a = {1, 2}; qubit q; f(a); rz(a[0]) q;",
      [("rz", (0,), 7.0)]),
     ("gate g(t) a { for int i in [1:2] { rz(i*t) a; } } qubit q; g(0.25) q;", [("rz", (0,), 0.25), ("rz", (0,), 0.5)]),
-    ("qubit[2] q; bit[2] c = \"01\"; if (c[0]) x q[0]; if (c[1]) y q[0]; if (c == \"01\") z q[0];", [(X, (0,)), (Z, (0,))]),
+    ("qubit[2] q; bit[2] c = \"01\"; if (c[0]) x q[0]; if (c[1]) y q[0]; if (c == \"01\") z q[0]; c = 0;", [(X, (0,)), (Z, (0,))]),
     ("qubit[4] q; bit[4] c; for int i in [0:3] { c[3 - i] = measure q[i]; }",
      [("measure", (0,), 3), ("measure", (1,), 2), ("measure", (2,), 1), ("measure", (3,), 0)]),
     ("qubit q;\n@keep x; y\nh q; // no\n#pragma fast { lane\npragma other\nfor int i in [0:0] {\n @inner ; }\n x q; }\n@last",
