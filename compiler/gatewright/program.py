@@ -11,9 +11,11 @@ from dataclasses import dataclass, replace
 from typing import TypeAlias
 
 import numpy as np
+from numpy.typing import NDArray
 
-from gatewright.circuit import Circuit
+from gatewright.circuit import Circuit, Piece, assemble
 from gatewright.classical import Bits, Expression, Name
+from gatewright.gates import UNITARY
 
 __all__ = ["Assign", "Block", "If", "Leave", "Mark", "Program", "Statement", "While", "split_at_marks"]
 
@@ -101,6 +103,25 @@ class Program:
         """Return a short summary."""
         parts = sum(1 for circuit in self.circuits() if len(circuit))
         return f"Program({self.n_qubits} qubits, {self.n_bits} bits, {len(self)} operations in {parts} circuits)"
+
+    def joined(self) -> Circuit:
+        """Return all circuits one after another, as if every branch and every loop ran once: for counting, placing."""
+        pieces: list[Piece] = []
+        matrices: list[NDArray[np.complex128]] = []
+        start = 0
+        template: Circuit | None = None
+        for circuit in self.circuits():
+            template = template or circuit
+            rows = np.arange(len(circuit))
+            for _, piece in circuit.pieces(rows, rows + start):
+                if piece.gate.name == UNITARY.name and piece.link is not None:
+                    pieces.append(replace(piece, link=piece.link + len(matrices)))
+                else:
+                    pieces.append(piece)
+            matrices += circuit.matrices
+            start += len(circuit)
+        assert template is not None  # a block has at least one circuit
+        return assemble(replace(template, matrices=tuple(matrices)), template.n_qubits, pieces)[0]
 
     def map_circuits(self, change: Callable[[Circuit], Circuit]) -> Program:
         """Return the program with every circuit replaced by what `change` makes of it."""
