@@ -36,6 +36,8 @@ class End(Exception):
     """The end of the program."""
 
 
+LEAVING = ("BreakStatement", "ContinueStatement", "EndStatement")
+
 #: How a block is left: ``break``, ``continue``, a return, or ``gone`` where no path goes on behind it.
 Left = str | Return | None
 
@@ -214,8 +216,7 @@ class Control(Operations):
             return True
         branches = [part for part in _parts(node.block) if type(part).__name__ == "BranchingStatement"]
         return any(
-            is_open(part.condition)
-            and any(type(inner).__name__ in ("BreakStatement", "EndStatement") for inner in _parts([part]))
+            is_open(part.condition) and any(type(inner).__name__ in LEAVING for inner in _parts([part]))
             for part in branches
         )
 
