@@ -25,10 +25,11 @@ from gatewright.errors import InputError, ProofError, nearest_name
 from gatewright.gates import GATES
 from gatewright.linalg import checked_unitary
 from gatewright.proof import Proof, Verdict, check_legal, check_proof, encode_proof
-from gatewright.proof.dense import dense_distance, dense_work
+from gatewright.proof.dense import BINDINGS, dense_distance, dense_work
 from gatewright.stages.draft import Draft, Settings, Stage
 from gatewright.stages.expand import expand
 from gatewright.stages.fuse import fuse
+from gatewright.stages.parametrise import parametrise
 from gatewright.stages.place import place
 from gatewright.stages.route import route
 from gatewright.stages.schedule import schedule
@@ -40,7 +41,7 @@ from gatewright.synthesis.native import NativeSet, native_set
 __all__ = ["CHAIN", "EFFORTS", "Result", "check", "compile", "count"]
 
 #: The stages in order. A caller may pass a chain of their own to `compile`; what it makes is proven all the same.
-CHAIN: tuple[Stage, ...] = (expand, place, route, fuse, synthesise, schedule)
+CHAIN: tuple[Stage, ...] = (parametrise, expand, place, route, fuse, synthesise, schedule)
 
 EFFORTS = ("quick", "standard", "deep")
 
@@ -111,9 +112,46 @@ class Result:
         """Physical qubit of each source qubit at the end."""
         return self.verdict.final
 
+    def bind(self, values: Mapping[str, float]) -> Result:
+        """Give inputs of the program their values, after compiling; names that are not given stay unknown.
+
+        Angles are brought into the ranges of the native gates by full turns. The result is proven anew; what it
+        costs is the same.
+
+        Parameters
+        ----------
+        values : mapping of str to float
+
+        Raises
+        ------
+        CircuitError
+            A name that is not an input, or a value that does not fit its type.
+
+        Examples
+        --------
+        >>> import gatewright as gw, sympy
+        >>> theta = sympy.Symbol("theta")
+        >>> circuit = gw.Builder(2).gate("h", 0).gate("crz", 0, 1, parameters=[theta]).build()
+        >>> result = gw.compile(circuit, gw.Device.from_graph([(0, 1)], "cz-virtual-z"))
+        >>> [str(value) for op in result.circuit for value in op.parameters if not isinstance(value, float)]
+        ['theta/2', '-theta/2']
+        >>> result.bind({"theta": 0.5}).circuit.inputs
+        ()
+        """
+        ranges = {name: native.ranges for name, native in self.device.gate_set.gates.items()}
+        source, circuit = self.source.bind(values), self.circuit.bind(values, ranges=ranges)
+        steps = [
+            step if step.output is None else replace(step, output=step.output.bind(values)) for step in self.proof.steps
+        ]
+        proof = Proof(tuple(steps))
+        window_tolerance = ROUNDING + USES_OF_TOLERANCE * self.tolerance
+        verdict = check_proof(source, circuit, proof, device=self.device, tolerance=window_tolerance)
+        verdict = _second_opinion(source, circuit, verdict)
+        return replace(self, circuit=circuit, source=source, proof=proof, verdict=verdict)
+
     def summary(self) -> dict[str, Any]:
         """Return what the command line writes as JSON."""
-        two = self.source.is_unitary & (self.source.widths == 2)
+        two = self.source.is_gate & (self.source.widths == 2)
         return {
             "version": __version__,
             "seed": self.seed,
@@ -126,6 +164,7 @@ class Result:
                 "operations": len(self.source),
                 "two_qubit_gates": int(np.count_nonzero(two)),
                 "distance_moved": self.moved,
+                **({"parameters": dict(self.source.inputs)} if self.source.inputs else {}),
             },
             "output": {**asdict(self.costs), "success_model": SUCCESS_MODEL},
             "lower_bound": asdict(self.lower_bound),
@@ -336,7 +375,8 @@ def check(
         worst_distance=0.0,
         initial=places[0],
         final=places[1],
-        method="full unitaries compared; qubits beyond the source's taken to start and end in |0⟩",
+        method="full unitaries compared; qubits beyond the source's taken to start and end in |0⟩"
+        + (f"; at {BINDINGS} random values of the unknown parameters: evidence, no proof" if source.symbolic else ""),
     )
 
 
@@ -372,7 +412,10 @@ def _second_opinion(source: Circuit, output: Circuit, verdict: Verdict) -> Verdi
             required=f"distance at most {verdict.error_bound + ROUNDING:.3g}",
             found=f"{distance:.6g}",
         )
-    return replace(verdict, method=verdict.method + "; full unitaries compared as well")
+    how = "; full unitaries compared as well"
+    if source.symbolic:
+        how += f", at {BINDINGS} random values of the unknown parameters"
+    return replace(verdict, method=verdict.method + how)
 
 
 def _lower_bound(circuit: Circuit, expanded: Circuit, native: NativeSet, tolerance: float, *, stays: bool) -> Bound:
