@@ -386,7 +386,7 @@ def test_refused(text: str, line: int, column: int, kind: type, words: str) -> N
         (V2 + "qreg q[1]; gphase(1);", "OpenQASM 3"),
         (V2 + "qreg q[1]; creg c[1]; c = measure q;", "OpenQASM 3"), (V2 + "qreg q[1]; measure q;", "no bit"),
         (V2 + "qreg q[1]; h $0;", "OpenQASM 3"), (V2 + "qreg q[1]; barrier;", "OpenQASM 3"),
-        (V2 + "qreg q[1]; if(c==1) x q[0];", "'if'"), (V2 + "qreg q[1]; rz(2**3) q[0];", "written '^'"),
+        (V2 + "qreg q[1]; if(c==1) x q[0];", "'c'"), (V2 + "qreg q[1]; rz(2**3) q[0];", "written '^'"),
         (V2 + "gate CX a,b { }", "already defined"), ("MZ\0\1", "zero byte"), ("qubit q; h q; include", "unknown gate"),
     ],
 )  # fmt: skip

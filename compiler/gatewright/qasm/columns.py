@@ -33,6 +33,7 @@ def circuit(reader: Reader, order: NDArray[np.int64]) -> Circuit:
     parameters, parameter_offsets = _gather(np.array(reader.parameters, dtype=np.float64), n_parameters, rows)
     link = np.full(len(op), -1, dtype=np.int32)
     link[list(reader.link)] = list(reader.link.values())
+    link[list(reader.marks)] = list(reader.marks.values())
     link[list(reader.matrices)] = range(len(reader.matrices))
     phase = np.zeros(len(first))
     phase[list(reader.phases)] = list(reader.phases.values())
