@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import math
 import re
-from collections.abc import Iterable, Mapping
+from collections.abc import Collection, Iterable, Mapping
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
@@ -45,6 +45,8 @@ _DIVISORS = (*range(1, 65), *(2**k for k in range(7, 21)))
 INPUT_TYPE = re.compile(r"(?:angle|float|int|uint)(?:\[[1-9][0-9]{0,3}\])?|bool")
 #: Atoms of one expression.
 MAX_ATOMS = 1_000
+#: Characters of one atom.
+MAX_ATOM = 2_000
 
 _KNOWN_WORDS = frozenset((*FUNCTIONS, *CONSTANTS))
 
@@ -72,6 +74,8 @@ class Affine:
     @classmethod
     def of(cls, atom: str) -> Affine:
         """Return the affine expression that is one atom."""
+        if len(atom) > MAX_ATOM:
+            raise ExpressionError("an expression is too long", required=f"{MAX_ATOM} characters at most")
         return cls(0.0, ((atom, 1.0),))
 
     @property
@@ -134,23 +138,18 @@ class Affine:
             raise ExpressionError(f"no value for '{shorten(bound.names[0] if bound.names else bound.atoms[0])}'")
         return bound
 
-    def bind(self, values: Mapping[str, float]) -> Affine | float:
+    def bind(self, values: Mapping[str, Parameter]) -> Affine | float:
         """Put values in the place of names; others stay."""
-        constant, rest = self.constant, Affine(0.0)
+        total = Affine(self.constant)
         for atom, factor in self.terms:
-            if atom in values:
-                constant += factor * float(values[atom])
+            if (value := values.get(atom)) is not None:
+                total += value * factor
                 continue
             names = names_in(atom)
-            if not any(name in values for name in names):
-                rest += Affine(0.0, ((atom, factor),))
-                continue
-            known = read_affine(atom, names, values=values)
-            if isinstance(known, Affine):
-                rest += known * factor
-            else:
-                constant += factor * known
-        total = rest + constant
+            known: Parameter = Affine(0.0, ((atom, 1.0),))
+            if any(name in values for name in names):
+                known = read_affine(atom, names, values=values)
+            total += known * factor
         return total if total.terms else total.constant
 
     def substitute(self, values: Mapping[str, float]) -> float:
@@ -159,7 +158,16 @@ class Affine:
 
     def __str__(self) -> str:
         """Return the OpenQASM text, which `read_affine` reads back to the same floats."""
-        parts = [_multiple(atom, factor) for atom, factor in self.terms]
+        return self.text()
+
+    def text(self, integers: Collection[str] = ()) -> str:
+        """Return the OpenQASM text; names of integers are not divided, for that would cut off what is behind the point.
+
+        Parameters
+        ----------
+        integers : collection of str
+        """
+        parts = [_multiple(atom, factor, divided=atom not in integers) for atom, factor in self.terms]
         if self.constant or not parts:
             parts.append(angle_texts([self.constant])[0])
         text = parts[0]
@@ -233,13 +241,13 @@ def names_in(atom: str) -> tuple[str, ...]:
     return tuple(dict.fromkeys(word for word in _WORD.findall(atom) if word not in _KNOWN_WORDS))
 
 
-def _multiple(atom: str, factor: float) -> str:
+def _multiple(atom: str, factor: float, *, divided: bool = True) -> str:
     sign = "-" if factor < 0 else ""
     size = abs(factor)
     inner = atom if _is_product(atom) else f"({atom})"
     if size == 1:
         return sign + inner
-    for divisor in _DIVISORS:
+    for divisor in _DIVISORS if divided else (1,):
         times = round(size * divisor)
         if times and times <= 4096 and times / divisor == size:
             front = "" if times == 1 else f"{times}*"

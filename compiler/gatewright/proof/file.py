@@ -11,7 +11,7 @@ import io
 import json
 import math
 import zipfile
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -71,22 +71,30 @@ def fingerprint(circuit: Circuit) -> str:
     digest = hashlib.sha256()
     names = json.dumps([circuit.n_qubits, circuit.n_bits, [gate.name for gate in circuit.table]])
     digest.update(names.encode())
-    arrays = (circuit.op, circuit.qubits, circuit.offsets, circuit.parameters, circuit.link, *circuit.matrices)
+    link, symbolic = circuit.link, circuit.symbolic
+    if symbolic:
+        # Numbered as they first occur, whatever the order of the table.
+        unknown = circuit.is_symbolic
+        number_of: dict[int, int] = {}
+        link = link.copy()
+        link[unknown] = [number_of.setdefault(k, len(number_of)) for k in link[unknown].tolist()]
+        symbolic = tuple(symbolic[k] for k in number_of)
+    arrays = (circuit.op, circuit.qubits, circuit.offsets, circuit.parameters, link, *circuit.matrices)
     for array in arrays:
         digest.update(np.ascontiguousarray(array).tobytes())
-    if circuit.symbolic:
-        digest.update(json.dumps(_encode_symbolic(circuit)).encode())
+    if symbolic:
+        digest.update(json.dumps([_encode_symbolic(symbolic), circuit.inputs]).encode())
     return digest.hexdigest()
 
 
-def _encode_symbolic(circuit: Circuit) -> list[list[Any]]:
+def _encode_symbolic(symbolic: Sequence[Sequence[Parameter]]) -> list[list[Any]]:
     """Return unknown parameters as numbers, and as a constant with pairs of atom and coefficient."""
     return [
         [
             [value.constant, [list(term) for term in value.terms]] if isinstance(value, Affine) else value
             for value in row
         ]
-        for row in circuit.symbolic
+        for row in symbolic
     ]
 
 
@@ -166,7 +174,7 @@ def _encode_circuit(circuit: Circuit | None, prefix: str, arrays: dict[str, NDAr
         "n_bits": circuit.n_bits,
         "table": [gate.name for gate in circuit.table],
         "matrix_sizes": [len(matrix) for matrix in circuit.matrices],
-        **({"symbolic": _encode_symbolic(circuit)} if circuit.symbolic else {}),
+        **({"symbolic": _encode_symbolic(circuit.symbolic)} if circuit.symbolic else {}),
     }
 
 

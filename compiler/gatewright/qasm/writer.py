@@ -18,6 +18,7 @@ from gatewright.angles import angle_texts
 from gatewright.circuit import Circuit
 from gatewright.errors import CircuitError, QasmError, UnsupportedError, shorten
 from gatewright.gates import BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
+from gatewright.parameters import Affine
 from gatewright.qasm.definitions import same_gate
 from gatewright.qasm.library import BUILT_IN, DEFINITIONS, LIBRARIES, LIBRARY_FILES
 from gatewright.qasm.reader import read
@@ -76,11 +77,19 @@ def write(
         raise CircuitError("unknown version of OpenQASM", required="2 or 3", found=str(version))
     defined = _definitions(circuit, version, definitions)
     qubits, bits = _registers(circuit, version, defined)
+    if circuit.inputs and version == 2:
+        raise CircuitError(
+            "OpenQASM 2 has no inputs",
+            required="values for all parameters",
+            found=f"'{circuit.inputs[0][0]}'",
+            hint="write OpenQASM 3, or bind the inputs first",
+        )
     lines, phase = _statements(circuit, version, _elements(qubits), _elements(bits), [name for name, _ in qubits])
     comments = [line for text in header for line in text.splitlines()]
     head = [line if line.startswith("//") else f"// {line}" for line in comments]
     head += [f"OPENQASM {version}.0;", f'include "{LIBRARY_FILES[version]}";', "", *defined.values()]
-    if defined:
+    head += [f"input {kind} {name};" for name, kind in circuit.inputs]
+    if defined or circuit.inputs:
         head.append("")
     quantum, classical = ("qreg {0}[{1}];", "creg {0}[{1}];") if version == 2 else ("qubit[{1}] {0};", "bit[{1}] {0};")
     head += [quantum.format(name, size) for name, size in qubits]
@@ -151,7 +160,7 @@ def _registers(
     circuit: Circuit, version: int, defined: Iterable[str]
 ) -> tuple[tuple[tuple[str, int], ...], tuple[tuple[str, int], ...]]:
     """Return the registers to declare: those of the circuit where they fit, else ``q`` and ``c``."""
-    taken = {*RESERVED, *LIBRARIES[version], *BUILT_IN[version], *defined}
+    taken = {*RESERVED, *LIBRARIES[version], *BUILT_IN[version], *defined, *(name for name, _ in circuit.inputs)}
     qubits, bits = circuit.qubit_registers, circuit.bit_registers
     names = [name for name, _ in (*qubits, *bits)]
     fit = len(set(names)) == len(names) and all(_NAMES[version].fullmatch(n) and n not in taken for n in names)
@@ -221,7 +230,16 @@ def _calls(circuit: Circuit, gate: Gate, rows: NDArray[np.int64], names: list[st
     if not gate.n_parameters:
         return [f"{gate.name} {text};" for text in operands]
     values = circuit.parameters[circuit.parameter_offsets[rows][:, None] + np.arange(gate.n_parameters)]
-    angles = angle_texts(values)
+    unknown = circuit.link[rows] >= 0 if circuit.symbolic else np.zeros(len(rows), dtype=bool)
+    angles = angle_texts(np.where(unknown[:, None], 0, values))
+    whole = {name for name, kind in circuit.inputs if kind.partition("[")[0] in ("int", "uint", "bool")}
+    known: dict[int, list[str]] = {}
+    for place in np.flatnonzero(unknown).tolist():
+        link = int(circuit.link[rows[place]])
+        if link not in known:
+            row = circuit.symbolic[link]
+            known[link] = [v.text(whole) if isinstance(v, Affine) else angle_texts([v])[0] for v in row]
+        angles[place * gate.n_parameters : (place + 1) * gate.n_parameters] = known[link]
     if gate.n_parameters > 1:
         steps = [angles[k :: gate.n_parameters] for k in range(gate.n_parameters)]
         angles = [", ".join(parts) for parts in zip(*steps, strict=True)]
