@@ -257,13 +257,14 @@ def test_a_chain_may_be_cut_and_is_proven_all_the_same() -> None:
         "expand",
         "place",
         "route",
+        "restore",
         "fuse",
         "synthesise",
         "schedule",
     ]
     assert list(result.seconds)[1:-2] == [stage.__name__ for stage in CHAIN]
     with pytest.raises(ProofError):
-        gw.compile(circuit, line(2), chain=CHAIN[:4])
+        gw.compile(circuit, line(2), chain=CHAIN[:5])
 
 
 def test_calibration_gives_a_duration_and_a_success_estimate(examples: object) -> None:

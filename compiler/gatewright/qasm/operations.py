@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from gatewright.classical import Name
-from gatewright.errors import CannotError, CircuitError, QasmError, shorten
+from gatewright.errors import CannotError, CircuitError, ExpressionError, QasmError, shorten
 from gatewright.gates import BARRIER, MEASURE, RESET, UNITARY, Gate
 from gatewright.parameters import Affine, Parameter
 from gatewright.qasm.definitions import MAX_DEPTH, Definition, Op, expand, same_gate
@@ -17,7 +17,7 @@ from gatewright.qasm.evaluation import Evaluator, Places, ValueFault, Variable
 from gatewright.qasm.modifiers import Passage, controlled, inverse, passage_of, power
 from gatewright.qasm.scope import MAX_QUBITS, RESERVED
 from gatewright.qasm.unknowns import as_parameter, is_unknown, known_parameters, reads_bits, with_values
-from gatewright.qasm.values import Kind, Value
+from gatewright.qasm.values import Kind, Value, cast
 
 if TYPE_CHECKING:
     from gatewright.qasm.reader import Reader
@@ -62,7 +62,10 @@ class Operations(Evaluator):
         """Return the value of a gate parameter, which need not be known when compiling."""
         value = self.scalar(node, real=True)
         if not value.is_open:
-            return self.real(node)
+            try:
+                return float(cast(value, Kind("float")).data)
+            except ExpressionError as problem:
+                raise self.fault(problem, node) from None
         tree = value.data
         if reads_bits(tree):
             # Bits change from one measurement to the next: what they are now is kept under a name.

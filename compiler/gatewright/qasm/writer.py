@@ -16,9 +16,12 @@ from numpy.typing import NDArray
 
 from gatewright.angles import angle_texts
 from gatewright.circuit import Circuit
+from gatewright.classical import bits_text
 from gatewright.errors import CircuitError, QasmError, UnsupportedError, shorten
 from gatewright.gates import BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
 from gatewright.parameters import Affine
+from gatewright.program import Program
+from gatewright.qasm.blocks import block_lines, conditional_lines
 from gatewright.qasm.definitions import same_gate
 from gatewright.qasm.library import BUILT_IN, DEFINITIONS, LIBRARIES, LIBRARY_FILES
 from gatewright.qasm.reader import read
@@ -32,7 +35,7 @@ _PHASE_STEP = re.compile(r"\bgphase\b[^;]*;\s*")
 
 
 def write(
-    circuit: Circuit,
+    circuit: Circuit | Program,
     *,
     version: int = 3,
     definitions: Mapping[str, str] = MappingProxyType({}),
@@ -42,7 +45,7 @@ def write(
 
     Parameters
     ----------
-    circuit : Circuit
+    circuit : Circuit or Program
         Explicit unitaries of one qubit are written as ``U``; larger ones cannot be written.
     version : {3, 2}
         OpenQASM 2 has no global phase: it is left out there.
@@ -75,21 +78,35 @@ def write(
     """
     if version not in LIBRARY_FILES:
         raise CircuitError("unknown version of OpenQASM", required="2 or 3", found=str(version))
-    defined = _definitions(circuit, version, definitions)
-    qubits, bits = _registers(circuit, version, defined)
-    if circuit.inputs and version == 2:
+    flat = circuit if isinstance(circuit, Circuit) else circuit.joined()
+    if flat.inputs and version == 2:
         raise CircuitError(
             "OpenQASM 2 has no inputs",
             required="values for all parameters",
-            found=f"'{circuit.inputs[0][0]}'",
+            found=f"'{flat.inputs[0][0]}'",
             hint="write OpenQASM 3, or bind the inputs first",
         )
-    lines, phase = _statements(circuit, version, _elements(qubits), _elements(bits), [name for name, _ in qubits])
+    defined = _definitions(flat, version, definitions)
+    qubits, bits = _registers(flat, version, defined)
+    phase = 0.0
+
+    def lines_of(part: Circuit) -> list[str]:
+        nonlocal phase
+        made, phase = _statements(part, version, _elements(qubits), _elements(bits), [name for name, _ in qubits])
+        return made
+
+    if isinstance(circuit, Circuit):
+        lines = lines_of(circuit)
+    else:
+        text_of = block_lines if version == 3 else conditional_lines
+        lines = list(text_of(circuit.body, lines_of, lambda given: bits_text(given, bits)))
+        lines = [f"{kind} {name};" for name, kind in circuit.variables] + lines
+        phase = 0.0  # of a run, and never seen
     comments = [line for text in header for line in text.splitlines()]
     head = [line if line.startswith("//") else f"// {line}" for line in comments]
     head += [f"OPENQASM {version}.0;", f'include "{LIBRARY_FILES[version]}";', "", *defined.values()]
-    head += [f"input {kind} {name};" for name, kind in circuit.inputs]
-    if defined or circuit.inputs:
+    head += [f"input {kind} {name};" for name, kind in flat.inputs]
+    if defined or flat.inputs:
         head.append("")
     quantum, classical = ("qreg {0}[{1}];", "creg {0}[{1}];") if version == 2 else ("qubit[{1}] {0};", "bit[{1}] {0};")
     head += [quantum.format(name, size) for name, size in qubits]
