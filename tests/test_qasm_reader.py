@@ -355,7 +355,7 @@ REFUSED = [
     ("stretch s;", 3, 1, UnsupportedError, "'stretch'"),
     ("duration d = 1ns;", 3, 1, UnsupportedError, "'duration'"),
     ("cal { }", 3, 1, UnsupportedError, "'cal'"),
-    ("input float t;", 3, 1, UnsupportedError, "'input'"),
+    ("output float t;", 3, 1, UnsupportedError, "'output'"),
     ("qubit[2] q; delay[10ns] q;", 3, 13, UnsupportedError, "'delay'"),
     ("qubit[2] q; box { x q; }", 3, 13, UnsupportedError, "'box'"),
     ("qubit[2] q; measure q;", 3, 13, UnsupportedError, "into no bit"),

@@ -18,11 +18,12 @@ from gatewright.errors import InputError, ProofError, nearest_name
 from gatewright.linalg import checked_unitary
 from gatewright.program import Program
 from gatewright.proof import Proof, Verdict, check_legal, check_program, check_proof
-from gatewright.proof.dense import dense_distance, dense_work
+from gatewright.proof.dense import BINDINGS, dense_distance, dense_work
 from gatewright.result import ProgramResult, Result
 from gatewright.stages.draft import Draft, Settings, Stage
 from gatewright.stages.expand import expand
 from gatewright.stages.fuse import fuse
+from gatewright.stages.parametrise import parametrise
 from gatewright.stages.place import place
 from gatewright.stages.restore import restore
 from gatewright.stages.route import route
@@ -34,7 +35,7 @@ from gatewright.synthesis.native import NativeSet, native_set
 __all__ = ["CHAIN", "EFFORTS", "Result", "check", "compile", "count"]
 
 #: The stages in order. A caller may pass a chain of their own to `compile`; what it makes is proven all the same.
-CHAIN: tuple[Stage, ...] = (expand, place, route, restore, fuse, synthesise, schedule)
+CHAIN: tuple[Stage, ...] = (parametrise, expand, place, route, restore, fuse, synthesise, schedule)
 
 EFFORTS = ("quick", "standard", "deep")
 
@@ -178,8 +179,7 @@ def compile(  # noqa: A001
         draft = stage(draft)
     clock.start("prove")
     proof = Proof(draft.steps)
-    verdict = check_proof(asked, draft.circuit, proof, device=device, tolerance=_window_tolerance(tolerance))
-    verdict = _second_opinion(asked, draft.circuit, verdict)
+    verdict = proven(asked, draft.circuit, proof, device=device, tolerance=tolerance)
     clock.start("count")
     costs = count_costs(draft.circuit, device, starts=draft.starts, swaps_inserted=draft.swaps)
     bound = _lower_bound(asked, draft.expanded, native, tolerance, stays=verdict.initial == verdict.final)
@@ -196,6 +196,17 @@ def compile(  # noqa: A001
         seconds=clock.seconds,
         **given,
     )
+
+
+def proven(source: Circuit, output: Circuit, proof: Proof, *, device: Device, tolerance: float) -> Verdict:
+    """Check a proof, and compare the full unitaries of small circuits as well.
+
+    Raises
+    ------
+    ProofError
+    """
+    verdict = check_proof(source, output, proof, device=device, tolerance=_window_tolerance(tolerance))
+    return _second_opinion(source, output, verdict)
 
 
 def _window_tolerance(tolerance: float) -> float:
@@ -303,7 +314,8 @@ def check(
         worst_distance=0.0,
         initial=places[0],
         final=places[1],
-        method="full unitaries compared; qubits beyond the source's taken to start and end in |0⟩",
+        method="full unitaries compared; qubits beyond the source's taken to start and end in |0⟩"
+        + (f"; at {BINDINGS} random values of the unknown parameters: evidence, no proof" if source.symbolic else ""),
     )
 
 
@@ -339,7 +351,10 @@ def _second_opinion(source: Circuit, output: Circuit, verdict: Verdict) -> Verdi
             required=f"distance at most {verdict.error_bound + ROUNDING:.3g}",
             found=f"{distance:.6g}",
         )
-    return replace(verdict, method=verdict.method + "; full unitaries compared as well")
+    how = "; full unitaries compared as well"
+    if source.symbolic:
+        how += f", at {BINDINGS} random values of the unknown parameters"
+    return replace(verdict, method=verdict.method + how)
 
 
 def _lower_bound(circuit: Circuit, expanded: Circuit, native: NativeSet, tolerance: float, *, stays: bool) -> Bound:

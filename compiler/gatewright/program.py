@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from gatewright.circuit import Circuit, Piece, assemble
 from gatewright.classical import Bits, Expression, Name
 from gatewright.gates import UNITARY
+from gatewright.parameters import Parameter
 
 __all__ = ["Assign", "Block", "If", "Leave", "Mark", "Program", "Statement", "While", "split_at_marks"]
 
@@ -108,6 +109,7 @@ class Program:
         """Return all circuits one after another, as if every branch and every loop ran once: for counting, placing."""
         pieces: list[Piece] = []
         matrices: list[NDArray[np.complex128]] = []
+        symbolic: list[tuple[Parameter, ...]] = []
         start = 0
         template: Circuit | None = None
         for circuit in self.circuits():
@@ -116,12 +118,17 @@ class Program:
             for _, piece in circuit.pieces(rows, rows + start):
                 if piece.gate.name == UNITARY.name and piece.link is not None:
                     pieces.append(replace(piece, link=piece.link + len(matrices)))
+                elif piece.gate.function is not None and piece.link is not None and circuit.symbolic:
+                    pieces.append(replace(piece, link=np.where(piece.link < 0, -1, piece.link + len(symbolic))))
                 else:
                     pieces.append(piece)
             matrices += circuit.matrices
+            symbolic += circuit.symbolic
             start += len(circuit)
         assert template is not None  # a block has at least one circuit
-        return assemble(replace(template, matrices=tuple(matrices)), template.n_qubits, pieces)[0]
+        return assemble(
+            replace(template, matrices=tuple(matrices), symbolic=tuple(symbolic)), template.n_qubits, pieces
+        )[0]
 
     def map_circuits(self, change: Callable[[Circuit], Circuit]) -> Program:
         """Return the program with every circuit replaced by what `change` makes of it."""

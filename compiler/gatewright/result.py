@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import asdict, dataclass, field
+from collections.abc import Mapping
+from dataclasses import asdict, dataclass, field, replace
 from typing import Any
 
 import numpy as np
@@ -45,7 +46,7 @@ class _Compiled:
         return self.verdict.final
 
     def _summary(self, source: Circuit | Program, flat: Circuit) -> dict[str, Any]:
-        two = flat.is_unitary & (flat.widths == 2)
+        two = flat.is_gate & (flat.widths == 2)
         return {
             "version": __version__,
             "seed": self.seed,
@@ -58,6 +59,7 @@ class _Compiled:
                 "operations": len(source),
                 "two_qubit_gates": int(np.count_nonzero(two)),
                 "distance_moved": self.moved,
+                **({"parameters": dict(flat.inputs)} if flat.inputs else {}),
             },
             "output": {**asdict(self.costs), "success_model": SUCCESS_MODEL},
             "lower_bound": asdict(self.lower_bound),
@@ -131,6 +133,43 @@ class Result(_Compiled):
     def __repr__(self) -> str:
         """Return a short summary."""
         return self._shown(self.circuit)
+
+    def bind(self, values: Mapping[str, float]) -> Result:
+        """Give inputs of the program their values, after compiling; names that are not given stay unknown.
+
+        Angles are brought into the ranges of the native gates by full turns. The result is proven anew; what it
+        costs is the same.
+
+        Parameters
+        ----------
+        values : mapping of str to float
+
+        Raises
+        ------
+        CircuitError
+            A name that is not an input, or a value that does not fit its type.
+
+        Examples
+        --------
+        >>> import gatewright as gw, sympy
+        >>> theta = sympy.Symbol("theta")
+        >>> circuit = gw.Builder(2).gate("h", 0).gate("crz", 0, 1, parameters=[theta]).build()
+        >>> result = gw.compile(circuit, gw.Device.from_graph([(0, 1)], "cz-virtual-z"))
+        >>> [str(value) for op in result.circuit for value in op.parameters if not isinstance(value, float)]
+        ['theta/2', '-theta/2']
+        >>> result.bind({"theta": 0.5}).circuit.inputs
+        ()
+        """
+        from gatewright.pipeline import proven
+
+        ranges = {name: native.ranges for name, native in self.device.gate_set.gates.items()}
+        source, circuit = self.source.bind(values), self.circuit.bind(values, ranges=ranges)
+        steps = [
+            step if step.output is None else replace(step, output=step.output.bind(values)) for step in self.proof.steps
+        ]
+        proof = Proof(tuple(steps))
+        verdict = proven(source, circuit, proof, device=self.device, tolerance=self.tolerance)
+        return replace(self, circuit=circuit, source=source, proof=proof, verdict=verdict)
 
     def summary(self) -> dict[str, Any]:
         """Return what the command line writes as JSON."""

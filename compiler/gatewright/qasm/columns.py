@@ -34,6 +34,9 @@ def circuit(reader: Reader, order: NDArray[np.int64]) -> Circuit:
     link = np.full(len(op), -1, dtype=np.int32)
     link[list(reader.link)] = list(reader.link.values())
     link[list(reader.marks)] = list(reader.marks.values())
+    symbolic = dict.fromkeys(reader.unknown.values())
+    number_of = {values: k for k, values in enumerate(symbolic)}
+    link[list(reader.unknown)] = [number_of[values] for values in reader.unknown.values()]
     link[list(reader.matrices)] = range(len(reader.matrices))
     phase = np.zeros(len(first))
     phase[list(reader.phases)] = list(reader.phases.values())
@@ -58,6 +61,8 @@ def circuit(reader: Reader, order: NDArray[np.int64]) -> Circuit:
         phase=float(phase[order].sum()),
         qubit_registers=tuple((name, len(span)) for name, span in scope.qubit_registers.items()),
         bit_registers=tuple((name, len(span)) for name, span in scope.bit_registers.items()),
+        symbolic=tuple(symbolic),
+        inputs=tuple(reader.inputs.items()),
     )
 
 

@@ -17,6 +17,7 @@ from gatewright.program import Assign, Leave, Mark
 from gatewright.qasm.evaluation import STATEMENT, Pending, Places, Variable
 from gatewright.qasm.operations import Operations
 from gatewright.qasm.scope import RESERVED
+from gatewright.qasm.unknowns import as_name, as_parameter, names_of, reads_bits
 from gatewright.qasm.values import Array, Kind, Value, cast, expression
 
 if TYPE_CHECKING:
@@ -70,6 +71,18 @@ class Control(Operations):
         self.charge(STATEMENT, node)
         self.reader.mark(Mark(word, content))
 
+    def lasting(self, value: Value) -> bool:
+        """Whether a value is a real number that depends on inputs alone, and so stays what it is."""
+        if not value.is_open or not (isinstance(value.data, Name) or value.kind.name in ("float", "angle")):
+            return False
+        return not reads_bits(value.data) and names_of(value.data) <= self.reader.inputs.keys()
+
+    def settled(self, value: Value) -> Value:
+        """Return a number that depends on inputs alone as one leaf, so that expressions of it do not grow."""
+        if value.kind.name not in ("float", "angle") or not self.lasting(value):
+            return value
+        return Value(value.kind, as_name(as_parameter(value.data)))
+
     def store(self, variable: Variable, name: str, value: Value, node: Any) -> None:
         """Assign to a variable at run time."""
         if not variable.runtime:
@@ -77,9 +90,16 @@ class Control(Operations):
         self.mark("assign", Assign(Name(variable.runtime), expression(value)), node)
         variable.value = Value(variable.kind, Name(variable.runtime))
 
+    def kept(self, value: Value, node: Any) -> Name:
+        """Assign a value to a variable of its own at run time."""
+        name = self.reader.variable("angle_of_bits", value.kind)
+        self.mark("assign", Assign(Name(name), expression(value)), node)
+        return Name(name)
+
     def assign(self, variable: Variable, name: str, value: Value, node: Any) -> None:
         """Assign to a variable: when compiling if that can be, else at run time."""
-        if value.is_open or (self.depth and variable.depth < self.depth):
+        value = self.settled(value)
+        if (value.is_open and not self.lasting(value)) or (self.depth and variable.depth < self.depth):
             self.store(variable, name, value, node)
         else:
             variable.value = value
@@ -104,7 +124,7 @@ class Control(Operations):
                 for place in found.indices:
                     self.bits.pop(place, None)
             elif isinstance(found, Variable) and not found.constant:
-                if isinstance(found.value, Value) and not found.value.is_open:
+                if isinstance(found.value, Value) and (not found.value.is_open or self.lasting(found.value)):
                     self.store(found, name, found.value, node)
                 elif found.value is None and not found.runtime:
                     found.runtime = self.reader.variable(name, found.kind)

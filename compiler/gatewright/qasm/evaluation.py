@@ -161,6 +161,8 @@ class Evaluator:
     @staticmethod
     def hidden(known: Any) -> bool:
         """Whether something global is out of sight inside gates and subroutines."""
+        if isinstance(known, Variable) and isinstance(known.value, Value) and known.value.is_open:
+            return True
         return isinstance(known, Places) or (isinstance(known, Variable) and not known.constant)
 
     def declare(self, name: str, thing: Any, what: str, node: Any) -> None:

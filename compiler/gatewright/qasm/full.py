@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from gatewright.classical import Bits
+from gatewright.classical import Bits, Name
 from gatewright.errors import ExpressionError, shorten
 from gatewright.program import Assign
 from gatewright.qasm.control import Control, End, Return
@@ -36,7 +36,6 @@ _REMEMBERED = 10_000
 
 _WORD = re.compile(NAME)
 _REFUSED = {
-    "IODeclaration": "",
     "ExternDeclaration": "'extern'",
     "CalibrationGrammarDeclaration": "'defcalgrammar'",
     "CalibrationStatement": "'cal'",
@@ -172,6 +171,21 @@ class FullLane(Control):
         number = None if size is None else self.integer(size, 1, MAX_QUBITS)
         self.scope.add_register(identifier.name, number, self.at(identifier), quantum=quantum)
 
+    def do_IODeclaration(self, node: Any) -> None:
+        """Declare an input: a name whose value is not known when compiling."""
+        name = node.identifier.name
+        if node.io_identifier.name != "input":
+            raise self.unsupported(f"'{node.io_identifier.name}'", node)
+        if self.frames:
+            raise self.error("an input is declared inside a block", node, required="a declaration outside")
+        kind = self.kind(node.type)
+        if kind.name == "bit":
+            raise self.unsupported("an input of bits", node)
+        made = Variable(kind, Value(kind, Name(name)), constant=True)
+        self.declare(name, made, "an input", node.identifier)
+        size = getattr(node.type, "size", None) if kind.name == "float" else None
+        self.reader.inputs[name] = str(kind) if size is None else f"float[{self.integer(size, 1, 4096)}]"
+
     def do_ConstantDeclaration(self, node: Any) -> None:
         """Declare a constant."""
         variable = self.variable(node, constant=True)
@@ -213,8 +227,12 @@ class FullLane(Control):
             kind = self.kind(node.type)
             if given is not None:
                 value = self.assigned(kind, self.evaluate(given, real=kind.name in ("float", "angle")), given)
-        made = Variable(kind, None if isinstance(value, Value) and value.is_open else value, constant, self.depth)
-        if isinstance(value, Value) and value.is_open:
+        if isinstance(value, Value) and not constant:
+            value = self.settled(value)
+        lasting = isinstance(value, Value) and self.lasting(value)
+        known = value if lasting or not isinstance(value, Value) or not value.is_open else None
+        made = Variable(kind, known, constant, self.depth)
+        if isinstance(value, Value) and value.is_open and (constant or not lasting):
             if constant:
                 raise self.unknown("a constant that depends on the run", given)
             self.store(made, node.identifier.name, value, node)

@@ -8,6 +8,7 @@ distinct statements, which NumPy turns into columns. Statements of OpenQASM 3 be
 
 from __future__ import annotations
 
+import math
 import re
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
@@ -21,6 +22,7 @@ from gatewright.circuit import Circuit
 from gatewright.classical import Bits, Literal, Operation
 from gatewright.errors import ExpressionError, QasmError, UnsupportedError, nearest_name, shorten
 from gatewright.gates import BARRIER, CONTROL, GATES, MEASURE, RESET, Gate
+from gatewright.parameters import Affine, Parameter
 from gatewright.program import Mark, Program, split_at_marks
 from gatewright.qasm.bodies import read_definition
 from gatewright.qasm.columns import MAX_OPERANDS, circuit
@@ -129,6 +131,8 @@ class Reader:
         self.marks: dict[int, int] = {}  # of control flow that depends on the run: numbers of their contents
         self.contents: list[Mark] = []
         self.variables: dict[str, str] = {}  # at run time: names and types
+        self.inputs: dict[str, str] = {}  # names and types
+        self.unknown: dict[int, tuple[Parameter, ...]] = {}  # parameters of operations of which some are not known
         self.handlers: dict[str, Callable[[str, int], None]] = {
             "OPENQASM": self.version_line,
             "include": self.include,
@@ -347,11 +351,13 @@ class Reader:
         self,
         gate: Gate,
         qubits: Sequence[int],
-        parameters: Sequence[float] = (),
+        parameters: Sequence[Parameter] = (),
         matrix: NDArray[np.complex128] | None = None,
         /,
     ) -> None:
         """Append one operation; `matrix` is that of an explicit unitary."""
+        if self.inputs or self.variables:
+            parameters = self.numbers(gate, parameters)
         if matrix is not None:
             self.matrices[len(self.op)] = matrix
         if len(self.op) >= MAX_OPERATIONS:
@@ -359,7 +365,17 @@ class Reader:
         self.op.append(self.table.setdefault(gate, len(self.table)))
         self.width.append(len(qubits))
         self.qubits += qubits
-        self.parameters += parameters
+        self.parameters += parameters  # type: ignore[arg-type]
+
+    def numbers(self, gate: Gate, parameters: Sequence[Parameter]) -> Sequence[float]:
+        """Return the parameters of the next operation as numbers; put what is not known aside."""
+        numbers = [math.nan if isinstance(value, Affine) else value for value in parameters]
+        if any(isinstance(value, Affine) for value in parameters):
+            if gate.name not in GATES:
+                what = f"an angle of '{shorten(gate.name)}' that is not known when compiling"
+                raise self.scope.unsupported(what, self.position)
+            self.unknown[len(self.op)] = tuple(parameters)
+        return numbers
 
     def call(self, text: str, offset: int) -> None:
         """Read the call of a gate."""
@@ -383,13 +399,14 @@ class Reader:
             return
         self.check_total(len(self.op) + len(rows) * target.size, offset)
         try:
-            phase = sum(expand(target, values, row, self.emit) for row in rows)
+            phase: Parameter = sum(expand(target, values, row, self.emit) for row in rows)
         except ExpressionError as problem:
             raise self.scope.at_fault(problem, offset, inside=False) from None
         self.add_phase(phase)
 
-    def add_phase(self, phase: float) -> None:
-        """Add a global phase to the distinct statement at hand."""
+    def add_phase(self, phase: Parameter) -> None:
+        """Add a global phase to the distinct statement at hand; what of it is not known is no one's concern."""
+        phase = phase.constant if isinstance(phase, Affine) else phase
         if phase:
             number = len(self.first) - 1
             self.phases[number] = self.phases.get(number, 0.0) + phase
