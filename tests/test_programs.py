@@ -6,7 +6,6 @@ in `tests/interpreter.py`; the text of every output is parsed by the OpenQASM re
 
 from __future__ import annotations
 
-from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -16,13 +15,11 @@ import pytest
 
 import gatewright as gw
 from gatewright.circuit import Circuit
-from gatewright.classical import Bits, Literal, Name, Operation, bits_text, expression_text
-from gatewright.errors import CircuitError, ProofError
 from gatewright.inputs import load
 from gatewright.linalg import haar_unitary
-from gatewright.program import Assign, Block, If, Leave, Program, While
+from gatewright.program import Program
 from gatewright.proof import decode_program_proof
-from gatewright.qasm import read, write
+from gatewright.qasm import read
 from interpreter import run
 
 HERE = Path(__file__).parent

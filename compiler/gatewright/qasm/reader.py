@@ -29,6 +29,7 @@ from gatewright.qasm.columns import MAX_OPERANDS, circuit
 from gatewright.qasm.definitions import Definition, equals, expand, same_gate
 from gatewright.qasm.lanes import CONST, EITHER, FAST, beyond, lane, leading_word
 from gatewright.qasm.library import BUILT_IN, LIBRARIES, LIBRARY_FILES
+from gatewright.qasm.scanner import Scanner, pays
 from gatewright.qasm.scope import MAX_QUBITS, NAME, UNSUPPORTED, Scope, split
 from gatewright.qasm.source import Source
 
@@ -154,13 +155,16 @@ class Reader:
         """Read all statements and put the columns together."""
         order: list[int] = []
         known = self.statements.get
-        for piece in self.pieces:
+        scanner = Scanner(self) if not self.only_full and pays(self.source.text) else None
+        while (piece := next(self.pieces, None)) is not None:
             number = known(piece)
             if number is None:
                 try:
                     # What is plainly for the full lane is spared the complaint of the fast one.
                     full = self.full
-                    plain = full is None or not (":" in piece or (full.globals and full.concerns(piece)))
+                    plain = "++" not in piece and (
+                        full is None or not (":" in piece or (full.globals and full.concerns(piece)))
+                    )
                     number = self.flat_call(piece) if plain and not self.only_full else -1
                 except (QasmError, UnsupportedError):
                     if not beyond(piece, self.scope, self.full):
@@ -172,6 +176,8 @@ class Reader:
             self.position += len(piece) + 1
             if self.ended:
                 break
+            if scanner is not None:
+                scanner.advance(order)
         end = len(self.source.text.rstrip()) - 1
         if self.source.text[end] not in ";}" and self.closed <= end and not self.ended:
             raise self.source.error("a ';' is missing", end, required="';' behind the last statement")
@@ -181,7 +187,10 @@ class Reader:
         if self.full is not None and self.full.bits:
             self.full.finish()
             order.append(self.finish(None))
-        flat = circuit(self, np.array(order, dtype=np.int64))
+        if scanner is None or not scanner.count:
+            flat = circuit(self, np.array(order, dtype=np.int64))
+        else:
+            flat = circuit(self, scanner.order(order), scanner.columns())
         return self.with_control(flat) if self.marks else flat
 
     def with_control(self, flat: Circuit) -> Program:
