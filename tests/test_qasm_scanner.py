@@ -10,6 +10,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from gatewright.circuit import Circuit
 from gatewright.errors import GatewrightError
 from gatewright.qasm import read, scanner
 from gatewright.qasm._kernels import number
@@ -80,6 +81,7 @@ def outcome(text: str) -> object:
         made = Reader(Source(text, "x.qasm"), {}).read()
     except GatewrightError as problem:
         return str(problem)
+    made = made if isinstance(made, Circuit) else made.joined()
     columns = (made.op, made.qubits, made.offsets, made.parameters, made.parameter_offsets, made.link)
     return made.table, [column.tobytes() for column in columns], made.phase, made.n_qubits, made.n_bits
 

@@ -46,6 +46,10 @@ def circuit(reader: Reader, order: NDArray[np.int64], scanned: Columns | None = 
     parameters, parameter_offsets = _gather(values, n_parameters, rows)
     link = np.full(len(op), -1, dtype=np.int32)
     link[list(reader.link)] = list(reader.link.values())
+    link[list(reader.marks)] = list(reader.marks.values())
+    symbolic = dict.fromkeys(reader.unknown.values())
+    number_of = {values: k for k, values in enumerate(symbolic)}
+    link[list(reader.unknown)] = [number_of[values] for values in reader.unknown.values()]
     link[list(reader.matrices)] = range(len(reader.matrices))
     phase = np.zeros(len(first))
     phase[list(reader.phases)] = list(reader.phases.values())
@@ -69,6 +73,8 @@ def circuit(reader: Reader, order: NDArray[np.int64], scanned: Columns | None = 
         phase=float(phase[order].sum()),
         qubit_registers=tuple((name, len(span)) for name, span in scope.qubit_registers.items()),
         bit_registers=tuple((name, len(span)) for name, span in scope.bit_registers.items()),
+        symbolic=tuple(symbolic),
+        inputs=tuple(reader.inputs.items()),
     )
 
 
