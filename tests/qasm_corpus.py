@@ -106,11 +106,12 @@ def _replace(rng: random.Random, text: str) -> str:
 
 
 _SPLINTERS = (
-    "{ } ( ) [ ] ; , : = == -> ++ ** @ # $ $9 \" ' // /* */ \\ \0 \x0c \u00e9 \u03c0 \ufeff \u2028 1e999 1e-999 0x 0b 9999999999999999999 -1 0 "
-    "1000000000000 pi 1/0 1ns 2.5im 0xfff 1_000 nan inf __class__ if else for while def gate ctrl inv pow measure reset "
-    "barrier let const int float bit qubit array switch case default return end box delay input output extern cal "
-    "defcal include OPENQASM gphase U mutable readonly stretch duration durationof sizeof in bool complex angle q c "
-    "q[0] c[0] [0:1000000000000] h x cx (( )) {{ }} -- !! ~~"
+    "{ } ( ) [ ] ; , : = == -> ++ ** @ # $ $9 \" ' // /* */ \\ \0 \x0c \u00e9 \u03c0 \ufeff \u2028 1e999 "
+    "1e-999 0x 0b 9999999999999999999 -1 0 1000000000000 pi 1/0 1ns 2.5im 0xfff 1_000 nan inf __class__ "
+    "if else for while def gate ctrl inv pow measure reset barrier let const int float bit qubit array "
+    "switch case default return end box delay input output extern cal defcal include OPENQASM gphase U "
+    "mutable readonly stretch duration durationof sizeof in bool complex angle q c q[0] c[0] "
+    "[0:1000000000000] h x cx (( )) {{ }} -- !! ~~"
 ).split(" ")
 
 
@@ -166,6 +167,9 @@ def damaged(seed: int) -> str:
     return text
 
 
+_V2 = 'OPENQASM 2.0; include "qelib1.inc"; qreg q[2]; '
+
+
 def _v3(text: str) -> str:
     return f'OPENQASM 3.0;\ninclude "stdgates.inc";\nqubit[4] q;\nbit[4] c;\n{text}'
 
@@ -212,10 +216,12 @@ LARGE: dict[str, Callable[[], str]] = {
     "open definition": lambda: _v3("gate g a { " + "x a; " * 200_000),
     "long definition": lambda: _v3("gate g a { " + "x a; " * 200_000 + "} g q; g q;"),
     "doubling definitions": lambda: _v3(
-        "gate g0 a { x a; x a; }" + "".join(f"gate g{k} a {{ g{k - 1} a; g{k - 1} a; }}" for k in range(1, 90)) + "g89 q[0];"
+        "gate g0 a { x a; x a; }" + "".join(f"gate g{k} a {{ g{k - 1} a; g{k - 1} a; }}" for k in range(1, 90))
+        + "g89 q[0];"
     ),
     "definitions in a row": lambda: _v3(
-        "gate g0 a { x a; }" + "".join(f"gate g{k} a {{ g{k - 1} a; }}" for k in range(1, 30_000)) + "g9999 q[0];"
+        "gate g0 a { x a; }" + "".join(f"gate g{k} a {{ g{k - 1} a; }}" for k in range(1, 30_000))
+        + "g9999 q[0];"
     ),
     "open definitions": lambda: _v3("gate g a { " * 100_000),
     "definitions, not plain": lambda: _v3(
@@ -246,7 +252,9 @@ LARGE: dict[str, Callable[[], str]] = {
     "open pragma": lambda: _v3("pragma " + "a" * 1_000_000),
     "calls": lambda: _v3("def f(qubit a) { x a; } " + "f(q[0]); " * 100_000),
     "calls in each other": lambda: _v3(
-        "def f0(qubit a) { x a; } " + "".join(f"def f{k}(qubit a) {{ f{k - 1}(a); f{k - 1}(a); }} " for k in range(1, 60)) + "f59(q[0]);"
+        "def f0(qubit a) { x a; } "
+        + "".join(f"def f{k}(qubit a) {{ f{k - 1}(a); f{k - 1}(a); }} " for k in range(1, 60))
+        + "f59(q[0]);"
     ),
     "aliases": lambda: _v3("let a0 = q ++ q; " + "".join(f"let a{k} = a{k - 1} ++ a{k - 1}; " for k in range(1, 60))),
     "plain and not": lambda: _v3("x q[0]; int k = 1; " + "x q[k]; rx(k) q[0]; h q[0]; " * 35_000),
@@ -255,8 +263,8 @@ LARGE: dict[str, Callable[[], str]] = {
     "wide controls": lambda: 'OPENQASM 3.0; include "stdgates.inc"; qubit[100000] q; ' + "ctrl(99999) @ x q; ",
     "measurements": lambda: _v3("c[0] = measure q[0]; measure q[1] -> c[1]; " * 25_000),
     "known bits": lambda: _v3("c[0] = 1; c[0] = 0; " * 50_000),
-    "version 2, opaque": lambda: 'OPENQASM 2.0; include "qelib1.inc"; qreg q[2]; ' + "".join(f"opaque o{k} a; " for k in range(80_000)),
-    "version 2, conditions": lambda: 'OPENQASM 2.0; include "qelib1.inc"; qreg q[2]; creg c[2]; ' + "if(c==1) x q[0]; " * 60_000,
-    "version 2, parentheses": lambda: 'OPENQASM 2.0; include "qelib1.inc"; qreg q[2]; rx(' + "(" * 1_000_000,
-    "version 2, braces": lambda: 'OPENQASM 2.0; include "qelib1.inc"; qreg q[2]; ' + "{" * 1_000_000,
+    "version 2, opaque": lambda: _V2 + "".join(f"opaque o{k} a; " for k in range(80_000)),
+    "version 2, conditions": lambda: _V2 + 'creg c[2]; ' + "if(c==1) x q[0]; " * 60_000,
+    "version 2, parentheses": lambda: _V2 + 'rx(' + "(" * 1_000_000,
+    "version 2, braces": lambda: _V2 + "{" * 1_000_000,
 }  # fmt: skip

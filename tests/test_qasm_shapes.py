@@ -74,7 +74,8 @@ def test_a_filled_shape_is_the_tree_of_the_parser(form: str) -> None:
 
 @pytest.mark.parametrize(
     ("one", "other"),
-    [("a + b;", "a ++ b;"), ("x q;", "reset q;"), ("rz(1) q;", "rz(1.0) q;"), ("f(q);", "sizeof(q);"), ("x $1;", "x $2;"),
+    [("a + b;", "a ++ b;"), ("x q;", "reset q;"), ("rz(1) q;", "rz(1.0) q;"), ("f(q);", "sizeof(q);"),
+     ("x $1;", "x $2;"),
      ("a = 10ns;", "a = 10us;"), ("a = 0x1;", "a = 0x2;"), ('a = "01";', 'a = "11";'), ("a = true;", "a = b;")],
 )  # fmt: skip
 def test_other_shapes(one: str, other: str) -> None:
