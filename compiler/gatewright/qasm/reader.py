@@ -58,7 +58,9 @@ _IF = re.compile(r"if\s*\(\s*([^\s=()]+)\s*==\s*([^=()]*?)\s*\)\s*(.*)", re.DOTA
 _ARROW = re.compile(r"measure\b(.*)->(.*)", re.DOTALL)
 
 
-def read(text: str, *, where: str = "", natives: Mapping[str, Gate] | None = None) -> Circuit | Program:
+def read(
+    text: str, *, where: str = "", natives: Mapping[str, Gate] | None = None, strict: bool = True
+) -> Circuit | Program:
     """Read an OpenQASM program.
 
     Versions 2.0, 3.0 and 3.1 (3.0 where the version line is missing); ``include`` of the version's own standard
@@ -80,6 +82,9 @@ def read(text: str, *, where: str = "", natives: Mapping[str, Gate] | None = Non
     natives : mapping of str to Gate, optional
         Native gates of a device: calls of these names stay what they are. Where the program or its library
         defines such a gate, it has to agree with the native matrix up to global phase.
+    strict : bool
+        If False, natives are known only where the program defines or declares them, and one that differs is the
+        program's own.
 
     Returns
     -------
@@ -98,13 +103,15 @@ def read(text: str, *, where: str = "", natives: Mapping[str, Gate] | None = Non
     >>> [(op.name, op.qubits) for op in c]
     [('h', (0,)), ('cx', (0, 1)), ('rz', (0,)), ('rz', (1,))]
     """
-    return Reader(Source(text, where), natives or {}).read()
+    return Reader(Source(text, where), natives or {}, strict=strict).read()
 
 
 class Reader:
     """One program being read; with `only_full` the full lane takes every statement that it can."""
 
-    def __init__(self, source: Source, natives: Mapping[str, Gate], *, only_full: bool = False) -> None:
+    def __init__(
+        self, source: Source, natives: Mapping[str, Gate], *, only_full: bool = False, strict: bool = True
+    ) -> None:
         self.source = source
         self.only_full = only_full
         self.full: FullLane | None = None
@@ -112,10 +119,13 @@ class Reader:
         self.ended = False
         self.scope = Scope(source)
         self.natives = natives
+        self.strict = strict
         self.pieces = source.pieces()
         self.position = 0  # offset of the piece at hand
         self.started = False
-        self.gates: dict[str, Gate | Definition] = {**{name: GATES[name] for name in BUILT_IN[3]}, **natives}
+        self.gates: dict[str, Gate | Definition] = {name: GATES[name] for name in BUILT_IN[3]}
+        if strict:
+            self.gates.update(natives)
         self.opaque: set[str] = set()
         self.clashes: set[str] = set()  # native gates that differ from the library's
         self.statements: dict[str, int] = {}
@@ -606,6 +616,8 @@ class Reader:
         self.scope.declare(match[1], "an opaque gate", offset + match.start(1))
         if match[1] not in self.natives:
             self.opaque.add(match[1])
+        else:
+            self.gates[match[1]] = self.natives[match[1]]
 
     # ---------------------------------------------------------------- gate definitions
 
@@ -637,7 +649,7 @@ class Reader:
         name = made.name
         known = self.natives.get(name) or GATES.get(name)
         same = known is not None and equals(made, known)
-        if name in self.natives and not same:
+        if name in self.natives and not same and self.strict:
             raise self.source.error(
                 f"the definition of '{shorten(name)}' differs from the device's native gate",
                 start,
