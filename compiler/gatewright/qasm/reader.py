@@ -52,6 +52,8 @@ _REGISTER = re.compile(rf"(qreg|creg)\s+({NAME})\s*(?:\[([^][]*)\])?")
 _DECLARATION = re.compile(rf"(qubit|bit)\s*(?:\[([^][]*)\])?\s*({NAME})\s*(?:=(.*))?", re.DOTALL)
 _OPAQUE = re.compile(rf"opaque\s+({NAME})\s*(?:\([^()]*\))?\s*[^()]*")
 _BLOCK = re.compile(r"\s*gate\b")
+_BRACES = re.compile(r"[{}]")
+_CALIBRATED = re.compile(rf"defcal\s+({NAME})")
 _NOTES = re.compile(r"(?:\s*(?:@|#|pragma\b)[^\n]*)++")
 _MEASURE = re.compile(r"measure\b(.*)", re.DOTALL)
 _IF = re.compile(r"if\s*\(\s*([^\s=()]+)\s*==\s*([^=()]*?)\s*\)\s*(.*)", re.DOTALL)
@@ -139,6 +141,9 @@ class Reader:
         self.qubits: list[int] = []
         self.parameters: list[float] = []
         self.link: dict[int, int] = {}  # bits of measurements
+        self.calibrations: list[str] = []
+        self.calibrated: set[str] = set()  # gates with a calibration
+        self.unread: dict[int, int] = {}  # bits of qubits whose outcomes are dropped
         self.matrices: dict[int, NDArray[np.complex128]] = {}  # of explicit unitaries
         self.marks: dict[int, int] = {}  # of control flow that depends on the run: numbers of their contents
         self.contents: list[Mark] = []
@@ -202,6 +207,9 @@ class Reader:
             flat = circuit(self, np.array(order, dtype=np.int64))
         else:
             flat = circuit(self, scanner.order(order), scanner.columns())
+        if self.calibrations and self.marks:
+            raise self.scope.unsupported("'cal' or 'defcal' beside control that depends on the run", 0)
+        flat = replace(flat, calibrations=tuple(self.calibrations))
         return self.with_control(flat) if self.marks else flat
 
     def with_control(self, flat: Circuit) -> Program:
@@ -254,6 +262,8 @@ class Reader:
         if word in ("@", "#", "pragma"):
             skipped = _NOTES.match(self.source.text, start)
             return self.behind(piece, skipped.end() if skipped else start)
+        if word in ("cal", "defcal", "defcalgrammar"):
+            return self.behind(piece, self.calibration(word, start))
         choice = lane(word, piece, start, self.scope, self.full)
         if choice == FAST or (choice == EITHER and not self.only_full):
             return None
@@ -265,6 +275,26 @@ class Reader:
         self.full.charge_at(len(piece) >> 10, start)
         end, self.ended = self.full.statement(start)
         return self.behind(piece, end)
+
+    def calibration(self, word: str, start: int) -> int:
+        """Keep a calibration statement as it stands; return the offset behind it."""
+        text = self.source.text
+        if word == "defcalgrammar":
+            end = text.find(";", start) + 1
+        else:
+            depth, end = 0, 0
+            for match in _BRACES.finditer(text, start):
+                depth += 1 if match[0] == "{" else -1
+                if depth <= 0:
+                    end = match.end() if match[0] == "}" and depth == 0 else 0
+                    break
+        if not end:
+            raise self.source.error(f"a '{word}' is not closed", start, required="';'" if word[6:] else "'}'")
+        self.calibrations.append(self.source.original[start:end])
+        name = _CALIBRATED.match(text, start)
+        if name is not None:
+            self.calibrated.add(name[1])
+        return end
 
     def behind(self, piece: str, end: int) -> str:
         """Go on behind the offset `end`; return what follows it up to a semicolon."""
@@ -443,6 +473,8 @@ class Reader:
         gate = self.gates.get(name)
         if gate is not None:
             return gate
+        if name in self.calibrated:
+            raise self.scope.unsupported(f"calling '{shorten(name)}', which has a 'defcal' and no definition,", offset)
         scope = self.scope
         library = LIBRARY_FILES[scope.version]
         if name in scope.declared:
@@ -496,8 +528,23 @@ class Reader:
         if match is None:
             if self.scope.version == 2:
                 raise self.source.error("a measurement has no bit", offset, required="measure qubits -> bits")
-            raise self.scope.unsupported("a measurement into no bit", offset)
+            at = offset + len("measure")
+            span, _ = self.scope.operand(text[len("measure") :], at, self.scope.qubit_registers)
+            for qubit in span:
+                self.measure_unread(qubit, offset)
+            return
         self.measurement(match[1], offset + match.start(1), match[2], offset + match.start(2))
+
+    def measure_unread(self, qubit: int, offset: int) -> None:
+        """Measure a qubit whose outcome nobody asks for: into a bit of a register of our own."""
+        if qubit not in self.unread:
+            scope = self.scope
+            name = next(name for k in count() if (name := f"unread_outcomes{k or ''}") not in scope.declared)
+            size = scope.n_qubits or scope.n_physical
+            scope.add_register(name, size, offset, quantum=False)
+            self.unread.update((q, bit) for q, bit in enumerate(scope.bit_registers[name]) if q not in self.unread)
+        self.link[len(self.op)] = self.unread[qubit]
+        self.emit(MEASURE, (qubit,))
 
     def assign(self, target: str, target_offset: int, value: str, offset: int) -> None:
         """Read ``bits = measure qubits``."""
