@@ -119,9 +119,15 @@ class Evaluator:
         """Count steps of unrolling, and refuse too many."""
         self.steps += steps
         if self.steps > MAX_STEPS:
-            raise self.error(
+            self.charge_at(0, self.at(node))
+
+    def charge_at(self, steps: int, offset: int) -> None:
+        """Count steps for what begins at an offset, and refuse too many."""
+        self.steps += steps
+        if self.steps > MAX_STEPS:
+            raise self.source.error(
                 "unrolling the program takes too many steps",
-                node,
+                offset,
                 required=f"at most {MAX_STEPS} gates, a statement counting for {STATEMENT}",
             )
 

@@ -52,6 +52,7 @@ _REGISTER = re.compile(rf"(qreg|creg)\s+({NAME})\s*(?:\[([^][]*)\])?")
 _DECLARATION = re.compile(rf"(qubit|bit)\s*(?:\[([^][]*)\])?\s*({NAME})\s*(?:=(.*))?", re.DOTALL)
 _OPAQUE = re.compile(rf"opaque\s+({NAME})\s*(?:\([^()]*\))?\s*[^()]*")
 _BLOCK = re.compile(r"\s*gate\b")
+_NOTES = re.compile(r"(?:\s*(?:@|#|pragma\b)[^\n]*)++")
 _MEASURE = re.compile(r"measure\b(.*)", re.DOTALL)
 _IF = re.compile(r"if\s*\(\s*([^\s=()]+)\s*==\s*([^=()]*?)\s*\)\s*(.*)", re.DOTALL)
 _ARROW = re.compile(r"measure\b(.*)->(.*)", re.DOTALL)
@@ -241,8 +242,8 @@ class Reader:
             return None
         word, start = leading[0], self.position + leading[1]
         if word in ("@", "#", "pragma"):
-            end = self.source.text.find("\n", start)
-            return self.behind(piece, len(self.source.text) if end < 0 else end)
+            skipped = _NOTES.match(self.source.text, start)
+            return self.behind(piece, skipped.end() if skipped else start)
         choice = lane(word, piece, start, self.scope, self.full)
         if choice == FAST or (choice == EITHER and not self.only_full):
             return None
@@ -250,6 +251,8 @@ class Reader:
             from gatewright.qasm.full import FullLane
 
             self.full = FullLane(self)
+        # Blocks in a row without any semicolon are gone through again and again.
+        self.full.charge_at(len(piece) >> 10, start)
         end, self.ended = self.full.statement(start)
         return self.behind(piece, end)
 
