@@ -14,10 +14,9 @@ from pathlib import Path
 
 sys.path.insert(0, str(Path(__file__).resolve().parent.parent))
 
-from qasm_corpus import LARGE, damaged  # noqa: E402
-
 from gatewright.errors import GatewrightError  # noqa: E402
 from gatewright.qasm import read  # noqa: E402
+from qasm_corpus import LARGE, damaged  # noqa: E402
 
 
 def timed(text: str) -> tuple[float, str]:
