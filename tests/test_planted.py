@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-import lattices
 import networkx as nx
 import numpy as np
 import pytest
+
+import lattices
 from planted import Planted, planted_depth, planted_swaps
 
 GRAPHS = {
