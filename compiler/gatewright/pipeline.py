@@ -24,18 +24,22 @@ from gatewright.devices import Device
 from gatewright.errors import InputError, ProofError, nearest_name
 from gatewright.gates import GATES
 from gatewright.linalg import checked_unitary
+from gatewright.mapping.bounds import ENTRIES, swap_bound
+from gatewright.mapping.routing import make_graph
 from gatewright.proof import Proof, Verdict, check_legal, check_proof, encode_proof
 from gatewright.proof.dense import dense_distance, dense_work
 from gatewright.stages.draft import Draft, Settings, Stage
 from gatewright.stages.expand import expand
 from gatewright.stages.fuse import fuse
 from gatewright.stages.place import place
+from gatewright.stages.precedence import order_of
 from gatewright.stages.route import route
 from gatewright.stages.schedule import schedule
 from gatewright.stages.synthesise import synthesise
 from gatewright.stages.windows import TWO, fuse_circuit, window_unitaries
 from gatewright.synthesis.definition import definition_of
-from gatewright.synthesis.native import NativeSet, native_set
+from gatewright.synthesis.native import native_set
+from gatewright.synthesis.weyl import canonical_coordinates, mirrored_coordinates
 
 __all__ = ["CHAIN", "EFFORTS", "Result", "check", "compile", "count"]
 
@@ -252,7 +256,8 @@ def compile(  # noqa: A001
     verdict = _second_opinion(circuit, draft.circuit, verdict)
     clock.start("count")
     costs = count_costs(draft.circuit, device, starts=draft.starts, swaps_inserted=draft.swaps)
-    bound = _lower_bound(circuit, draft.expanded, native, tolerance, stays=verdict.initial == verdict.final)
+    clock.start("bound")
+    bound = _lower_bound(draft, circuit, stays=verdict.initial == verdict.final)
     clock.stop()
     return Result(
         circuit=draft.circuit,
@@ -375,26 +380,53 @@ def _second_opinion(source: Circuit, output: Circuit, verdict: Verdict) -> Verdi
     return replace(verdict, method=verdict.method + "; full unitaries compared as well")
 
 
-def _lower_bound(circuit: Circuit, expanded: Circuit, native: NativeSet, tolerance: float, *, stays: bool) -> Bound:
-    """Sum the least number of entanglers over the input's own windows."""
+def _lower_bound(draft: Draft, circuit: Circuit, *, stays: bool) -> Bound:
+    """Bound the swaps, and the entanglers that the input's own windows and those swaps need together."""
+    expanded, device, native, tolerance = draft.expanded, draft.device, draft.native, draft.settings.tolerance
     fused = fuse_circuit(expanded)
     if native.entangler is None or not np.count_nonzero(fused.kind == TWO):
         return Bound(0, "no two-qubit windows in the input")
     _, two = window_unitaries(expanded, fused)
-    counts = native.entangler.entangler.count(two, tolerance=tolerance)
+    points = canonical_coordinates(two)
+    order, cut = order_of(expanded, fused, two, points)
+    swaps = swap_bound(
+        make_graph(device.edges, device.n_qubits),
+        order,
+        active=np.asarray(device.active),
+        fixed=draft.settings.placement,
+    )
+    entangler, name = native.entangler.entangler, native.entangler.gate.name
+    counts = entangler.count(points, tolerance=tolerance)
+    exchanged = entangler.count(mirrored_coordinates(points), tolerance=tolerance)
+    alone = int(entangler.count(np.full(3, np.pi / 4), tolerance=tolerance))
     of_what = "the input" if expanded is circuit else "the input, written in gates of one and two qubits"
     how = (
-        f"sum over the two-qubit windows of {of_what}, of the exact least number of '{native.entangler.gate.name}' "
-        "that each needs on its own, with free one-qubit gates and all-to-all connectivity"
+        f"sum over the two-qubit windows of {of_what}, of the exact least number of '{name}' "
+        "that each needs on its own, with free one-qubit gates"
     )
-    if not stays:
-        counts = np.minimum(counts, native.entangler.entangler.count_exchanged(two, tolerance=tolerance))
+    if len(counts) == 1 and not swaps.swaps and stays:
+        # Its wires ended where they began, so a swap merged into the window would have needed another to undo it.
+        total = int(counts[0])
+    else:
+        total = int(np.minimum(counts, exchanged).sum())
         how += ", its two wires exchanged where that needs fewer"
+        # Each swap either merges with a window of its own, and exchanges its wires, or stands alone.
+        dearer = np.minimum(exchanged - counts, alone)
+        needed = max(swaps.swaps - int(np.count_nonzero(dearer <= 0)), 0)
+        if needed:
+            extra = np.sort(dearer[dearer > 0])[:needed]
+            added = int(extra.sum()) + alone * (needed - len(extra))
+            total += added
+            how += f"; {added} more for the swaps, each merged with the window that it makes least dearer"
     how += (
         "; a bound for circuits that keep this partition into windows, not the optimum of the whole circuit: "
         "larger windows may need fewer"
     )
-    return Bound(int(counts.sum()), how)
+    of_part = f" (the first {ENTRIES} two-qubit gates alone)" if cut else ""
+    given = " from the given placement" if draft.settings.placement is not None else ""
+    if swaps.swaps:
+        how = f"swaps{given}: {swaps.how}{of_part}. Two-qubit gates: {how}"
+    return Bound(total, how, swaps.swaps)
 
 
 class _Clock:
