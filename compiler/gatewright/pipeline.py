@@ -8,7 +8,7 @@ from dataclasses import asdict, dataclass, field, replace
 from typing import Any
 
 import numpy as np
-from numpy.typing import ArrayLike
+from numpy.typing import ArrayLike, NDArray
 
 from gatewright._version import __version__
 from gatewright.circuit import Circuit
@@ -24,7 +24,7 @@ from gatewright.devices import Device
 from gatewright.errors import InputError, ProofError, nearest_name
 from gatewright.gates import GATES
 from gatewright.linalg import checked_unitary
-from gatewright.mapping.bounds import ENTRIES, swap_bound
+from gatewright.mapping.bounds import GATE, Order, swap_bound
 from gatewright.mapping.routing import make_graph
 from gatewright.proof import Proof, Verdict, check_legal, check_proof, encode_proof
 from gatewright.proof.dense import dense_distance, dense_work
@@ -388,7 +388,7 @@ def _lower_bound(draft: Draft, circuit: Circuit, *, stays: bool) -> Bound:
         return Bound(0, "no two-qubit windows in the input")
     _, two = window_unitaries(expanded, fused)
     points = canonical_coordinates(two)
-    order, cut = order_of(expanded, fused, two, points)
+    order, window = order_of(expanded, fused, two, points)
     swaps = swap_bound(
         make_graph(device.edges, device.n_qubits),
         order,
@@ -398,6 +398,7 @@ def _lower_bound(draft: Draft, circuit: Circuit, *, stays: bool) -> Bound:
     entangler, name = native.entangler.entangler, native.entangler.gate.name
     counts = entangler.count(points, tolerance=tolerance)
     exchanged = entangler.count(mirrored_coordinates(points), tolerance=tolerance)
+    counts, exchanged = _brought_together(counts, exchanged, order, np.cumsum(fused.kind == TWO)[window] - 1)
     alone = int(entangler.count(np.full(3, np.pi / 4), tolerance=tolerance))
     of_what = "the input" if expanded is circuit else "the input, written in gates of one and two qubits"
     how = (
@@ -422,11 +423,26 @@ def _lower_bound(draft: Draft, circuit: Circuit, *, stays: bool) -> Bound:
         "; a bound for circuits that keep this partition into windows, not the optimum of the whole circuit: "
         "larger windows may need fewer"
     )
-    of_part = f" (the first {ENTRIES} two-qubit gates alone)" if cut else ""
     given = " from the given placement" if draft.settings.placement is not None else ""
     if swaps.swaps:
-        how = f"swaps{given}: {swaps.how}{of_part}. Two-qubit gates: {how}"
+        how = f"swaps{given}: {swaps.how}. Two-qubit gates: {how}"
     return Bound(total, how, swaps.swaps)
+
+
+def _brought_together(
+    counts: NDArray[np.int64], exchanged: NDArray[np.int64], order: Order, window: NDArray[np.int64]
+) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Count nothing for windows on one pair of wires that may be brought together past what they commute with."""
+    gates = np.flatnonzero(order.kind == GATE)
+    first = gates[np.unique(window[gates], return_index=True)[1]]
+    flip = order.wires[first, 0] > order.wires[first, 1]
+    keys = np.concatenate([order.wires[first], order.runs[first]], axis=1)
+    keys[flip] = keys[flip][:, [1, 0, 3, 2]]
+    _, group, size = np.unique(keys, axis=0, return_inverse=True, return_counts=True)
+    shared = window[first[size[group.ravel()] > 1]]
+    counts, exchanged = counts.copy(), exchanged.copy()
+    counts[shared] = exchanged[shared] = 0
+    return counts, exchanged
 
 
 class _Clock:

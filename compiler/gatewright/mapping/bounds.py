@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 
 from gatewright.mapping.routing import FAR, Graph
 
-__all__ = ["CROSS", "ENTRIES", "GATE", "TIE", "Order", "SwapBound", "swap_bound"]
+__all__ = ["CROSS", "GATE", "TIE", "Order", "SwapBound", "swap_bound"]
 
 #: Kinds of entries of an `Order`.
 GATE, TIE, CROSS = 0, 1, 2
@@ -26,8 +26,7 @@ GATE, TIE, CROSS = 0, 1, 2
 #: Steps of the searches for embeddings: for each, for the set-up of each, and for a whole walk. A step costs some
 #: ten microseconds. Without any left, a walk goes on looking for wires with too many partners.
 STEPS, SET_UP, ALL_STEPS = 400, 10, 10_000
-#: Two-qubit gates that are looked at, and entries (gates, and what keeps order among them) up to which the circuit is
-#: also walked backwards.
+#: Entries that are looked at, and those up to which the circuit is also walked backwards.
 ENTRIES, BACKWARDS = 30_000, 10_000
 #: Gates in a chunk of the counting bound, as a multiple of the number of edges.
 CHUNKS = (2, 6, 20)
@@ -65,6 +64,10 @@ class Order:
         m = len(pairs)
         runs = np.repeat(np.arange(m)[:, None], 2, axis=1)
         return cls(n, np.asarray(pairs, dtype=np.int32).reshape(-1, 2), np.zeros(m, dtype=np.int8), runs)
+
+    def first(self, count: int) -> Order:
+        """Return the order of the first entries."""
+        return Order(self.n, self.wires[:count], self.kind[:count], self.runs[:count])
 
     def reversed(self) -> Order:
         """Return the order of the circuit run backwards."""
@@ -114,9 +117,12 @@ def swap_bound(
     """
     start = np.full(order.n, -1, dtype=np.int64) if fixed is None else np.asarray(fixed, dtype=np.int64)
     pinned = bool((start >= 0).any())
+    of_part = f" (of the first {ENTRIES} two-qubit operations alone)" if len(order.wires) > ENTRIES else ""
+    order = order.first(ENTRIES)
     # A routing may carry out these exchanges by renaming: each then stands for one change of the placement.
     free_crossings = _inner_crossings(order)
     reduced = f", less {free_crossings} exchanges that the circuit asks for itself" if free_crossings else ""
+    reduced += of_part
     found = [SwapBound(0, "nothing shows that a swap is needed")]
     levels = _Walk(graph, order, active, start, ALL_STEPS).run()
     if not pinned and levels and len(order.wires) <= BACKWARDS:
@@ -125,7 +131,7 @@ def swap_bound(
     found.append(SwapBound(levels - free_crossings, EMBEDDED + reduced))
     found.append(SwapBound(_counted(graph, order, active, free_crossings), COUNTED + reduced))
     if pinned and not free_crossings:
-        found.append(SwapBound(_moved(graph, order, start), MOVED))
+        found.append(SwapBound(_moved(graph, order, start), MOVED + reduced))
     return max(found, key=lambda bound: bound.swaps)
 
 

@@ -9,13 +9,13 @@ only weakens a bound.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
-from gatewright.mapping.bounds import CROSS, ENTRIES, GATE, TIE, Order
+from gatewright.mapping.bounds import CROSS, GATE, TIE, Order
 from gatewright.stages.windows import TWO, Fused
 from gatewright.synthesis.weyl import canonical_coordinates
 
@@ -35,9 +35,7 @@ PAULI = np.array([[[0, 1], [1, 0]], [[0, -1j], [1j, 0]], [[1, 0], [0, -1]]])
 ON_WIRE = np.array([[np.kron(p, np.eye(2)) for p in PAULI], [np.kron(np.eye(2), p) for p in PAULI]])
 
 
-def order_of(
-    circuit: Circuit, fused: Fused, unitaries: Array, points: Vectors, *, limit: int = ENTRIES
-) -> tuple[Order, bool]:
+def order_of(circuit: Circuit, fused: Fused, unitaries: Array, points: Vectors) -> tuple[Order, NDArray[np.int32]]:
     """Return what every routing of a circuit must respect.
 
     Parameters
@@ -49,23 +47,15 @@ def order_of(
     unitaries : ndarray, shape (windows of kind TWO, 4, 4)
     points : ndarray, shape (windows of kind TWO, 3)
         Their points of the chamber.
-    limit : int
-        Two-qubit gates that are looked at; the circuit is cut behind so many.
 
     Returns
     -------
     order : Order
         Gates in windows that are the identity up to one-qubit gates are left out; windows that are a SWAP up to them
         become one exchange.
-    cut : bool
-        Whether the circuit goes on after it.
+    window : ndarray of int32
+        The window that each entry of the order is in.
     """
-    pairs = np.flatnonzero(circuit.is_unitary & (circuit.widths == 2))
-    cut = len(pairs) > limit
-    if cut:
-        stop = int(pairs[limit])
-        circuit = circuit.take(np.arange(stop))
-        fused = replace(fused, window=fused.window[:stop])
     local_window, cross_window, plain_window = (np.zeros(len(fused.kind), dtype=bool) for _ in range(3))
     two = fused.kind == TWO
     local_window[two] = (points < CLOSE).all(axis=1)
@@ -96,7 +86,7 @@ def order_of(
     whole = compound & plain_window[fused.window]
     parted = _Parted(circuit, fused, kinds, axes, has, wild, whole, plain_window)
     runs = _runs(parted, unitaries[np.maximum(np.cumsum(two) - 1, 0)] if len(unitaries) else unitaries)
-    return _entries(circuit, kinds, runs), cut
+    return _entries(circuit, fused, kinds, runs)
 
 
 def _coordinates(circuit: Circuit, rows: Integers) -> Vectors:
@@ -232,11 +222,14 @@ def _lines(circuit: Circuit, kinds: NDArray[np.int8]) -> Integers:
     return np.array(lines, dtype=np.int64)
 
 
-def _entries(circuit: Circuit, kinds: NDArray[np.int8], runs: Integers) -> Order:
+def _entries(
+    circuit: Circuit, fused: Fused, kinds: NDArray[np.int8], runs: Integers
+) -> tuple[Order, NDArray[np.int32]]:
     """Put gates, exchanges and what keeps order on several wires into rows of two wires."""
     paired = np.flatnonzero((kinds == GATE) | (kinds == CROSS))
     slots = circuit.offsets[paired][:, None] + np.arange(2)
-    wires, numbers, kind, key = [circuit.qubits[slots]], [runs[slots]], [kinds[paired]], [paired * 2.0]
+    wires, numbers, kind = [circuit.qubits[slots]], [runs[slots]], [kinds[paired]]
+    key, owner = [paired * 2.0], [paired]
     for k in np.flatnonzero(kinds == TIE).tolist():
         s = np.arange(circuit.offsets[k], circuit.offsets[k + 1])
         # To and fro along the wires, so that what came before on any of them comes before all.
@@ -246,10 +239,12 @@ def _entries(circuit: Circuit, kinds: NDArray[np.int8], runs: Integers) -> Order
         numbers.append(runs[rows])
         kind.append(np.full(len(rows), TIE, dtype=np.int8))
         key.append(2.0 * k + np.arange(len(rows)) / len(rows))
+        owner.append(np.full(len(rows), k))
     order = np.argsort(np.concatenate(key), kind="stable")
-    return Order(
+    made = Order(
         circuit.n_qubits,
         np.concatenate(wires)[order].astype(np.int32),
         np.concatenate(kind)[order],
         np.concatenate(numbers)[order].astype(np.int64),
     )
+    return made, fused.window[np.concatenate(owner)[order]]
