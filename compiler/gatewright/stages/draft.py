@@ -34,12 +34,15 @@ class Settings:
         ``quick``, ``standard`` or ``deep``: how long to search for placements.
     placement : tuple of int or None
         Physical qubit of each source qubit at the start, -1 where it is free.
+    final : tuple of int or None
+        Physical qubit of each source qubit at the end; wherever routing leaves them by default.
     """
 
     seed: int = 0
     tolerance: float = 1e-12
     effort: str = "standard"
     placement: tuple[int, ...] | None = None
+    final: tuple[int, ...] | None = None
 
 
 @dataclass(frozen=True, eq=False, slots=True)

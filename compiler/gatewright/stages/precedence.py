@@ -71,7 +71,7 @@ def order_of(circuit: Circuit, fused: Fused, unitaries: Array, points: Vectors) 
     first[rows[np.unique(fused.window[rows], return_index=True)[1]]] = True
     gate = in_two & ~crossing & ~local_window[fused.window]
     wild = np.zeros(len(circuit), dtype=bool)
-    kinds = np.select([gate, first, ~circuit.is_unitary], [GATE, CROSS, TIE], -1).astype(np.int8)
+    kinds = np.select([gate, first, ~circuit.is_gate], [GATE, CROSS, TIE], -1).astype(np.int8)
 
     axes, has = _axes(circuit, np.flatnonzero(gate))
     number = np.bincount(fused.window[gate], minlength=len(fused.kind))
