@@ -11,11 +11,13 @@ from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
 from gatewright.cost import Bound
+from gatewright.gates import GATES
 from gatewright.mapping.bounds import GATE, Order, swap_bound
 from gatewright.mapping.routing import make_graph
 from gatewright.stages.draft import Draft
 from gatewright.stages.precedence import order_of
 from gatewright.stages.windows import TWO, fuse_circuit, window_unitaries
+from gatewright.synthesis.toolkit import least_mixed_uses
 from gatewright.synthesis.weyl import canonical_coordinates, mirrored_coordinates
 
 __all__ = ["lower_bound"]
@@ -41,7 +43,7 @@ def lower_bound(draft: Draft, circuit: Circuit, *, stays: bool, placement: tuple
     """
     expanded, device, native, tolerance = draft.expanded, draft.device, draft.native, draft.settings.tolerance
     fused = fuse_circuit(expanded)
-    if native.entangler is None or not np.count_nonzero(fused.kind == TWO):
+    if not native.entanglers or not np.count_nonzero(fused.kind == TWO):
         return Bound(0, "no two-qubit windows in the input")
     _, two = window_unitaries(expanded, fused)
     points = canonical_coordinates(two)
@@ -52,28 +54,33 @@ def lower_bound(draft: Draft, circuit: Circuit, *, stays: bool, placement: tuple
         active=np.asarray(device.active),
         fixed=placement,
     )
-    entangler, name = native.entangler.entangler, native.entangler.gate.name
-    counts = entangler.count(points, tolerance=tolerance)
-    exchanged = entangler.count(mirrored_coordinates(points), tolerance=tolerance)
+    tools = [tool.entangler for tool in native.straight]
+    # Points are known already; several tools want the matrices.
+    straight, mirrored = (points, mirrored_coordinates(points)) if len(tools) == 1 else (two, two[:, [0, 2, 1, 3]])
+    counts = least_mixed_uses(straight, tools, tolerance=tolerance)
+    exchanged = least_mixed_uses(mirrored, tools, tolerance=tolerance)
     counts, exchanged = _brought_together(counts, exchanged, order, np.cumsum(fused.kind == TWO)[window] - 1)
-    alone = int(entangler.count(np.full(3, np.pi / 4), tolerance=tolerance))
+    swap = int(least_mixed_uses(GATES["swap"].matrix(()), tools, tolerance=tolerance))
     of_what = "the input" if expanded is circuit else "the input, written in gates of one and two qubits"
+    names = " or ".join(f"'{tool.gate.name}'" for tool in native.straight)
     how = (
-        f"sum over the two-qubit windows of {of_what}, of the exact least number of '{name}' "
+        f"sum over the two-qubit windows of {of_what}, of the exact least number of {names} "
         "that each needs on its own, with free one-qubit gates"
     )
     if len(counts) == 1 and not swaps.swaps and stays:
         # Its wires ended where they began, so a swap merged into the window would have needed another to undo it.
         total = int(counts[0])
+        if len(tools) == 1 and total:
+            how += f"; here {tools[0].reason(two[0], tolerance=tolerance)}"
     else:
         total = int(np.minimum(counts, exchanged).sum())
         how += ", its two wires exchanged where that needs fewer"
         # Each swap either merges with a window of its own, and exchanges its wires, or stands alone.
-        dearer = np.minimum(exchanged - counts, alone)
+        dearer = np.minimum(exchanged - counts, swap)
         needed = max(swaps.swaps - int(np.count_nonzero(dearer <= 0)), 0)
         if needed:
             extra = np.sort(dearer[dearer > 0])[:needed]
-            added = int(extra.sum()) + alone * (needed - len(extra))
+            added = int(extra.sum()) + swap * (needed - len(extra))
             total += added
             how += f"; {added} more for the swaps, each merged with the window that it makes least dearer"
     how += (

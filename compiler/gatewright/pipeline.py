@@ -29,7 +29,7 @@ from gatewright.stages.restore import restore
 from gatewright.stages.route import route
 from gatewright.stages.schedule import schedule
 from gatewright.stages.synthesise import synthesise
-from gatewright.synthesis.native import native_set
+from gatewright.synthesis.native import NativeSet, native_set
 
 __all__ = ["CHAIN", "EFFORTS", "Result", "check", "compile", "count"]
 
@@ -39,9 +39,8 @@ CHAIN: tuple[Stage, ...] = (parametrise, expand, place, route, restore, fuse, sy
 EFFORTS = ("quick", "standard", "deep")
 
 #: A window of a proof may be this far off by rounding, beyond the tolerance that the user allows: once for its
-#: entanglers, and three times for each of its at most eight one-qubit runs.
+#: entanglers, and three times for each of its one-qubit runs, two more than twice the number of entanglers.
 ROUNDING = 1e-11
-USES_OF_TOLERANCE = 25
 #: Full unitaries are compared as well up to this many qubits, where no more than this many matrix entries are computed.
 DENSE_QUBITS = 9
 DENSE_WORK = 2.5e8
@@ -206,12 +205,15 @@ def proven(source: Circuit, output: Circuit, proof: Proof, *, device: Device, to
     ------
     ProofError
     """
-    verdict = check_proof(source, output, proof, device=device, tolerance=_window_tolerance(tolerance))
+    slack = _window_tolerance(native_set(device.gate_set, tolerance=tolerance), tolerance)
+    verdict = check_proof(source, output, proof, device=device, tolerance=slack)
     return _second_opinion(source, output, verdict)
 
 
-def _window_tolerance(tolerance: float) -> float:
-    return ROUNDING + USES_OF_TOLERANCE * tolerance
+def _window_tolerance(native: NativeSet, tolerance: float) -> float:
+    """Return how far off a window may be: by its class, and by the pulses of the runs around each entangler."""
+    deepest = max((len(entangler.entangler.reach) - 1 for entangler in native.entanglers), default=0)
+    return ROUNDING + (1 + 6 * (deepest + 1)) * tolerance
 
 
 def _compile_program(
@@ -228,7 +230,8 @@ def _compile_program(
     threaded = thread_program(source, draft, chain)
     clock.start("prove")
     proofs = tuple(Proof(part.steps) for part in threaded.drafts)
-    verdict = check_program(source, threaded.program, proofs, device=device, tolerance=_window_tolerance(tolerance))
+    slack = _window_tolerance(draft.native, tolerance)
+    verdict = check_program(source, threaded.program, proofs, device=device, tolerance=slack)
     clock.start("count")
     costs, bounds = [], []
     for circuit, part in zip(source.circuits(), threaded.drafts, strict=True):

@@ -137,8 +137,8 @@ def swap_bound(
 
 EMBEDDED = "that many sets of gates one after the other, none of which embeds in the coupling graph"
 COUNTED = (
-    "sets of gates one after the other: pairs that meet in each, less the most that are adjacent at once, by the most "
-    "that one swap makes adjacent anew"
+    "sets of gates one after the other: pairs that meet in each, or partners of one wire, less the most that are "
+    "adjacent at once, by the most that one swap makes adjacent anew"
 )
 MOVED = "distances to go from the given placement for pairs without a wire in common, two steps a swap"
 
@@ -166,22 +166,29 @@ def _counted(graph: Graph, order: Order, active: NDArray[np.bool_], crossings: i
     # Pairs adjacent at once: no more than the edges, nor than the largest degrees of so many qubits give.
     wires = len(np.unique(pairs))
     at_once = min(len(edges), int(np.sort(degree)[::-1][:wires].sum()) // 2)
-    codes = pairs.min(axis=1).astype(np.int64) * order.n + pairs.max(axis=1)
-    best = -(-max(len(np.unique(codes)) - at_once, 0) // gain)
+    most = int(degree.max())
+    codes = np.full(len(order.kind), -1, dtype=np.int64)
+    codes[gates] = pairs.min(axis=1).astype(np.int64) * order.n + pairs.max(axis=1)
+
+    def needed(of_entries: NDArray[np.int64]) -> int:
+        distinct = np.unique(of_entries)
+        distinct = distinct[distinct >= 0]
+        by_pairs = -(-max(len(distinct) - at_once, 0) // gain)
+        # A wire that moves meets the neighbours of its new place, but for the wire that it has moved past.
+        partners = np.bincount(np.concatenate(np.divmod(distinct, order.n)), minlength=order.n)
+        by_star = -(-max(int(partners.max(initial=0)) - most, 0) // max(most - 1, 1))
+        return max(by_pairs, by_star)
+
+    best = needed(codes)
     if not best:
         return 0
-    of_entry = np.full(len(order.kind), -1, dtype=np.int64)
-    of_entry[gates] = codes
     for multiple in CHUNKS:
         size = multiple * len(edges)
         if size >= len(pairs):
             break
-        total = 0
-        for chunk in _chunks(order, size):
-            total += -(-max(len(np.unique(of_entry[chunk])) - at_once, 0) // gain)
-        best = max(best, total)
+        best = max(best, sum(needed(codes[chunk]) for chunk in _chunks(order, size)))
     # An exchange by renaming may bring new neighbours to both wires at once.
-    return max(best - crossings * -(-2 * int(degree.max()) // gain), 0)
+    return max(best - crossings * -(-2 * most // min(gain, max(most - 1, 1))), 0)
 
 
 def _chunks(order: Order, size: int) -> list[list[int]]:
