@@ -17,7 +17,7 @@ from scipy.sparse import coo_array
 from scipy.sparse.csgraph import connected_components
 
 from gatewright.errors import DisconnectedError, InputError
-from gatewright.mapping import _kernels
+from gatewright.mapping import _places
 from gatewright.mapping.routing import Graph, Operations, Router
 
 __all__ = ["TRIALS", "embed", "place"]
@@ -122,7 +122,7 @@ def place(
 
     joint = operations.joint
     whole = Router(graph, operations.take(joint))
-    first = np.argsort(whole.layer, kind="stable")[:PREFIX]
+    first = np.arange(min(len(joint), PREFIX))
     short = len(first) == len(joint)
     router = whole if short else Router(graph, operations.take(joint[np.sort(first)]))
     improved: list[tuple[float, int, Integers]] = []
@@ -433,7 +433,7 @@ def embed(
             appeal += 8 * expense
         found = fixed.copy()
         arrays = (begin, peers.astype(np.int32), graph.starts, graph.neighbours, graph.distance, component, home)
-        outcome = _kernels.embed(*arrays, appeal, found, work, options, budget)
+        outcome = _places.embed(*arrays, appeal, found, work, options, budget)
         if outcome >= 0:
             found[(degrees == 0) & (fixed < 0)] = -1
             return found
