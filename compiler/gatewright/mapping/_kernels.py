@@ -17,13 +17,14 @@ from numba import njit
 
 __all__ = [
     "CLOCK", "CURRENT", "DONE", "EVENTS", "GROUP", "HEAD", "LEFT", "MATE", "OCCUPANT", "OTHER", "PENDING", "POSITION", "ROWS",
-    "SHAKEN", "SPOT", "STACK", "STALE", "TOUCHED", "WAITING", "WAITS", "advance", "survey", "sweep", "weave",
+    "SHAKEN", "SPOT", "STACK", "STALE", "SWAPPED", "TOUCHED", "WAITING", "WAITS", "advance", "survey", "sweep", "weave",
 ]  # fmt: skip
 
 #: Rows of the integer state: per wire its qubit; per qubit its wire; per wire the head of its line, the operations left
-#: in the head's group, its place in the list of waiting wires; that list; per qubit the other end of its open window;
-#: per wire whether its outlook is stale, and whether it is on the stack; the wires to be looked at again; the stack.
-POSITION, OCCUPANT, HEAD, LEFT, SPOT, WAITS, MATE, STALE, PENDING, TOUCHED, STACK, ROWS = range(12)
+#: in the head's group, its place in the list of waiting wires; that list; per qubit the other end of its open window,
+#: and with which other it was swapped last, if nothing came after; per wire whether its outlook is stale, and whether it
+#: is on the stack; the wires to be looked at again; the stack.
+POSITION, OCCUPANT, HEAD, LEFT, SPOT, WAITS, MATE, SWAPPED, STALE, PENDING, TOUCHED, STACK, ROWS = range(13)
 #: Rows of the float state: what a qubit's open window costs, what it would cost with its wires exchanged, the time.
 CURRENT, OTHER, CLOCK = range(3)
 #: Places in the counts.
@@ -38,12 +39,7 @@ _ONE = np.int64(1)
 _STATE = "int32[:, ::1], int64[::1], float64[:, ::1], int64[::1]"
 
 
-@njit(
-    "float64(int32[:, ::1], int32[::1], int32[::1], int32[::1], float32[:, ::1], int32[::1], int32[::1],"
-    "int16[:, ::1], float32[::1], int64, int64[::1], " + _STATE + ")",
-    cache=True,
-    nogil=True,
-)
+@njit(inline="always")
 def advance(
     lane, wires, offsets, entries, costs, starts, neighbours, distance, weight, top, events,
     state, done, tally, counts,
@@ -87,6 +83,10 @@ def advance(
                         state[SPOT, x] = counts[WAITING]
                         state[WAITS, counts[WAITING]] = x
                         counts[WAITING] += 1
+                        if state[STALE, x] != 2:
+                            state[STALE, x] = 2
+                            state[TOUCHED, counts[SHAKEN]] = x
+                            counts[SHAKEN] += 1
                     e += 1
                     continue
                 plain = costs[g, 0]
@@ -103,6 +103,8 @@ def advance(
                         crossed = min(most, costs[g, 0] + tally[OTHER, p])
                 state[MATE, p] = q
                 state[MATE, q] = p
+                state[SWAPPED, p] = -1
+                state[SWAPPED, q] = -1
                 tally[CURRENT, p] = plain
                 tally[CURRENT, q] = plain
                 tally[OTHER, p] = crossed
@@ -161,18 +163,13 @@ def advance(
     return spent
 
 
-@njit(
-    "float64(int32[:, ::1], int32[::1], int32[::1], int16[:, ::1], float32[:, ::1], float32[::1], float64[::1], int64,"
-    "int32[:, ::1], int64[::1])",
-    cache=True,
-    nogil=True,
-)
+@njit(inline="always")
 def survey(lane, starts, neighbours, distance, ahead, rise, pull, w, state, done):
     """Fill `pull` on the edges of wire w: what moving w along each changes in the weighted sum of its distances ahead.
 
     Returns that sum, of distances beyond 1, as it is; a gate is as deep as it is on the later of its wires.
     """
-    depths = ahead.shape[0]
+    depths = ahead.shape[1]
     p = state[POSITION, w]
     first = starts[p]
     last = starts[p + 1]
@@ -332,7 +329,7 @@ def sweep(
                         share = swap
                         if state[MATE, p] == q and state[MATE, q] == p:
                             share = tally[OTHER, p] - tally[CURRENT, p]
-                            if tally[OTHER, p] == 0.0:
+                            if state[SWAPPED, p] == q:
                                 continue  # would only undo the swap just made
                         score = pull[i] + pull[twin[i]] + terms[0] * share * weight[i]
                         if moved[2 + p] == counts[DONE] or moved[2 + q] == counts[DONE]:
@@ -374,6 +371,8 @@ def sweep(
             plain = tally[OTHER, p]
         state[MATE, p] = q
         state[MATE, q] = p
+        state[SWAPPED, p] = q
+        state[SWAPPED, q] = p
         tally[CURRENT, p] = plain
         tally[CURRENT, q] = plain
         tally[OTHER, p] = crossed

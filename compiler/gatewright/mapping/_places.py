@@ -10,22 +10,26 @@ from __future__ import annotations
 import numpy as np
 from numba import njit
 
-__all__ = ["embed"]
+__all__ = ["anneal", "embed"]
+
+_MULTIPLIER = np.uint64(0x2545F4914F6CDD1D)  # xorshift64*: Vigna, ACM Trans. Math. Softw. 42, 30 (2016)
+_S12, _S20, _S25, _S27, _S40 = np.uint64(12), np.uint64(20), np.uint64(25), np.uint64(27), np.uint64(40)
+_LOW = np.uint64((1 << 20) - 1)
 
 
 @njit(
     "int64(int32[::1], int32[::1], int32[::1], int32[::1], int16[:, ::1], int32[::1], int32[::1], float64[::1],"
-    "int32[::1], int32[:, ::1], int32[:, ::1], int64)",
+    "int32[::1], int32[::1], int32[:, ::1], int32[:, ::1], float64[::1], int64)",
     cache=True,
     nogil=True,
 )
 def embed(
-    begin, peers, starts, neighbours, distance, component, home, appeal, place, work, options, budget,
+    begin, peers, starts, neighbours, distance, component, home, appeal, hint, place, work, options, keys, budget,
 ):  # fmt: skip
     """Seek a qubit for each wire so that all peers are adjacent; `place` holds the pinned wires, else -1.
 
-    A wire may stand on qubits whose component is its `home`; those with few free neighbours and a low `appeal` are
-    tried first, as many as `options` has room for. Returns the number of tests spent on success, -1 when the options
+    A wire may stand on qubits whose component is its `home`; those near its `hint` (where that is not -1), with few
+    free neighbours and a low `appeal` are tried first, as many as `options` has room for. Returns the number of tests spent on success, -1 when the options
     are exhausted, -2 when the budget is.
     """
     n = place.shape[0]
@@ -81,17 +85,22 @@ def embed(
                         if place[peers[i]] >= 0 and distance[q, place[peers[i]]] != 1:
                             fits = False
                 if fits:
+                    key = free[q] + appeal[q]
+                    if hint[best] >= 0:
+                        key += 16.0 * distance[q, hint[best]]
                     k = found
                     if found < options.shape[1]:
                         found += 1
                     else:
                         k -= 1
-                        if free[options[depth, k]] + appeal[options[depth, k]] <= free[q] + appeal[q]:
+                        if keys[k] <= key:
                             continue
-                    while k > 0 and free[options[depth, k - 1]] + appeal[options[depth, k - 1]] > free[q] + appeal[q]:
+                    while k > 0 and keys[k - 1] > key:
                         options[depth, k] = options[depth, k - 1]
+                        keys[k] = keys[k - 1]
                         k -= 1
                     options[depth, k] = q
+                    keys[k] = key
             count[depth] = found
         w = chosen[depth]
         sign = 1
@@ -122,3 +131,60 @@ def embed(
             depth += 1
             count[depth] = -1
     return -1
+
+
+@njit(
+    "float64(int32[::1], int32[::1], float64[::1], int32[::1], int32[::1], int16[:, ::1], int32[::1], int32[::1],"
+    "int32[::1], float64[::1], float64[::1], int32[::1], int32[::1], int64, float64, float64, uint64)",
+    cache=True,
+    nogil=True,
+)
+def anneal(
+    begin, peers, weight, starts, neighbours, distance, component, home, movable, load, expense, place, occupant,
+    moves, hot, cold, random,
+):  # fmt: skip
+    """Anneal `place` by exchanges; the energy is the weighted sum of the peers' distances, and of load times expense.
+
+    Half of the moves go beside a peer, the others to a neighbour. `movable` lists the wires that may move;
+    `occupant` has -2 where nothing may come. Returns the change of the energy.
+    """
+    cooling = (cold / hot) ** (1.0 / max(moves, 1))
+    heat = hot
+    total = 0.0
+    for _ in range(moves):
+        heat *= cooling
+        random ^= random >> _S12
+        random ^= random << _S25
+        random ^= random >> _S27
+        bits = random * _MULTIPLIER
+        w = movable[np.int64(bits & _LOW) % movable.shape[0]]
+        p = place[w]
+        r = np.int64((bits >> _S20) & _LOW)
+        near = p
+        if r & 1 and begin[w + 1] > begin[w]:
+            near = place[peers[begin[w] + (r >> 1) % (begin[w + 1] - begin[w])]]
+        if starts[near + 1] == starts[near]:
+            continue
+        q = neighbours[starts[near] + (r >> 9) % (starts[near + 1] - starts[near])]
+        v = occupant[q]
+        if q == p or v == -2 or component[q] != home[w]:
+            continue
+        change = load[w] * (expense[q] - expense[p])
+        for i in range(begin[w], begin[w + 1]):
+            x = peers[i]
+            if x != v:
+                change += weight[i] * (distance[q, place[x]] - distance[p, place[x]])
+        if v >= 0:
+            change += load[v] * (expense[p] - expense[q])
+            for i in range(begin[v], begin[v + 1]):
+                x = peers[i]
+                if x != w:
+                    change += weight[i] * (distance[p, place[x]] - distance[q, place[x]])
+        if change <= 0.0 or change < -heat * np.log((np.int64(bits >> _S40) + 1) / 16777216.0):
+            place[w] = q
+            occupant[q] = w
+            occupant[p] = v
+            if v >= 0:
+                place[v] = p
+            total += change
+    return total

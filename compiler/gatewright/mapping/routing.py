@@ -31,6 +31,9 @@ AHEAD = np.tile(np.concatenate([[1.0], 0.25 * 0.6 ** np.arange(5)]), (2, 1)).ast
 #: last gate ran, the paper's decay: enough to break ties; whether the gate is served first whose qubits are free
 #: first; what a layer of waiting weighs.
 TERMS = (0.15, 0.001, 0.0, 0.0)
+#: Of a state in the beam: what a gate done is worth, an entangler costs; levels beyond the first that ends; the weight of
+#: time; the weight of a swap when results are compared.
+BEAM = (0.5, 0.0, 0.0, 0.0, 1.0)
 NO_SCRIPT = np.zeros(0, dtype=np.int64)
 #: Distance of qubits without a path.
 FAR = 30_000
@@ -407,6 +410,66 @@ class Router:
         return Pass(state[POSITION, : g.n].copy(), int(swaps), float(cost), float(tally[CLOCK].max()), events)
 
 
+    def search(
+        self, starts: list[Integers], *, width: int, limit: int, terms: tuple[float, ...] = BEAM, backwards: bool = False
+    ) -> tuple[Integers, NDArray[np.int64]] | None:
+        """Search by a beam from several starts at once; return the start and the swaps of the best sequence found.
+
+        None if there is none of fewer than `limit` swaps.
+        """
+        from gatewright.mapping._beam import beam
+
+        g, lines, n_all = self.graph, self.lines(backwards), self.operations.n_all
+        room = max(3 * width, len(starts))
+        made = [self.state(lines, start) for start in starts]
+        states, dones = np.zeros((2, room, ROWS, n_all), dtype=np.int32), np.zeros((2, room, n_all), dtype=np.int64)
+        states[:, :, STALE] = 2
+        tallies, counters = np.zeros((2, room, 3, n_all)), np.zeros((2, room, 4), dtype=np.int64)
+        for k, (state, done, tally, counts) in enumerate(made):
+            states[0, k], dones[0, k], tallies[0, k], counters[0, k] = state, done, tally, counts
+        fan = 8
+        parents, chosen = np.zeros((limit + 1, room), dtype=np.int32), np.zeros((limit + 1, room), dtype=np.int32)
+        level, number, _ = beam(
+            lines.lane,
+            lines.wires,
+            lines.offsets,
+            lines.entries,
+            lines.costs,
+            g.starts,
+            g.neighbours,
+            g.twin,
+            g.distance,
+            g.weight,
+            self.ahead,
+            self.rise,
+            np.array(terms),
+            self.pull.copy(),
+            states,
+            dones,
+            tallies,
+            counters,
+            NO_SCRIPT,
+            parents,
+            chosen,
+            np.zeros((2, 2 * room)),
+            np.zeros((2, room), dtype=np.uint64),
+            np.zeros((room, fan), dtype=np.int32),
+            np.zeros((room + 1, max(fan, room))),
+            np.zeros(1 << (2 * width * (limit + 1)).bit_length(), dtype=np.uint64),
+            len(starts),
+            width,
+        )
+        if number < 0:
+            return None
+        script = np.empty(level, dtype=np.int64)
+        while level > 0:
+            edge = chosen[level, number]
+            script[level - 1] = g.neighbours[g.twin[edge]] * np.int64(g.n) + g.neighbours[edge]
+            number = parents[level, number]
+            level -= 1
+        return starts[number], script
+
+
 def run_pass(graph: Graph, operations: Operations, start: Integers, *, seed: int = 0) -> Pass:
     """Make one recorded pass forwards; see `Router`."""
     return Router(graph, operations).run(start, seed=seed, record=True)
@@ -431,7 +494,14 @@ class Routing:
     swaps: Integers
 
 
-def route(graph: Graph, operations: Operations, initial: ArrayLike, *, seed: int = 0) -> Routing:
+def route(
+    graph: Graph,
+    operations: Operations,
+    initial: ArrayLike,
+    *,
+    seed: int = 0,
+    script: NDArray[np.int64] = NO_SCRIPT,
+) -> Routing:
     """Insert swaps from the placement `initial` on.
 
     Operations that are not coupled come as late as their successors allow, so that a swap stands right beside the gate
@@ -445,6 +515,8 @@ def route(graph: Graph, operations: Operations, initial: ArrayLike, *, seed: int
         Qubit of each wire, a permutation.
     seed : int
         For ties; the same seed gives the same routing, in any thread.
+    script : ndarray of int64
+        Swaps to make first, in order, coded ``p * n + q``.
 
     Returns
     -------
@@ -482,7 +554,7 @@ def route(graph: Graph, operations: Operations, initial: ArrayLike, *, seed: int
             found=f"none from physical qubit {start[a]} to {start[b]}",
             hint="try another placement, or leave it to the compiler",
         )
-    made = router.run(start, seed=seed, record=True)
+    made = router.run(start, seed=seed, record=True, script=script)
     # What is on one wire only, or on bits, is woven in afterwards.
     is_swap = made.events < 0
     swaps = np.stack(np.divmod(-1 - made.events[is_swap], graph.n), axis=1).astype(np.int32)
