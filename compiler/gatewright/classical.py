@@ -49,7 +49,7 @@ Expression: TypeAlias = Literal | Name | Bits | Operation
 _BINDING = {
     operator: strength
     for strength, operators in enumerate(
-        ("||", "&&", "|", "^", "&", "== !=", "< <= > >=", "<< >>", "++", "+ -", "* / %", "**"), start=1
+        ("||", "&&", "|", "^", "&", "== !=", "< <= > >=", "<< >>", "+ -", "* / %", "**"), start=1
     )
     for operator in operators.split()
 }

@@ -135,13 +135,14 @@ def _compiled(options: argparse.Namespace) -> Result | ProgramResult:
         strict=False,
     )
     device.require_room(source.circuit.n_qubits)
+    given = source.circuit.bind(dict(options.set)) if options.set else source.circuit
     # What is wrong with the input has been said before this: the kernels take longer to load than all of that.
     _prepare()
     from gatewright.pipeline import compile as compile_source
 
     with _progress() as progress:
         return compile_source(
-            source.circuit,
+            given,
             device,
             seed=options.seed,
             tolerance=options.tolerance,
