@@ -93,9 +93,8 @@ def test_an_extern_function_may_be_declared() -> None:
 
 
 def test_outputs_are_kept() -> None:
-    circuit = read(
-        f"{V3}qubit[2] q; output bit[2] c; output float angle_of_q; angle_of_q = 0.5; rx(angle_of_q) q[0]; c = measure q;"
-    )
+    outputs = "output bit[2] c; output float angle_of_q;"
+    circuit = read(f"{V3}qubit[2] q; {outputs} angle_of_q = 0.5; rx(angle_of_q) q[0]; c = measure q;")
     assert circuit.bit_registers == (("c", 2),)
     assert [op.bit for op in circuit if op.name == "measure"] == [0, 1]
 

@@ -159,8 +159,10 @@ def beam(
             for k in range(fan):
                 hopes[c, k] = 1e300
             if counts[WAITING] == 0:
-                goal = terms[4] * level + terms[1] * spent + terms[3] * late if terms[3] > 0.0 else (
-                    terms[4] * level + terms[1] * spent
+                goal = (
+                    terms[4] * level + terms[1] * spent + terms[3] * late
+                    if terms[3] > 0.0
+                    else (terms[4] * level + terms[1] * spent)
                 )
                 if goal < found_value - 1e-9:
                     found_value = goal

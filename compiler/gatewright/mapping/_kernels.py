@@ -394,8 +394,7 @@ def sweep(
 
 
 @njit(
-    "int64(int64[::1], int32[::1], int32[::1], int32[::1], int32[::1], int32[::1], uint8[::1], int64[::1],"
-    "int64[::1])",
+    "int64(int64[::1], int32[::1], int32[::1], int32[::1], int32[::1], int32[::1], uint8[::1], int64[::1],int64[::1])",
     cache=True,
     nogil=True,
 )

@@ -409,9 +409,14 @@ class Router:
         )
         return Pass(state[POSITION, : g.n].copy(), int(swaps), float(cost), float(tally[CLOCK].max()), events)
 
-
     def search(
-        self, starts: list[Integers], *, width: int, limit: int, terms: tuple[float, ...] = BEAM, backwards: bool = False
+        self,
+        starts: list[Integers],
+        *,
+        width: int,
+        limit: int,
+        terms: tuple[float, ...] = BEAM,
+        backwards: bool = False,
     ) -> tuple[Integers, NDArray[np.int64]] | None:
         """Search by a beam from several starts at once; return the start and the swaps of the best sequence found.
 
