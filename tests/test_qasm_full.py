@@ -387,7 +387,7 @@ REFUSED = [
     ("def f(bit c) -> int { if (c) { return 1; } return 2; } bit c; qubit q;\nrz(f(c)) q;", 3, 23, UnsupportedError, "'return'"),
     ("array[int, 2] a = {1, 2}; bit c;\nif (c) { a[0] = 3; }", 4, 10, UnsupportedError, "an element"),
     ("qubit q;\n  box[1us] { x q; }", 4, 3, UnsupportedError, "a box of a stated duration"),
-    ("qubit q; for int i in [0:1] { delay[1dt] q; }", 3, 37, UnsupportedError, "'dt'"),
+    ("qubit q; for int i in [0:1] { delay[1dt] q; }", 3, 36, UnsupportedError, "'dt'"),
     ("complex a = 1im;", 3, 1, UnsupportedError, "complex"),
     ("qubit[3] q; x q[0:3];", 3, 15, QasmError, "out of range"),
     ("qubit[3] q; x q[{0, 3}];", 3, 17, QasmError, "from -3 to 2"),

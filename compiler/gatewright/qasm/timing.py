@@ -24,7 +24,7 @@ class Timing(Control):
     def _DurationLiteral(self, node: Any, real: bool) -> Value:
         unit = node.unit.name
         if unit not in _UNITS:
-            raise self.unsupported(f"a duration in '{unit}', which this reader cannot tell in nanoseconds", node)
+            raise self.unsupported(f"a duration in '{unit}'", node)
         return Value(Kind("duration"), float(node.value) * _UNITS[unit])
 
     def do_DelayInstruction(self, node: Any) -> None:
