@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+import math
+from collections.abc import Iterable
+
 import numpy as np
-from numpy.typing import ArrayLike
+from numpy.typing import ArrayLike, NDArray
 
 from gatewright.errors import CircuitError
 
@@ -11,6 +14,25 @@ __all__ = ["angle_texts"]
 
 _DIVISORS = (*range(1, 65), *(2**k for k in range(7, 21)))
 _LARGEST_FACTOR = 1024
+
+#: So many angles tell whether they repeat.
+_SAMPLE = 1024
+
+
+def _common_multiples(divisors: Iterable[int], limit: int) -> tuple[int, ...]:
+    """Return a few numbers below a limit such that each divisor divides one of them."""
+    made: list[int] = []
+    for divisor in divisors:
+        for k, known in enumerate(made):
+            if math.lcm(known, divisor) < limit:
+                made[k] = math.lcm(known, divisor)
+                break
+        else:
+            made.append(divisor)
+    return tuple(made)
+
+
+_COMMON = _common_multiples(_DIVISORS, 2**40)
 
 
 def angle_texts(values: ArrayLike) -> list[str]:
@@ -29,18 +51,27 @@ def angle_texts(values: ArrayLike) -> list[str]:
     given = np.asarray(values, dtype=np.float64).ravel()
     if not np.isfinite(given).all():
         raise CircuitError("an angle is not finite", required="finite angles", found=str(given[~np.isfinite(given)][0]))
+    bits = given.view(np.int64)
+    if len(np.unique(bits[:_SAMPLE])) > 0.9 * min(len(bits), _SAMPLE):
+        return _texts(given)
     # Unique by bits, which keeps -0.0 apart from 0.0.
-    bits, inverse = np.unique(given.view(np.int64), return_inverse=True)
-    unique = bits.view(np.float64)
-    texts = list(map(repr, unique.tolist()))
-    size = np.abs(unique)
+    unique, inverse = np.unique(bits, return_inverse=True)
+    texts = _texts(unique.view(np.float64))
+    return [texts[k] for k in inverse.tolist()]
+
+
+def _texts(angles: NDArray[np.float64]) -> list[str]:
+    """Return the text of each angle, all of them finite."""
+    texts = list(map(repr, angles.tolist()))
+    size = np.abs(angles)
     for place in np.flatnonzero((size < 1e-3) | (size > 1e15)).tolist():
         texts[place] = _decimal(texts[place])
     rest = np.flatnonzero((size > 0) & (size <= _LARGEST_FACTOR * np.pi))
-    angles, turns = unique[rest], unique[rest] / np.pi
+    rest = rest[_near_fractions(angles[rest] / np.pi)]
+    left, turns = angles[rest], angles[rest] / np.pi
     for divisor in _DIVISORS:
         factor = np.rint(turns * divisor)
-        same = factor * np.pi / divisor == angles
+        same = factor * np.pi / divisor == left
         if not same.any():
             continue
         # In lowest terms only: 13*pi/13 is the neighbour of pi, and no better than its decimals.
@@ -49,8 +80,17 @@ def angle_texts(values: ArrayLike) -> list[str]:
         for place, k in zip(rest[same].tolist(), factor[same].astype(int).tolist(), strict=True):
             number = {1: "pi", -1: "-pi"}.get(k, f"{k}*pi")
             texts[place] = number if divisor == 1 else f"{number}/{divisor}"
-        rest, angles, turns = rest[~same], angles[~same], turns[~same]
-    return [texts[k] for k in inverse.tolist()]
+        rest, left, turns = rest[~same], left[~same], turns[~same]
+    return texts
+
+
+def _near_fractions(turns: NDArray[np.float64]) -> NDArray[np.bool_]:
+    """Return which numbers may be fractions with one of the divisors, for rounding; few others are among them."""
+    near = np.zeros(len(turns), dtype=np.bool_)
+    for common in _COMMON:
+        scaled = np.abs(turns * common)
+        near |= np.abs(scaled - np.rint(scaled)) <= scaled * 2.0**-50
+    return near
 
 
 def _decimal(text: str) -> str:

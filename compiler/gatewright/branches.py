@@ -97,6 +97,15 @@ def _leaves(block: Block) -> list[Leave]:
     return found
 
 
+def _stops(block: Block) -> list[Statement | None]:
+    """Return the statement behind each circuit, past assignments with nothing but empty circuits behind them."""
+    stops: list[Statement | None] = [*block.statements, None]
+    for k in range(len(block.statements) - 1, -1, -1):
+        if isinstance(stops[k], Assign) and not len(block.circuits[k + 1]):
+            stops[k] = stops[k + 1]
+    return stops
+
+
 class _Threader:
     """Compiles blocks from a given placement, to a given one or wherever they end."""
 
@@ -118,12 +127,16 @@ class _Threader:
         statements: list[Statement] = []
         drafts: list[Draft] = []
         place, gone = start, False
-        for circuit, statement in zip(block.circuits, (*block.statements, None), strict=True):
-            wanted = target if statement is None and not gone else None
-            if isinstance(statement, Leave):
-                wanted = self.begin if statement.word == "end" else loop
-            elif isinstance(statement, While):
-                wanted = self.before(circuit, statement, place)
+        # An empty circuit behind an assignment stays empty: swaps come before the assignment, where a text that is
+        # read again has room for them.
+        stops = _stops(block)
+        for k, (circuit, statement) in enumerate(zip(block.circuits, (*block.statements, None), strict=True)):
+            stop = stops[k] if k == 0 or stops[k - 1] is not stops[k] else Assign
+            wanted = target if stop is None and not gone else None
+            if isinstance(stop, Leave):
+                wanted = self.begin if stop.word == "end" else loop
+            elif isinstance(stop, While):
+                wanted = self.before(circuit, stop, place)
             made = self.circuit(circuit, place, wanted)
             circuits.append(made.circuit)
             drafts.append(made)

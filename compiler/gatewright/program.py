@@ -15,8 +15,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit, Piece, assemble
-from gatewright.classical import Bits, Expression, Literal, Name, Operation
-from gatewright.gates import UNITARY
+from gatewright.classical import Bits, Expression, Literal, Name, Operation, leaves
+from gatewright.gates import MEASURE, UNITARY
 from gatewright.parameters import Parameter, checked_values
 
 __all__ = ["Assign", "Block", "If", "Leave", "Mark", "Program", "Statement", "While", "split_at_marks"]
@@ -204,7 +204,7 @@ class Mark:
 
 
 def split_at_marks(circuit: Circuit, rows: Sequence[int], marks: Sequence[Mark]) -> Block:
-    """Return the block that a flat circuit with marks stands for.
+    """Return the block that a flat circuit with marks stands for; neighbours with one condition become one ``if``.
 
     Parameters
     ----------
@@ -215,6 +215,14 @@ def split_at_marks(circuit: Circuit, rows: Sequence[int], marks: Sequence[Mark])
     marks : sequence of Mark
         What each is; well nested.
     """
+    dropped = _between_equal_conditions(circuit, rows, marks)
+    if dropped:
+        marks = [mark for k, mark in enumerate(marks) if k not in dropped]
+        kept = np.ones(len(circuit), dtype=bool)
+        kept[[rows[k] for k in dropped]] = False
+        places = np.cumsum(kept) - 1
+        rows = [int(places[row]) for k, row in enumerate(rows) if k not in dropped]
+        circuit = circuit.take(np.flatnonzero(kept))
     edges = [-1, *rows, len(circuit)]
     # Blocks that are open, each with its mark, circuits and statements; the outermost first.
     open_blocks: list[tuple[Mark | None, list[Circuit], list[Statement]]] = [(None, [], [])]
@@ -244,3 +252,25 @@ def split_at_marks(circuit: Circuit, rows: Sequence[int], marks: Sequence[Mark])
         whole = While(condition, block) if opened.word == "while" else If(condition, finished.pop(), block)
         open_blocks[-1][2].append(whole)
     return Block(tuple(open_blocks[0][1]), tuple(open_blocks[0][2]))
+
+
+def _between_equal_conditions(circuit: Circuit, rows: Sequence[int], marks: Sequence[Mark]) -> set[int]:
+    """Return the marks between an ``if`` of gates alone and a next one on the same condition, if it still holds.
+
+    OpenQASM 2 writes a condition before every single operation.
+    """
+    dropped: set[int] = set()
+    words = [mark.word for mark in marks]
+    measured = circuit.is_named(MEASURE.name)
+    for k in range(len(marks) - 3):
+        if words[k : k + 4] != ["if", "else", "close", "if"] or marks[k].content != marks[k + 3].content:
+            continue
+        if rows[k + 3] != rows[k + 1] + 2:  # something in the other branch, or between the two
+            continue
+        inside = np.arange(rows[k] + 1, rows[k + 1])
+        bits = set(circuit.link[inside[measured[inside]]].tolist())
+        condition = marks[k].content
+        assert isinstance(condition, Literal | Name | Bits | Operation)
+        if all(bits.isdisjoint(leaf.indices) for leaf in leaves(condition) if isinstance(leaf, Bits)):
+            dropped.update((k + 1, k + 2, k + 3))
+    return dropped

@@ -17,7 +17,7 @@ from gatewright.program import Program
 from gatewright.proof.file import ProofFile, decode_proof, encode_proof
 from gatewright.proof.windows import Proof
 
-__all__ = ["encode_program_proof", "read_program_proof"]
+__all__ = ["decode_program_proof", "encode_program_proof", "read_program_proof"]
 
 FORMAT = "gatewright-program-proof"
 FORMAT_VERSION = 1
@@ -59,12 +59,13 @@ def read_program_proof(path: str | Path) -> tuple[ProofFile, ...]:
     except OSError as error:
         raise ProofFileError(f"cannot read the proof file: {error.strerror}", where=where) from None
     try:
-        return _decode(data)
+        return decode_program_proof(data)
     except ProofFileError as error:
         raise error.located(where=where) from None
 
 
-def _decode(data: bytes) -> tuple[ProofFile, ...]:
+def decode_program_proof(data: bytes) -> tuple[ProofFile, ...]:
+    """Decode the bytes of a program's proof file; see `read_program_proof`."""
     try:
         with zipfile.ZipFile(io.BytesIO(data)) as archive:
             members = {info.filename: info for info in archive.infolist()}

@@ -11,7 +11,7 @@ from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
-from gatewright.classical import Bits, Expression, Literal, Name, Operation
+from gatewright.classical import Bits, Expression, Literal, Name, Operation, depth_of
 from gatewright.errors import shorten
 from gatewright.program import Assign, Leave, Mark
 from gatewright.qasm.evaluation import STATEMENT, Pending, Places, Variable
@@ -36,6 +36,11 @@ class Return:
 class End(Exception):
     """The end of the program."""
 
+
+#: Levels of an expression that is kept for the run.
+MAX_LEVELS = 200
+
+LEAVING = ("BreakStatement", "ContinueStatement", "EndStatement")
 
 #: How a block is left: ``break``, ``continue``, a return, or ``gone`` where no path goes on behind it.
 Left = str | Return | None
@@ -67,6 +72,9 @@ class Control(Operations):
         if self.sink is not None:
             raise self.unsupported("a gate definition that depends on the run", node)
         self.charge(STATEMENT, node)
+        if depth_of(content.value if isinstance(content, Assign) else content) > MAX_LEVELS:
+            required = f"at most {MAX_LEVELS} operations in each other"
+            raise self.error("an expression that depends on the run is too long", node, required=required)
         self.reader.mark(Mark(word, content))
 
     def lasting(self, value: Value) -> bool:
@@ -234,8 +242,7 @@ class Control(Operations):
             return True
         branches = [part for part in _parts(node.block) if type(part).__name__ == "BranchingStatement"]
         return any(
-            is_open(part.condition)
-            and any(type(inner).__name__ in ("BreakStatement", "EndStatement") for inner in _parts([part]))
+            is_open(part.condition) and any(type(inner).__name__ in LEAVING for inner in _parts([part]))
             for part in branches
         )
 

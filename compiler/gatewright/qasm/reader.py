@@ -29,6 +29,7 @@ from gatewright.qasm.columns import MAX_OPERANDS, circuit
 from gatewright.qasm.definitions import Definition, equals, expand, same_gate
 from gatewright.qasm.lanes import CONST, EITHER, FAST, beyond, lane, leading_word
 from gatewright.qasm.library import BUILT_IN, LIBRARIES, LIBRARY_FILES
+from gatewright.qasm.scanner import Scanner, pays
 from gatewright.qasm.scope import MAX_QUBITS, NAME, UNSUPPORTED, Scope, split
 from gatewright.qasm.source import Source
 
@@ -51,6 +52,7 @@ _REGISTER = re.compile(rf"(qreg|creg)\s+({NAME})\s*(?:\[([^][]*)\])?")
 _DECLARATION = re.compile(rf"(qubit|bit)\s*(?:\[([^][]*)\])?\s*({NAME})\s*(?:=(.*))?", re.DOTALL)
 _OPAQUE = re.compile(rf"opaque\s+({NAME})\s*(?:\([^()]*\))?\s*[^()]*")
 _BLOCK = re.compile(r"\s*gate\b")
+_NOTES = re.compile(r"(?:\s*(?:@|#|pragma\b)[^\n]*)++")
 _MEASURE = re.compile(r"measure\b(.*)", re.DOTALL)
 _IF = re.compile(r"if\s*\(\s*([^\s=()]+)\s*==\s*([^=()]*?)\s*\)\s*(.*)", re.DOTALL)
 _ARROW = re.compile(r"measure\b(.*)->(.*)", re.DOTALL)
@@ -154,13 +156,16 @@ class Reader:
         """Read all statements and put the columns together."""
         order: list[int] = []
         known = self.statements.get
-        for piece in self.pieces:
+        scanner = Scanner(self) if not self.only_full and pays(self.source.text) else None
+        while (piece := next(self.pieces, None)) is not None:
             number = known(piece)
             if number is None:
                 try:
                     # What is plainly for the full lane is spared the complaint of the fast one.
                     full = self.full
-                    plain = full is None or not (":" in piece or (full.globals and full.concerns(piece)))
+                    plain = "++" not in piece and (
+                        full is None or not (":" in piece or (full.globals and full.concerns(piece)))
+                    )
                     number = self.flat_call(piece) if plain and not self.only_full else -1
                 except (QasmError, UnsupportedError):
                     if not beyond(piece, self.scope, self.full):
@@ -172,6 +177,8 @@ class Reader:
             self.position += len(piece) + 1
             if self.ended:
                 break
+            if scanner is not None:
+                scanner.advance(order)
         end = len(self.source.text.rstrip()) - 1
         if self.source.text[end] not in ";}" and self.closed <= end and not self.ended:
             raise self.source.error("a ';' is missing", end, required="';' behind the last statement")
@@ -181,7 +188,10 @@ class Reader:
         if self.full is not None and self.full.bits:
             self.full.finish()
             order.append(self.finish(None))
-        flat = circuit(self, np.array(order, dtype=np.int64))
+        if scanner is None or not scanner.count:
+            flat = circuit(self, np.array(order, dtype=np.int64))
+        else:
+            flat = circuit(self, scanner.order(order), scanner.columns())
         return self.with_control(flat) if self.marks else flat
 
     def with_control(self, flat: Circuit) -> Program:
@@ -232,8 +242,8 @@ class Reader:
             return None
         word, start = leading[0], self.position + leading[1]
         if word in ("@", "#", "pragma"):
-            end = self.source.text.find("\n", start)
-            return self.behind(piece, len(self.source.text) if end < 0 else end)
+            skipped = _NOTES.match(self.source.text, start)
+            return self.behind(piece, skipped.end() if skipped else start)
         choice = lane(word, piece, start, self.scope, self.full)
         if choice == FAST or (choice == EITHER and not self.only_full):
             return None
@@ -241,6 +251,8 @@ class Reader:
             from gatewright.qasm.full import FullLane
 
             self.full = FullLane(self)
+        # Blocks in a row without any semicolon are gone through again and again.
+        self.full.charge_at(len(piece) >> 10, start)
         end, self.ended = self.full.statement(start)
         return self.behind(piece, end)
 

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from gatewright.angles import angle_texts
 from gatewright.circuit import Circuit
-from gatewright.classical import bits_text
+from gatewright.classical import Bits, bits_text
 from gatewright.errors import CircuitError, QasmError, UnsupportedError, shorten
 from gatewright.gates import BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
 from gatewright.parameters import Affine
@@ -99,7 +99,15 @@ def write(
         lines = lines_of(circuit)
     else:
         text_of = block_lines if version == 3 else conditional_lines
-        lines = list(text_of(circuit.body, lines_of, lambda given: bits_text(given, bits)))
+        joined: dict[str, str] = {}
+
+        def bit_text(given: Bits) -> str:
+            text = bits_text(given, bits)
+            # The language joins registers in aliases alone.
+            return text if "++" not in text else joined.setdefault(text, f"joined_bits_{len(joined)}")
+
+        lines = list(text_of(circuit.body, lines_of, bit_text))
+        lines = [f"let {name} = {text};" for text, name in joined.items()] + lines
         lines = [f"{kind} {name};" for name, kind in circuit.variables] + lines
         phase = 0.0  # of a run, and never seen
     comments = [line for text in header for line in text.splitlines()]

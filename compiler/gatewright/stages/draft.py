@@ -36,6 +36,8 @@ class Settings:
         Physical qubit of each source qubit at the start, -1 where it is free.
     final : tuple of int or None
         Physical qubit of each source qubit at the end; wherever routing leaves them by default.
+    prefer : str
+        What is made least where qubits have several entanglers: ``uses``, ``fidelity`` (its loss) or ``duration``.
     """
 
     seed: int = 0
@@ -43,6 +45,7 @@ class Settings:
     effort: str = "standard"
     placement: tuple[int, ...] | None = None
     final: tuple[int, ...] | None = None
+    prefer: str = "uses"
 
 
 @dataclass(frozen=True, eq=False, slots=True)
