@@ -9,9 +9,9 @@ input angle[32] beta_1;
 input angle[32] beta_2;
 input float tilt;
 
-gate zz(angle) a, b {
+gate zz(turn) a, b {
   cx a, b;
-  rz(angle) b;
+  rz(turn) b;
   cx a, b;
 }
 
