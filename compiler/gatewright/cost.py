@@ -92,10 +92,11 @@ class Costs:
 
 @dataclass(frozen=True, slots=True)
 class Bound:
-    """A lower bound on two-qubit gates, and exactly what it bounds."""
+    """Lower bounds on two-qubit gates and on swaps, and exactly what they bound."""
 
     two_qubit_gates: int
     how: str
+    swaps: int = 0
 
 
 @nb.njit("f8(i4[::1], i8[::1], f8[::1], f8[::1], f8[::1])", cache=True, nogil=True)

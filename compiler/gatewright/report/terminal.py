@@ -19,7 +19,11 @@ def print_result(result: Result | ProgramResult, stream: TextIO) -> None:
     rows = [
         ("two-qubit gates", str(costs.two_qubit_gates), f"at least {result.lower_bound.two_qubit_gates} (see note)"),
         ("one-qubit gates", str(costs.one_qubit_gates), "physical pulses; virtual ones are free"),
-        ("swaps inserted", str(costs.swaps_inserted), "merged into neighbouring windows where there are any"),
+        (
+            "swaps inserted",
+            str(costs.swaps_inserted),
+            f"at least {result.lower_bound.swaps} (see note); merged into neighbouring windows where there are any",
+        ),
         ("two-qubit depth", str(costs.two_qubit_depth), ""),
         ("depth", str(costs.depth), "layers of physical operations"),
     ]

@@ -1,0 +1,111 @@
+"""What a circuit needs at least on a device: swaps, and entanglers with those swaps merged as well as they can be.
+
+A swap beside a gate on the same pair of qubits makes one window with it, of the mirrored class (see
+`gatewright.synthesis.weyl.mirrored_coordinates`), which may cost no more entanglers than the gate, or even fewer.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from gatewright.circuit import Circuit
+from gatewright.cost import Bound
+from gatewright.gates import GATES
+from gatewright.mapping.bounds import GATE, Order, swap_bound
+from gatewright.mapping.routing import make_graph
+from gatewright.stages.draft import Draft
+from gatewright.stages.precedence import order_of
+from gatewright.stages.windows import TWO, fuse_circuit, window_unitaries
+from gatewright.synthesis.toolkit import least_mixed_uses
+from gatewright.synthesis.weyl import canonical_coordinates, mirrored_coordinates
+
+__all__ = ["lower_bound"]
+
+
+def lower_bound(draft: Draft, circuit: Circuit, *, stays: bool, placement: tuple[int, ...] | None) -> Bound:
+    """Bound the swaps of a circuit, and the entanglers that its own windows and those swaps need together.
+
+    Parameters
+    ----------
+    draft : Draft
+        After the chain.
+    circuit : Circuit
+        What went into the chain.
+    stays : bool
+        Whether its wires end where they began.
+    placement : tuple of int or None
+        Qubit on which each wire was to start, -1 where that was free.
+
+    Returns
+    -------
+    Bound
+    """
+    expanded, device, native, tolerance = draft.expanded, draft.device, draft.native, draft.settings.tolerance
+    fused = fuse_circuit(expanded)
+    if not native.entanglers or not np.count_nonzero(fused.kind == TWO):
+        return Bound(0, "no two-qubit windows in the input")
+    _, two = window_unitaries(expanded, fused)
+    points = canonical_coordinates(two)
+    order, window = order_of(expanded, fused, two, points)
+    swaps = swap_bound(
+        make_graph(device.edges, device.n_qubits),
+        order,
+        active=np.asarray(device.active),
+        fixed=placement,
+    )
+    tools = [tool.entangler for tool in native.straight]
+    # Points are known already; several tools want the matrices.
+    straight, mirrored = (points, mirrored_coordinates(points)) if len(tools) == 1 else (two, two[:, [0, 2, 1, 3]])
+    counts = least_mixed_uses(straight, tools, tolerance=tolerance)
+    exchanged = least_mixed_uses(mirrored, tools, tolerance=tolerance)
+    counts, exchanged = _brought_together(counts, exchanged, order, np.cumsum(fused.kind == TWO)[window] - 1)
+    swap = int(least_mixed_uses(GATES["swap"].matrix(()), tools, tolerance=tolerance))
+    of_what = "the input" if expanded is circuit else "the input, written in gates of one and two qubits"
+    names = " or ".join(f"'{tool.gate.name}'" for tool in native.straight)
+    how = (
+        f"sum over the two-qubit windows of {of_what}, of the exact least number of {names} "
+        "that each needs on its own, with free one-qubit gates"
+    )
+    if len(counts) == 1 and not swaps.swaps and stays:
+        # Its wires ended where they began, so a swap merged into the window would have needed another to undo it.
+        total = int(counts[0])
+        if len(tools) == 1 and total:
+            how += f"; here {tools[0].reason(two[0], tolerance=tolerance)}"
+    else:
+        total = int(np.minimum(counts, exchanged).sum())
+        how += ", its two wires exchanged where that needs fewer"
+        # Each swap either merges with a window of its own, and exchanges its wires, or stands alone.
+        dearer = np.minimum(exchanged - counts, swap)
+        needed = max(swaps.swaps - int(np.count_nonzero(dearer <= 0)), 0)
+        if needed:
+            extra = np.sort(dearer[dearer > 0])[:needed]
+            added = int(extra.sum()) + swap * (needed - len(extra))
+            total += added
+            how += f"; {added} more for the swaps, each merged with the window that it makes least dearer"
+    how += (
+        "; a bound for circuits that keep this partition into windows, not the optimum of the whole circuit: "
+        "larger windows may need fewer"
+    )
+    given = " from the given placement" if placement is not None else ""
+    if swaps.swaps:
+        how = f"swaps{given}: {swaps.how}. Two-qubit gates: {how}"
+    return Bound(total, how, swaps.swaps)
+
+
+def _brought_together(
+    counts: NDArray[np.int64], exchanged: NDArray[np.int64], order: Order, window: NDArray[np.int64]
+) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Count nothing for windows on one pair of wires that may be brought together past what they commute with."""
+    gates = np.flatnonzero(order.kind == GATE)
+    if not len(gates):
+        return counts, exchanged
+    first = gates[np.unique(window[gates], return_index=True)[1]]
+    flip = order.wires[first, 0] > order.wires[first, 1]
+    keys = np.concatenate([order.wires[first], order.runs[first]], axis=1)
+    keys[flip] = keys[flip][:, [1, 0, 3, 2]]
+    _, group, size = np.unique(keys, axis=0, return_inverse=True, return_counts=True)
+    shared = window[first[size[group.ravel()] > 1]]
+    counts, exchanged = counts.copy(), exchanged.copy()
+    counts[shared] = exchanged[shared] = 0
+    return counts, exchanged
