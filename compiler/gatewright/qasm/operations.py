@@ -70,7 +70,11 @@ class Operations(Evaluator):
         if reads_bits(tree):
             # Bits change from one measurement to the next: what they are now is kept under a name.
             tree = self.kept(value, node)
-        return as_parameter(tree)
+        try:
+            made = as_parameter(tree)
+        except ExpressionError as problem:
+            raise self.fault(problem, node) from None
+        return made if not isinstance(made, Affine) or made.terms else made.constant
 
     def kept(self, value: Value, node: Any) -> Name:
         """Assign a value to a variable of its own at run time; the interpreter does."""

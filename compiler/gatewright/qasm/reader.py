@@ -421,6 +421,7 @@ class Reader:
 
     def numbers(self, gate: Gate, parameters: Sequence[Parameter]) -> Sequence[float]:
         """Return the parameters of the next operation as numbers; put what is not known aside."""
+        parameters = [v.constant if isinstance(v, Affine) and not v.terms else v for v in parameters]
         numbers = [math.nan if isinstance(value, Affine) else value for value in parameters]
         if any(isinstance(value, Affine) for value in parameters):
             if gate.name not in GATES:
