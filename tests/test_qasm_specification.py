@@ -25,7 +25,8 @@ EXAMPLES = {
         "rz",
     ),
     "types: constants and arrays": (
-        "const uint n = 4; array[int[16], 2, 3] table = {{1, 2, 3}, {4, 5, 6}}; qubit[n] q; rx(table[1][2] / n) q[n - 1];",
+        "const uint n = 4; array[int[16], 2, 3] table = {{1, 2, 3}, {4, 5, 6}}; qubit[n] q;"
+        " rx(table[1][2] / n) q[n - 1];",
         "ConstantDeclaration ClassicalDeclaration QubitDeclaration QuantumGate",
         "rx",
     ),
