@@ -22,7 +22,7 @@ from numpy.typing import NDArray
 from gatewright._version import __version__
 from gatewright.circuit import Circuit
 from gatewright.errors import ProofFileError, shorten
-from gatewright.gates import BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
+from gatewright.gates import BARRIER, DELAY, GATES, MEASURE, RESET, UNITARY, Gate
 from gatewright.parameters import Affine, Parameter
 from gatewright.proof.windows import Proof, Step
 
@@ -53,7 +53,7 @@ _CIRCUIT = {
     "parameter_offsets": np.int64,
     "link": np.int32,
 }
-_SPECIAL = {gate.name: gate for gate in (MEASURE, RESET, BARRIER, UNITARY)}
+_SPECIAL = {gate.name: gate for gate in (MEASURE, RESET, BARRIER, DELAY, UNITARY)}
 
 
 @dataclass(frozen=True, eq=False, slots=True)
