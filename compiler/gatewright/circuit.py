@@ -215,7 +215,10 @@ class Circuit:
     ) -> Circuit:
         """Return the circuit with every unknown parameter changed."""
         rows = np.flatnonzero(self.is_symbolic)
-        made = [tuple([change(v) if isinstance(v, Affine) else v for v in row]) for row in self.symbolic]
+        made = {
+            k: tuple([change(v) if isinstance(v, Affine) else v for v in self.symbolic[k]])
+            for k in np.unique(self.link[rows]).tolist()
+        }
         parameters, link = self.parameters.copy(), self.link.copy()
         kept: list[tuple[Parameter, ...]] = []
         place: dict[int, int] = {}

@@ -11,9 +11,11 @@ from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
 from gatewright.cost import Bound
+from gatewright.errors import ExpressionError
 from gatewright.gates import GATES
 from gatewright.mapping.bounds import GATE, Order, swap_bound
 from gatewright.mapping.routing import make_graph
+from gatewright.parameters import Affine, names_in, read_affine
 from gatewright.stages.draft import Draft
 from gatewright.stages.precedence import order_of
 from gatewright.stages.windows import TWO, fuse_circuit, window_unitaries
@@ -42,6 +44,10 @@ def lower_bound(draft: Draft, circuit: Circuit, *, stays: bool, placement: tuple
     Bound
     """
     expanded, device, native, tolerance = draft.expanded, draft.device, draft.native, draft.settings.tolerance
+    unknown = bool(expanded.symbolic)
+    if unknown:
+        # What holds for all values holds for these.
+        expanded = _at_some_values(expanded)
     fused = fuse_circuit(expanded)
     if not native.entanglers or not np.count_nonzero(fused.kind == TWO):
         return Bound(0, "no two-qubit windows in the input")
@@ -62,6 +68,8 @@ def lower_bound(draft: Draft, circuit: Circuit, *, stays: bool, placement: tuple
     counts, exchanged = _brought_together(counts, exchanged, order, np.cumsum(fused.kind == TWO)[window] - 1)
     swap = int(least_mixed_uses(GATES["swap"].matrix(()), tools, tolerance=tolerance))
     of_what = "the input" if expanded is circuit else "the input, written in gates of one and two qubits"
+    if unknown:
+        of_what += ", with values of no special kind for its unknown parameters"
     names = " or ".join(f"'{tool.gate.name}'" for tool in native.straight)
     how = (
         f"sum over the two-qubit windows of {of_what}, of the exact least number of {names} "
@@ -91,6 +99,23 @@ def lower_bound(draft: Draft, circuit: Circuit, *, stays: bool, placement: tuple
     if swaps.swaps:
         how = f"swaps{given}: {swaps.how}. Two-qubit gates: {how}"
     return Bound(total, how, swaps.swaps)
+
+
+def _at_some_values(circuit: Circuit) -> Circuit:
+    """Return a circuit at values of its unknown parameters that have nothing special about them."""
+    rng = np.random.default_rng(len(circuit))
+    whole = {name for name, kind in circuit.inputs if kind.partition("[")[0] in ("int", "uint", "bool")}
+    names = dict.fromkeys(name for atom in circuit.atoms for name in names_in(atom))
+    values = {name: 1.0 if name in whole else float(rng.uniform(0.3, 1.2)) for name in names}
+    atoms = {}
+    for atom in circuit.atoms:
+        try:
+            found = read_affine(atom, names_in(atom), values=values)
+        except ExpressionError:  # more than `gatewright.expressions` evaluates
+            found = float(rng.uniform(0.3, 1.2))
+        assert not isinstance(found, Affine)
+        atoms[atom] = found
+    return circuit.at_atoms(atoms)
 
 
 def _brought_together(

@@ -91,7 +91,7 @@ class Affine:
     def __add__(self, other: Affine | float) -> Affine:
         """Return the sum."""
         if not isinstance(other, Affine):
-            return Affine(_finite(self.constant + other), self.terms)
+            return Affine(_finite(self.constant + other) + 0.0, self.terms)
         sums = dict(self.terms)
         for atom, factor in other.terms:
             sums[atom] = sums.get(atom, 0.0) + factor
@@ -231,7 +231,8 @@ def _affine(constant: float, terms: Mapping[str, float]) -> Affine:
     if len(terms) > MAX_ATOMS:
         raise ExpressionError("an expression has too many unknown parts", required=f"{MAX_ATOMS} at most")
     kept = tuple(sorted((atom, _finite(factor)) for atom, factor in terms.items() if factor))
-    return Affine(_finite(constant), kept)
+    # Adding zero turns -0.0 into 0.0, which is what its text is read as.
+    return Affine(_finite(constant) + 0.0, kept)
 
 
 def names_in(atom: str) -> tuple[str, ...]:
