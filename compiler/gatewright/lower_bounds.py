@@ -101,11 +101,10 @@ def _brought_together(
     if not len(gates):
         return counts, exchanged
     first = gates[np.unique(window[gates], return_index=True)[1]]
-    flip = order.wires[first, 0] > order.wires[first, 1]
-    keys = np.concatenate([order.wires[first], order.runs[first]], axis=1)
-    keys[flip] = keys[flip][:, [1, 0, 3, 2]]
-    _, group, size = np.unique(keys, axis=0, return_inverse=True, return_counts=True)
-    shared = window[first[size[group.ravel()] > 1]]
+    # A run belongs to one wire: two of them name the pair as well.
+    runs = np.sort(order.runs[first], axis=1)
+    _, group, size = np.unique(runs[:, 0] * (runs.max() + 1) + runs[:, 1], return_inverse=True, return_counts=True)
+    shared = window[first[size[group] > 1]]
     counts, exchanged = counts.copy(), exchanged.copy()
     counts[shared] = exchanged[shared] = 0
     return counts, exchanged
