@@ -11,7 +11,7 @@ from hypothesis import strategies as st
 import lattices
 from gatewright.errors import UnsupportedError
 from gatewright.mapping.bounds import CROSS, GATE, Order
-from gatewright.mapping.exact import Optimum, fewest_swaps
+from gatewright.mapping.exact import GaveUpError, Optimum, fewest_swaps
 from gatewright.mapping.routing import Graph, make_graph
 from orders import everyone, least_swaps, predecessors, random_order
 from planted import planted_swaps
@@ -90,9 +90,16 @@ def test_planted_swaps_are_the_fewest() -> None:
 def test_it_says_when_it_gives_up() -> None:
     graph = coupling(lattices.grid(3, 3))
     order = random_order(9, 30, 1)
-    with pytest.raises(UnsupportedError, match="given up") as caught:
+    with pytest.raises(GaveUpError, match="given up") as caught:
         fewest_swaps(graph, order, fixed=range(9), states=50)
     assert "at most 50 states" in str(caught.value)
+    exact = fewest_swaps(coupling(lattices.line(5)), random_order(5, 24, 3))
+    assert exact is not None
+    for states in (100, 200, 300):
+        with pytest.raises(GaveUpError) as caught:
+            fewest_swaps(coupling(lattices.line(5)), random_order(5, 24, 3), states=states)
+        assert caught.value.least <= exact.swaps
+    assert caught.value.least > 0
     crossing = Order(9, order.wires, np.full(30, CROSS, dtype=np.int8), order.runs)
     with pytest.raises(UnsupportedError, match="exchanges of the circuit's own"):
         fewest_swaps(graph, crossing)

@@ -12,7 +12,8 @@ from numpy.typing import NDArray
 from gatewright.circuit import Circuit
 from gatewright.cost import Bound
 from gatewright.gates import GATES
-from gatewright.mapping.bounds import GATE, Order, swap_bound
+from gatewright.mapping.bounds import CROSS, GATE, Order, SwapBound, swap_bound
+from gatewright.mapping.exact import GaveUpError, fewest_swaps
 from gatewright.mapping.routing import make_graph
 from gatewright.stages.draft import Draft
 from gatewright.stages.precedence import order_of
@@ -21,6 +22,10 @@ from gatewright.synthesis.toolkit import least_mixed_uses
 from gatewright.synthesis.weyl import canonical_coordinates, mirrored_coordinates
 
 __all__ = ["lower_bound"]
+
+#: States, by effort, of the search for the fewest swaps of a circuit with no more gates than this.
+STATES = {"quick": 0, "standard": 1_000, "deep": 100_000}
+SMALL = 60
 
 
 def lower_bound(draft: Draft, circuit: Circuit, *, stays: bool, placement: tuple[int, ...] | None) -> Bound:
@@ -41,19 +46,14 @@ def lower_bound(draft: Draft, circuit: Circuit, *, stays: bool, placement: tuple
     -------
     Bound
     """
-    expanded, device, native, tolerance = draft.expanded, draft.device, draft.native, draft.settings.tolerance
+    expanded, native, tolerance = draft.expanded, draft.native, draft.settings.tolerance
     fused = fuse_circuit(expanded)
     if not native.entanglers or not np.count_nonzero(fused.kind == TWO):
         return Bound(0, "no two-qubit windows in the input")
     _, two = window_unitaries(expanded, fused)
     points = canonical_coordinates(two)
     order, window = order_of(expanded, fused, two, points)
-    swaps = swap_bound(
-        make_graph(device.edges, device.n_qubits),
-        order,
-        active=np.asarray(device.active),
-        fixed=placement,
-    )
+    swaps = _swaps(draft, order, placement)
     tools = [tool.entangler for tool in native.straight]
     # Points are known already; several tools want the matrices.
     straight, mirrored = (points, mirrored_coordinates(points)) if len(tools) == 1 else (two, two[:, [0, 2, 1, 3]])
@@ -91,6 +91,23 @@ def lower_bound(draft: Draft, circuit: Circuit, *, stays: bool, placement: tuple
     if swaps.swaps:
         how = f"swaps{given}: {swaps.how}. Two-qubit gates: {how}"
     return Bound(total, how, swaps.swaps)
+
+
+def _swaps(draft: Draft, order: Order, placement: tuple[int, ...] | None) -> SwapBound:
+    """Bound the swaps; where more were made and the circuit is small, search for the optimum, or as far as it goes."""
+    graph, active = make_graph(draft.device.edges, draft.device.n_qubits), np.asarray(draft.device.active)
+    found = swap_bound(graph, order, active=active, fixed=placement)
+    gates = order.kind == GATE
+    states = STATES[draft.settings.effort]
+    if draft.swaps <= found.swaps or not states or gates.sum() > SMALL or (order.kind == CROSS).any():
+        return found
+    try:
+        best = fewest_swaps(graph, order, active=active, fixed=placement, at_most=draft.swaps - 1, states=states)
+    except GaveUpError as error:
+        least, how = error.least, "a search that has ruled out fewer"
+    else:
+        least, how = draft.swaps if best is None else best.swaps, "the optimum, by a complete search"
+    return SwapBound(least, how) if least > found.swaps else found
 
 
 def _brought_together(

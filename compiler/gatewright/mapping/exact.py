@@ -19,12 +19,25 @@ from gatewright.errors import UnsupportedError
 from gatewright.mapping.bounds import CROSS, GATE, Order
 from gatewright.mapping.routing import Graph
 
-__all__ = ["STATES", "Optimum", "fewest_swaps"]
+__all__ = ["STATES", "GaveUpError", "Optimum", "fewest_swaps"]
 
 #: States that a search may visit: about half a minute.
 STATES = 1_000_000
 
 Places = tuple[int, ...]
+
+
+class GaveUpError(UnsupportedError):
+    """The search took too many states; `least` swaps are needed at least, as far as it came."""
+
+    def __init__(self, least: int, states: int) -> None:
+        super().__init__(
+            "the search for the fewest swaps was given up",
+            required=f"at most {states} states",
+            found=f"at least {least} swaps are needed",
+            hint="leave it to the heuristic search and its lower bound",
+        )
+        self.least = least
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -77,8 +90,10 @@ def fewest_swaps(
 
     Raises
     ------
+    GaveUpError
+        Too many states.
     UnsupportedError
-        The search was given up.
+        The circuit has exchanges of its own.
 
     Examples
     --------
@@ -136,9 +151,12 @@ class _Search:
                 levels.append([])
             levels[swaps].append(_State(places, done, swaps, parent, edge))
 
-        for places in self._starts():
-            push(places, 0, 0, None, None)
         visited = 0
+        for places in self._starts():
+            visited += 1
+            if visited > states:
+                raise GaveUpError(0, states)
+            push(places, 0, 0, None, None)
         while buckets:
             least = min(buckets)
             levels = buckets[least]
@@ -154,12 +172,7 @@ class _Search:
                 continue  # a better one has come since
             visited += 1
             if visited > states:
-                raise UnsupportedError(
-                    "the search for the fewest swaps was given up",
-                    required=f"at most {states} states",
-                    found=f"at least {least} swaps are needed",
-                    hint="leave it to the heuristic search and its lower bound",
-                )
+                raise GaveUpError(least, states)
             wire_at = {p: w for w, p in enumerate(state.places)}
             for p, q in self._edges:
                 u, v = wire_at.get(p, -1), wire_at.get(q, -1)
