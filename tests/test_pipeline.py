@@ -261,6 +261,7 @@ def test_a_chain_may_be_cut_and_is_proven_all_the_same() -> None:
         "fuse",
         "synthesise",
         "schedule",
+        "settle",
     ]
     assert list(result.seconds)[1:-3] == [stage.__name__ for stage in CHAIN]
     with pytest.raises(ProofError):

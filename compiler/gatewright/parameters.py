@@ -267,6 +267,8 @@ def _is_product(text: str) -> bool:
 
 def shown(value: Parameter) -> str:
     """Return a parameter as OpenQASM text."""
+    if not isinstance(value, Affine) and value.is_integer() and abs(value) < 2**53:
+        return str(int(value))
     return str(value) if isinstance(value, Affine) else angle_texts([value])[0]
 
 
@@ -296,7 +298,7 @@ def product(first: Parameter, second: Parameter) -> Parameter:
             )
         else:
             texts.append(f"({part})")
-    return Affine(0.0, (("*".join(sorted(texts)), 1.0),)) * factor
+    return Affine.of("*".join(sorted(texts))) * factor
 
 
 def _plain_product(atom: str) -> bool:

@@ -28,13 +28,14 @@ from gatewright.stages.place import place
 from gatewright.stages.restore import restore
 from gatewright.stages.route import route
 from gatewright.stages.schedule import schedule
+from gatewright.stages.settle import settle
 from gatewright.stages.synthesise import synthesise
 from gatewright.synthesis.native import NativeSet, native_set
 
 __all__ = ["CHAIN", "EFFORTS", "Result", "check", "compile", "count"]
 
 #: The stages in order. A caller may pass a chain of their own to `compile`; what it makes is proven all the same.
-CHAIN: tuple[Stage, ...] = (parametrise, expand, place, route, restore, fuse, synthesise, schedule)
+CHAIN: tuple[Stage, ...] = (parametrise, expand, place, route, restore, fuse, synthesise, schedule, settle)
 
 EFFORTS = ("quick", "standard", "deep")
 
@@ -168,7 +169,7 @@ def compile(  # noqa: A001
     clock.start("plan")
     native = native_set(device.gate_set, tolerance=tolerance)
     first = asked if isinstance(asked, Circuit) else next(asked.circuits())
-    draft = Draft(circuit=first, device=device, settings=settings, native=native, expanded=first)
+    draft = Draft(circuit=first, device=device, settings=settings, native=native, expanded=first, source=first)
     given: dict[str, Any] = {"device": device, "seed": seed, "tolerance": tolerance, "effort": effort, "moved": moved}
     if isinstance(asked, Program):
         return _compile_program(asked, draft, chain, clock, budget or {}, given)

@@ -28,6 +28,22 @@ def _budget(text: str) -> tuple[str, float]:
     return name, value
 
 
+def _value(text: str) -> tuple[str, float]:
+    name, mark, value = text.partition("=")
+    # Imported here: --help loads nothing that reads expressions.
+    from gatewright.errors import ExpressionError
+    from gatewright.expressions import parse
+
+    try:
+        number = parse(value, imaginary=False).real()
+    except ExpressionError:
+        mark = ""
+        number = 0.0
+    if not mark or not name.isidentifier():
+        raise argparse.ArgumentTypeError(f"{text[:60]!r}: a value is NAME=NUMBER, such as theta=0.3 or theta=pi/4")
+    return name, number
+
+
 def _tolerance(text: str) -> float:
     try:
         value = float(text)
@@ -115,6 +131,15 @@ def _compile_options(parser: argparse.ArgumentParser) -> None:
     )
     parser.add_argument(
         "--placement", type=_placement, metavar="Q,Q,...", help="physical qubit of each source qubit, -1 where free"
+    )
+    parser.add_argument(
+        "--set",
+        type=_value,
+        action="append",
+        default=[],
+        metavar="NAME=VALUE",
+        help="give an input of the program its value before compiling; those that are not set stay open in the "
+        "output; may be repeated",
     )
     parser.add_argument(
         "--budget",

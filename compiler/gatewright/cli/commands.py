@@ -121,6 +121,7 @@ def _different(names: list[str | None]) -> None:
 
 def _compiled(options: argparse.Namespace) -> Result | ProgramResult:
     from gatewright.devices import read_device
+    from gatewright.gates import GATES
     from gatewright.inputs import load
 
     device = read_device(options.device)
@@ -129,15 +130,19 @@ def _compiled(options: argparse.Namespace) -> Result | ProgramResult:
         tolerance=options.tolerance,
         nearest_unitary=options.nearest_unitary,
         qubit_order=options.qubit_order,
+        # The device's own gates stay what they are where the program defines them alike.
+        natives={name: gate for name, gate in device.gate_set.natives.items() if name not in GATES},
+        strict=False,
     )
     device.require_room(source.circuit.n_qubits)
+    given = source.circuit.bind(dict(options.set)) if options.set else source.circuit
     # What is wrong with the input has been said before this: the kernels take longer to load than all of that.
     _prepare()
     from gatewright.pipeline import compile as compile_source
 
     with _progress() as progress:
         return compile_source(
-            source.circuit,
+            given,
             device,
             seed=options.seed,
             tolerance=options.tolerance,

@@ -23,7 +23,7 @@ from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit, apply_operations
 from gatewright.errors import ProofError
-from gatewright.gates import BARRIER, MEASURE, RESET
+from gatewright.gates import BARRIER, DELAY, MEASURE, RESET
 from gatewright.linalg import embed, kron
 from gatewright.parameters import Affine
 from gatewright.proof.parametrised import UnknownWindows, require_standard
@@ -122,6 +122,12 @@ def check_legal(circuit: Circuit, device: Device) -> None:
     for k, gate in enumerate(circuit.table):
         rows = np.flatnonzero(circuit.op == k)
         if not len(rows) or gate.name == BARRIER.name:
+            continue
+        if gate.name == DELAY.name and gate.function is None:
+            values = circuit.parameters[circuit.parameter_offsets[rows]]
+            wrong = np.flatnonzero(~(np.isfinite(values) & (values >= 0)))
+            if len(wrong):
+                _illegal(circuit, int(rows[wrong[0]]), "a delay has no duration from 0 up")
             continue
         width = int(circuit.widths[rows[0]])
         qubits = circuit.qubits[circuit.offsets[rows][:, None] + np.arange(width)]
@@ -355,6 +361,9 @@ def _fixed_windows(
     (a, rows_a, slots_a), (b, rows_b, slots_b) = held
     for at, i, j in zip(np.flatnonzero(fixed).tolist(), rows_a.tolist(), rows_b.tolist(), strict=True):
         same = a.table[a.op[i]].name == b.table[b.op[j]].name and a.link[i] == b.link[j]
+        same &= np.array_equal(
+            a.parameters[slice(*a.parameter_offsets[i : i + 2])], b.parameters[slice(*b.parameter_offsets[j : j + 2])]
+        )
         first = slots_a[a.offsets[i] : a.offsets[i + 1]]
         second = slots_b[b.offsets[j] : b.offsets[j + 1]]
         span = slice(step.offsets[at], step.offsets[at + 1])

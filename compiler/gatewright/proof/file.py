@@ -22,7 +22,7 @@ from numpy.typing import NDArray
 from gatewright._version import __version__
 from gatewright.circuit import Circuit
 from gatewright.errors import ProofFileError, shorten
-from gatewright.gates import BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
+from gatewright.gates import BARRIER, DELAY, GATES, MEASURE, RESET, UNITARY, Gate
 from gatewright.parameters import Affine, Parameter
 from gatewright.proof.windows import Proof, Step
 
@@ -53,7 +53,7 @@ _CIRCUIT = {
     "parameter_offsets": np.int64,
     "link": np.int32,
 }
-_SPECIAL = {gate.name: gate for gate in (MEASURE, RESET, BARRIER, UNITARY)}
+_SPECIAL = {gate.name: gate for gate in (MEASURE, RESET, BARRIER, DELAY, UNITARY)}
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -69,8 +69,13 @@ class ProofFile:
 def fingerprint(circuit: Circuit) -> str:
     """Return a SHA-256 digest of what a circuit does: operations, qubits, parameters, bits and matrices."""
     digest = hashlib.sha256()
-    names = json.dumps([circuit.n_qubits, circuit.n_bits, [gate.name for gate in circuit.table]])
-    digest.update(names.encode())
+    # Kinds are numbered as they first occur too.
+    used, places = np.unique(circuit.op, return_index=True)
+    code_of: dict[str, int] = {}
+    codes = np.zeros(len(circuit.table) + 1, dtype=np.int16)
+    for kind in used[np.argsort(places)].tolist():
+        codes[kind] = code_of.setdefault(circuit.table[kind].name, len(code_of))
+    digest.update(json.dumps([circuit.n_qubits, circuit.n_bits, list(code_of)]).encode())
     link, symbolic = circuit.link, circuit.symbolic
     if symbolic:
         # Numbered as they first occur, whatever the order of the table.
@@ -79,7 +84,7 @@ def fingerprint(circuit: Circuit) -> str:
         link = link.copy()
         link[unknown] = [number_of.setdefault(k, len(number_of)) for k in link[unknown].tolist()]
         symbolic = tuple(symbolic[k] for k in number_of)
-    arrays = (circuit.op, circuit.qubits, circuit.offsets, circuit.parameters, link, *circuit.matrices)
+    arrays = (codes[circuit.op], circuit.qubits, circuit.offsets, circuit.parameters, link, *circuit.matrices)
     for array in arrays:
         digest.update(np.ascontiguousarray(array).tobytes())
     if symbolic:
