@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import heapq
 from collections.abc import Sequence
 from itertools import permutations
 
@@ -45,6 +46,42 @@ def predecessors(order: Order) -> list[set[int]]:
                         mine |= {j} | before[j]
         before.append(mine)
     return before
+
+
+def least_entanglers(graph: nx.Graph, order: Order, costs: Sequence[tuple[int, int]], swap_cost: int) -> int:
+    """Search by price over placements, gates done, and what each site did last: a swap looks back for its gate."""
+    before = predecessors(order)
+    gates = [k for k in range(len(order.wires)) if order.kind[k] == GATE]
+    states = {(places, frozenset(), ()): 0 for places in permutations(range(len(graph)), order.n)}
+    queue = [(0, number, state) for number, state in enumerate(states)]
+    heapq.heapify(queue)
+    pushed = len(queue)
+    while True:
+        price, _, state = heapq.heappop(queue)
+        if price > states[state]:
+            continue
+        places, done, fresh = state
+        if len(done) == len(gates):
+            return price
+        following = []
+        for k in gates:
+            if k not in done and all(j in done for j in before[k] if order.kind[j] == GATE):
+                p, q = (places[w] for w in order.wires[k].tolist())
+                if graph.has_edge(p, q):
+                    kept = tuple(f for f in fresh if not {f[0], f[1]} & {p, q})
+                    last = tuple(sorted((*kept, (min(p, q), max(p, q), k))))
+                    following.append((price + costs[k][0], (places, done | {k}, last)))
+        for p, q in graph.edges:
+            moved = tuple({p: q, q: p}.get(x, x) for x in places)
+            merged = [f for f in fresh if {f[0], f[1]} == {p, q}]
+            kept = tuple(f for f in fresh if not {f[0], f[1]} & {p, q})
+            paid = costs[merged[0][2]][1] - costs[merged[0][2]][0] if merged else swap_cost
+            following.append((price + paid, (moved, done, kept)))
+        for paid, found in following:
+            if paid < states.get(found, 1 << 30):
+                states[found] = paid
+                pushed += 1
+                heapq.heappush(queue, (paid, pushed, found))
 
 
 def least_swaps(graph: nx.Graph, order: Order, fixed: Sequence[int] | None = None) -> int:

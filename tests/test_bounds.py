@@ -208,6 +208,24 @@ def test_the_summary_tells_the_bound() -> None:
     assert 4 <= given_.lower_bound.swaps <= given_.costs.swaps_inserted
 
 
+def test_small_circuits_are_searched_for_their_optimum() -> None:
+    graph = lattices.line(4)
+    device = gw.Device.from_graph(list(graph.edges), "cz-virtual-z")
+    told = set()
+    for seed in range(8):
+        pairs = workloads.random_pairs(4, 12, seed)
+        best = fewest_swaps(coupling(graph), Order.strict(pairs, 4))
+        assert best is not None
+        for effort in ("quick", "standard", "deep"):
+            result = gw.compile(workloads.from_pairs(pairs, 4), device, effort=effort)
+            bound_ = result.lower_bound.swaps
+            assert bound_ <= best.swaps <= result.costs.swaps_inserted
+            if effort == "deep":
+                assert bound_ == best.swaps
+            told.add("complete search" in result.lower_bound.how)
+    assert told == {True, False}
+
+
 def all_to_all(n: int) -> gw.Device:
     return gw.Device.from_graph([(a, b) for b in range(n) for a in range(b)], "cz-virtual-z")
 

@@ -13,7 +13,8 @@ from gatewright.circuit import Circuit
 from gatewright.cost import Bound
 from gatewright.errors import ExpressionError
 from gatewright.gates import GATES
-from gatewright.mapping.bounds import GATE, Order, swap_bound
+from gatewright.mapping.bounds import CROSS, GATE, Order, SwapBound, swap_bound
+from gatewright.mapping.exact import GaveUpError, fewest_swaps
 from gatewright.mapping.routing import make_graph
 from gatewright.parameters import Affine, names_in, read_affine
 from gatewright.stages.draft import Draft
@@ -23,6 +24,10 @@ from gatewright.synthesis.toolkit import least_mixed_uses
 from gatewright.synthesis.weyl import canonical_coordinates, mirrored_coordinates
 
 __all__ = ["lower_bound"]
+
+#: States, by effort, of the search for the fewest swaps of a circuit with no more gates than this.
+STATES = {"quick": 0, "standard": 1_000, "deep": 100_000}
+SMALL = 60
 
 
 def lower_bound(draft: Draft, circuit: Circuit, *, stays: bool, placement: tuple[int, ...] | None) -> Bound:
@@ -43,7 +48,7 @@ def lower_bound(draft: Draft, circuit: Circuit, *, stays: bool, placement: tuple
     -------
     Bound
     """
-    expanded, device, native, tolerance = draft.expanded, draft.device, draft.native, draft.settings.tolerance
+    expanded, native, tolerance = draft.expanded, draft.native, draft.settings.tolerance
     unknown = bool(expanded.symbolic)
     if unknown:
         # What holds for all values holds for these.
@@ -54,12 +59,7 @@ def lower_bound(draft: Draft, circuit: Circuit, *, stays: bool, placement: tuple
     _, two = window_unitaries(expanded, fused)
     points = canonical_coordinates(two)
     order, window = order_of(expanded, fused, two, points)
-    swaps = swap_bound(
-        make_graph(device.edges, device.n_qubits),
-        order,
-        active=np.asarray(device.active),
-        fixed=placement,
-    )
+    swaps = _swaps(draft, order, placement)
     tools = [tool.entangler for tool in native.straight]
     # Points are known already; several tools want the matrices.
     straight, mirrored = (points, mirrored_coordinates(points)) if len(tools) == 1 else (two, two[:, [0, 2, 1, 3]])
@@ -118,6 +118,23 @@ def _at_some_values(circuit: Circuit) -> Circuit:
     return circuit.at_atoms(atoms)
 
 
+def _swaps(draft: Draft, order: Order, placement: tuple[int, ...] | None) -> SwapBound:
+    """Bound the swaps; where more were made and the circuit is small, search for the optimum, or as far as it goes."""
+    graph, active = make_graph(draft.device.edges, draft.device.n_qubits), np.asarray(draft.device.active)
+    found = swap_bound(graph, order, active=active, fixed=placement)
+    gates = order.kind == GATE
+    states = STATES[draft.settings.effort]
+    if draft.swaps <= found.swaps or not states or gates.sum() > SMALL or (order.kind == CROSS).any():
+        return found
+    try:
+        best = fewest_swaps(graph, order, active=active, fixed=placement, at_most=draft.swaps - 1, states=states)
+    except GaveUpError as error:
+        least, how = error.least, "a search that has ruled out fewer"
+    else:
+        least, how = draft.swaps if best is None else best.swaps, "the optimum, by a complete search"
+    return SwapBound(least, how) if least > found.swaps else found
+
+
 def _brought_together(
     counts: NDArray[np.int64], exchanged: NDArray[np.int64], order: Order, window: NDArray[np.int64]
 ) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
@@ -126,11 +143,10 @@ def _brought_together(
     if not len(gates):
         return counts, exchanged
     first = gates[np.unique(window[gates], return_index=True)[1]]
-    flip = order.wires[first, 0] > order.wires[first, 1]
-    keys = np.concatenate([order.wires[first], order.runs[first]], axis=1)
-    keys[flip] = keys[flip][:, [1, 0, 3, 2]]
-    _, group, size = np.unique(keys, axis=0, return_inverse=True, return_counts=True)
-    shared = window[first[size[group.ravel()] > 1]]
+    # A run belongs to one wire: two of them name the pair as well.
+    runs = np.sort(order.runs[first], axis=1)
+    _, group, size = np.unique(runs[:, 0] * (runs.max() + 1) + runs[:, 1], return_inverse=True, return_counts=True)
+    shared = window[first[size[group] > 1]]
     counts, exchanged = counts.copy(), exchanged.copy()
     counts[shared] = exchanged[shared] = 0
     return counts, exchanged

@@ -27,7 +27,7 @@ GATE, TIE, CROSS = 0, 1, 2
 #: ten microseconds. Without any left, a walk goes on looking for wires with too many partners.
 STEPS, SET_UP, ALL_STEPS = 400, 10, 10_000
 #: Entries that are looked at, and those up to which the circuit is also walked backwards.
-ENTRIES, BACKWARDS = 30_000, 10_000
+ENTRIES, BACKWARDS = 15_000, 8_000
 #: Gates in a chunk of the counting bound, as a multiple of the number of edges.
 CHUNKS = (2, 6, 20)
 #: Placements that are remembered, as they often show at once that a set embeds.

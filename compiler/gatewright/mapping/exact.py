@@ -1,16 +1,21 @@
-"""Find the least number of swaps for small circuits, and prove it.
+"""Find the least number of swaps, or of entanglers, for small circuits, and prove it.
 
 A* (Hart, Nilsson, Raphael, IEEE Trans. Syst. Sci. Cybern. 4, 100 (1968)) over what is done and where the wires are. A
 gate that can run is run at once: that never costs a swap. The estimate adds up the distances still to go for pairs
 without a wire in common, two steps a swap, or takes the largest. A state is dropped if another with the same places, no
 more swaps and all of its gates done has been met.
+
+For entanglers a swap right behind a gate on the same pair of qubits merges with it, so a gate is done in one of two
+ways, with its wires exchanged or not, and may be left for later.
 """
 
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from heapq import heappop, heappush
 from itertools import permutations
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,21 +24,38 @@ from gatewright.errors import UnsupportedError
 from gatewright.mapping.bounds import CROSS, GATE, Order
 from gatewright.mapping.routing import Graph
 
-__all__ = ["STATES", "Optimum", "fewest_swaps"]
+__all__ = ["STATES", "GaveUpError", "Optimum", "fewest_entanglers", "fewest_swaps"]
 
 #: States that a search may visit: about half a minute.
 STATES = 1_000_000
 
 Places = tuple[int, ...]
+_Key = tuple[Places, int]
+_Edge = tuple[int, int]
+
+
+class GaveUpError(UnsupportedError):
+    """The search took too many states; `least` are needed at least, as far as it came."""
+
+    def __init__(self, least: int, states: int, *, of: str = "swaps") -> None:
+        super().__init__(
+            f"the search for the fewest {of} was given up",
+            required=f"at most {states} states",
+            found=f"at least {least} {of} are needed",
+            hint="leave it to the heuristic search and its lower bound",
+        )
+        self.least = least
 
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Optimum:
-    """A routing with the fewest swaps.
+    """A routing with the fewest swaps, or entanglers.
 
     Attributes
     ----------
     swaps : int
+    entanglers : int
+        0 where they were not asked for.
     initial : dict of int to int
         Qubit of each wire that has a gate.
     events : list of int or (int, int)
@@ -43,6 +65,7 @@ class Optimum:
     swaps: int
     initial: dict[int, int]
     events: list[int | tuple[int, int]]
+    entanglers: int = 0
 
 
 def fewest_swaps(
@@ -77,8 +100,10 @@ def fewest_swaps(
 
     Raises
     ------
+    GaveUpError
+        Too many states.
     UnsupportedError
-        The search was given up.
+        The circuit has exchanges of its own.
 
     Examples
     --------
@@ -90,6 +115,45 @@ def fewest_swaps(
     """
     search = _Search(graph, order, np.ones(graph.n, dtype=bool) if active is None else active, fixed)
     return search.run(graph.n**2 * len(order.wires) if at_most is None else at_most, states)
+
+
+def fewest_entanglers(
+    graph: Graph,
+    order: Order,
+    *,
+    costs: Sequence[tuple[int, int]] | None = None,
+    swap_cost: int = 3,
+    active: NDArray[np.bool_] | None = None,
+    fixed: Sequence[int] | None = None,
+    states: int = STATES,
+) -> Optimum:
+    """Search for a routing with the fewest entanglers.
+
+    Parameters
+    ----------
+    graph, order, active, fixed, states
+        As `fewest_swaps` takes them.
+    costs : sequence of (int, int), one for each gate of `order`, optional
+        Entanglers of the gate alone, and of the gate with its wires exchanged by a swap right behind it; by default
+        those of a CNOT among CNOTs, 1 and 2.
+    swap_cost : int
+        Entanglers of any other swap.
+
+    Raises
+    ------
+    GaveUpError, UnsupportedError
+        As `fewest_swaps` does, or there is no routing.
+
+    Examples
+    --------
+    >>> from gatewright.mapping.routing import make_graph
+    >>> line = make_graph([(0, 1), (1, 2)], 3)
+    >>> triangle = Order.strict(np.array([(0, 1), (1, 2), (0, 2)]), 3)
+    >>> fewest_entanglers(line, triangle).entanglers
+    4
+    """
+    search = _Search(graph, order, np.ones(graph.n, dtype=bool) if active is None else active, fixed)
+    return search.cheapest([(1, 2)] * len(order.wires) if costs is None else list(costs), swap_cost, states)
 
 
 class _Search:
@@ -136,9 +200,12 @@ class _Search:
                 levels.append([])
             levels[swaps].append(_State(places, done, swaps, parent, edge))
 
-        for places in self._starts():
-            push(places, 0, 0, None, None)
         visited = 0
+        for places in self._starts():
+            visited += 1
+            if visited > states:
+                raise GaveUpError(0, states)
+            push(places, 0, 0, None, None)
         while buckets:
             least = min(buckets)
             levels = buckets[least]
@@ -154,25 +221,82 @@ class _Search:
                 continue  # a better one has come since
             visited += 1
             if visited > states:
-                raise UnsupportedError(
-                    "the search for the fewest swaps was given up",
-                    required=f"at most {states} states",
-                    found=f"at least {least} swaps are needed",
-                    hint="leave it to the heuristic search and its lower bound",
-                )
+                raise GaveUpError(least, states)
             wire_at = {p: w for w, p in enumerate(state.places)}
             for p, q in self._edges:
                 u, v = wire_at.get(p, -1), wire_at.get(q, -1)
                 # At least one of the two must have something left to do.
                 if not any(w >= 0 and self._of_wire[w] & ~state.done for w in (u, v)):
                     continue
-                moved = list(state.places)
-                if u >= 0:
-                    moved[u] = q
-                if v >= 0:
-                    moved[v] = p
-                push(tuple(moved), state.done, state.swaps + 1, state, (p, q))
+                push(_moved(state.places, p, q), state.done, state.swaps + 1, state, (p, q))
         return None
+
+    def cheapest(self, costs: list[tuple[int, int]], swap_cost: int, states: int) -> Optimum:
+        """Visit states in the order of their estimates; doing a gate is priced by what it costs beyond the least."""
+        base = sum(min(pair) for pair in costs[: len(self._pairs)])
+        extra = [(alone - min(alone, crossed), crossed - min(alone, crossed)) for alone, crossed in costs]
+        # No swap is cheaper than this.
+        unit = min([swap_cost, *(crossed for _, crossed in extra)])
+        best: dict[_Key, int] = {}
+        came: dict[_Key, tuple[_Key, int, _Edge | None]] = {}
+        queue: list[tuple[int, int, Places, int]] = []
+
+        def push(
+            places: Places,
+            done: int,
+            price: int,
+            before: tuple[Places, int] | None,
+            gate: int,
+            edge: tuple[int, int] | None,
+        ) -> None:
+            key = (places, done)
+            if price < best.get(key, 1 << 30):
+                best[key] = price
+                if before is not None:
+                    came[key] = (before, gate, edge)
+                rest = self._togo(places, done) if unit else 0
+                heappush(queue, (price + unit * rest, -price, places, done))
+
+        visited = 0
+        for places in self._starts():
+            visited += 1
+            if visited > states:
+                raise GaveUpError(base, states, of="entanglers")
+            push(places, 0, 0, None, -1, None)
+        while queue:
+            estimate, price, places, done = heappop(queue)
+            price = -price
+            key = (places, done)
+            if price > best[key]:
+                continue
+            if done == self._all:
+                return self._retold(key, came, base + price)
+            visited += 1
+            if visited > states:
+                raise GaveUpError(base + estimate, states, of="entanglers")
+            left = self._all & ~done
+            for k, (a, b) in enumerate(self._pairs):
+                p, q = places[a], places[b]
+                if left >> k & 1 and not self._needs[k] & left and self._distance[p][q] == 1:
+                    alone, crossed = extra[k]
+                    push(places, done | 1 << k, price + alone, key, k, None)
+                    push(_moved(places, p, q), done | 1 << k, price + crossed, key, k, (p, q))
+            for p, q in self._edges:
+                moved = _moved(places, p, q)
+                if moved != places:
+                    push(moved, done, price + swap_cost, key, -1, (p, q))
+        raise UnsupportedError("there is no routing", required="a path between wires that meet")
+
+    def _retold(self, key: tuple[Places, int], came: dict[tuple[Places, int], Any], entanglers: int) -> Optimum:
+        events: list[int | tuple[int, int]] = []
+        while key in came:
+            key, gate, edge = came[key]
+            if edge is not None:
+                events.append(edge)
+            if gate >= 0:
+                events.append(self._rows[gate])
+        swaps = sum(isinstance(event, tuple) for event in events)
+        return Optimum(swaps, dict(zip(self._wires, key[0], strict=True)), events[::-1], entanglers)
 
     def _starts(self) -> Iterator[Places]:
         """Yield every start that respects what is fixed."""
@@ -256,6 +380,11 @@ class _Search:
             done = step.done
         initial = dict(zip(self._wires, path[0].places, strict=True))
         return Optimum(state.swaps, initial, events)
+
+
+def _moved(places: Places, p: int, q: int) -> Places:
+    """Return the places after a swap of two qubits."""
+    return tuple(q if x == p else p if x == q else x for x in places)
 
 
 @dataclass(frozen=True, eq=False, slots=True)

@@ -8,7 +8,6 @@ only weakens a bound.
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -133,7 +132,7 @@ def _runs(parted: _Parted, unitaries: Array) -> Integers:
     slots, owner = circuit.qubits.astype(np.int64), np.repeat(np.arange(len(circuit)), circuit.widths)
     line = _lines(circuit, parted.kinds) if (parted.kinds == CROSS).any() else slots
     slot = np.arange(len(slots)) - circuit.offsets[owner]
-    order = np.lexsort((owner, line))
+    order = np.argsort(line, kind="stable")
     own, at, on = owner[order], slot[order], line[order]
     is_one = circuit.is_unitary[own] & (circuit.widths[own] == 1)
     is_gate, marks = parted.kinds[own] == GATE, parted.kinds[own] >= 0
@@ -154,10 +153,10 @@ def _runs(parted: _Parted, unitaries: Array) -> Integers:
     check = np.flatnonzero(~together & has[g, at[i]] & has[h, at[j]])
     vectors = parted.axes[h[check], at[j[check]]]
     between = i[check] - j[check] - 1
-    turns = _turns(circuit, own)
+    turns = _quaternions(circuit)
     for step in range(1, min(int(between.max(initial=0)), IN_A_ROW) + 1):
-        behind = between >= step
-        vectors[behind] = np.einsum("gij,gj->gi", turns(j[check][behind] + step), vectors[behind])
+        behind = np.flatnonzero(between >= step)
+        vectors[behind] = _turned(turns[own[j[check[behind]] + step]], vectors[behind])
     together[check] = _parallel(vectors, parted.axes[g[check], at[i[check]]]) | (between > IN_A_ROW)
     # Windows of several gates may move as a whole.
     check = np.flatnonzero(
@@ -181,7 +180,7 @@ def _runs(parted: _Parted, unitaries: Array) -> Integers:
 
 
 def _parallel(a: Vectors, b: Vectors) -> Flags:
-    return np.asarray(np.linalg.norm(np.cross(a, b), axis=1) < CLOSE)
+    return np.asarray((_cross(a, b) ** 2).sum(axis=1) < CLOSE**2)
 
 
 def _leaving(unitaries: Array, slot: Integers, *, entering: bool = False) -> Vectors:
@@ -193,19 +192,28 @@ def _leaving(unitaries: Array, slot: Integers, *, entering: bool = False) -> Vec
     return np.asarray(right[:, 0] if entering else left[:, :, 0])
 
 
-def _turns(circuit: Circuit, own: Integers) -> Callable[[Integers], Vectors]:
-    """Return a function from positions of one-qubit gates to their rotations of the Bloch sphere."""
-    matrices = np.zeros((len(circuit), 2, 2), dtype=np.complex128)
-    one = np.flatnonzero(circuit.is_unitary & (circuit.widths == 1))
-    for at, stack in circuit.matrix_groups(one):
-        matrices[at] = stack
+def _quaternions(circuit: Circuit) -> Vectors:
+    """Return w, x, y, z of each one-qubit gate w − i(xX + yY + zZ), up to sign and phase."""
+    out = np.zeros((len(circuit), 4))
+    for at, u in circuit.matrix_groups(np.flatnonzero(circuit.is_unitary & (circuit.widths == 1))):
+        a, b, c, d = u[:, 0, 0], u[:, 0, 1], u[:, 1, 0], u[:, 1, 1]
+        root = np.sqrt(a * d - b * c)
+        out[at, 0], out[at, 1] = ((a + d) / root).real / 2, -((b + c) / root).imag / 2
+        out[at, 2], out[at, 3] = ((c - b) / root).real / 2, ((d - a) / root).imag / 2
+    return out
 
-    def rotations(positions: Integers) -> Vectors:
-        u = matrices[own[positions]]
-        moved = u[:, None] @ PAULI @ u.conj().swapaxes(-1, -2)[:, None]
-        return np.asarray(np.einsum("iab,gjba->gij", PAULI, moved).real / 2)
 
-    return rotations
+def _turned(turns: Vectors, vectors: Vectors) -> Vectors:
+    """Rotate vectors by unit quaternions."""
+    w, axis = turns[:, :1], turns[:, 1:]
+    across = _cross(axis, vectors)
+    return np.asarray(vectors + 2 * (w * across + _cross(axis, across)))
+
+
+def _cross(a: Vectors, b: Vectors) -> Vectors:
+    x, y, z = a.T
+    u, v, w = b.T
+    return np.stack([y * w - z * v, z * u - x * w, x * v - y * u], axis=1)
 
 
 def _lines(circuit: Circuit, kinds: NDArray[np.int8]) -> Integers:
