@@ -28,9 +28,13 @@ Vector = NDArray[np.float64]
 _PHASES = np.array([[-1.0, -1, -1], [-1, 1, 1], [1, -1, 1], [1, 1, -1]])
 _STARTS = 32
 _TRIES = 3
+_ROUNDS = 4
+_HELPERS = 2000
+_NEIGHBOURS = 4
 _STEPS = 60
 _PATIENT = 200
 _ACCEPTED = 3e-13
+_GIVEN_UP = 2e-10
 #: CAN(p) ∝ (Z ⊗ X) CAN(q) (Y ⊗ 1) for the two images p, q of a class.
 _IMAGE_LEFT = np.array([[0.0, 0, 0, 1], [0, 1, 0, 0]])
 _IMAGE_RIGHT = np.array([[0.0, 0, 1, 0], [1, 0, 0, 0]])
@@ -75,6 +79,20 @@ def inner_gates(points: Vector, sequences: Vector, which: NDArray[np.int64]) -> 
     row = np.ascontiguousarray(which, dtype=np.int64)
     free = np.ones((k, 6), dtype=np.bool_)
     refine(targets, row, phases, starts, free, min(_TRIES, starts.shape[1]), _STEPS, found, residual)
+    # Near facets random starts fail often, but neighbours that are solved lead there.
+    for _ in range(_ROUNDS if k > 1 else 0):
+        solved = residual <= _ACCEPTED
+        rest = np.flatnonzero(~solved)
+        if not 0 < len(rest) < len(points):
+            break
+        helpers = np.flatnonzero(solved)[:_HELPERS]
+        apart = np.abs(targets[rest, None, :] - targets[None, helpers, :]).sum(axis=2)
+        apart[row[rest, None] != row[None, helpers]] += 10.0
+        nearest = helpers[np.argsort(apart, axis=1)[:, :_NEIGHBOURS]]
+        tried, error = np.empty((len(rest), k + 1, 2, 4)), np.empty(len(rest))
+        refine(targets[rest], row[rest], phases, found[nearest, :k], free, nearest.shape[1], _STEPS, tried, error)
+        better = error < residual[rest]
+        found[rest[better]], residual[rest[better]] = tried[better], error[better]
     for n in np.flatnonzero(~(residual <= _ACCEPTED)) if k > 1 else ():
         other, rest = _on_facets(points[n], sequences[row[n]], targets[[n]], phases[[row[n]]])
         if rest < residual[n]:
@@ -102,10 +120,9 @@ def _on_facets(point: Vector, sequence: Vector, target: Vector, phases: NDArray[
             best, least = found.copy(), float(rest[0])
         if least <= _ACCEPTED:
             return best[0], least
-        size = np.sqrt(max(slack, float(rest[0])))
-        starts = found[:, None, :k] + size * np.linspace(0.2, 3, 24)[:, None, None, None] * rng.standard_normal(
-            (1, 24, k, 2, 4)
-        )
+        # From the square root of the distance, to turns of order one where all that is reached is thin.
+        size = np.geomspace(0.3 * np.sqrt(max(slack, float(rest[0]), 1e-14)), 1.0, 24)[:, None, None, None]
+        starts = found[:, None, :k] + size * rng.standard_normal((1, 24, k, 2, 4))
         starts /= np.linalg.norm(starts, axis=-1, keepdims=True)
         refine(target, row, phases, starts, every, 24, _STEPS, found, rest)
         if rest[0] < least:
@@ -144,8 +161,11 @@ def sequence_layers(
     sequences: Vector,
     frames: Vector,
     which: NDArray[np.int64],
-) -> Vector:
+) -> tuple[Vector, Vector]:
     """Return the one-qubit gates of circuits of given sequences, as quaternions, shape (N, k + 1, 2, 4).
+
+    With them comes a bound (N,) on their distance from the class asked for: 0 for rounding, and up to 1e-10 for points
+    that lie within about as much of several facets and of a coincidence of phases without lying on them.
 
     Parameters
     ----------
@@ -169,9 +189,9 @@ def sequence_layers(
     right = np.where(turned[:, None, None], multiply(_IMAGE_RIGHT, right), right)
     k = sequences.shape[1]
     if k == 0:
-        return multiply(left, right)[:, None]
+        return multiply(left, right)[:, None], np.zeros(len(points))
     between, outer, inner, residual = inner_gates(points, sequences, which)
-    if not (residual <= 3e-12).all():
+    if not (residual <= _GIVEN_UP).all():
         worst = int(np.argmax(residual))
         raise CannotError(
             "no circuit was found for a class that is reached: this is a fault of gatewright, please report it",
@@ -183,4 +203,4 @@ def sequence_layers(
     for j in range(1, k):
         out[:, j] = multiply(undo_right[which, j], between[:, j - 1], undo_left[which, j - 1])
     out[:, k] = multiply(left, conjugate(outer), undo_left[which, k - 1])
-    return out
+    return out, np.where(residual <= _ACCEPTED, 0.0, residual)
