@@ -366,13 +366,13 @@ def test_the_axis_is_the_virtual_one():
         [RZ, native("z")],
         [H, native("t")],
         [RZ, X],
-        [native("rx", (0, 0.5)), RZ],
+        [native("rx", (0, 0.02)), RZ],
         [native("r", (0, PI), (0, PI / 2))],
         [native("r", (0, 0.3), FULL)],
         [native("u", (0, 1.0), FULL, FULL)],
         [native("rz", (0, 0.2)), SX],
-        [RZ, Native(Gate("tilted", 1, 1, lambda p: rotation([1, 0, 0.1], p[..., 0])), (FULL,))],
-        [RZ, Native(Gate("nearly", 1, 0, lambda p: rotation("x", PI / 2 + 1e-9)))],
+        [RZ, Native(Gate("tilted", 1, 1, lambda p: rotation([0.01, 0, 1], p[..., 0])), (FULL,))],
+        [RZ, Native(Gate("weak", 1, 0, lambda p: rotation("x", 0.01)))],
     ],
 )
 def test_what_is_not_enough(natives):
