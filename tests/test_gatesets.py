@@ -14,7 +14,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from openqasm3 import ast
-from scipy.linalg import expm
+from scipy.linalg import expm, norm, polar
 from scipy.spatial.transform import Rotation
 
 from gatewright.devices.gateset import (
@@ -239,6 +239,48 @@ def test_symmetric_gates_are_found_from_the_matrix() -> None:
 def test_what_entangles(matrix: Any, entangles: bool) -> None:
     # Brylinski & Brylinski (2002): everything but products and products times SWAP.
     assert read_gate_set(made_of(mine={"qubits": 2, "matrix": matrix})).can_entangle is entangles
+
+
+# --- measured gates
+
+
+def noisy(u: Any, size: float, seed: int) -> Any:
+    rng = np.random.default_rng(seed)
+    return u + size * (rng.normal(size=u.shape) + 1j * rng.normal(size=u.shape))
+
+
+@given(st.floats(-12, -1.6), st.integers(0, 2**32 - 1), st.sampled_from([2, 4]))
+@settings(max_examples=30, deadline=None)
+def test_measured_matrices_become_the_nearest_unitary(power: float, seed: int, size: int) -> None:
+    # Fan and Hoffman, Proc. AMS 6, 111 (1955): the polar factor, here by SciPy; its distance by SciPy's norm.
+    matrix = noisy(haar_unitary(size, rng=seed), 10**power, seed)
+    entry = {"qubits": size.bit_length() - 1, "matrix": matrix, "measured": True}
+    native = read_gate_set(made_of(mine=entry)).gates["mine"]
+    factor = polar(matrix)[0]
+    assert np.abs(native.gate.matrix() - factor).max() < 1e-13
+    assert native.measured and native.moved == pytest.approx(norm(matrix - factor, 2), abs=1e-14)
+    assert read_gate_set(made_of(mine=entry)).measured == {"mine": native.moved}
+    if power > -11:
+        with pytest.raises(GateSetError, match="is not unitary"):
+            read_gate_set(made_of(mine={**entry, "measured": False}))
+
+
+def test_what_cannot_be_a_measured_gate() -> None:
+    def refused(**entry: Any) -> str:
+        with pytest.raises(GateSetError) as caught:
+            read_gate_set(made_of(mine={"qubits": 1, "measured": True, **entry}))
+        return str(caught.value)
+
+    far = "the measured matrix of 'gates.mine' is too far from any unitary; required: at most 0.3 in operator norm"
+    assert far in refused(matrix=[[1, 0], [0, 0.6]])
+    assert "singular" in refused(matrix=[[1, 0], [0, 0]])
+    assert "required: a matrix without parameters" in refused(parameters=[RANGED], matrix=RZ["matrix"])
+    assert "required: true or false" in refused(matrix=[[1, 0], [0, 1]], measured="nearly")
+    with pytest.raises(GateSetError, match="say measured = true"):
+        read_gate_set(made_of(mine={"qubits": 1, "matrix": [[1, 0.01], [0, 1]]}))
+    # A measured CZ is not the CZ of that name.
+    with pytest.raises(GateSetError, match="'cz' is the name of another gate"):
+        read_gate_set(made_of(cz={"qubits": 2, "measured": True, "matrix": noisy(np.diag([1, 1, 1, -1]), 0.01, 1)}))
 
 
 def test_a_set_without_a_two_qubit_gate_is_allowed() -> None:

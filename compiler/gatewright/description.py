@@ -107,6 +107,8 @@ def _gate_set(gate_set: GateSet) -> dict[str, Any]:
                 "qubits": native.gate.n_qubits,
                 "ranges": [list(bounds) for bounds in native.ranges],
                 "virtual": native.virtual,
+                "measured": native.measured,
+                "distance_moved": native.moved,
                 "duration_ns": native.duration_ns,
                 "error": native.error,
             }

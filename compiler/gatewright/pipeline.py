@@ -121,6 +121,7 @@ class Result:
             "tolerance": self.tolerance,
             "device": self.device.name,
             "gate_set": self.device.gate_set.name,
+            "measured_gates": self.device.gate_set.measured,
             "input": {
                 "qubits": self.source.n_qubits,
                 "operations": len(self.source),

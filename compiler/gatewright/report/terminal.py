@@ -30,6 +30,8 @@ def print_result(result: Result, stream: TextIO) -> None:
     rows.append(("error bound", f"{verdict.error_bound:.2g}", f"proven: {verdict.windows} {verdict.method}"))
     if result.moved:
         rows.append(("input moved by", f"{result.moved:.2g}", "to the nearest unitary"))
+    for name, moved in result.device.gate_set.measured.items():
+        rows.append((f"measured {name} moved by", f"{moved:.2g}", "to the nearest unitary, which is compiled to"))
     for entry in result.budget:
         met = "met" if entry["met"] else "NOT MET"
         rows.append((f"budget {entry['name']}", f"{entry['relation']} {entry['limit']:g}", met))
