@@ -36,6 +36,7 @@ from gatewright.stages.synthesise import synthesise
 from gatewright.stages.windows import TWO, fuse_circuit, window_unitaries
 from gatewright.synthesis.definition import definition_of
 from gatewright.synthesis.native import NativeSet, native_set
+from gatewright.synthesis.toolkit import least_mixed_uses
 
 __all__ = ["CHAIN", "EFFORTS", "Result", "check", "compile", "count"]
 
@@ -45,9 +46,8 @@ CHAIN: tuple[Stage, ...] = (expand, place, route, fuse, synthesise, schedule)
 EFFORTS = ("quick", "standard", "deep")
 
 #: A window of a proof may be this far off by rounding, beyond the tolerance that the user allows: once for its
-#: entanglers, and three times for each of its at most eight one-qubit runs.
+#: entanglers, and three times for each of its one-qubit runs, two more than twice the number of entanglers.
 ROUNDING = 1e-11
-USES_OF_TOLERANCE = 25
 #: Full unitaries are compared as well up to this many qubits, where no more than this many matrix entries are computed.
 DENSE_QUBITS = 9
 DENSE_WORK = 2.5e8
@@ -248,7 +248,8 @@ def compile(  # noqa: A001
         draft = stage(draft)
     clock.start("prove")
     proof = Proof(draft.steps)
-    window_tolerance = ROUNDING + USES_OF_TOLERANCE * tolerance
+    deepest = max((len(entangler.entangler.reach) - 1 for entangler in native.entanglers), default=0)
+    window_tolerance = ROUNDING + (1 + 6 * (deepest + 1)) * tolerance
     verdict = check_proof(circuit, draft.circuit, proof, device=device, tolerance=window_tolerance)
     verdict = _second_opinion(circuit, draft.circuit, verdict)
     clock.start("count")
@@ -379,18 +380,22 @@ def _second_opinion(source: Circuit, output: Circuit, verdict: Verdict) -> Verdi
 def _lower_bound(circuit: Circuit, expanded: Circuit, native: NativeSet, tolerance: float, *, stays: bool) -> Bound:
     """Sum the least number of entanglers over the input's own windows."""
     fused = fuse_circuit(expanded)
-    if native.entangler is None or not np.count_nonzero(fused.kind == TWO):
+    if not native.entanglers or not np.count_nonzero(fused.kind == TWO):
         return Bound(0, "no two-qubit windows in the input")
     _, two = window_unitaries(expanded, fused)
-    counts = native.entangler.entangler.count(two, tolerance=tolerance)
+    tools = [tool.entangler for tool in native.straight]
+    counts = least_mixed_uses(two, tools, tolerance=tolerance)
+    names = " or ".join(f"'{tool.gate.name}'" for tool in native.straight)
     of_what = "the input" if expanded is circuit else "the input, written in gates of one and two qubits"
     how = (
-        f"sum over the two-qubit windows of {of_what}, of the exact least number of '{native.entangler.gate.name}' "
-        "that each needs on its own, with free one-qubit gates and all-to-all connectivity"
+        f"sum over the two-qubit windows of {of_what}, of the exact least number of {names} that "
+        "each needs on its own, with free one-qubit gates and all-to-all connectivity"
     )
     if not stays:
-        counts = np.minimum(counts, native.entangler.entangler.count_exchanged(two, tolerance=tolerance))
+        counts = np.minimum(counts, least_mixed_uses(two, tools, tolerance=tolerance, exchanged=True))
         how += ", its two wires exchanged where that needs fewer"
+    if len(two) == 1 and stays and len(tools) == 1 and int(counts[0]):
+        how += f"; here {tools[0].reason(two[0], tolerance=tolerance)}"
     how += (
         "; a bound for circuits that keep this partition into windows, not the optimum of the whole circuit: "
         "larger windows may need fewer"
