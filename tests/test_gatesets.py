@@ -67,6 +67,17 @@ LITERATURE: dict[str, Callable[..., Any]] = {
     "iswap": lambda: 0.25j * np.pi * (np.kron(X, X) + np.kron(Y, Y)),
     "rxx": lambda t: -0.5j * t * np.kron(X, X),
     "zx90": lambda: -0.25j * np.pi * np.kron(Z, X),
+    "h": lambda: -0.5j * np.pi * (X + Z) / np.sqrt(2),
+    "rn": lambda t: -0.5j * t * (np.sin(np.pi / 3) * X + np.cos(np.pi / 3) * Z),
+    "cp": lambda t: 0.25j * t * np.kron(ONE - Z, ONE - Z),
+    "csx": lambda: 0.125j * np.pi * np.kron(ONE - Z, ONE - X),
+    "half_iswap": lambda: 0.125j * np.pi * (np.kron(X, X) + np.kron(Y, Y)),
+    # SWAP is -1 on the singlet, its root i: Loss & DiVincenzo, PRA 57, 120 (1998).
+    "half_swap": lambda: -0.125j * np.pi * (np.kron(X, X) + np.kron(Y, Y) + np.kron(Z, Z)),
+    # Zhang, Vala, Sastry & Whaley, PRL 93, 020502 (2004).
+    "b": lambda: 0.25j * np.pi * np.kron(X, X) + 0.125j * np.pi * np.kron(Y, Y),
+    # fSim(80 degrees, 30 degrees): Foxen et al., PRL 125, 120504 (2020).
+    "fsim": lambda: -2j / 9 * np.pi * (np.kron(X, X) + np.kron(Y, Y)) - 1j / 24 * np.pi * np.kron(ONE - Z, ONE - Z),
 }
 
 
@@ -97,11 +108,14 @@ def test_shipped_sets_are_unitary_sufficient_and_complete(shipped: GateSet) -> N
         assert (native.duration_ns == 0) == native.virtual
         assert native.definition or name in STANDARD_LIBRARY
         pair = native.gate.n_qubits == 2
-        assert native.symmetric == (name in {"cz", "iswap", "rxx"}) or not pair
+        assert (
+            native.symmetric == (name in {"cz", "iswap", "rxx", "cp", "half_iswap", "half_swap", "b", "fsim"})
+            or not pair
+        )
 
 
 def test_names_are_those_of_the_files() -> None:
-    assert len(shipped_gate_sets()) >= 6
+    assert len(shipped_gate_sets()) >= 15
     for name in shipped_gate_sets():
         assert read_gate_set(name).name == name
         path = gate_set_folder() / f"{name}.toml"
@@ -126,9 +140,14 @@ def value_of(node: ast.Expression, names: dict[str, float]) -> float:
         return {**names, "pi": math.pi}[node.name]
     if isinstance(node, (ast.IntegerLiteral, ast.FloatLiteral)):
         return node.value
+    if isinstance(node, ast.UnaryExpression):
+        assert node.op.name == "-"
+        return -value_of(node.expression, names)
     assert isinstance(node, ast.BinaryExpression)
     left, right = value_of(node.lhs, names), value_of(node.rhs, names)
-    return {"+": left + right, "-": left - right, "/": left / right if right else math.nan}[node.op.name]
+    return {"+": left + right, "-": left - right, "*": left * right, "/": left / right if right else math.nan}[
+        node.op.name
+    ]
 
 
 def defined_matrix(text: str, point: list[float]) -> Any:

@@ -272,14 +272,23 @@ def _describe(options: argparse.Namespace) -> int:
     else:
         source = load(name, nearest_unitary=options.nearest_unitary, qubit_order=options.qubit_order)
         thing = source.circuit.unitary()
+    _different([options.json, options.chamber])
+    targets = {
+        place: load(place, nearest_unitary=options.nearest_unitary, qubit_order=options.qubit_order).circuit.unitary()
+        for place in options.target
+    }
     _prepare()
     from gatewright.description import describe
 
-    facts = describe(thing)
+    facts = describe(thing, targets=targets)
     if not of_data:
         facts["distance_moved"] = source.moved
-    if options.json:
-        _write({options.json: _to_json(facts)})
-    if options.json != "-":
+    outputs = {options.json: _to_json(facts)} if options.json else {}
+    if options.chamber:
+        from gatewright.report.reach import picture_of
+
+        outputs[options.chamber] = picture_of(thing, facts, name=Path(name).name).encode()
+    _write(outputs)
+    if "-" not in outputs:
         print_description(facts, sys.stdout)
     return 0
