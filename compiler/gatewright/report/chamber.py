@@ -32,6 +32,7 @@ _TO_EYE = np.array([70 / 146, -1.0, 108 / 76])
 _WIDTH, _HEIGHT = 372, 318
 _ORIGIN = np.array([40.0, 232.0])
 _MOST_IN_A_ROW = 3
+_HEAD = 70
 
 _PAPER, _INK, _QUIET, _LINE = "#fbfaf6", "#1d2a36", "#5b6873", "#8a96a0"
 _SOLID = np.array([27.0, 122.0, 134.0])
@@ -132,12 +133,13 @@ def angle_text(angle: float) -> str:
     return f"{sign}{abs(angle) / np.pi:.4f}π"
 
 
-def draw_chamber(title: str, panels: Sequence[Panel], marks: Sequence[Mark] = ()) -> str:
+def draw_chamber(title: str, panels: Sequence[Panel], marks: Sequence[Mark] = (), *, about: str = "") -> str:
     """Return an SVG picture.
 
     Parameters
     ----------
-    title : str
+    title, about : str
+        Heading, and a line below it.
     panels : sequence of Panel
     marks : sequence of Mark
         Shown in every panel.
@@ -152,21 +154,22 @@ def draw_chamber(title: str, panels: Sequence[Panel], marks: Sequence[Mark] = ()
     rows = -(-len(panels) // columns)
     width = max(columns, 2) * _WIDTH + 24
     key = list(_key(marks, width))
-    height = 52 + rows * _HEIGHT + (20 + 22 * len(key) if key else 0) + 14
+    height = _HEAD + rows * _HEIGHT + (20 + 22 * len(key) if key else 0) + 14
     parts = [
         f'<svg xmlns="http://www.w3.org/2000/svg" width="{width}" height="{height}" viewBox="0 0 {width} {height}" '
         f'role="img" {_FONT}>',
         f"<title>{escape(title)}</title>",
         f'<rect width="{width}" height="{height}" rx="10" fill="{_PAPER}"/>',
-        _text(24, 34, title, size=17, weight="bold"),
+        _text(24, 34, _fitted(title, (width - 48) / 11), size=17, weight="bold"),
+        _text(24, 55, _fitted(about, (width - 48) / 8.2), size=13, colour=_QUIET),
     ]
     margin = (width - columns * _WIDTH) / 2
     for number, panel in enumerate(panels):
         row, column = divmod(number, columns)
-        parts.append(f'<g transform="translate({margin + column * _WIDTH:g} {48 + row * _HEIGHT})">')
+        parts.append(f'<g transform="translate({margin + column * _WIDTH:g} {_HEAD - 4 + row * _HEIGHT})">')
         parts += _panel(panel, marks)
         parts.append("</g>")
-    top = 52 + rows * _HEIGHT
+    top = _HEAD + rows * _HEIGHT
     if key:
         parts.append(f'<path d="M24 {top}H{width - 24}" stroke="{_LINE}" stroke-width="0.8"/>')
     for line, (badge, target, text) in enumerate(key):
@@ -176,11 +179,14 @@ def draw_chamber(title: str, panels: Sequence[Panel], marks: Sequence[Mark] = ()
 
 
 def _key(marks: Sequence[Mark], width: float) -> Iterator[tuple[str, bool, str]]:
-    room = int((width - 90) / 7.4)
     for badge, mark in zip(_badges(marks), marks, strict=True):
         place = ", ".join(angle_text(float(c)) for c in mark.point)
         text = f"{mark.name} · ({place})" + (f" · {mark.remark}" if mark.remark else "")
-        yield badge, mark.target, text if len(text) <= room else text[: room - 1] + "…"
+        yield badge, mark.target, _fitted(text, (width - 90) / 8.2)
+
+
+def _fitted(text: str, room: float) -> str:
+    return text if len(text) <= room else text[: int(room) - 1] + "…"
 
 
 def _badges(marks: Sequence[Mark]) -> list[str]:

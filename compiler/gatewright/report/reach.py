@@ -55,7 +55,8 @@ def picture_of(thing: Device | GateSet | Array, facts: Mapping[str, Any], *, nam
     power = f"entangling power {facts['entangling_power']:.4f} of at most 2/9 = 0.2222"
     panel = Panel("perfect entanglers (8/3π of all) are filled", power, pieces)
     remark = f"{facts['cnot_count']} CNOTs; {'' if facts['perfect_entangler'] else 'not '}a perfect entangler"
-    return draw_chamber("The class of a two-qubit unitary", [panel], [_mark(name or "matrix", thing, remark)])
+    mark = _mark(name or "matrix", thing, remark)
+    return draw_chamber(name or "matrix", [panel], [mark], about="the class of a two-qubit unitary")
 
 
 def _mark(name: str, unitary: Array, remark: str) -> Mark:
@@ -72,7 +73,8 @@ def _of_gate_set(gate_set: GateSet, facts: Mapping[str, Any]) -> str:
         uses = target["uses"]
         marks.append(Mark(Path(name).name, np.array(target["coordinates"]), True, f"{uses} use{'s' * (uses != 1)}"))
     panels = [_panel(level) for level in _chosen(levels)]
-    return draw_chamber(f"{gate_set.name}: what so many entanglers reach, with free one-qubit gates", panels, marks)
+    about = "classes of two-qubit gates that so many uses of its entanglers reach, with free one-qubit gates"
+    return draw_chamber(gate_set.name, panels, marks, about=about)
 
 
 def _chosen(levels: tuple[Uses, ...]) -> list[Uses]:
