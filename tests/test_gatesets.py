@@ -108,10 +108,8 @@ def test_shipped_sets_are_unitary_sufficient_and_complete(shipped: GateSet) -> N
         assert (native.duration_ns == 0) == native.virtual
         assert native.definition or name in STANDARD_LIBRARY
         pair = native.gate.n_qubits == 2
-        assert (
-            native.symmetric == (name in {"cz", "iswap", "rxx", "cp", "half_iswap", "half_swap", "b", "fsim"})
-            or not pair
-        )
+        either_way = {"cz", "iswap", "rxx", "cp", "half_iswap", "half_swap", "b", "fsim"}
+        assert native.symmetric == (name in either_way) or not pair
 
 
 def test_names_are_those_of_the_files() -> None:
@@ -145,9 +143,8 @@ def value_of(node: ast.Expression, names: dict[str, float]) -> float:
         return -value_of(node.expression, names)
     assert isinstance(node, ast.BinaryExpression)
     left, right = value_of(node.lhs, names), value_of(node.rhs, names)
-    return {"+": left + right, "-": left - right, "*": left * right, "/": left / right if right else math.nan}[
-        node.op.name
-    ]
+    quotient = left / right if right else math.nan
+    return {"+": left + right, "-": left - right, "*": left * right, "/": quotient}[node.op.name]
 
 
 def defined_matrix(text: str, point: list[float]) -> Any:
