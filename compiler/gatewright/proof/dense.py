@@ -21,6 +21,8 @@ Array = NDArray[np.complex128]
 
 #: Largest matrix: 2**24 entries are 256 MiB.
 MAX_LOG_ENTRIES = 24
+#: Unknown parameters are given random values as often as this.
+BINDINGS = 3
 
 
 def touched_qubits(output: Circuit, initial: Sequence[int], final: Sequence[int]) -> list[int]:
@@ -41,7 +43,7 @@ def dense_distance(source: Circuit, output: Circuit, initial: Sequence[int], fin
     Parameters
     ----------
     source, output : Circuit
-        Unitary, but for measurements at the end; these must agree.
+        Unitary, but for measurements at the end; these must agree. Unknown parameters are given a few random values.
     initial, final : sequence of int, length source.n_qubits
         Output qubit of each source qubit at the two ends.
 
@@ -52,6 +54,13 @@ def dense_distance(source: Circuit, output: Circuit, initial: Sequence[int], fin
     ProofError
         The measurements differ.
     """
+    if source.symbolic or output.symbolic:
+        rng = np.random.default_rng(source.n_qubits)
+        atoms = dict.fromkeys((*source.atoms, *output.atoms))
+        draws = [
+            dict(zip(atoms, rng.uniform(-np.pi, np.pi, len(atoms)).tolist(), strict=True)) for _ in range(BINDINGS)
+        ]
+        return max(dense_distance(source.at_atoms(v), output.at_atoms(v), initial, final) for v in draws)
     held = touched_qubits(output, initial, final)
     n = source.n_qubits
     if len(held) + n > MAX_LOG_ENTRIES:
