@@ -15,7 +15,7 @@ from gatewright.devices import Device, GateSet, read_gate_set, shipped_gate_sets
 from gatewright.errors import GatewrightError
 from gatewright.linalg import haar_unitary
 from gatewright.synthesis.haar_cost import Point, best_supplement, haar_cost, reach_by_number
-from gatewright.synthesis.native import native_set
+from gatewright.synthesis.native import native_set, usable_entanglers
 from gatewright.synthesis.selection import select, violation_text
 from gatewright.synthesis.toolkit import cheapest_sequences
 from gatewright.synthesis.weyl import canonical_coordinates
@@ -37,9 +37,11 @@ def entangler_points(gate_set: GateSet) -> tuple[tuple[str, ...], tuple[Point, .
     GatewrightError
         The set cannot be used; why.
     """
-    tools = native_set(gate_set).straight
-    points = [tool.entangler.ideal for tool in tools]
-    return tuple(tool.gate.name for tool in tools), tuple((float(x), float(y), float(z)) for x, y, z in points)
+    usable = usable_entanglers(gate_set)
+    points = [entangler.ideal for _, _, entangler in usable]
+    return tuple(native.gate.name for native, _, _ in usable), tuple(
+        (float(x), float(y), float(z)) for x, y, z in points
+    )
 
 
 def target_facts(gate_set: GateSet, matrix: NDArray[np.complex128], *, tolerance: float = 1e-12) -> dict[str, Any]:
