@@ -157,11 +157,14 @@ def _supplement(
 
 def _cheapest_uses(points: tuple[Point, ...], errors: Vector, durations: Vector) -> Vector:
     """Return the mean number of uses of each entangler where the fewest are used, the better ones first."""
+    if len(points) == 1:
+        gains = np.diff([level.share for level in reach_by_number(points)], prepend=0.0)
+        return np.array([np.maximum(gains, 0.0) @ np.arange(len(gains))])
     decisive = errors if np.isfinite(errors).all() else durations if np.isfinite(durations).all() else 0 * errors
     decisive = np.nan_to_num(decisive)
     # With two, only which is the better matters; so that edges alike in that share one computation.
     rank = np.argsort(np.argsort(decisive)) if len(points) <= 2 else decisive
-    costs = tuple((1.0, float(value)) for value in rank) if len(points) > 1 else ((1.0,),)
+    costs = tuple((1.0, float(value)) for value in rank)
     return np.array(haar_cost(points, costs).uses)
 
 
