@@ -490,7 +490,7 @@ def plan_one_qubit(gates: Sequence[NativeOneQubit], *, passing: Sequence[ArrayLi
             required="a general rotation; or equatorial rotations; or rotations by any angle about an axis, with "
             "rotations about another axis or with a fixed gate that tilts the axis",
             found=found or "no one-qubit gate",
-            hint=too_weak(kinds) or "an angle may be made of up to 4 equal pulses",
+            hint=too_weak(kinds) or "an angle may be made of up to 64 equal pulses",
         )
     samples = _samples([plan._way.frame for plan in plans])
     timed = all(native.virtual or native.duration_ns is not None for native in gates)
