@@ -214,4 +214,16 @@ def _add_describe(commands: argparse._SubParsersAction) -> None:  # type: ignore
         "thing", metavar="GATESET|DEVICE|MATRIX", help="shipped gate set by name, TOML file, or a matrix file"
     )
     parser.add_argument("--json", metavar="FILE", help=_JSON)
+    parser.add_argument(
+        "--target",
+        action="append",
+        default=[],
+        metavar="MATRIX",
+        help="two-qubit unitary: say how many entanglers of the gate set it needs, and why no fewer; may be repeated",
+    )
+    parser.add_argument(
+        "--chamber",
+        metavar="FILE.svg",
+        help="draw the Weyl chamber: what each number of uses reaches, with the entanglers and the targets",
+    )
     _matrix_options(parser)

@@ -295,23 +295,32 @@ def _describe(options: argparse.Namespace) -> int:
 
     name = options.thing
     of_data = name in shipped_gate_sets() or Path(name).suffix.lower() == ".toml"
-    thing: Any = None
-    if of_data:
-        thing = read_any(name)
-    else:
-        source = load(name, nearest_unitary=options.nearest_unitary, qubit_order=options.qubit_order)
+    moved = 0.0
+
+    def matrix_in(place: str) -> Any:
+        nonlocal moved
+        source = load(place, nearest_unitary=options.nearest_unitary, qubit_order=options.qubit_order)
         if isinstance(source.circuit, Program):
             what = "a program with classical control has no matrix"
-            raise InputError(what, required="a circuit of gates", where=name)
-        thing = source.circuit.unitary()
+            raise InputError(what, required="a circuit of gates", where=place)
+        moved = source.moved
+        return source.circuit.unitary()
+
+    _different([options.json, options.chamber])
+    targets = {place: matrix_in(place) for place in options.target}
+    thing: Any = read_any(name) if of_data else matrix_in(name)
     _prepare()
     from gatewright.description import describe
 
-    facts = describe(thing)
+    facts = describe(thing, targets=targets)
     if not of_data:
-        facts["distance_moved"] = source.moved
-    if options.json:
-        _write({options.json: _to_json(facts)})
-    if options.json != "-":
+        facts["distance_moved"] = moved
+    outputs = {options.json: _to_json(facts)} if options.json else {}
+    if options.chamber:
+        from gatewright.report.reach import picture_of
+
+        outputs[options.chamber] = picture_of(thing, facts, name=Path(name).name).encode()
+    _write(outputs)
+    if "-" not in outputs:
         print_description(facts, sys.stdout)
     return 0
