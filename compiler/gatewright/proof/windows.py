@@ -13,7 +13,7 @@ measurements, resets and barriers are the identity. The module holds data only; 
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
@@ -46,6 +46,9 @@ class Step:
         Quaternion (a, b, c, d), the matrix a − i(b X + c Y + d Z), for the seam after the window.
     output : Circuit or None
         The circuit this step ends with, where it is not the last.
+    claims : ndarray of int8, shape (W,), optional
+        What is claimed of each window, by its number in `gatewright.proof.claims.CLAIM_KINDS`; by default 0
+        throughout: equal as matrices. Beside any other claim the seams are the identity.
     """
 
     initial: Integers
@@ -58,6 +61,12 @@ class Step:
     exit: Integers
     seams: NDArray[np.float64]
     output: Circuit | None = None
+    claims: NDArray[np.int8] = field(default_factory=lambda: np.zeros(0, dtype=np.int8))
+
+    def __post_init__(self) -> None:
+        """Claim equal matrices where nothing else is said."""
+        if not len(self.claims):
+            object.__setattr__(self, "claims", np.zeros(max(self.windows, 0), dtype=np.int8))
 
     @property
     def windows(self) -> int:
@@ -85,7 +94,9 @@ class Verdict:
     ----------
     error_bound : float
         Upper bound on the operator-norm distance, up to global phase, between the source (on its wires, moved to
-        their places) and the output.
+        their places) and the output; the checker's own rounding is part of it.
+    rounding : float
+        That part: a bound on what the checker's own arithmetic may have hidden.
     windows : int
     worst_window, worst_distance
         Number (within its step) and distance of the window that contributes most.
@@ -101,12 +112,14 @@ class Verdict:
     initial: tuple[int, ...]
     final: tuple[int, ...]
     method: str
+    rounding: float = 0.0
 
     def to_dict(self) -> dict[str, Any]:
         """Return the entries of the JSON summary's ``proof``."""
         return {
             "verified": True,
             "error_bound": self.error_bound,
+            "rounding": self.rounding,
             "windows": self.windows,
             "method": self.method,
             "worst_window": self.worst_window,
