@@ -24,7 +24,7 @@ from gatewright.devices import Device
 from gatewright.errors import InputError, ProofError, nearest_name
 from gatewright.gates import GATES
 from gatewright.linalg import checked_unitary
-from gatewright.proof import Proof, Verdict, check_legal, check_proof, encode_proof
+from gatewright.proof import Fingerprints, Proof, Verdict, check_legal, check_proof, encode_proof
 from gatewright.proof.dense import dense_distance, dense_work
 from gatewright.stages.draft import Draft, Settings, Stage
 from gatewright.stages.expand import expand
@@ -137,7 +137,7 @@ class Result:
 
     def encode_proof(self) -> bytes:
         """Return the bytes of the proof file, for `gatewright.read_proof` and ``gatewright check``."""
-        return encode_proof(self.proof, self.source, self.circuit)
+        return encode_proof(self.proof)
 
     def to_qasm(self, *, version: int = 3) -> str:
         """Return the circuit as an OpenQASM program, with the placement in its header.
@@ -246,7 +246,7 @@ def compile(  # noqa: A001
         clock.start(stage.__name__)
         draft = stage(draft)
     clock.start("prove")
-    proof = Proof(draft.steps)
+    proof = Proof(draft.steps, Fingerprints.of(circuit, draft.circuit, device))
     window_tolerance = ROUNDING + USES_OF_TOLERANCE * tolerance
     verdict = check_proof(circuit, draft.circuit, proof, device=device, tolerance=window_tolerance)
     verdict = _second_opinion(circuit, draft.circuit, verdict)

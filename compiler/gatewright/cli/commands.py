@@ -211,14 +211,14 @@ def _check(options: argparse.Namespace) -> int:
             source.circuit,
             output.circuit,
             device=device,
-            proof=proof.proof if proof else None,
+            proof=proof,
             initial=places.initial if places else None,
             final=places.final if places else None,
             tolerance=options.tolerance,
         )
     except GatewrightError as error:
         if proof is not None and error.exit_code == 3:
-            changed = _changed(proof.source, proof.output, source.circuit, output.circuit)
+            changed = _changed(proof.made_for.source, proof.made_for.output, source.circuit, output.circuit)
             own = "native gates of a device are known only with its --device" if changed and device is None else ""
             error.hint = "; ".join(filter(None, (changed or error.hint, own)))
         raise
@@ -249,12 +249,12 @@ def beyond_the_library() -> dict[str, Gate]:
 
 def _changed(source_print: str, output_print: str, source: Any, output: Any) -> str:
     """Say which of the two circuits is not the one that the proof was made for."""
-    from gatewright.proof.file import fingerprint
+    from gatewright.proof import fingerprint
 
     changed = [
         name
         for name, circuit, known in (("source", source, source_print), ("output", output, output_print))
-        if fingerprint(circuit) != known
+        if known and fingerprint(circuit) != known
     ]
     return f"the {' and the '.join(changed)} has been changed since the proof was made" if changed else ""
 

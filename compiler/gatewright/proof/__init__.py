@@ -2,17 +2,20 @@
 
 from gatewright.proof.checker import check_legal, check_proof
 from gatewright.proof.dense import dense_distance
-from gatewright.proof.file import ProofFile, encode_proof, read_proof
+from gatewright.proof.file import decode_proof, encode_proof, read_proof
+from gatewright.proof.fingerprints import Fingerprints, fingerprint
 from gatewright.proof.windows import Proof, Step, Verdict
 
 __all__ = [
+    "Fingerprints",
     "Proof",
-    "ProofFile",
     "Step",
     "Verdict",
     "check_legal",
     "check_proof",
+    "decode_proof",
     "dense_distance",
     "encode_proof",
+    "fingerprint",
     "read_proof",
 ]

@@ -24,8 +24,17 @@ from numpy.typing import NDArray
 from gatewright.circuit import Circuit
 from gatewright.errors import ProofError
 from gatewright.gates import BARRIER, MEASURE, RESET
-from gatewright.proof.claims import CLAIM_KINDS, MATRIX, Sides
-from gatewright.proof.products import BATCH_WIDTH, UNIT, Held, window_products
+from gatewright.proof.claims import CLAIM_KINDS, MATRIX, ClaimKind, Sides
+from gatewright.proof.fingerprints import check_fingerprints
+from gatewright.proof.products import (
+    BATCH_WIDTH,
+    UNIT,
+    Held,
+    frobenius_distances,
+    permute_rows,
+    quaternion_matrices,
+    window_products,
+)
 from gatewright.proof.windows import Proof, Step, Verdict
 
 if TYPE_CHECKING:
@@ -68,6 +77,7 @@ def check_proof(
     """
     if not proof.steps:
         raise ProofError("the proof is empty", required="at least one step")
+    given = output
     if device is not None:
         natives = {name: native.gate for name, native in device.gate_set.gates.items()}
         output = replace(output, table=tuple(natives.get(gate.name, gate) for gate in output.table))
@@ -91,6 +101,7 @@ def check_proof(
         if len(distances) and distances.max() > worst:
             worst_window, worst = int(distances.argmax()), float(distances.max())
         current = following
+    check_fingerprints(proof.made_for, source, given, device)
     return Verdict(
         error_bound=(measured + rounding) * (1 + 128 * UNIT),  # of the sums themselves
         rounding=rounding,
@@ -186,8 +197,8 @@ def _check_step(source: Circuit, output: Circuit, step: Step, tolerance: float) 
                 at = slots - step.offsets[first]
                 left, error_left = window_products(made.held(block, width), [before[at]], [])
                 right, error_right = window_products(meant.held(block, width), [], [after[at]])
-                right = _permute(right, step.entry[slots], step.exit[slots])
-                distances[block] = _distances(left, right)
+                right = permute_rows(right, step.entry[slots], step.exit[slots])
+                distances[block] = frobenius_distances(left, right)
                 roundings[block] = error_left + error_right + 16 * UNIT * 2 ** (width / 2)
         for window in (np.flatnonzero(special) + first).tolist():
             distances[window], roundings[window] = _check_claim(meant, made, step, window)
@@ -200,19 +211,11 @@ def _check_step(source: Circuit, output: Circuit, step: Step, tolerance: float) 
     return distances, roundings / (1 - roundings)
 
 
-def _distances(left: Array, right: Array) -> Vector:
-    """Return the Frobenius distance of each pair, up to a phase."""
-    overlap = np.einsum("nij,nij->n", left, right.conj())
-    size = np.abs(overlap)
-    phase = np.where(size > 0, overlap / np.where(size > 0, size, 1), 1)
-    return np.asarray(np.linalg.norm(left - phase[:, None, None] * right, axis=(1, 2)))
-
-
 def _check_claim(meant: _Side, made: _Side, step: Step, window: int) -> tuple[float, float]:
     """Let the claim made of one window judge it."""
     span = slice(step.offsets[window], step.offsets[window + 1])
     target = np.argmax(step.entry[span] == step.exit[span][:, None], axis=1)
-    kind = CLAIM_KINDS[step.claims[window]]
+    kind: type[ClaimKind] = CLAIM_KINDS[int(step.claims[window])]
     sides = Sides(meant.piece(window), made.piece(window), tuple(target.tolist()))
     try:
         return kind.check(sides)
@@ -340,12 +343,10 @@ class _Chain:
         span = slice(step.offsets[first], step.offsets[last])
         wires, entry, leave = step.wires[span], step.entry[span], step.exit[span]
         slot_window = np.repeat(np.arange(first, last), np.diff(step.offsets[first : last + 1]))
-        sides = ((wires, "holds a wire of the source twice"), (entry, "holds a wire of the output twice"))
-        sides = (*sides, (leave, "does not leave its wires on the qubits it took"))
-        codes = [np.sort(slot_window * len(self.place) + column) for column, _ in sides]
-        for code, (_, what) in zip(codes, sides, strict=True):
+        codes = [np.sort(slot_window * len(self.place) + column) for column in (wires, entry, leave)]
+        for code, side in zip(codes[:2], ("source", "output"), strict=True):
             if (np.diff(code) == 0).any():
-                _refuse(f"a window {what}")
+                _refuse(f"a window holds a wire of the {side} twice")
         if not np.array_equal(codes[1], codes[2]):
             _refuse("a window does not leave its wires on the qubits it took")
         order = np.argsort(_small(wires, len(self.place)), kind="stable")
@@ -373,7 +374,7 @@ class _Chain:
         beside = plain[slot_window - first]
         if not (_is_identity(before[beside]).all() and _is_identity(after[beside]).all()):
             _refuse("a seam crosses a measurement, reset or barrier, or meets a window claimed without a matrix")
-        return _quaternion_matrices(before), _quaternion_matrices(after)
+        return quaternion_matrices(before), quaternion_matrices(after)
 
     def finish(self) -> None:
         """Check that the wires end where it is claimed, and that no seam is left over."""
@@ -394,26 +395,6 @@ def _small(lane: NDArray[Any], count: int) -> NDArray[Any]:
 
 def _is_identity(q: Vector) -> NDArray[np.bool_]:
     return np.asarray(~q[:, 1:].any(axis=1))
-
-
-def _quaternion_matrices(q: Vector) -> Array:
-    a, b, c, d = (q / np.linalg.norm(q, axis=1, keepdims=True)).T
-    return np.asarray(np.stack([a - 1j * d, -c - 1j * b, c - 1j * b, a + 1j * d], axis=-1).reshape(-1, 2, 2))
-
-
-def _permute(matrices: Array, entry: NDArray[np.int32], leave: NDArray[np.int32]) -> Array:
-    """Move the qubit of each slot to the slot whose entry is its exit (rows only: a product from the left)."""
-    width = entry.shape[1]
-    moving = np.flatnonzero((entry != leave).any(axis=1))
-    if not len(moving):
-        return matrices
-    target = np.argmax(entry[moving][:, None, :] == leave[moving][:, :, None], axis=2)
-    bits = (np.arange(2**width)[:, None] >> np.arange(width - 1, -1, -1)) & 1
-    rows = (bits[None] << (width - 1 - target)[:, None, :]).sum(axis=2)
-    moved = np.empty_like(matrices[moving])
-    np.put_along_axis(moved, np.broadcast_to(rows[:, :, None], moved.shape), matrices[moving], axis=1)
-    matrices[moving] = moved
-    return matrices
 
 
 def _blocks(windows: Rows, width: int, counts: Rows) -> list[Rows]:

@@ -20,7 +20,18 @@ from gatewright.circuit import Circuit, apply_matrix, apply_operations
 from gatewright.gates import GATES, UNITARY, Gate
 from gatewright.linalg import dagger, kron, reorder_qubits
 
-__all__ = ["BATCH_WIDTH", "UNIT", "Held", "multiplication", "multiply_runs", "operation_matrices", "window_products"]
+__all__ = [
+    "BATCH_WIDTH",
+    "UNIT",
+    "Held",
+    "frobenius_distances",
+    "multiplication",
+    "multiply_runs",
+    "operation_matrices",
+    "permute_rows",
+    "quaternion_matrices",
+    "window_products",
+]
 
 Array = NDArray[np.complex128]
 Rows = NDArray[np.int64]
@@ -101,7 +112,7 @@ def _evaluated(gate: Gate, values: Vector) -> tuple[Array, Vector]:
 
 def _defects(matrices: Array) -> Vector:
     gram = _times(dagger(matrices), matrices) - np.eye(matrices.shape[-1])
-    return np.sqrt((gram.real**2 + gram.imag**2).sum(axis=(1, 2))) + multiplication(matrices.shape[-1])
+    return np.asarray(np.sqrt((gram.real**2 + gram.imag**2).sum(axis=(1, 2))) + multiplication(matrices.shape[-1]))
 
 
 def window_products(held: Held, lead: list[Array], trail: list[Array]) -> tuple[Array, Vector]:
@@ -256,3 +267,32 @@ def _embed(matrices: Array, slots: list[int], width: int) -> Array:
         return matrices
     wide = kron(matrices, np.eye(2 ** len(rest)))
     return reorder_qubits(wide, tuple(held.index(slot) for slot in range(width)))
+
+
+def frobenius_distances(left: Array, right: Array) -> Vector:
+    """Return the Frobenius distance of each pair, up to a phase."""
+    overlap = np.einsum("nij,nij->n", left, right.conj())
+    size = np.abs(overlap)
+    phase = np.where(size > 0, overlap / np.where(size > 0, size, 1), 1)
+    return np.asarray(np.linalg.norm(left - phase[:, None, None] * right, axis=(1, 2)))
+
+
+def quaternion_matrices(q: Vector) -> Array:
+    """Return the unitaries of quaternions (a, b, c, d), shape (k, 4): a - i(b X + c Y + d Z), after normalising."""
+    a, b, c, d = (q / np.linalg.norm(q, axis=1, keepdims=True)).T
+    return np.asarray(np.stack([a - 1j * d, -c - 1j * b, c - 1j * b, a + 1j * d], axis=-1).reshape(-1, 2, 2))
+
+
+def permute_rows(matrices: Array, entry: NDArray[np.int32], leave: NDArray[np.int32]) -> Array:
+    """Move the qubit of each slot to the slot whose entry is its exit (rows only: a product from the left)."""
+    width = entry.shape[1]
+    moving = np.flatnonzero((entry != leave).any(axis=1))
+    if not len(moving):
+        return matrices
+    target = np.argmax(entry[moving][:, None, :] == leave[moving][:, :, None], axis=2)
+    bits = (np.arange(2**width)[:, None] >> np.arange(width - 1, -1, -1)) & 1
+    rows = (bits[None] << (width - 1 - target)[:, None, :]).sum(axis=2)
+    moved = np.empty_like(matrices[moving])
+    np.put_along_axis(moved, np.broadcast_to(rows[:, :, None], moved.shape), matrices[moving], axis=1)
+    matrices[moving] = moved
+    return matrices

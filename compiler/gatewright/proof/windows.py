@@ -13,13 +13,17 @@ measurements, resets and barriers are the identity. The module holds data only; 
 
 from __future__ import annotations
 
+import os
 from dataclasses import dataclass, field
+from pathlib import Path
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
+from gatewright.errors import ProofFileError
+from gatewright.proof.fingerprints import Fingerprints
 
 __all__ = ["Proof", "Step", "Verdict"]
 
@@ -76,14 +80,45 @@ class Step:
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Proof:
-    """The steps from source to output, in order; each starts where the one before ended."""
+    """The steps from source to output, in order; each starts where the one before ended.
+
+    Attributes
+    ----------
+    steps : tuple of Step
+    made_for : Fingerprints
+        Of source, output, gate set and device, as far as they are stated; the checker compares them.
+    version : str
+        Version of gatewright that made it; empty for this one.
+    """
 
     steps: tuple[Step, ...]
+    made_for: Fingerprints = field(default_factory=Fingerprints)
+    version: str = ""
 
     @property
     def windows(self) -> int:
         """Number of windows in all steps together."""
         return sum(step.windows for step in self.steps)
+
+    def save(self, path: str | Path) -> None:
+        """Write the proof file, whole or not at all; `gatewright.read_proof` reads it.
+
+        Raises
+        ------
+        ProofFileError
+            The file cannot be written.
+        """
+        from gatewright.proof.file import encode_proof
+
+        data, path = encode_proof(self), Path(path)
+        temporary = path.with_name(f".{path.name}.{os.getpid()}")
+        try:
+            temporary.write_bytes(data)
+            temporary.replace(path)
+        except OSError as error:
+            raise ProofFileError(f"cannot write the proof file: {error.strerror}", where=str(path)) from None
+        finally:
+            temporary.unlink(missing_ok=True)
 
 
 @dataclass(frozen=True, slots=True)
