@@ -10,6 +10,7 @@ here can make it fail, never make it accept.
 
 from __future__ import annotations
 
+import heapq
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -18,24 +19,18 @@ from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
 from gatewright.gates import MEASURE
-from gatewright.linalg import kron
-from gatewright.proof.products import multiply_runs, operation_matrices
-from gatewright.proof.windows import Step
+from gatewright.proof.blocks import FIXED, LOOSE, PAIR, SWAP_ROWS, Blocks, factors_of, without_idle_blocks
+from gatewright.proof.windows import Proof, Step
 
 __all__ = ["Matched", "Stuck", "match_circuits"]
 
 Array = NDArray[np.complex128]
 Rows = NDArray[np.int64]
 
-#: How far from a product a block may be for the search to go on; the checker judges by its own tolerance.
-LOOSE = 1e-6
 #: How many ways of binding wires are tried.
 TRIALS = 64
 #: How many gates of a block are tried as a part of it, where the whole does not fit.
 LOOKAHEAD = 12
-#: Kinds of block: measurement, reset or barrier; one on a pair; wider than that.
-FIXED, PAIR, WIDE = 0, 2, 3
-_SWAP_ROWS = [0, 2, 1, 3]
 _ONE, _FOUR = np.eye(2, dtype=np.complex128), np.eye(4, dtype=np.complex128)
 
 
@@ -67,91 +62,14 @@ class Stuck:
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Matched:
-    """A step found, for the checker.
+    """A proof found, for the checker.
 
     Attributes
     ----------
-    step : Step
+    proof : Proof
     """
 
-    step: Step
-
-
-class _Blocks:
-    """A circuit in blocks: lists for what is looked at one by one, arrays for matrices."""
-
-    def __init__(self, circuit: Circuit) -> None:
-        self.circuit = circuit
-        n, widths, unitary = circuit.n_qubits, circuit.widths, circuit.is_unitary
-        single = unitary & (widths == 1)
-        self.single = np.flatnonzero(single)
-        self.wide = np.flatnonzero(~single)
-        rank = np.where(single, np.cumsum(single), np.cumsum(~single)) - 1
-        singles = np.empty((len(self.single), 2, 2), dtype=np.complex128)
-        rows = np.flatnonzero(unitary & (widths <= 2))
-        pairs: list[tuple[Rows, Array]] = []
-        for at, matrices, _ in operation_matrices(circuit, rows):
-            if matrices.shape[-1] == 2:
-                singles[rank[rows[at]]] = matrices
-            else:
-                pairs.append((rows[at], matrices))
-        # Runs of one-qubit gates between wider operations; see `products.window_products`.
-        is_wide = np.repeat(~single, widths)
-        order = np.argsort(circuit.qubits, kind="stable")
-        run = np.empty(len(circuit.qubits), dtype=np.int64)
-        run[order] = np.cumsum(is_wide[order]) - is_wide[order] + circuit.qubits[order]
-        last = np.cumsum(np.bincount(circuit.qubits[is_wide], minlength=n) + 1) - 1
-        self.run_of_single = run[circuit.offsets[:-1][single]]
-        self.runs = multiply_runs(self.run_of_single, singles, n + int(is_wide.sum()))
-        self.tails: list[int] = last.tolist()
-        starts = circuit.offsets[self.wide]
-        self.run_lists = [
-            run[s : s + w].tolist() for s, w in zip(starts.tolist(), widths[self.wide].tolist(), strict=True)
-        ]
-        self._cut(unitary, widths, pairs, rank, run)
-
-    def _cut(
-        self, unitary: NDArray[np.bool_], widths: Rows, pairs: list[tuple[Rows, Array]], rank: Rows, run: Rows
-    ) -> None:
-        circuit = self.circuit
-        self.kind: list[int] = []
-        self.wires: list[tuple[int, ...]] = []
-        self.members: list[list[int]] = []
-        block_of = np.empty(len(self.wide), dtype=np.int64)
-        turned = np.zeros(len(self.wide), dtype=bool)
-        last = [-1] * circuit.n_qubits
-        is_pair = (unitary & (widths == 2))[self.wide].tolist()
-        is_unitary = unitary[self.wide].tolist()
-        flat, offsets = circuit.qubits.tolist(), circuit.offsets[self.wide].tolist()
-        for k, start in enumerate(offsets):
-            wires = tuple(flat[start : start + len(self.run_lists[k])])
-            block = last[wires[0]]
-            if is_pair[k] and block >= 0 and block == last[wires[1]] and self.kind[block] == PAIR:
-                self.members[block].append(k)
-                turned[k] = wires[0] != self.wires[block][0]
-            else:
-                block = len(self.kind)
-                self.kind.append(PAIR if is_pair[k] else WIDE if is_unitary[k] else FIXED)
-                self.wires.append(wires)
-                self.members.append([k])
-                for wire in wires:
-                    last[wire] = block
-            block_of[k] = block
-        self.lanes: list[list[int]] = [[] for _ in range(circuit.n_qubits)]
-        for block, wires in enumerate(self.wires):
-            for wire in wires:
-                self.lanes[wire].append(block)
-        self.atoms = np.zeros((len(self.wide), 4, 4), dtype=np.complex128)
-        for rows, matrices in pairs:
-            at = rank[rows]
-            index = circuit.offsets[rows][:, None] + np.arange(2)
-            before = self.runs[run[index]]
-            made = matrices @ kron(before[:, 0], before[:, 1])
-            swapped = turned[at]
-            made[swapped] = made[swapped][:, _SWAP_ROWS][:, :, _SWAP_ROWS]
-            self.atoms[at] = made
-        paired = np.array(is_pair, dtype=bool)
-        self.products = multiply_runs(block_of[paired], self.atoms[paired], len(self.kind))
+    proof: Proof
 
 
 def match_circuits(source: Circuit, output: Circuit, initial: Sequence[int] | None = None) -> Matched | Stuck:
@@ -167,24 +85,29 @@ def match_circuits(source: Circuit, output: Circuit, initial: Sequence[int] | No
     Returns
     -------
     Matched or Stuck
-        The step for the checker, or how far it went.
+        The proof for the checker, or how far it went.
 
     Examples
     --------
     >>> from gatewright.circuit import Builder
     >>> a = Builder(2).gate("h", 0).gate("cx", 0, 1).build()
     >>> b = Builder(2).gate("h", 0).gate("h", 1).gate("cz", 0, 1).gate("h", 1).build()
-    >>> match_circuits(a, b).step.windows
+    >>> match_circuits(a, b).proof.windows
     3
     """
-    meant, made = _Blocks(source), _Blocks(output)
+    steps: list[Step] = []
+    while (step := without_idle_blocks(source)) is not None:
+        assert step.output is not None
+        steps.append(step)
+        source = step.output
+    meant, made = Blocks(source), Blocks(output)
     choices: list[int] = []
     furthest: Stuck | None = None
     for _ in range(TRIALS):
         search = _Search(meant, made, initial, choices)
         found = search.run()
-        if isinstance(found, Matched):
-            return found
+        if isinstance(found, Step):
+            return Matched(Proof((*steps, found)))
         if furthest is None or found.blocks > furthest.blocks:
             furthest = found
         # The last decision with another possibility takes it; those after it begin anew.
@@ -201,21 +124,26 @@ def match_circuits(source: Circuit, output: Circuit, initial: Sequence[int] | No
 class _Search:
     """One pass over both circuits."""
 
-    def __init__(self, meant: _Blocks, made: _Blocks, initial: Sequence[int] | None, choices: list[int]) -> None:
+    def __init__(self, meant: Blocks, made: Blocks, initial: Sequence[int] | None, choices: list[int]) -> None:
         self.meant, self.made, self.choices = meant, made, choices
         self.n, self.wires = made.circuit.n_qubits, meant.circuit.n_qubits
         self.decisions: list[tuple[int, int]] = []
         self.given = initial is not None
         # A label is the output qubit on which a wire begins; `label_at` says which is where now.
-        self.label_at = list(range(self.n))
+        self.label_at, self.place_of = list(range(self.n)), list(range(self.n))
         self.bound = [-1] * self.n
         self.label_of = [-1] * self.wires
         for wire, label in enumerate(initial or ()):
             self.bound[label], self.label_of[wire] = wire, label
         self.seam: list[Array] = [_ONE] * self.n
         self.next = [0] * self.wires
-        self.begun = 0
         self.done = [0] * len(meant.kind)
+        # Output blocks: how far each is consumed, those that come next, those that wait for something of the source.
+        self.begun = [0] * len(made.kind)
+        self.reached = [0] * self.n
+        self.ready: list[int] = []
+        self.waiting: set[int] = set()
+        self.matched = 0
         self.slots: list[tuple[int, int, int]] = []
         self.counts: list[int] = []
         self.seams: list[Array] = []
@@ -224,21 +152,53 @@ class _Search:
         self.source_run = np.zeros(len(meant.runs), dtype=np.int32)
         self.output_run = np.zeros(len(made.runs), dtype=np.int32)
 
-    def run(self) -> Matched | Stuck:
-        """Match all blocks, then the ends of the wires."""
-        for block, kind in enumerate(self.made.kind):
-            fits = self._pair(block) if kind == PAIR else kind == FIXED and self._fixed(block)
-            if not fits:
-                return self._stuck(block)
-        while any(self._free_source(wire) for wire in range(self.wires)):
-            pass
-        if any(self.next[wire] < len(lane) for wire, lane in enumerate(self.meant.lanes)):
+    def run(self) -> Step | Stuck:
+        """Match blocks as soon as they come next on their wires, in the order of the output where there is a choice."""
+        made, meant = self.made, self.meant
+        for wire in range(self.wires):
+            self._settle(wire)
+        for block, wires in enumerate(made.wires):
+            if all(made.lanes[q][0] == block for q in wires):
+                self.ready.append(block)
+        heapq.heapify(self.ready)
+        while self.ready or self.waiting:
+            if not self.ready:
+                block = min(self.waiting, key=lambda b: (not self._is_open(b), b))
+                if not self._is_open(block) or not self._bind(block):
+                    return self._stuck(min(self.waiting))
+                self.waiting.discard(block)
+                heapq.heappush(self.ready, block)
+                continue
+            block = heapq.heappop(self.ready)
+            kind = made.kind[block]
+            if not (self._pair(block) if kind == PAIR else kind == FIXED and self._fixed(block)):
+                self.waiting.add(block)
+                continue
+            self.matched += 1
+            for q in made.wires[block]:
+                self.reached[q] += 1
+            for q in made.wires[block]:
+                self._offer(q)
+        if any(self.next[wire] < len(lane) for wire, lane in enumerate(meant.lanes)):
             return self._stuck(-1)
         return self._finish()
 
+    def _offer(self, q: int) -> None:
+        """Make the output block that comes next on a qubit ready, if it comes next on all of its own."""
+        lanes = self.made.lanes
+        if self.reached[q] < len(lanes[q]):
+            block = lanes[q][self.reached[q]]
+            if all(
+                self.reached[p] < len(lanes[p]) and lanes[p][self.reached[p]] == block for p in self.made.wires[block]
+            ):
+                heapq.heappush(self.ready, block)
+
+    def _is_open(self, block: int) -> bool:
+        return self.made.kind[block] == PAIR and any(self.bound[self.label_at[q]] < 0 for q in self.made.wires[block])
+
     def _stuck(self, block: int) -> Stuck:
         if block < 0:
-            return Stuck(-1, (), len(self.made.kind), None, self.given)
+            return Stuck(-1, (), self.matched, None, self.given)
         distance = None
         wires = self.made.wires[block]
         if self.made.kind[block] == PAIR:
@@ -246,9 +206,9 @@ class _Search:
             facing = self._front(wires_of[0], wires_of[1]) if min(wires_of) >= 0 else None
             if facing is not None:
                 product = self._compared(block, self._rest(facing, wires_of[0]))
-                distance = min(_schmidt_distance(product), _schmidt_distance(product[_SWAP_ROWS]))
+                distance = min(_schmidt_distance(product), _schmidt_distance(product[SWAP_ROWS]))
         operation = int(self.made.wide[self.made.members[block][0]])
-        return Stuck(operation, wires, block, distance, self.given)
+        return Stuck(operation, wires, self.matched, distance, self.given)
 
     # What comes next on the source's wires.
 
@@ -271,17 +231,17 @@ class _Search:
             product = _FOUR
             for k in members[:gates]:
                 product = self.meant.atoms[k] @ product
-        return np.asarray(product if self.meant.wires[block][0] == first else product[_SWAP_ROWS][:, _SWAP_ROWS])
+        return np.asarray(product if self.meant.wires[block][0] == first else product[SWAP_ROWS][:, SWAP_ROWS])
 
     def _compared(self, block: int, product: Array, stop: int | None = None) -> Array:
         """Return what an output block, up to its member `stop`, does beyond `product` of the source."""
         p, q = self.made.wires[block]
         ahead = _pair_tensor(self.seam[self.label_at[p]], self.seam[self.label_at[q]])
-        if self.begun == 0 and stop is None:
+        if self.begun[block] == 0 and stop is None:
             made: Array = self.made.products[block]
         else:
             made = _FOUR
-            for k in self.made.members[block][self.begun : stop]:
+            for k in self.made.members[block][self.begun[block] : stop]:
                 made = self.made.atoms[k] @ made
         return np.asarray(made @ ahead @ product.conj().T)
 
@@ -289,9 +249,8 @@ class _Search:
 
     def _pair(self, block: int) -> bool:
         """Match an output block: as a whole, or piece by piece."""
-        self.begun = 0
         members = len(self.made.members[block])
-        while self.begun < members:
+        while self.begun[block] < members:
             labels = self.label_at[self.made.wires[block][0]], self.label_at[self.made.wires[block][1]]
             a, b = self.bound[labels[0]], self.bound[labels[1]]
             facing = self._front(a, b) if min(a, b) >= 0 else None
@@ -299,24 +258,13 @@ class _Search:
                 return True
             if self._consume(block, labels, None, None, None):
                 return True
-            if min(a, b) < 0:
-                if self._bind(block, labels):
-                    return True
-                # The first of its gates may do nothing but exchange wires not bound yet.
-                if not any(
-                    self._consume(block, labels, None, None, stop) for stop in range(members - 1, self.begun, -1)
-                ):
-                    return False
-                continue
             gates = len(self.meant.members[facing]) - self.done[facing] if facing is not None else 0
             if any(self._consume(block, labels, facing, part, None) for part in range(gates - 1, 0, -1)):
                 return True
-            if self._free_source(a) or self._free_source(b):
-                continue
-            stops = range(min(members - 1, self.begun + LOOKAHEAD), self.begun, -1)
+            stops = range(min(members - 1, self.begun[block] + LOOKAHEAD), self.begun[block], -1)
             parts = (None, *range(min(gates - 1, LOOKAHEAD), 0, -1)) if facing is not None else ()
-            whole = any(self._consume(block, labels, facing, part, stop) for part in parts for stop in stops)
-            if not whole and not any(self._consume(block, labels, None, None, stop) for stop in stops):
+            some = any(self._consume(block, labels, facing, part, stop) for part in parts for stop in stops)
+            if not some and not any(self._consume(block, labels, None, None, stop) for stop in stops):
                 return False
         return True
 
@@ -327,16 +275,16 @@ class _Search:
         first = self.bound[labels[0]]
         product = _FOUR if facing is None else self._rest(facing, first, gates)
         difference = self._compared(block, product, stop)
-        factors, crossed = _factors(difference), False
+        factors, crossed = factors_of(difference), False
         if factors is None:
-            factors, crossed = _factors(difference[_SWAP_ROWS]), True
+            factors, crossed = factors_of(difference[SWAP_ROWS]), True
         if factors is None:
             return False
         window = self._window(labels, self.made.wires[block], crossed, factors)
-        for k in self.made.members[block][self.begun : stop]:
+        for k in self.made.members[block][self.begun[block] : stop]:
             self.output_window[k] = window
             self.output_run[self.made.run_lists[k]] = window
-        self.begun = len(self.made.members[block]) if stop is None else stop
+        self.begun[block] = len(self.made.members[block]) if stop is None else stop
         if facing is not None:
             members = self.meant.members[facing]
             self._take(facing, len(members) if gates is None else self.done[facing] + gates, window)
@@ -351,6 +299,17 @@ class _Search:
         if stop == len(members):
             for wire in self.meant.wires[block]:
                 self.next[wire] += 1
+        for wire in self.meant.wires[block]:
+            self._settle(wire)
+            self._wake(wire)
+
+    def _wake(self, wire: int) -> None:
+        """Try again the output block that waits where a wire is."""
+        place = self.place_of[self.label_of[wire]]
+        lane = self.made.lanes[place]
+        if self.reached[place] < len(lane) and lane[self.reached[place]] in self.waiting:
+            self.waiting.discard(lane[self.reached[place]])
+            heapq.heappush(self.ready, lane[self.reached[place]])
 
     def _window(self, labels: Sequence[int], places: Sequence[int], crossed: bool, factors: Sequence[Array]) -> int:
         leave = places[::-1] if crossed else places
@@ -358,32 +317,32 @@ class _Search:
             self.slots.append((label, entry, out))
             self.seams.append(seam)
             self.seam[label] = seam
-            self.label_at[out] = label
+            self.label_at[out], self.place_of[label] = label, out
         self.counts.append(len(places))
         return len(self.counts) - 1
 
-    def _free_source(self, wire: int) -> bool:
-        """Consume a source block that does no more than one-qubit gates and an exchange."""
-        block = self._ahead(wire)
-        if block < 0 or self.meant.kind[block] != PAIR:
-            return False
-        a, b = self.meant.wires[block]
-        if self._front(a, b) is None:
-            return False
-        labels = self.label_of[a], self.label_of[b]
-        if min(labels) < 0:
-            return False
-        places = self.label_at.index(labels[0]), self.label_at.index(labels[1])
-        difference = _pair_tensor(self.seam[labels[0]], self.seam[labels[1]]) @ self._rest(block, a).conj().T
-        factors, crossed = _factors(difference), False
-        if factors is None:
-            # The source exchanges its wires and the output does not: each takes the other's place.
-            factors, crossed = _factors(difference[_SWAP_ROWS]), True
-        if factors is None:
-            return False
-        window = self._window(labels, places, crossed, factors)
-        self._take(block, len(self.meant.members[block]), window)
-        return True
+    def _settle(self, wire: int) -> None:
+        """Consume source blocks that do no more than one-qubit gates and an exchange, while they come next."""
+        while True:
+            block = self._ahead(wire)
+            if block < 0 or not (self.meant.trivial[block] or self.done[block]):
+                return
+            if self.meant.kind[block] != PAIR or self._front(*self.meant.wires[block]) is None:
+                return
+            a, b = self.meant.wires[block]
+            labels = self.label_of[a], self.label_of[b]
+            if min(labels) < 0:
+                return
+            places = self.place_of[labels[0]], self.place_of[labels[1]]
+            difference = _pair_tensor(self.seam[labels[0]], self.seam[labels[1]]) @ self._rest(block, a).conj().T
+            factors, crossed = factors_of(difference), False
+            if factors is None:
+                # The source exchanges its wires and the output does not: each takes the other's place.
+                factors, crossed = factors_of(difference[SWAP_ROWS]), True
+            if factors is None:
+                return
+            window = self._window(labels, places, crossed, factors)
+            self._take(block, len(self.meant.members[block]), window)
 
     # Binding wires.
 
@@ -396,41 +355,33 @@ class _Search:
     def _join(self, label: int, wire: int) -> None:
         self.bound[label], self.label_of[wire] = wire, label
 
-    def _bind(self, block: int, labels: tuple[int, int]) -> bool:
-        """Bind the wires of an output block to those of a source block that comes next and that it matches."""
+    def _bind(self, block: int) -> bool:
+        """Bind the wires of an output block to those of a source block that comes next and may be the same."""
+        labels = self.label_at[self.made.wires[block][0]], self.label_at[self.made.wires[block][1]]
         a, b = self.bound[labels[0]], self.bound[labels[1]]
+        fronts = {self._ahead(a if a >= 0 else b)} if max(a, b) >= 0 else {self._ahead(w) for w in range(self.wires)}
         options = []
-        fronts = [self._ahead(a if a >= 0 else b)] if max(a, b) >= 0 else range(len(self.meant.kind))
+        wanted = self.made.invariants[block]
         for facing in fronts:
-            if facing < 0 or self.meant.kind[facing] != PAIR:
+            if facing < 0 or self.meant.kind[facing] != PAIR or self._front(*self.meant.wires[facing]) is None:
                 continue
+            alike = bool(np.abs(self.meant.invariants[facing] - wanted).max() < LOOSE)
             for pair in (self.meant.wires[facing], self.meant.wires[facing][::-1]):
-                free = all(
-                    self.label_of[w] in (-1, label) and self.bound[label] in (-1, w)
-                    for w, label in zip(pair, labels, strict=True)
-                )
-                if free and self._front(*pair) == facing and self._fits(block, labels, facing, pair[0]):
-                    options.append((pair, facing))
-            if len(options) >= TRIALS:
-                break
+                if all(
+                    self.label_of[wire] in (-1, label) and self.bound[label] in (-1, wire)
+                    for wire, label in zip(pair, labels, strict=True)
+                ):
+                    moved = sum(wire != label for wire, label in zip(pair, labels, strict=True))
+                    options.append((moved > 0, not alike, moved, facing, pair))
+        options.sort()
         if not options:
             return False
-        options.sort(key=lambda option: sum(w != label for w, label in zip(option[0], labels, strict=True)))
-        choice = self._choose(len(options))
-        if choice >= len(options):
-            return False
-        pair, facing = options[choice]
-        for label, wire in zip(labels, pair, strict=True):
+        choice = self._choose(min(len(options), TRIALS))
+        for label, wire in zip(labels, options[choice][-1], strict=True):
             self._join(label, wire)
-        gates = len(self.meant.members[facing]) - self.done[facing]
-        return any(self._consume(block, labels, facing, part, None) for part in (None, *range(gates - 1, 0, -1)))
-
-    def _fits(self, block: int, labels: tuple[int, int], facing: int, first: int) -> bool:
-        for gates in (None, *range(min(len(self.meant.members[facing]) - 1, LOOKAHEAD), 0, -1)):
-            difference = self._compared(block, self._rest(facing, first, gates))
-            if _factors(difference) is not None or _factors(difference[_SWAP_ROWS]) is not None:
-                return True
-        return False
+        for wire in options[choice][-1]:
+            self._settle(wire)
+        return True
 
     # Measurements, resets and barriers, and the ends.
 
@@ -445,17 +396,20 @@ class _Search:
         labels = [self.label_of[wire] for wire in wires]
         member = self.meant.members[facing][0]
         for j, (wire, label) in enumerate(zip(wires, labels, strict=True)):
-            place = self.label_at.index(label)
+            place = self.place_of[label]
             window = self._window([label], [place], False, [_ONE])
             self.source_run[self.meant.run_lists[member][j]] = window
             own = self.made.members[block][0]
             self.output_run[self.made.run_lists[own][places.index(place)]] = window
             self.next[wire] += 1
-        held = [self.label_at.index(label) for label in labels]
+        held = [self.place_of[label] for label in labels]
         window = self._window(labels, held, False, [_ONE] * len(held))
         self.source_window[member] = window
         self.output_window[self.made.members[block][0]] = window
         self.done[facing] = 1
+        for wire in wires:
+            self._settle(wire)
+            self._wake(wire)
         return True
 
     def _same_fixed(self, row: int, places: tuple[int, ...]) -> int | None:
@@ -485,17 +439,13 @@ class _Search:
             return facing
         return None
 
-    def _settle(self, wire: int) -> None:
-        while self._free_source(wire):
-            pass
-
-    def _finish(self) -> Matched | Stuck:
+    def _finish(self) -> Step | Stuck:
         labels = [label for label in range(self.n) if self.bound[label] < 0]
         for wire in [w for w in range(self.wires) if self.label_of[w] < 0]:
             meant = self.meant.runs[self.meant.tails[wire]]
             labels.sort(key=lambda label: (label != wire, label))
             for label in labels:
-                place = self.label_at.index(label)
+                place = self.place_of[label]
                 difference = self.made.runs[self.made.tails[place]] @ self.seam[label] @ meant.conj().T
                 if abs(abs(np.trace(difference)) - 2) < LOOSE:
                     self._join(label, wire)
@@ -511,7 +461,7 @@ class _Search:
             self.output_run[self.made.tails[place]] = window
             if self.bound[label] < self.wires:
                 self.source_run[self.meant.tails[self.bound[label]]] = window
-        return Matched(self._step())
+        return self._step()
 
     def _step(self) -> Step:
         slots = np.array(self.slots, dtype=np.int32).reshape(-1, 3)
@@ -542,17 +492,6 @@ class _Search:
 
 def _pair_tensor(a: Array, b: Array) -> Array:
     return np.asarray((a[:, None, :, None] * b[None, :, None, :]).reshape(4, 4))
-
-
-def _factors(matrix: Array) -> tuple[Array, Array] | None:
-    """Return the two one-qubit unitaries whose product a matrix is, or None."""
-    realigned = matrix.reshape(2, 2, 2, 2).transpose(0, 2, 1, 3).reshape(4, 4)
-    i, j = divmod(int(np.argmax(np.abs(realigned))), 4)
-    a, b = realigned[:, j], realigned[i] / realigned[i, j]
-    if not np.abs(realigned - a[:, None] * b).max() < LOOSE:
-        return None
-    b = b * (np.sqrt(2.0) / np.linalg.norm(b))
-    return (a * (np.sqrt(2.0) / np.linalg.norm(a))).reshape(2, 2), b.reshape(2, 2)
 
 
 def _schmidt_distance(matrix: Array) -> float:
