@@ -26,6 +26,7 @@ from gatewright.gates import GATES
 from gatewright.linalg import checked_unitary
 from gatewright.proof import Fingerprints, Proof, Verdict, check_legal, check_proof, encode_proof
 from gatewright.proof.dense import dense_distance, dense_work
+from gatewright.proof.judge import judge
 from gatewright.stages.draft import Draft, Settings, Stage
 from gatewright.stages.expand import expand
 from gatewright.stages.fuse import fuse
@@ -297,9 +298,9 @@ def check(
     device : Device, optional
         Without it, legality is not checked.
     proof : Proof, optional
-        With it, circuits of any size; without, full unitaries are compared, up to about 10 qubits.
+        Without it, whatever can decide is tried: see `gatewright.proof.judge`.
     initial, final : sequence of int, optional
-        Without a proof: output qubit of each source qubit at the two ends; each at its own number by default.
+        Without a proof: output qubit of each source qubit at the two ends; found if not given.
     tolerance : float
         Largest operator-norm distance that counts as equal: of a window with a proof, of the whole without one.
 
@@ -307,37 +308,23 @@ def check(
     ------
     ProofError
         Not equal, or not legal, and where.
+    UndecidedError
+        Without a proof: no method could tell.
     """
     if proof is not None:
         return check_proof(source, output, proof, device=device, tolerance=tolerance)
     if device is not None:
         check_legal(output, device)
-    places = [tuple(range(source.n_qubits)) if given is None else tuple(given) for given in (initial, final)]
-    for name, given in zip(("initial", "final"), places, strict=True):
+    for name, given in (("initial", initial), ("final", final)):
+        if given is None:
+            continue
         if len(set(given)) != source.n_qubits or not all(0 <= q < output.n_qubits for q in given):
             raise InputError(
                 f"the {name} placement does not fit",
                 required=f"{source.n_qubits} different qubits below {output.n_qubits}",
                 found=", ".join(map(str, given[:16])),
             )
-    distance = dense_distance(source, output, *places)
-    if not distance <= tolerance:
-        raise ProofError(
-            "not equal: the full unitaries differ",
-            distance=distance,
-            required=f"operator-norm distance at most {tolerance:.3g}",
-            found=f"{distance:.6g}",
-            hint="check with the --proof file to see which window differs",
-        )
-    return Verdict(
-        error_bound=distance,
-        windows=0,
-        worst_window=0,
-        worst_distance=0.0,
-        initial=places[0],
-        final=places[1],
-        method="full unitaries compared; qubits beyond the source's taken to start and end in |0⟩",
-    )
+    return judge(source, output, initial=initial, final=final, tolerance=tolerance)
 
 
 def _placement(given: Sequence[int] | None, circuit: Circuit) -> tuple[int, ...] | None:

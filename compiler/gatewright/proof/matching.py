@@ -29,6 +29,8 @@ Rows = NDArray[np.int64]
 
 #: How many ways of binding wires are tried.
 TRIALS = 64
+#: How many blocks are looked at in all these.
+WORK = 100_000
 #: How many gates of a block are tried as a part of it, where the whole does not fit.
 LOOKAHEAD = 12
 _ONE, _FOUR = np.eye(2, dtype=np.complex128), np.eye(4, dtype=np.complex128)
@@ -103,7 +105,7 @@ def match_circuits(source: Circuit, output: Circuit, initial: Sequence[int] | No
     meant, made = Blocks(source), Blocks(output)
     choices: list[int] = []
     furthest: Stuck | None = None
-    for _ in range(TRIALS):
+    for _ in range(max(1, min(TRIALS, WORK // (len(made.kind) + 1)))):
         search = _Search(meant, made, initial, choices)
         found = search.run()
         if isinstance(found, Step):
