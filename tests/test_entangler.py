@@ -1,4 +1,4 @@
-"""Circuits of one fixed entangler, of the class of CNOT or of iSWAP."""
+"""Circuits of one fixed entangler: the classes of CNOT and of iSWAP, which have closed forms, and any other."""
 
 import importlib.util
 import sys
@@ -11,7 +11,7 @@ import scipy.stats
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from gatewright.errors import GateSetError, MatrixError, NotUnitaryError, UnsupportedError
+from gatewright.errors import GateSetError, MatrixError, NotUnitaryError
 from gatewright.linalg import distance, haar_unitary, kron, nearest_unitary
 from gatewright.synthesis.controlled_not import cnot_count
 from gatewright.synthesis.entangler import classify
@@ -147,9 +147,9 @@ def test_rounded_entangler_is_used_honestly(matrix, how):
     rng = np.random.default_rng(34)
     gate = kron(*haar_unitary(2, 2, rng=rng)) @ matrix @ kron(*haar_unitary(2, 2, rng=rng))
     gate = nearest_unitary(gate.round(8) if how == "8 digits" else gate.astype(np.complex64))
-    with pytest.raises(UnsupportedError):
-        classify(gate)
+    assert not classify(gate).closed
     entangler = classify(gate, tolerance=1e-6)
+    assert entangler.closed
     assert 1e-10 < entangler.deviation < 1e-6
     unitary = haar_unitary(4, 100, rng=rng)
     unitary[:3] = np.eye(4), gate, SWAP
@@ -174,16 +174,6 @@ def test_rounded_entangler_is_used_honestly(matrix, how):
 def test_gates_that_cannot_entangle(matrix, message):
     with pytest.raises(GateSetError, match=message):
         classify(matrix)
-
-
-@pytest.mark.parametrize("point", [[np.pi / 8, np.pi / 8, 0], [QUARTER, np.pi / 8, 0], [QUARTER, 0.01, 0], [0.3, 0, 0]])
-def test_other_classes_are_not_supported_yet(point):
-    with pytest.raises(UnsupportedError) as caught:
-        classify(canonical_matrix(point))
-    message = str(caught.value)
-    assert "cannot yet" in message
-    assert "CNOT (π/4, 0, 0)" in message and "iSWAP (π/4, π/4, 0)" in message
-    assert f"({point[0]:.6g}, {point[1]:.6g}" in message
 
 
 def test_bad_input():

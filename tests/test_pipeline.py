@@ -252,10 +252,19 @@ def test_an_unknown_wide_gate_is_refused() -> None:
 def test_a_chain_may_be_cut_and_is_proven_all_the_same() -> None:
     circuit = Builder(2).gate("h", 0).gate("cx", 0, 1).build()
     result = gw.compile(circuit, line(2), chain=CHAIN)
-    assert [stage.__name__ for stage in CHAIN] == ["expand", "place", "route", "fuse", "synthesise", "schedule"]
+    assert [stage.__name__ for stage in CHAIN] == [
+        "parametrise",
+        "expand",
+        "place",
+        "route",
+        "restore",
+        "fuse",
+        "synthesise",
+        "schedule",
+    ]
     assert list(result.seconds)[1:-2] == [stage.__name__ for stage in CHAIN]
     with pytest.raises(ProofError):
-        gw.compile(circuit, line(2), chain=CHAIN[:3])
+        gw.compile(circuit, line(2), chain=CHAIN[:5])
 
 
 def test_calibration_gives_a_duration_and_a_success_estimate(examples: object) -> None:

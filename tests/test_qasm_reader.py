@@ -355,7 +355,7 @@ REFUSED = [
     ("stretch s;", 3, 1, UnsupportedError, "'stretch'"),
     ("duration d = 1ns;", 3, 1, UnsupportedError, "'duration'"),
     ("cal { }", 3, 1, UnsupportedError, "'cal'"),
-    ("input float t;", 3, 1, UnsupportedError, "'input'"),
+    ("output float t;", 3, 1, UnsupportedError, "'output'"),
     ("qubit[2] q; delay[10ns] q;", 3, 13, UnsupportedError, "'delay'"),
     ("qubit[2] q; box { x q; }", 3, 13, UnsupportedError, "'box'"),
     ("qubit[2] q; measure q;", 3, 13, UnsupportedError, "into no bit"),
@@ -386,7 +386,7 @@ def test_refused(text: str, line: int, column: int, kind: type, words: str) -> N
         (V2 + "qreg q[1]; gphase(1);", "OpenQASM 3"),
         (V2 + "qreg q[1]; creg c[1]; c = measure q;", "OpenQASM 3"), (V2 + "qreg q[1]; measure q;", "no bit"),
         (V2 + "qreg q[1]; h $0;", "OpenQASM 3"), (V2 + "qreg q[1]; barrier;", "OpenQASM 3"),
-        (V2 + "qreg q[1]; if(c==1) x q[0];", "'if'"), (V2 + "qreg q[1]; rz(2**3) q[0];", "written '^'"),
+        (V2 + "qreg q[1]; if(c==1) x q[0];", "'c'"), (V2 + "qreg q[1]; rz(2**3) q[0];", "written '^'"),
         (V2 + "gate CX a,b { }", "already defined"), ("MZ\0\1", "zero byte"), ("qubit q; h q; include", "unknown gate"),
     ],
 )  # fmt: skip

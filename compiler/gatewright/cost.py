@@ -169,7 +169,7 @@ def count_costs(circuit: Circuit, device: Device, *, starts: Vector, swaps_inser
     swaps_inserted : int
     """
     free = is_virtual(circuit, device)
-    gate = circuit.is_unitary
+    gate = circuit.is_gate
     barrier = circuit.is_named(BARRIER.name)
     two = gate & (circuit.widths == 2)
     durations = operation_durations(circuit, device)
@@ -203,7 +203,7 @@ def success_estimate(circuit: Circuit, device: Device, starts: Vector | None, du
     errors = operation_errors(circuit, device)
     if np.isnan(errors).any():
         return None
-    factor = np.where(circuit.is_unitary, np.where(circuit.widths == 2, 1.25, 1.5), 1.0)
+    factor = np.where(circuit.is_gate, np.where(circuit.widths == 2, 1.25, 1.5), 1.0)
     log_success = float(np.log(np.maximum(1 - factor * errors, 1e-300)).sum())
     if starts is not None:
         owner = np.repeat(np.arange(len(circuit)), circuit.widths)

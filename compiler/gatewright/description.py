@@ -11,6 +11,7 @@ from gatewright.devices import Device, GateSet
 from gatewright.errors import GateSetError, GatewrightError, UnsupportedError
 from gatewright.linalg import checked_unitary, unitarity_defect
 from gatewright.synthesis.controlled_not import cnot_count, count_reason
+from gatewright.synthesis.coverage import coverage
 from gatewright.synthesis.euler import euler_angles
 from gatewright.synthesis.native import entangler_parameters, native_set
 from gatewright.synthesis.weyl import (
@@ -21,10 +22,6 @@ from gatewright.synthesis.weyl import (
 )
 
 __all__ = ["counting_bound", "describe"]
-
-#: Shares of Haar-random two-qubit unitaries by number of uses, for a CNOT- or iSWAP-class entangler: two uses reach
-#: only z = 0, a set of measure zero; three reach everything (Shende, Bullock, Markov, PRA 70, 012310 (2004)).
-THREE_USES = {"0": 0.0, "1": 0.0, "2": 0.0, "3": 1.0}
 
 
 def describe(thing: Device | GateSet | ArrayLike) -> dict[str, Any]:
@@ -128,7 +125,7 @@ def _gate_set(gate_set: GateSet) -> dict[str, Any]:
         facts["compiles_reason"] = str(error)
     else:
         facts["compiles"] = True
-        facts["entangler_used"] = chosen.entangler.gate.name if chosen.entangler else None
+        facts["entangler_used"] = ", ".join(tool.gate.name for tool in chosen.straight) or None
     return facts
 
 
@@ -145,8 +142,8 @@ def _entangler(native: Any) -> dict[str, Any]:
             "coordinates_over_pi": (coordinates / np.pi).tolist(),
             "perfect_entangler": bool(is_perfect_entangler(coordinates)),
         }
-        classify(native.gate.matrix(parameters))
-        facts |= {"mean_uses": 3.0, "reach": dict(THREE_USES)}
+        known = coverage([(native.gate.name, classify(native.gate.matrix(parameters)).ideal)])
+        facts |= {"mean_uses": known.mean_uses, "reach": known.reach}
     except (GateSetError, UnsupportedError) as error:
         facts["note"] = str(error)
     return facts

@@ -13,6 +13,7 @@ from typing import Literal
 from gatewright.circuit import Circuit
 from gatewright.gates import Gate
 from gatewright.matrices import read_matrix
+from gatewright.program import Program
 from gatewright.qasm import QubitMap, read_map
 from gatewright.qasm import read as read_program
 from gatewright.qasm.source import decode, read_bytes
@@ -32,14 +33,14 @@ class Source:
 
     Attributes
     ----------
-    circuit : Circuit
+    circuit : Circuit or Program
     moved : float
         Operator-norm distance from a matrix as given to the unitary taken for it.
     qubit_map : QubitMap or None
         The placement stated in the header of a program that gatewright wrote.
     """
 
-    circuit: Circuit
+    circuit: Circuit | Program
     moved: float = 0.0
     qubit_map: QubitMap | None = None
 
@@ -92,8 +93,8 @@ def read(
     tolerance: float = 1e-12,
     nearest_unitary: bool = False,
     qubit_order: Literal["first", "last"] = "first",
-) -> Circuit:
-    """Read an OpenQASM program or a unitary matrix as a circuit.
+) -> Circuit | Program:
+    """Read an OpenQASM program or a unitary matrix as a circuit, or as a program where it depends on measured bits.
 
     Parameters
     ----------

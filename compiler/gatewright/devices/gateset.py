@@ -518,6 +518,7 @@ def check_definitions(gate_set: GateSet, *, where: str = "") -> None:
         If a definition cannot be read, or gives another matrix.
     """
     from gatewright import qasm
+    from gatewright.circuit import Circuit
 
     for name, native in gate_set.gates.items():
         if not native.definition:
@@ -533,7 +534,9 @@ def check_definitions(gate_set: GateSet, *, where: str = "") -> None:
                 f"qubit[{native.gate.n_qubits}] q;\n{name}{values} {qubits};\n"
             )
             try:
-                matrix = qasm.read(program).unitary()
+                circuit = qasm.read(program)
+                assert isinstance(circuit, Circuit)  # a gate's definition measures nothing
+                matrix = circuit.unitary()
             except GatewrightError as problem:
                 raise GateSetError(
                     f"'{key}' cannot be read: {problem.what}",

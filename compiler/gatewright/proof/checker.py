@@ -5,7 +5,7 @@ It knows nothing of how an output was made and imports nothing that makes one. F
 1. each operation lies in one window, on wires of that window, and along every wire (and classical bit) the
    windows come in order, so that the circuit equals the product of its windows;
 2. in every window, output and source agree up to the seams, a permutation and a phase: the Frobenius norm of the
-   difference bounds the operator norm from above;
+   difference bounds the operator norm from above; with unknown parameters, for all their values (`parametrised`);
 3. the places of the wires, and the seams, lead from each window to the next and end as claimed;
 4. every output operation is a native gate, its parameters in range, on qubits that the device allows.
 
@@ -23,14 +23,17 @@ from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
 from gatewright.errors import ProofError
-from gatewright.gates import BARRIER, MEASURE, RESET
+from gatewright.gates import MEASURE
 from gatewright.proof.claims import CLAIM_KINDS, MATRIX, ClaimKind, Sides
 from gatewright.proof.fingerprints import check_fingerprints
+from gatewright.proof.legality import check_legal
+from gatewright.proof.parametrised import UnknownWindows, require_standard
 from gatewright.proof.products import (
     BATCH_WIDTH,
     UNIT,
     Held,
     frobenius_distances,
+    multiplication,
     permute_rows,
     quaternion_matrices,
     window_products,
@@ -40,7 +43,7 @@ from gatewright.proof.windows import Proof, Step, Verdict
 if TYPE_CHECKING:
     from gatewright.devices import Device
 
-__all__ = ["check_legal", "check_proof"]
+__all__ = ["check_proof"]
 
 Array = NDArray[np.complex128]
 Rows = NDArray[np.int64]
@@ -48,8 +51,6 @@ Vector = NDArray[np.float64]
 
 #: Operations, and matrix entries, held at a time, to bound memory.
 CHUNK, BLOCK = 1 << 18, 1 << 22
-#: How far beyond its range a parameter may lie, for ranges that are rounded themselves (radians).
-RANGE_SLACK = 1e-12
 
 
 def check_proof(
@@ -114,67 +115,6 @@ def check_proof(
     )
 
 
-def check_legal(circuit: Circuit, device: Device) -> None:
-    """Check that every operation is native, in range, and on qubits where the device has it.
-
-    Raises
-    ------
-    ProofError
-        Naming the first operation that is not.
-    """
-    if circuit.n_qubits > device.n_qubits:
-        raise ProofError(
-            "the output has more qubits than the device",
-            required=f"{device.n_qubits} at most",
-            found=str(circuit.n_qubits),
-        )
-    active = np.asarray(device.active)
-    for k, gate in enumerate(circuit.table):
-        rows = np.flatnonzero(circuit.op == k)
-        if not len(rows) or gate.name == BARRIER.name:
-            continue
-        width = int(circuit.widths[rows[0]])
-        qubits = circuit.qubits[circuit.offsets[rows][:, None] + np.arange(width)]
-        if gate.name in (MEASURE.name, RESET.name):
-            allowed = active[qubits[:, 0]]
-        else:
-            native = device.gate_set.gates.get(gate.name)
-            if native is None:
-                _illegal(circuit, int(rows[0]), f"'{gate.name}' is not a native gate of {device.name}")
-            if width == 1:
-                table = np.zeros(device.n_qubits, dtype=bool)
-                table[np.asarray(device.allowed_qubits(gate.name), dtype=np.int64)] = True
-                allowed = table[qubits[:, 0]]
-            else:
-                pairs = np.asarray(device.allowed_pairs(gate.name), dtype=np.int64).reshape(-1, 2)
-                codes = pairs[:, 0] * device.n_qubits + pairs[:, 1]
-                allowed = np.isin(qubits[:, 0].astype(np.int64) * device.n_qubits + qubits[:, 1], codes)
-            values = circuit.parameters[circuit.parameter_offsets[rows][:, None] + np.arange(gate.n_parameters)]
-            for column, (low, high) in enumerate(native.ranges):
-                inside = (values[:, column] >= low - RANGE_SLACK) & (values[:, column] <= high + RANGE_SLACK)
-                if not inside.all():
-                    row = int(np.flatnonzero(~inside)[0])
-                    _illegal(
-                        circuit,
-                        int(rows[row]),
-                        f"parameter {column} of '{gate.name}' is out of range",
-                        required=f"{low:.6g} to {high:.6g}",
-                        found=f"{values[row, column]:.12g}",
-                    )
-        if not allowed.all():
-            _illegal(
-                circuit, int(rows[np.flatnonzero(~allowed)[0]]), f"{device.name} has no '{gate.name}' on these qubits"
-            )
-
-
-def _illegal(circuit: Circuit, row: int, what: str, *, required: str = "", found: str = "") -> NoReturn:
-    qubits = circuit.qubits_of(row)
-    named = ", ".join(map(str, qubits))
-    raise ProofError(
-        f"not legal: {what} (operation {row}, qubits {named})", qubits=qubits, required=required, found=found
-    )
-
-
 def _check_step(source: Circuit, output: Circuit, step: Step, tolerance: float) -> tuple[Vector, Vector]:
     """Check one step; return the measured distance and the rounding of each of its windows."""
     _check_shapes(source, output, step)
@@ -182,15 +122,17 @@ def _check_step(source: Circuit, output: Circuit, step: Step, tolerance: float) 
     made = _Side(output, step.output_window, step.entry, step, "output")
     meant.check_order()
     made.check_order()
-    chain = _Chain(step)
+    chain, bounds = _Chain(step), UnknownWindows()
     distances, roundings = np.zeros(step.windows), np.zeros(step.windows)
     load = np.cumsum(meant.counts + made.counts + 1) // CHUNK
     edges = [0, *(np.flatnonzero(np.diff(load)) + 1).tolist(), step.windows]
     for first, last in itertools.pairwise(edges):
-        special = step.claims[first:last] != MATRIX
-        fixed = _fixed_windows(meant, made, step, first, special)
-        before, after = chain.advance(first, last, fixed | special)
-        widths = np.where(fixed | special, 0, np.diff(step.offsets[first : last + 1]))
+        claimed = step.claims[first:last] != MATRIX
+        fixed = _fixed_windows(meant, made, step, first, claimed)
+        unknown = _unknown_windows(meant, made, first, last) & ~fixed & ~claimed
+        alone = fixed | unknown | claimed
+        before, after = chain.advance(first, last, alone)
+        widths = np.where(alone, 0, np.diff(step.offsets[first : last + 1]))
         for width in np.unique(widths[widths > 0]).tolist():
             for block in _blocks(np.flatnonzero(widths == width) + first, width, meant.counts + made.counts):
                 slots = step.offsets[block][:, None] + np.arange(width)
@@ -200,8 +142,10 @@ def _check_step(source: Circuit, output: Circuit, step: Step, tolerance: float) 
                 right = permute_rows(right, step.entry[slots], step.exit[slots])
                 distances[block] = frobenius_distances(left, right)
                 roundings[block] = error_left + error_right + 16 * UNIT * 2 ** (width / 2)
-        for window in (np.flatnonzero(special) + first).tolist():
+        for window in (np.flatnonzero(claimed) + first).tolist():
             distances[window], roundings[window] = _check_claim(meant, made, step, window)
+        for window in (np.flatnonzero(unknown) + first).tolist():
+            distances[window], roundings[window] = _check_unknown(meant, made, step, window, bounds)
     chain.finish()
     # A comparison with NaN is false: ask for what is right, not for what is wrong.
     wrong = np.flatnonzero(~(distances <= tolerance) | ~(roundings < 0.5))
@@ -297,7 +241,7 @@ def _fixed_windows(meant: _Side, made: _Side, step: Step, first: int, special: N
     fixed = np.zeros(len(special), dtype=bool)
     for side in (meant, made):
         rows = side.rows[side.starts[first] : side.starts[last]]
-        fixed[side.window[rows[~side.unitary[rows]]] - first] = True
+        fixed[side.window[rows[~side.is_gate[rows]]] - first] = True
     fixed &= ~special
     for window in (np.flatnonzero(fixed) + first).tolist():
         held = [side.rows[side.starts[window] : side.starts[window + 1]] for side in (meant, made)]
@@ -326,6 +270,35 @@ def _fixed_windows(meant: _Side, made: _Side, step: Step, first: int, special: N
                 found=f"{other_name}, bit {other_bit}",
             )
     return fixed
+
+
+def _unknown_windows(meant: _Side, made: _Side, first: int, last: int) -> NDArray[np.bool_]:
+    """Find the windows with unknown parameters."""
+    unknown = np.zeros(last - first, dtype=bool)
+    for side in (meant, made):
+        if side.circuit.symbolic:
+            rows = side.rows[side.starts[first] : side.starts[last]]
+            unknown[side.window[rows[side.circuit.is_symbolic[rows]]] - first] = True
+    return unknown
+
+
+def _check_unknown(meant: _Side, made: _Side, step: Step, window: int, bounds: UnknownWindows) -> tuple[float, float]:
+    """Return the bound of a window with unknown parameters, and its rounding."""
+    span = slice(step.offsets[window], step.offsets[window + 1])
+    if not np.array_equal(step.entry[span], step.exit[span]):
+        raise ProofError(
+            f"not equal: {_named(step, window)} with unknown parameters exchanges its wires",
+            window=window,
+            qubits=_window_qubits(step, window),
+        )
+    width = int(span.stop - span.start)
+    held = [side.held(np.array([window]), width) for side in (meant, made)]
+    for side in held:
+        require_standard(side.circuit)
+    meant_ops, made_ops = ((side.circuit, side.rows.tolist(), side.slots_by_operation()) for side in held)
+    distance = bounds.distance(*meant_ops, *made_ops, width)
+    operations = sum(len(side.rows) for side in held)
+    return distance, 4 * operations * (multiplication(2**width) + 64 * UNIT * 2 ** (width / 2)) if distance else 0.0
 
 
 class _Chain:
@@ -415,7 +388,7 @@ class _Side:
         self.rows = np.argsort(window, kind="stable")
         self.counts = np.bincount(window, minlength=step.windows)
         self.starts = np.concatenate([[0], np.cumsum(self.counts)])
-        self.unitary = circuit.is_unitary
+        self.is_gate = circuit.is_gate
 
     def check_order(self) -> None:
         """Check that along every wire, and every classical bit, the windows come in order."""

@@ -33,6 +33,8 @@ Array = NDArray[np.complex128]
 
 #: Largest matrix: 2**24 entries are 256 MiB.
 MAX_LOG_ENTRIES = 24
+#: Unknown parameters are given random values as often as this.
+BINDINGS = 3
 
 
 def touched_qubits(output: Circuit, initial: Sequence[int], final: Sequence[int]) -> list[int]:
@@ -67,7 +69,14 @@ class DenseComparison:
 
 
 def dense_distance(source: Circuit, output: Circuit, initial: Sequence[int], final: Sequence[int]) -> float:
-    """Return the distance found by `compare_dense`."""
+    """Return the distance found by `compare_dense`; unknown parameters are given a few random values."""
+    if source.symbolic or output.symbolic:
+        rng = np.random.default_rng(source.n_qubits)
+        atoms = dict.fromkeys((*source.atoms, *output.atoms))
+        draws = [
+            dict(zip(atoms, rng.uniform(-np.pi, np.pi, len(atoms)).tolist(), strict=True)) for _ in range(BINDINGS)
+        ]
+        return max(dense_distance(source.at_atoms(v), output.at_atoms(v), initial, final) for v in draws)
     return compare_dense(source, output, initial, final).distance
 
 

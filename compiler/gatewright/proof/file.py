@@ -16,7 +16,7 @@ import json
 import math
 import zipfile
 import zlib
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import asdict
 from pathlib import Path
 from typing import Any
@@ -28,6 +28,7 @@ from gatewright._version import __version__
 from gatewright.circuit import Circuit
 from gatewright.errors import InputError, ProofFileError, shorten
 from gatewright.gates import BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
+from gatewright.parameters import Affine, Parameter
 from gatewright.proof.claims import CLAIM_KINDS
 from gatewright.proof.fingerprints import Fingerprints
 from gatewright.proof.packing import (
@@ -139,7 +140,39 @@ def _encode_circuit(circuit: Circuit | None, prefix: str, arrays: dict[str, NDAr
         "n_bits": circuit.n_bits,
         "table": [gate.name for gate in circuit.table],
         "matrix_sizes": [len(matrix) for matrix in circuit.matrices],
+        **({"symbolic": _encode_symbolic(circuit.symbolic)} if circuit.symbolic else {}),
     }
+
+
+def _encode_symbolic(symbolic: Sequence[Sequence[Parameter]]) -> list[list[Any]]:
+    """Return unknown parameters as numbers, and as a constant with pairs of atom and coefficient."""
+    return [
+        [
+            [value.constant, [list(term) for term in value.terms]] if isinstance(value, Affine) else value
+            for value in row
+        ]
+        for row in symbolic
+    ]
+
+
+def _decode_symbolic(entry: Any) -> tuple[tuple[Parameter, ...], ...]:
+    rows = []
+    for row in entry:
+        values: list[Parameter] = []
+        for value in row:
+            if isinstance(value, list):
+                terms = tuple((str(atom), float(factor)) for atom, factor in value[1])
+                value = Affine(float(value[0]), terms)
+                numbers = (value.constant, *(factor for _, factor in terms))
+                if list(terms) != sorted(terms) or len(dict(terms)) < len(terms) or not terms:
+                    raise ValueError("unknown parameters out of order")
+            else:
+                numbers = (float(value),)
+            if not all(math.isfinite(number) for number in numbers):
+                raise ValueError("a parameter that is not finite")
+            values.append(value if isinstance(value, Affine) else float(value))
+        rows.append(tuple(values))
+    return tuple(rows)
 
 
 def read_proof(path: str | Path) -> Proof:
@@ -267,6 +300,7 @@ def _decode_circuit(entry: dict[str, Any], prefix: str, arrays: dict[str, NDArra
         n_bits=int(entry["n_bits"]),
         table=table,
         matrices=tuple(_split(arrays[f"{prefix}.matrices"], sizes)),
+        symbolic=_decode_symbolic(entry.get("symbolic", [])),
         **columns,
     )
     _require_consistent(circuit)
@@ -301,6 +335,11 @@ def _require_consistent(circuit: Circuit) -> None:
         ok = ok and bool(((link >= 0) & (link < len(circuit.matrices))).all())
         ok = ok and bool((sizes[link] == 2 ** circuit.widths[explicit]).all())
         ok = ok and all(_unitary(matrix) for matrix in circuit.matrices)
+        named = np.array([gate.function is not None for gate in circuit.table])[circuit.op]
+        lengths = np.array([len(row) for row in circuit.symbolic] or [0])
+        link = circuit.link[named & (circuit.link >= 0)]
+        ok = ok and bool((link < len(circuit.symbolic)).all())
+        ok = ok and bool((lengths[link] == numbers[named & (circuit.link >= 0)]).all())
     if not ok:
         raise ProofFileError("the proof file is damaged", required="a consistent circuit between its steps")
 

@@ -90,9 +90,15 @@ def fingerprint(circuit: Circuit) -> str:
     names = [circuit.table[k].name for k in order]
     explicit = [circuit.matrices[k] for k in circuit.link[circuit.is_named("unitary")].tolist()]
     measured = circuit.link[circuit.is_named("measure")]
+    unknown = dict.fromkeys(circuit.link[circuit.is_symbolic].tolist() if circuit.symbolic else ())
+    place = {row: k for k, row in enumerate(unknown)}
+    rows = [place[row] for row in circuit.link[circuit.is_symbolic].tolist()] if circuit.symbolic else []
+    facts = [circuit.n_qubits, circuit.n_bits, names]
+    if rows:
+        facts += [rows, [[str(value) for value in circuit.symbolic[row]] for row in unknown], circuit.inputs]
     op = number[circuit.op] if len(circuit) else circuit.op
     arrays = (op, circuit.qubits, circuit.offsets, circuit.parameters + 0.0, measured, *explicit)
-    return _digest([circuit.n_qubits, circuit.n_bits, names], arrays)
+    return _digest(facts, arrays)
 
 
 def fingerprint_gate_set(gate_set: GateSet) -> str:

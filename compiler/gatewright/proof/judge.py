@@ -18,7 +18,14 @@ from gatewright.circuit import Circuit
 from gatewright.errors import CircuitError, ProofError, UndecidedError
 from gatewright.gates import BARRIER, MEASURE
 from gatewright.proof.checker import check_proof
-from gatewright.proof.dense import check_measurements, compare_dense, touched_qubits, unitary_part
+from gatewright.proof.dense import (
+    BINDINGS,
+    check_measurements,
+    compare_dense,
+    dense_distance,
+    touched_qubits,
+    unitary_part,
+)
 from gatewright.proof.matching import Stuck, match_circuits
 from gatewright.proof.phase_polynomial import NotMonomial, compare_phase_polynomials
 from gatewright.proof.states import VECTORS, compare_states
@@ -78,6 +85,8 @@ def judge(
             required=f"{output.n_qubits} at most",
             found=str(source.n_qubits),
         )
+    if source.symbolic or output.symbolic:
+        return _at_random_values(source, output, initial, final, tolerance)
     start = None if initial is None else tuple(int(q) for q in initial)
     end = None if final is None else tuple(int(q) for q in final)
     found = match_circuits(source, output, start)
@@ -109,6 +118,37 @@ def judge(
         "undecided: no method could tell whether these are equal",
         found="; ".join(reasons),
         hint="compile with --proof and check with that proof",
+    )
+
+
+def _at_random_values(
+    source: Circuit, output: Circuit, initial: Sequence[int] | None, final: Sequence[int] | None, tolerance: float
+) -> Verdict:
+    """Compare full unitaries at a few values of the unknown parameters."""
+    own = tuple(range(source.n_qubits))
+    places = tuple(initial or own), tuple(final or initial or own)
+    try:
+        distance = dense_distance(source, output, *places)
+    except CircuitError as error:
+        raise UndecidedError(
+            f"undecided: {error.what}", hint="compile with --proof and check with that proof"
+        ) from None
+    if not distance <= tolerance:
+        raise ProofError(
+            "not equal: the full unitaries differ for some values of the unknown parameters",
+            distance=distance,
+            required=f"operator-norm distance at most {tolerance:.3g}",
+            found=f"{distance:.6g}",
+        )
+    return Verdict(
+        error_bound=distance,
+        windows=0,
+        worst_window=0,
+        worst_distance=0.0,
+        initial=places[0],
+        final=places[1],
+        method="full unitaries compared; qubits beyond the source's taken to start and end in |0⟩; "
+        f"at {BINDINGS} random values of the unknown parameters: evidence, no proof",
     )
 
 

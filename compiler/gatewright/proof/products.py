@@ -9,6 +9,7 @@ by 2√2 d² u in operator norm where the factors are unitary (‖|A|‖ ≤ √
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Iterator
 from dataclasses import replace
 from typing import Any
@@ -70,6 +71,11 @@ class Held:
     ) -> None:
         self.circuit, self.rows, self.window = circuit, rows, window
         self.offsets, self.slots, self.count, self.width = offsets, slots, count, width
+
+    def slots_by_operation(self) -> list[tuple[int, ...]]:
+        """Return the slots of each operation."""
+        bounds = self.offsets.tolist()
+        return [tuple(self.slots[i:j].tolist()) for i, j in itertools.pairwise(bounds)]
 
 
 def multiplication(size: Any) -> Any:

@@ -130,14 +130,17 @@ class Verdict:
     error_bound : float
         Upper bound on the operator-norm distance, up to global phase, between the source (on its wires, moved to
         their places) and the output; the checker's own rounding is part of it.
-    rounding : float
-        That part: a bound on what the checker's own arithmetic may have hidden.
     windows : int
     worst_window, worst_distance
         Number (within its step) and distance of the window that contributes most.
     initial, final : tuple of int
         Physical qubit of each source qubit at the two ends.
     method : str
+    rounding : float
+        Part of ``error_bound``: a bound on what the checker's own arithmetic may have hidden.
+    round_bound : float or None
+        For programs with classical control: ``error_bound`` covers one round of every loop, and each further round
+        adds this much at most. None for straight-line circuits.
     """
 
     error_bound: float
@@ -148,10 +151,11 @@ class Verdict:
     final: tuple[int, ...]
     method: str
     rounding: float = 0.0
+    round_bound: float | None = None
 
     def to_dict(self) -> dict[str, Any]:
         """Return the entries of the JSON summary's ``proof``."""
-        return {
+        facts = {
             "verified": True,
             "error_bound": self.error_bound,
             "rounding": self.rounding,
@@ -160,3 +164,4 @@ class Verdict:
             "worst_window": self.worst_window,
             "worst_distance": self.worst_distance,
         }
+        return facts if self.round_bound is None else facts | {"error_bound_per_further_round": self.round_bound}

@@ -6,13 +6,13 @@ from collections.abc import Iterable
 from typing import TYPE_CHECKING, Any, TextIO
 
 if TYPE_CHECKING:
-    from gatewright.pipeline import Result
     from gatewright.proof import Verdict
+    from gatewright.result import ProgramResult, Result
 
 __all__ = ["print_description", "print_result", "print_verdict"]
 
 
-def print_result(result: Result, stream: TextIO) -> None:
+def print_result(result: Result | ProgramResult, stream: TextIO) -> None:
     """Print costs, bounds, placement and proof of a compilation."""
     costs, verdict = result.costs, result.verdict
     gates = ", ".join(f"{number} {name}" for name, number in costs.by_gate.items()) or "none"
@@ -28,6 +28,8 @@ def print_result(result: Result, stream: TextIO) -> None:
     if costs.success_estimate is not None:
         rows.append(("success estimate", f"{costs.success_estimate:.4g}", "a model; trust your own calibration first"))
     rows.append(("error bound", f"{verdict.error_bound:.2g}", f"proven: {verdict.windows} {verdict.method}"))
+    if verdict.round_bound:
+        rows.append(("for a further round", f"{verdict.round_bound:.2g}", "of a loop, at most"))
     if result.moved:
         rows.append(("input moved by", f"{result.moved:.2g}", "to the nearest unitary"))
     for entry in result.budget:
@@ -50,6 +52,8 @@ def _places(places: tuple[int, ...]) -> str:
 def print_verdict(verdict: Verdict, stream: TextIO) -> None:
     """Print what the checker found."""
     print(f"equal within {verdict.error_bound:.3g} (operator norm, up to global phase)", file=stream)
+    if verdict.round_bound:
+        print(f"each further round of a loop adds {verdict.round_bound:.3g} at most", file=stream)
     print(f"method: {verdict.method}", file=stream)
     if verdict.windows:
         worst = f"the worst, number {verdict.worst_window}, is {verdict.worst_distance:.3g} off"

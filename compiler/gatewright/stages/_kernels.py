@@ -63,8 +63,8 @@ def merge_runs(
 
 
 @nb.njit(
-    "void(i1[::1], i8[::1], i4[::1], i4[::1], b1[::1], i8[::1], i8[::1], b1, f8[:,::1], b1[::1], f8[::1], f8[::1],"
-    " f8[::1])",
+    "void(i1[::1], i8[::1], i4[::1], i4[::1], b1[::1], i8[:,::1], i8[:,::1], i8[:,::1], b1, f8[:,::1], b1[::1],"
+    " f8[::1], f8[::1], f8[::1])",
     cache=True,
     nogil=True,
 )
@@ -74,6 +74,7 @@ def carry_phases(
     wires: Any,
     uses: Any,
     flush: Any,
+    tools: Any,
     passes_to: Any,
     sign: Any,
     steers: bool,
@@ -83,7 +84,7 @@ def carry_phases(
     phase: Any,
     moved: Any,
 ) -> None:
-    """Move rotations about the plan's axis behind the entanglers that let them pass."""
+    """Move rotations about the plan's axis behind the entanglers that let them pass; use j of w is of tools[w, j]."""
     site = 0
     for w in range(len(kind)):
         if kind[w] == 0:
@@ -101,18 +102,20 @@ def carry_phases(
                     continue
                 angles[site, 2] += phase[p]
                 phase[p] = 0.0
-                if passes_to[j] < 0:
+                tool = tools[w, layer]
+                to, turned = passes_to[tool, j], sign[tool, j]
+                if to < 0:
                     trailing[site] = True
                 elif angles[site, 1] == 0.0:
-                    moved[passes_to[j]] += sign[j] * (angles[site, 0] + angles[site, 2])
+                    moved[to] += turned * (angles[site, 0] + angles[site, 2])
                     angles[site, 0] = angles[site, 2] = 0.0
                 elif steers:
                     # The rotation before the pulse turns the pulse's axis and comes out behind it.
-                    moved[passes_to[j]] += sign[j] * (angles[site, 0] + angles[site, 2])
+                    moved[to] += turned * (angles[site, 0] + angles[site, 2])
                     angles[site, 0] = -angles[site, 2]
                     trailing[site] = True
                 else:
-                    moved[passes_to[j]] += sign[j] * angles[site, 0]
+                    moved[to] += turned * angles[site, 0]
                 site += 1
             if layer < uses[w]:
                 for j in range(kind[w]):

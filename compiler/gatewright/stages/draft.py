@@ -34,12 +34,18 @@ class Settings:
         ``quick``, ``standard`` or ``deep``: how long to search for placements.
     placement : tuple of int or None
         Physical qubit of each source qubit at the start, -1 where it is free.
+    final : tuple of int or None
+        Physical qubit of each source qubit at the end; wherever routing leaves them by default.
+    prefer : str
+        What is made least where qubits have several entanglers: ``uses``, ``fidelity`` (its loss) or ``duration``.
     """
 
     seed: int = 0
     tolerance: float = 1e-12
     effort: str = "standard"
     placement: tuple[int, ...] | None = None
+    final: tuple[int, ...] | None = None
+    prefer: str = "uses"
 
 
 @dataclass(frozen=True, eq=False, slots=True)

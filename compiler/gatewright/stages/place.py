@@ -47,12 +47,14 @@ def mapping_task(draft: Draft) -> tuple[Graph, Operations]:
 
 
 def _edge_costs(draft: Draft) -> NDArray[np.float64] | None:
-    """Return −log of the entangler's process fidelity on each edge, or None if it is not known on all of them."""
-    if draft.native.entangler is None:
+    """Return −log of the best entangler's process fidelity on each edge, or None if it is not known on all of them."""
+    edges, names = draft.device.edges, [tool.gate.name for tool in draft.native.straight]
+    if not names or not len(edges):
         return None
-    edges, name = draft.device.edges, draft.native.entangler.gate.name
     # On a directed edge the gate is known in one order only.
-    errors = np.fmin(draft.device.errors(name, edges), draft.device.errors(name, edges[:, ::-1]))
-    if not len(edges) or np.isnan(errors).any():
+    errors: NDArray[np.float64] = np.fmin.reduce(
+        [draft.device.errors(name, way) for name in names for way in (edges, edges[:, ::-1])]
+    )
+    if np.isnan(errors).any():
         return None
     return -np.log(np.maximum(1 - 1.25 * errors, 1e-9))

@@ -20,9 +20,11 @@ from gatewright.linalg import dagger
 from gatewright.proof.windows import Step
 from gatewright.stages._kernels import carry_phases, merge_runs
 from gatewright.stages.draft import Draft
+from gatewright.stages.edges import allowed_tools, groups_of_edges
 from gatewright.stages.windows import FIXED, ONE, TWO, Fused, window_unitaries
 from gatewright.synthesis.euler import ROUNDING
 from gatewright.synthesis.native import NativeEntangler, NativeSet
+from gatewright.synthesis.toolkit import MixedCircuit, synthesise_mixed
 
 __all__ = ["synthesise"]
 
@@ -52,43 +54,76 @@ def synthesise(draft: Draft) -> Draft:
     circuit, native = draft.circuit, draft.native
     fused = _oriented(draft.fused, draft)
     one, two = window_unitaries(circuit, fused)
-    uses = np.zeros(len(fused.kind), dtype=np.int32)
+    made = _windows(two, fused, draft)
     # Layers of every window; one of a single wire has one, on its first slot.
-    layers = np.zeros((len(uses), 4, 2, 2, 2), dtype=np.complex128)
+    uses = np.zeros(len(fused.kind), dtype=np.int32)
+    tools = np.full((len(uses), made.members.shape[1]), -1, dtype=np.int64)
+    layers = np.zeros((len(uses), made.layers.shape[1], 2, 2, 2), dtype=np.complex128)
     layers[fused.kind == ONE, 0, 0] = one
-    if len(two):
-        if native.entangler is None:
-            raise GateSetError(
-                f"gate set '{draft.device.gate_set.name}' has no two-qubit gate",
-                required="an entangler for the two-qubit gates of the circuit",
-            )
-        made = native.entangler.entangler.synthesise(two, tolerance=draft.settings.tolerance)
-        uses[fused.kind == TWO] = made.uses
-        layers[fused.kind == TWO] = made.layers
-    sites, seams, window_event = _runs(fused, layers, uses, native, circuit.n_qubits, draft.settings.tolerance)
-    output, windows = _emit(circuit, fused, sites, uses, window_event, native)
+    is_two = fused.kind == TWO
+    uses[is_two], tools[is_two], layers[is_two] = made.uses, made.members, made.layers
+    sites, seams, window_event = _runs(fused, layers, uses, tools, native, circuit.n_qubits, draft.settings.tolerance)
+    output, windows = _emit(circuit, fused, sites, uses, tools, window_event, native)
     step, final = _claim(draft, fused, windows, seams)
     return replace(draft, circuit=output, fused=fused, final=final, steps=(*draft.steps, step))
 
 
-def _oriented(fused: Fused, draft: Draft) -> Fused:
-    """Order the wires of every two-wire window as the entangler wants them on that pair."""
+def _windows(two: Array, fused: Fused, draft: Draft) -> MixedCircuit:
+    """Make every two-wire window from the entanglers of its pair; members are indices of the native set's."""
+    native, settings = draft.native, draft.settings
+    if len(two) and not native.entanglers:
+        raise GateSetError(
+            f"gate set '{draft.device.gate_set.name}' has no two-qubit gate",
+            required="an entangler for the two-qubit gates of the circuit",
+        )
     first = fused.offsets[:-1][fused.kind == TWO]
-    if draft.native.entangler is None or not len(first):
+    pairs = fused.wires[first[:, None] + np.arange(2)]
+    groups = list(groups_of_edges(draft.device, native.entanglers, pairs, settings.prefer))
+    made: list[MixedCircuit] = []
+    for group in groups:
+        entanglers = [native.entanglers[t].entangler for t in group.tools]
+        part = synthesise_mixed(two[group.rows], entanglers, costs=group.costs, tolerance=settings.tolerance)
+        numbers = np.array([*group.tools, -1], dtype=np.int64)
+        made.append(replace(part, members=numbers[part.members]))
+    if len(made) == 1:
+        return made[0]
+    depth = max((part.members.shape[1] for part in made), default=0)
+    whole = MixedCircuit(
+        uses=np.zeros(len(two), dtype=np.int64),
+        members=np.full((len(two), depth), -1, dtype=np.int64),
+        layers=np.zeros((len(two), depth + 1, 2, 2, 2), dtype=np.complex128),
+        distance=np.zeros(len(two)),
+    )
+    for group, part in zip(groups, made, strict=True):
+        k = part.members.shape[1]
+        whole.uses[group.rows], whole.distance[group.rows] = part.uses, part.distance
+        whole.members[group.rows, :k], whole.layers[group.rows, : k + 1] = part.members, part.layers
+    return whole
+
+
+def _oriented(fused: Fused, draft: Draft) -> Fused:
+    """Order the wires of every two-wire window so that most entanglers of that pair need not be flipped."""
+    first = fused.offsets[:-1][fused.kind == TWO]
+    straight = draft.native.straight
+    if not straight or not len(first):
         return fused
-    n = draft.device.n_qubits
-    pairs = np.asarray(draft.device.allowed_pairs(draft.native.entangler.gate.name), dtype=np.int64)
-    allowed = np.zeros((n, n), dtype=bool)
-    allowed[pairs[:, 0], pairs[:, 1]] = True
-    p, q = fused.wires[first], fused.wires[first + 1]
-    turned = ~allowed[p, q]
+    pairs = fused.wires[first[:, None] + np.arange(2)]
+    distinct, owner = np.unique(pairs, axis=0, return_inverse=True)
+    here, there = (allowed_tools(draft.device, straight, way).sum(axis=1) for way in (distinct, distinct[:, ::-1]))
+    turned = (there > here)[owner.reshape(-1)]
     wires = fused.wires.copy()
-    wires[first[turned]], wires[first[turned] + 1] = q[turned], p[turned]
+    wires[first[turned]], wires[first[turned] + 1] = pairs[turned, 1], pairs[turned, 0]
     return replace(fused, wires=wires)
 
 
 def _runs(
-    fused: Fused, layers: Array, uses: NDArray[np.int32], native: NativeSet, n_wires: int, tolerance: float
+    fused: Fused,
+    layers: Array,
+    uses: NDArray[np.int32],
+    tools: NDArray[np.int64],
+    native: NativeSet,
+    n_wires: int,
+    tolerance: float,
 ) -> tuple[_Sites, NDArray[np.float64], NDArray[np.int64]]:
     """Merge layers along the wires, find their angles, carry phases on; return the runs and each slot's seam."""
     kind, offsets, wires = fused.kind, fused.offsets, fused.wires
@@ -111,12 +146,11 @@ def _runs(
     if axis is None:
         trailing[:] = True
     else:
-        entangler = native.entangler
-        passes = np.array(entangler.passes_to if entangler else (-1, -1), dtype=np.int64)
-        sign = np.array(entangler.sign if entangler else (1, 1), dtype=np.int64)
+        passes = np.array([entangler.passes_to for entangler in native.entanglers], dtype=np.int64).reshape(-1, 2)
+        sign = np.array([entangler.sign for entangler in native.entanglers], dtype=np.int64).reshape(-1, 2)
         steers, phase = native.plan.steers, np.zeros(n_wires)
         carry_phases(
-            kind, offsets, wires, uses, flush, passes, sign, steers, angles, trailing, phases, phase, np.zeros(2)
+            kind, offsets, wires, uses, flush, tools, passes, sign, steers, angles, trailing, phases, phase, np.zeros(2)
         )
         angles[:, ::2] = _snapped(angles[:, ::2])
     # The output lacks what is owed: it is ahead of the source by the inverse.
@@ -173,6 +207,7 @@ def _emit(
     fused: Fused,
     sites: _Sites,
     uses: NDArray[np.int32],
+    tools: NDArray[np.int64],
     window_event: NDArray[np.int64],
     native: NativeSet,
 ) -> tuple[Circuit, NDArray[np.int32]]:
@@ -187,9 +222,11 @@ def _emit(
             values = emission.parameters[site, column, : gate.n_parameters]
             pieces.append(Piece(gate, sites.event[site] * room + column, sites.wire[site][:, None], values))
             windows.append(sites.window[site])
-    if native.entangler is not None and uses.any():
-        pieces.append(_entanglers(fused, uses, window_event, native.entangler, room))
-        windows.append(np.repeat(np.arange(len(uses)), uses))
+    for number, entangler in enumerate(native.entanglers):
+        window, layer = np.nonzero(tools == number)
+        if len(window):
+            pieces.append(_entanglers(fused, window, layer, window_event, entangler, room))
+            windows.append(window)
     fixed_rows = np.flatnonzero(fused.kind[fused.window] == FIXED)
     at = fused.window[fixed_rows]
     for chosen, piece in circuit.pieces(fixed_rows, window_event[at] * room):
@@ -201,14 +238,17 @@ def _emit(
 
 
 def _entanglers(
-    fused: Fused, uses: NDArray[np.int32], window_event: NDArray[np.int64], entangler: NativeEntangler, room: int
+    fused: Fused,
+    window: NDArray[np.int64],
+    layer: NDArray[np.int64],
+    window_event: NDArray[np.int64],
+    entangler: NativeEntangler,
+    room: int,
 ) -> Piece:
-    """Place the entanglers: after the two runs of each layer."""
-    window = np.repeat(np.arange(len(uses)), uses)
-    first = np.cumsum(uses) - uses
-    layer = np.arange(len(window)) - np.repeat(first, uses)
+    """Place the uses of one entangler: after the two runs of each layer."""
     key = (window_event[window] + 3 * layer + 2) * room
-    qubits = fused.wires[fused.offsets[window][:, None] + np.arange(2)]
+    order = [1, 0] if entangler.flipped else [0, 1]
+    qubits = fused.wires[fused.offsets[window][:, None] + np.array(order)]
     return Piece(entangler.gate, key, qubits, np.tile(np.array(entangler.parameters), (len(window), 1)))
 
 

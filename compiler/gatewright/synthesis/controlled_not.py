@@ -33,8 +33,8 @@ class EntanglerCircuit:
     Attributes
     ----------
     uses : ndarray of int, shape (...)
-        k, from 0 to 3.
-    layers : ndarray, shape (..., 4, 2, 2, 2)
+        k, from 0 to a greatest number K, which is 3 for CNOT.
+    layers : ndarray, shape (..., K + 1, 2, 2, 2)
         One-qubit gates, [layer, qubit] 2 × 2 in SU(2); layer 0 is the first in time, those beyond k are 1.
     distance : ndarray, shape (...)
         Operator-norm distance up to phase between the target and what is built, where an approximation within the
@@ -50,7 +50,7 @@ class EntanglerCircuit:
         gate = np.asarray(entangler, dtype=np.complex128)
         local = kron(self.layers[..., 0, :, :], self.layers[..., 1, :, :])
         product = np.asarray(local[..., 0, :, :])
-        for j in range(1, 4):
+        for j in range(1, self.layers.shape[-4]):
             longer = local[..., j, :, :] @ gate @ product
             product = np.where((self.uses >= j)[..., None, None], longer, product)
         return product

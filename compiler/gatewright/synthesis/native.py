@@ -1,4 +1,4 @@
-"""How a native gate set is used: its one-qubit plan, its entangler, and which phases pass through that.
+"""How a native gate set is used: its one-qubit plan, its entanglers, and which phases pass through that.
 
 A rotation about the axis n that the one-qubit plan can split off commutes with some entanglers, or changes wires in
 passing (iSWAP); then it need not be played before them. All of this is found from the matrices, never from names.
@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from gatewright.errors import GateSetError, UnsupportedError
 from gatewright.gates import Gate
-from gatewright.linalg import dagger, kron
+from gatewright.linalg import dagger, kron, reorder_qubits
 from gatewright.synthesis.entangler import Entangler, classify
 from gatewright.synthesis.one_qubit import OneQubitPlan, plan_one_qubit
 from gatewright.synthesis.weyl import canonical_coordinates
@@ -24,7 +24,7 @@ from gatewright.synthesis.weyl import canonical_coordinates
 if TYPE_CHECKING:
     from gatewright.devices import GateSet, NativeGate
 
-__all__ = ["NativeEntangler", "NativeSet", "entangler_parameters", "native_set"]
+__all__ = ["NativeEntangler", "NativeSet", "entangler_parameters", "native_set", "usable_entanglers"]
 
 Array = NDArray[np.complex128]
 
@@ -37,17 +37,20 @@ PAULI = np.array([[[0, 1], [1, 0]], [[0, -1j], [1j, 0]], [[1, 0], [0, -1]]])
 
 @dataclass(frozen=True, eq=False, slots=True)
 class NativeEntangler:
-    """One two-qubit native gate at fixed parameters.
+    """One two-qubit native gate at fixed parameters, with its qubits in one order.
 
     Attributes
     ----------
     gate : Gate
     parameters : tuple of float
     entangler : Entangler
+        Of the gate's matrix with the qubits in that order.
     passes_to : tuple of int
         For each qubit, where a rotation about the plan's axis goes when moved behind the gate; -1 if it does not pass.
     sign : tuple of int
         The sign that its angle takes.
+    flipped : bool
+        Whether the gate's first qubit is the second of the window's.
     """
 
     gate: Gate
@@ -55,14 +58,53 @@ class NativeEntangler:
     entangler: Entangler
     passes_to: tuple[int, int]
     sign: tuple[int, int]
+    flipped: bool = False
 
 
 @dataclass(frozen=True, eq=False, slots=True)
 class NativeSet:
-    """A gate set ready for use."""
+    """A gate set ready for use.
+
+    Attributes
+    ----------
+    plan : OneQubitPlan
+    entanglers : tuple of NativeEntangler
+        Every usable two-qubit gate; those that are not symmetric in their qubits a second time, flipped, behind all
+        that are not flipped. Empty for a set without two-qubit gates.
+    """
 
     plan: OneQubitPlan
-    entangler: NativeEntangler | None
+    entanglers: tuple[NativeEntangler, ...]
+
+    @property
+    def straight(self) -> tuple[NativeEntangler, ...]:
+        """The entanglers that are not flipped: each gate once."""
+        return tuple(entangler for entangler in self.entanglers if not entangler.flipped)
+
+
+def usable_entanglers(
+    gate_set: GateSet, *, tolerance: float = 1e-12
+) -> list[tuple[NativeGate, tuple[float, ...], Entangler]]:
+    """Return the two-qubit gates of a set that entangle, at chosen parameters.
+
+    Raises
+    ------
+    GateSetError
+        The set has two-qubit gates and none can be used; the reason for each is given.
+    """
+    usable: list[tuple[NativeGate, tuple[float, ...], Entangler]] = []
+    reasons: list[str] = []
+    for native in gate_set.two_qubit:
+        try:
+            parameters = entangler_parameters(native)
+            entangler = classify(native.gate.matrix(parameters), tolerance=tolerance)
+        except GateSetError as error:
+            reasons.append(f"'{native.gate.name}': {error}")
+        else:
+            usable.append((native, parameters, entangler))
+    if reasons and not usable:
+        raise GateSetError(f"gate set '{gate_set.name}' has no entangler that can be used", found="; ".join(reasons))
+    return usable
 
 
 @lru_cache(maxsize=64)
@@ -73,33 +115,34 @@ def native_set(gate_set: GateSet, *, tolerance: float = 1e-12) -> NativeSet:
     ----------
     gate_set : GateSet
     tolerance : float
-        Within which an entangler belongs to a class.
+        Within which an entangler belongs to a class with closed forms.
 
     Raises
     ------
-    GateSetError, UnsupportedError
-        No two-qubit gate of the set belongs to a class that can be used; the reason for each is given.
+    GateSetError
+        The set has two-qubit gates and none can be used; the reason for each is given.
     """
-    usable: list[tuple[float, NativeGate, tuple[float, ...], Entangler]] = []
-    reasons: list[str] = []
-    for native in gate_set.two_qubit:
-        try:
-            parameters = entangler_parameters(native)
-            entangler = classify(native.gate.matrix(parameters), tolerance=tolerance)
-        except (GateSetError, UnsupportedError) as error:
-            reasons.append(f"'{native.gate.name}': {error}")
-        else:
-            usable.append((native.error or 0.0, native, parameters, entangler))
+    usable = usable_entanglers(gate_set, tolerance=tolerance)
     if not usable:
-        if reasons:
-            what = f"gate set '{gate_set.name}' has no entangler that can be used yet"
-            raise UnsupportedError(what, found="; ".join(reasons))
-        return NativeSet(plan_one_qubit(gate_set.one_qubit), None)
-    _, native, parameters, entangler = min(usable, key=lambda entry: entry[0])
-    matrix = native.gate.matrix(parameters)
-    passing = [name for name, axis in zip("xyz", np.eye(3), strict=True) if max(_passages(matrix, axis)[0]) >= 0]
+        return NativeSet(plan_one_qubit(gate_set.one_qubit), ())
+    axes = dict(zip("xyz", np.eye(3), strict=True))
+    # Phases pass the better the more of the gates let them.
+    passing = [
+        name
+        for name, axis in axes.items()
+        if all(max(_passages(entangler.matrix, axis)[0]) >= 0 for _, _, entangler in usable)
+    ]
     plan = plan_one_qubit(gate_set.one_qubit, passing=passing)
-    return NativeSet(plan, NativeEntangler(native.gate, parameters, entangler, *_passages(matrix, plan.axis)))
+    tools = [
+        NativeEntangler(native.gate, parameters, entangler, *_passages(entangler.matrix, plan.axis))
+        for native, parameters, entangler in usable
+    ]
+    for native, parameters, entangler in usable:
+        if not native.symmetric:
+            turned = classify(reorder_qubits(entangler.matrix, (1, 0)), tolerance=tolerance)
+            passes = _passages(turned.matrix, plan.axis)
+            tools.append(NativeEntangler(native.gate, parameters, turned, *passes, flipped=True))
+    return NativeSet(plan, tuple(tools))
 
 
 def entangler_parameters(native: NativeGate) -> tuple[float, ...]:
