@@ -172,6 +172,9 @@ class _Search:
                 heapq.heappush(self.ready, block)
                 continue
             block = heapq.heappop(self.ready)
+            q = made.wires[block][0]
+            if self.reached[q] >= len(made.lanes[q]) or made.lanes[q][self.reached[q]] != block:
+                continue  # offered twice, and done
             kind = made.kind[block]
             if not (self._pair(block) if kind == PAIR else kind == FIXED and self._fixed(block)):
                 self.waiting.add(block)
@@ -181,6 +184,13 @@ class _Search:
                 self.reached[q] += 1
             for q in made.wires[block]:
                 self._offer(q)
+        # What is left may still do no more than exchange wires that the output never used.
+        for wire, lane in enumerate(meant.lanes):
+            if self.next[wire] < len(lane) and self.label_of[wire] < 0:
+                label = min((k for k in range(self.n) if self.bound[k] < 0), key=lambda k: (k != wire, k))  # noqa: B023
+                self._join(label, wire)
+        for wire in range(self.wires):
+            self._settle(wire)
         if any(self.next[wire] < len(lane) for wire, lane in enumerate(meant.lanes)):
             return self._stuck(-1)
         return self._finish()
