@@ -7,6 +7,7 @@ with any other claim stands alone: the identity on the seams beside it, and a cl
 from __future__ import annotations
 
 from abc import ABC, abstractmethod
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import ClassVar
 
@@ -16,9 +17,21 @@ from numpy.typing import NDArray
 from gatewright.circuit import Circuit
 from gatewright.errors import ProofError
 from gatewright.gates import MEASURE, RESET
+from gatewright.proof.phase_polynomial import NotMonomial, compare_phase_polynomials
 from gatewright.proof.products import Held, window_products
+from gatewright.proof.tableau import NotClifford, compare_tableaus
 
-__all__ = ["CLAIM_KINDS", "MATRIX", "AbsorbedByReset", "ClaimKind", "DiagonalBeforeMeasurement", "Equal", "Sides"]
+__all__ = [
+    "CLAIM_KINDS",
+    "MATRIX",
+    "AbsorbedByReset",
+    "ClaimKind",
+    "CliffordRegion",
+    "DiagonalBeforeMeasurement",
+    "Equal",
+    "PhasePolynomialRegion",
+    "Sides",
+]
 
 Array = NDArray[np.complex128]
 
@@ -136,6 +149,50 @@ class AbsorbedByReset(ClaimKind):
         return 0.0, 0.0
 
 
+def _compared(
+    sides: Sides, compare: Callable[..., tuple[float, tuple[int, ...], str]], refused: type[Exception]
+) -> float:
+    """Compare both sides by a method for any number of wires."""
+    for side in (sides.meant, sides.made):
+        if not side.is_unitary.all():
+            raise ProofError("something else than gates in the window")
+    try:
+        distance, _, difference = compare(sides.meant, sides.made, range(sides.made.n_qubits), sides.target)
+    except refused:
+        raise ProofError("gates of other kinds in the window") from None
+    if difference:
+        raise ProofError(difference, distance=distance or None)
+    return distance
+
+
+class CliffordRegion(ClaimKind):
+    """Both sides are Clifford circuits, on any number of wires, that take every Pauli string to the same one."""
+
+    name = "clifford"
+
+    @classmethod
+    def check(cls, sides: Sides) -> tuple[float, float]:
+        """Compare the tableaus."""
+        return _compared(sides, compare_tableaus, NotClifford), 0.0
+
+
+class PhasePolynomialRegion(ClaimKind):
+    """Both sides are circuits of exchanges, NOT, CNOT and diagonal gates with the same function and parity terms."""
+
+    name = "parities"
+
+    @classmethod
+    def check(cls, sides: Sides) -> tuple[float, float]:
+        """Compare the phase polynomials."""
+        return _compared(sides, compare_phase_polynomials, NotMonomial), 0.0
+
+
 #: The kinds by their numbers in `gatewright.proof.windows.Step.claims`.
-CLAIM_KINDS: tuple[type[ClaimKind], ...] = (Equal, DiagonalBeforeMeasurement, AbsorbedByReset)
+CLAIM_KINDS: tuple[type[ClaimKind], ...] = (
+    Equal,
+    DiagonalBeforeMeasurement,
+    AbsorbedByReset,
+    CliffordRegion,
+    PhasePolynomialRegion,
+)
 MATRIX = 0
