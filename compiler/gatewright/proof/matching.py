@@ -164,6 +164,8 @@ class _Search:
                 self.ready.append(block)
         heapq.heapify(self.ready)
         while self.ready or self.waiting:
+            if not self.ready and self._split_some():
+                continue
             if not self.ready:
                 block = min(self.waiting, key=lambda b: (not self._is_open(b), b))
                 if not self._is_open(block) or not self._bind(block):
@@ -194,6 +196,16 @@ class _Search:
         if any(self.next[wire] < len(lane) for wire, lane in enumerate(meant.lanes)):
             return self._stuck(-1)
         return self._finish()
+
+    def _split_some(self) -> bool:
+        """Match a part of a block that waits, where nothing else goes on."""
+        for block in sorted(self.waiting):
+            before = self.begun[block]
+            if self.made.kind[block] == PAIR and (self._pair(block, split=True) or self.begun[block] > before):
+                self.waiting.discard(block)
+                heapq.heappush(self.ready, block)
+                return True
+        return False
 
     def _offer(self, q: int) -> None:
         """Make the output block that comes next on a qubit ready, if it comes next on all of its own."""
@@ -259,8 +271,8 @@ class _Search:
 
     # Consuming.
 
-    def _pair(self, block: int) -> bool:
-        """Match an output block: as a whole, or piece by piece."""
+    def _pair(self, block: int, *, split: bool = False) -> bool:
+        """Match an output block: as a whole, or, with `split`, piece by piece."""
         members = len(self.made.members[block])
         while self.begun[block] < members:
             labels = self.label_at[self.made.wires[block][0]], self.label_at[self.made.wires[block][1]]
@@ -273,6 +285,8 @@ class _Search:
             gates = len(self.meant.members[facing]) - self.done[facing] if facing is not None else 0
             if any(self._consume(block, labels, facing, part, None) for part in range(gates - 1, 0, -1)):
                 return True
+            if not split:
+                return False
             stops = range(min(members - 1, self.begun[block] + LOOKAHEAD), self.begun[block], -1)
             parts = (None, *range(min(gates - 1, LOOKAHEAD), 0, -1)) if facing is not None else ()
             some = any(self._consume(block, labels, facing, part, stop) for part in parts for stop in stops)
