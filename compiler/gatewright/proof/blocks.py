@@ -115,55 +115,79 @@ class Blocks:
 
 
 def without_idle_blocks(circuit: Circuit) -> Step | None:
-    """Return the step that replaces every block that is a product of one-qubit gates by these, or None without any.
+    """Return the step that takes out every block of one-qubit gates and perhaps an exchange, or None without any.
 
-    Such a block would keep neighbours apart that belong together. Every other operation is a window of its own.
+    Such a block would keep neighbours apart that belong together. The one-qubit gates stay; for an exchange, the two
+    wires take each other's place from there on. Every other operation is a window of its own.
     """
     blocks = Blocks(circuit)
-    if not blocks.local.any():
+    trivial = np.array(blocks.trivial, dtype=bool)
+    if not trivial.any():
         return None
     taken_by = blocks.taker[blocks.run_of_single]
-    block_of_single = np.where(taken_by >= 0, blocks.block_of[taken_by], -1)
     owner = np.empty(len(circuit), dtype=np.int64)
-    owner[blocks.wide], owner[blocks.single] = blocks.block_of, block_of_single
-    gone = (owner >= 0) & blocks.local[owner]
+    owner[blocks.wide] = blocks.block_of
+    owner[blocks.single] = np.where(taken_by >= 0, blocks.block_of[taken_by], -1)
+    gone = (owner >= 0) & trivial[owner]
     first = np.array([blocks.wide[members[0]] for members in blocks.members])
     key = np.where(gone, first[owner], np.arange(len(circuit)))
-    kept = np.flatnonzero(~gone)
-    pieces = [piece for _, piece in circuit.pieces(kept, key[kept])]
-    idle = np.flatnonzero(blocks.local)
-    matrices = list(circuit.matrices)
-    for slot in range(2):
-        qubits = np.array([blocks.wires[b][slot] for b in idle])[:, None]
-        link = np.arange(len(matrices), len(matrices) + len(idle))
-        for b in idle:
-            parts = factors_of(blocks.products[b])
-            assert parts is not None
-            matrices.append(parts[slot])
-        pieces.append(Piece(UNITARY, first[idle], qubits, np.zeros((len(idle), 0)), link))
-    output, order = assemble(replace(circuit, matrices=tuple(matrices)), circuit.n_qubits, pieces)
     keys, source_window = np.unique(key, return_inverse=True)
-    joined = np.concatenate([piece.key for piece in pieces])[order]
-    pairs = np.array([blocks.wires[b] for b in idle])
     creators = circuit.take(keys)
     wires = creators.qubits.copy()
-    at = creators.offsets[np.searchsorted(keys, first[idle])]
+    idle = np.flatnonzero(trivial)
+    windows = np.searchsorted(keys, first[idle])
+    at = creators.offsets[windows]
+    pairs = np.array([blocks.wires[block] for block in idle])
     wires[at], wires[at + 1] = pairs[:, 0], pairs[:, 1]
+    entry, leave, final = _follow(wires, at[~blocks.local[idle]], circuit.n_qubits)
+    # The circuit that is left: each window's operation where its wires are.
+    kept = np.flatnonzero(~gone)
+    moved = replace(creators, qubits=entry)
+    pieces = [piece for _, piece in moved.pieces(np.searchsorted(keys, kept), key[kept])]
+    matrices = list(circuit.matrices)
+    for slot in range(2):
+        link = np.arange(len(matrices), len(matrices) + len(idle))
+        for block in idle:
+            product = blocks.products[block]
+            parts = factors_of(product if blocks.local[block] else product[SWAP_ROWS])
+            assert parts is not None
+            matrices.append(parts[slot])
+        pieces.append(Piece(UNITARY, first[idle], entry[at + slot][:, None], np.zeros((len(idle), 0)), link))
+    output, order = assemble(replace(circuit, matrices=tuple(matrices)), circuit.n_qubits, pieces)
+    joined = np.concatenate([piece.key for piece in pieces])[order]
     seams = np.zeros((len(wires), 4))
     seams[:, 0] = 1
-    place = np.arange(circuit.n_qubits, dtype=np.int32)
     return Step(
-        initial=place,
-        final=place,
+        initial=np.arange(circuit.n_qubits, dtype=np.int32),
+        final=final,
         source_window=source_window.astype(np.int32),
         output_window=np.searchsorted(keys, joined).astype(np.int32),
         offsets=creators.offsets,
         wires=wires,
-        entry=wires,
-        exit=wires,
+        entry=entry,
+        exit=leave,
         seams=seams,
         output=output,
     )
+
+
+def _follow(
+    wires: NDArray[np.int32], crossed: Rows, count: int
+) -> tuple[NDArray[np.int32], NDArray[np.int32], NDArray[np.int32]]:
+    """Return where each slot enters and leaves and each wire ends, if the two from each of `crossed` on exchange."""
+    place = np.arange(count, dtype=np.int32)
+    entry = np.empty_like(wires)
+    begin = 0
+    # Between two exchanges nothing moves: one gather serves all.
+    for slot in crossed.tolist():
+        entry[begin : slot + 2] = place[wires[begin : slot + 2]]
+        a, b = wires[slot], wires[slot + 1]
+        place[a], place[b] = place[b], place[a]
+        begin = slot + 2
+    entry[begin:] = place[wires[begin:]]
+    leave = entry.copy()
+    leave[crossed], leave[crossed + 1] = entry[crossed + 1], entry[crossed]
+    return entry, leave, place
 
 
 def _is_local(matrices: Array) -> NDArray[np.bool_]:
