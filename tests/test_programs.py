@@ -76,7 +76,7 @@ def test_programs_compile_and_run_alike(file: Path) -> None:
     if isinstance(source, Program):
         assert isinstance(again, Program)
         assert isinstance(result, gw.ProgramResult)
-        proofs = [part.proof for part in decode_program_proof(result.encode_proof())]
+        proofs = decode_program_proof(result.encode_proof())
         verdict = gw.check_program(source, again, proofs, device=device)
     else:
         assert isinstance(again, Circuit)
@@ -217,7 +217,7 @@ def test_a_given_placement_at_both_ends() -> None:
     for final in ((4, 3, 2), (0, 2, 4), (1, 0, 3)):
         result = gw.compile(circuit, LINE, placement=(2, 0, 1), final_placement=final)
         assert (result.initial, result.final) == ((2, 0, 1), final)
-        assert result.verdict.error_bound < 1e-12
+        assert result.verdict.error_bound < 1e-11
 
 
 def test_the_proof_of_a_program_survives_its_file_and_damage_to_the_file_does_not(tmp_path: Path) -> None:
@@ -226,7 +226,7 @@ def test_the_proof_of_a_program_survives_its_file_and_damage_to_the_file_does_no
     assert data == result.encode_proof()
     path = tmp_path / "p.proof"
     path.write_bytes(data)
-    proofs = [part.proof for part in gw.read_program_proof(path)]
+    proofs = gw.read_program_proof(path)
     verdict = gw.check_program(source, result.program, proofs, device=LINE)
     assert verdict.error_bound == result.verdict.error_bound
     for cut in (10, len(data) // 2, len(data) - 5):

@@ -93,10 +93,10 @@ def inner_gates(points: Vector, sequences: Vector, which: NDArray[np.int64]) -> 
         refine(targets[rest], row[rest], phases, found[nearest, :k], free, nearest.shape[1], _STEPS, tried, error)
         better = error < residual[rest]
         found[rest[better]], residual[rest[better]] = tried[better], error[better]
-    for n in np.flatnonzero(~(residual <= _ACCEPTED)) if k > 1 else ():
-        other, rest = _on_facets(points[n], sequences[row[n]], targets[[n]], phases[[row[n]]])
-        if rest < residual[n]:
-            found[n], residual[n] = other, rest
+    for n in np.flatnonzero(~(residual <= _ACCEPTED)).tolist() if k > 1 else ():
+        other, left_over = _on_facets(points[n], sequences[row[n]], targets[[n]], phases[[row[n]]])
+        if left_over < residual[n]:
+            found[n], residual[n] = other, left_over
     return found[:, : k - 1], _left(found, targets, phases[row]), found[:, k - 1], residual
 
 
