@@ -79,7 +79,7 @@ def groups_of_edges(
         if tool.flipped:
             straight = names.index(tool.gate.name)
             allowed[:, t] &= ~allowed[:, straight]
-    choices = np.asarray(allowed.sum(axis=1))
+    choices = np.asarray(allowed, dtype=np.int64).sum(axis=1)
     if not choices.all():
         p, q = distinct[int(np.argmin(choices))].tolist()
         raise DeviceError(
@@ -96,7 +96,7 @@ def groups_of_edges(
         }
         prices[:, t] = np.stack([part[name] for name in PREFERENCES[prefer]], axis=1)
     # What is not known for every entangler of a pair cannot decide between them.
-    unknown = (np.isnan(prices) & allowed[:, :, None]).any(axis=1)
+    unknown = np.asarray((np.isnan(prices) & allowed[:, :, None]).any(axis=1))
     prices = np.where(unknown[:, None, :], 0.0, prices)
     prices[~allowed | (choices == 1)[:, None]] = 0.0
     key = np.concatenate([allowed.astype(float), prices.reshape(len(distinct), -1)], axis=1)
