@@ -299,7 +299,7 @@ BY_HAND: list[tuple[str, list[tuple[object, ...]]]] = [
     ("def f(mutable array[int[8], #dim = 1] a) { a[0] = 7; } array[int[8], 2] a = {1, 2}; qubit q; f(a); rz(a[0]) q;",
      [("rz", (0,), 7.0)]),
     ("gate g(t) a { for int i in [1:2] { rz(i*t) a; } } qubit q; g(0.25) q;", [("rz", (0,), 0.25), ("rz", (0,), 0.5)]),
-    ("qubit[2] q; bit[2] c = \"01\"; if (c[0]) x q[0]; if (c[1]) y q[0]; if (c == \"01\") z q[0];", [(X, (0,)), (Z, (0,))]),
+    ("qubit[2] q; bit[2] c = \"01\"; if (c[0]) x q[0]; if (c[1]) y q[0]; if (c == \"01\") z q[0]; c = 0;", [(X, (0,)), (Z, (0,))]),
     ("qubit[4] q; bit[4] c; for int i in [0:3] { c[3 - i] = measure q[i]; }",
      [("measure", (0,), 3), ("measure", (1,), 2), ("measure", (2,), 1), ("measure", (3,), 0)]),
     ("qubit q;\n@keep x; y\nh q; // no\n#pragma fast { lane\npragma other\nfor int i in [0:0] {\n @inner ; }\n x q; }\n@last",
@@ -381,13 +381,13 @@ REFUSED = [
     ("qubit q; while (true) { }", 3, 10, QasmError, "at most 1000000 gates"),
     ("qubit[100000] q; for int i in [0:10**4] { h q; }", 3, 43, QasmError, "at most 1000000 gates"),
     ("def f(qubit a) { f(a); } qubit q;\nf(q);", 3, 18, QasmError, "too deeply"),
-    ("bit c; qubit q; c = measure q;\nif (c) x q;", 4, 1, UnsupportedError, "'if' on a bit"),
-    ("bit c; qubit q; c = measure q;\nwhile (c) x q;", 4, 1, UnsupportedError, "'while' on a bit"),
-    ("bit[2] c; qubit q;\nswitch (c) { case 0 { } }", 4, 1, UnsupportedError, "'switch' on a bit"),
-    ("bit c; qubit q; c = measure q;\nint i = c;", 4, 9, UnsupportedError, "a measured bit"),
-    ("bit c; qubit q; c = measure q; c = 0;", 3, 32, UnsupportedError, "a bit that was measured"),
-    ("qubit q;\n  box { x q; }", 4, 3, UnsupportedError, "'box'"),
-    ("qubit q; for int i in [0:1] { delay[1ns] q; }", 3, 31, UnsupportedError, "'delay'"),
+    ("bit c; qubit[2] q; c = measure q[0];\nint i = c; x q[i];", 4, 16, UnsupportedError, "depends on the run"),
+    ("bit c; qubit q; c = measure q;\nfor int i in [0:c] { x q; }", 4, 17, UnsupportedError, "depends on the run"),
+    ("bit c; qubit q; c = measure q;\nfor int i in [0:1] { if (c) { break; } }", 4, 22, UnsupportedError, "unrolled"),
+    ("def f(bit c) -> int { if (c) { return 1; } return 2; } bit c; qubit q;\nrz(f(c)) q;", 3, 23, UnsupportedError, "'return'"),
+    ("array[int, 2] a = {1, 2}; bit c;\nif (c) { a[0] = 3; }", 4, 10, UnsupportedError, "an element"),
+    ("qubit q;\n  box[1us] { x q; }", 4, 3, UnsupportedError, "a box of a stated duration"),
+    ("qubit q; for int i in [0:1] { delay[1dt] q; }", 3, 36, UnsupportedError, "'dt'"),
     ("complex a = 1im;", 3, 1, UnsupportedError, "complex"),
     ("qubit[3] q; x q[0:3];", 3, 15, QasmError, "out of range"),
     ("qubit[3] q; x q[{0, 3}];", 3, 17, QasmError, "from -3 to 2"),
@@ -469,7 +469,7 @@ SEEDS = [
     V3 + "def f(qubit a, int[8] k) -> int { while (k > 2) { k -= 1; x a; } return k; }\nqubit[2] q; rx(f(q[0], 5)) q[1];",
     V3 + "gate g(t) a, b { inv @ pow(1/2) @ crx(t) a, b; negctrl @ gphase(t) a; }\nqubit[2] q; g(0.5) q[0], q[1]; end;",
     V3 + 'array[int[8], 3] a = {1, 2, 3}; bit[4] b = "0101"; qubit[4] q;\nswitch (a[1]) { case 2 { x q[1:2]; } default { } }'
-    "\nif (b[0]) { y q; } else z q[-1];\n@note\nfor bit k in b { rz(k) q[0]; }",
+    "\nif (b[0]) { y q; } else z q[-1];\n@note\nfor bit k in b { rz(k) q[0]; } b = 0;",
 ]  # fmt: skip
 PIECES = st.sampled_from(
     [*" \n;,(){}[]<>\"'/*+-^$@#=:\\é!~%&|", "++", "**", "for int i in ", "if (", "else ", "while (true) ", "gate ", "def ", "inv @ "]

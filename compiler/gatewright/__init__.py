@@ -21,11 +21,15 @@ if TYPE_CHECKING:
     from gatewright.errors import GatewrightError
     from gatewright.gates import Gate
     from gatewright.inputs import read
-    from gatewright.pipeline import CHAIN, Result, check, compile, count
-    from gatewright.proof import Proof, Verdict, read_proof
+    from gatewright.parameters import Affine
+    from gatewright.pipeline import CHAIN, check, compile, count
+    from gatewright.program import Program
+    from gatewright.proof import Proof, Verdict, check_program, read_program_proof, read_proof
+    from gatewright.result import ProgramResult, Result
 
 __all__ = [
     "CHAIN",
+    "Affine",
     "Bound",
     "Builder",
     "Circuit",
@@ -34,17 +38,21 @@ __all__ = [
     "Gate",
     "GateSet",
     "GatewrightError",
+    "Program",
+    "ProgramResult",
     "Proof",
     "Result",
     "Verdict",
     "__version__",
     "check",
+    "check_program",
     "compile",
     "count",
     "describe",
     "read",
     "read_device",
     "read_gate_set",
+    "read_program_proof",
     "read_proof",
 ]
 
@@ -56,8 +64,11 @@ _HOMES = {
     "errors": ("GatewrightError",),
     "gates": ("Gate",),
     "inputs": ("read",),
-    "pipeline": ("CHAIN", "Result", "check", "compile", "count"),
-    "proof": ("Proof", "Verdict", "read_proof"),
+    "parameters": ("Affine",),
+    "pipeline": ("CHAIN", "check", "compile", "count"),
+    "program": ("Program",),
+    "proof": ("Proof", "Verdict", "check_program", "read_program_proof", "read_proof"),
+    "result": ("ProgramResult", "Result"),
 }
 _HOME_OF = {name: module for module, names in _HOMES.items() for name in names}
 

@@ -7,16 +7,18 @@ frozen; a `Builder` makes them. Time runs left to right. Qubit 0 is the leftmost
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
+from types import MappingProxyType
 from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from gatewright.errors import CircuitError
-from gatewright.gates import ANY, BARRIER, GATES, MEASURE, RESET, UNITARY, Gate, find_gate
+from gatewright.gates import ANY, BARRIER, DELAY, GATES, MEASURE, RESET, UNITARY, Gate, find_gate
 from gatewright.linalg import checked_unitary, kron
+from gatewright.parameters import INPUT_TYPE, Affine, Parameter, as_parameter, checked_values, within
 
 __all__ = ["Builder", "Circuit", "Operation", "Piece", "apply_matrix", "apply_operations", "assemble"]
 
@@ -25,6 +27,8 @@ Integers = NDArray[np.int32]
 
 #: Largest number of qubits for which a full unitary is made (16 MiB at 10, 256 MiB at 12).
 MAX_DENSE_QUBITS = 12
+
+NO_RANGES: Mapping[str, Sequence[tuple[float, float]]] = MappingProxyType({})
 
 
 @dataclass(frozen=True, slots=True)
@@ -35,16 +39,16 @@ class Operation:
     ----------
     name : str
     qubits : tuple of int
-    parameters : tuple of float
+    parameters : tuple of float or Affine
     bit : int or None
         The classical bit of a measurement.
     matrix : ndarray or None
-        The matrix, for what is unitary.
+        The matrix, for what is unitary and known.
     """
 
     name: str
     qubits: tuple[int, ...]
-    parameters: tuple[float, ...] = ()
+    parameters: tuple[Parameter, ...] = ()
     bit: int | None = None
     matrix: Array | None = field(default=None, repr=False, compare=False)
 
@@ -63,14 +67,21 @@ class Circuit:
         Flat; operation k acts on ``qubits[offsets[k]:offsets[k + 1]]``.
     offsets : ndarray of int64, shape (m + 1,)
     parameters : ndarray of float64, shape (p,)
-        Flat, with `parameter_offsets` (m + 1,).
+        Flat, with `parameter_offsets` (m + 1,); NaN where `symbolic` says what it is.
     link : ndarray of int32, shape (m,)
-        The classical bit of a measurement, the row in `matrices` of an explicit unitary, else -1.
+        The classical bit of a measurement, the row in `matrices` of an explicit unitary, the row in `symbolic` of a
+        gate with parameters that are not known yet, else -1.
     matrices : tuple of ndarray
     phase : float
         Global phase, radians.
     qubit_registers, bit_registers : tuple of (str, int)
         Names and sizes, for writing; empty if there are none to keep.
+    calibrations : tuple of str
+        ``cal``, ``defcal`` and ``defcalgrammar`` statements of the program, kept as they stand for writing.
+    symbolic : tuple of tuples of float or Affine
+        All parameters of a gate of which some are not known yet.
+    inputs : tuple of (str, str)
+        Names that the program is given values for when it runs, with their OpenQASM types.
     """
 
     n_qubits: int
@@ -86,6 +97,9 @@ class Circuit:
     phase: float = 0.0
     qubit_registers: tuple[tuple[str, int], ...] = ()
     bit_registers: tuple[tuple[str, int], ...] = ()
+    symbolic: tuple[tuple[Parameter, ...], ...] = ()
+    inputs: tuple[tuple[str, str], ...] = ()
+    calibrations: tuple[str, ...] = ()
 
     @classmethod
     def from_unitary(cls, matrix: ArrayLike, *, tolerance: float = 1e-12, nearest: bool = False) -> Circuit:
@@ -122,13 +136,15 @@ class Circuit:
         """Return a view of operation `k`."""
         gate = self.table[self.op[k]]
         parameters = self.parameters[self.parameter_offsets[k] : self.parameter_offsets[k + 1]]
-        matrix = None
+        matrix, shown = None, tuple(parameters.tolist())
         if gate.name == UNITARY.name:
             matrix = self.matrices[self.link[k]]
+        elif gate.function is not None and self.link[k] >= 0:
+            shown = self.symbolic[self.link[k]]
         elif gate.function is not None:
             matrix = gate.matrix(parameters)
         bit = int(self.link[k]) if gate.name == MEASURE.name else None
-        return Operation(gate.name, self.qubits_of(k), tuple(parameters.tolist()), bit, matrix)
+        return Operation(gate.name, self.qubits_of(k), shown, bit, matrix)
 
     @property
     def widths(self) -> NDArray[np.int64]:
@@ -137,8 +153,90 @@ class Circuit:
 
     @property
     def is_unitary(self) -> NDArray[np.bool_]:
-        """Whether each operation is a unitary gate (no barrier, measurement or reset), shape (m,)."""
+        """Whether each operation is a unitary gate with known parameters, shape (m,)."""
+        return self.is_gate & ~self.is_symbolic if self.symbolic else self.is_gate
+
+    @property
+    def is_gate(self) -> NDArray[np.bool_]:
+        """Whether each operation is a gate, its parameters known or not: no barrier, measurement or reset."""
         return self._of_kind([gate.function is not None or gate.name == UNITARY.name for gate in self.table])
+
+    @property
+    def is_symbolic(self) -> NDArray[np.bool_]:
+        """Whether each operation is a gate with parameters that are not known yet, shape (m,)."""
+        if not self.symbolic:
+            return np.zeros(len(self), dtype=bool)
+        return np.asarray(self._of_kind([gate.function is not None for gate in self.table]) & (self.link >= 0))
+
+    def bind(
+        self, values: Mapping[str, float], *, ranges: Mapping[str, Sequence[tuple[float, float]]] = NO_RANGES
+    ) -> Circuit:
+        """Put numbers in the place of names; those that are not given stay.
+
+        Parameters
+        ----------
+        values : mapping of str to float
+        ranges : mapping of str to sequence of (float, float), optional
+            Least and greatest value of each parameter of a gate, by its name: what comes of the values is brought
+            into them by full turns, which change a one-qubit gate by a global phase at most.
+
+        Raises
+        ------
+        CircuitError
+            A name that is not an input, or a value that does not fit its type.
+
+        Examples
+        --------
+        >>> circuit = Builder(1).gate("rz", 0, parameters=[Affine.of("theta") / 2]).build()
+        >>> circuit.bind({"theta": 0.5}).operation(0).parameters
+        (0.25,)
+        """
+        known = checked_values(self.inputs, values)
+        return self._replaced(
+            lambda value: value.bind(known), tuple(pair for pair in self.inputs if pair[0] not in known), ranges
+        )
+
+    def at_atoms(self, values: Mapping[str, float]) -> Circuit:
+        """Return the circuit at values of all atoms, taken as independent of each other."""
+        return self._replaced(lambda value: value.substitute(values), (), {})
+
+    @property
+    def atoms(self) -> tuple[str, ...]:
+        """The atoms of all parameters that are not known yet, in order of first appearance."""
+        used = np.unique(self.link[self.is_symbolic]).tolist()
+        rows = (self.symbolic[k] for k in used)
+        return tuple(dict.fromkeys(atom for row in rows for v in row if isinstance(v, Affine) for atom in v.atoms))
+
+    def _replaced(
+        self,
+        change: Callable[[Affine], Parameter],
+        inputs: tuple[tuple[str, str], ...],
+        ranges: Mapping[str, Sequence[tuple[float, float]]],
+    ) -> Circuit:
+        """Return the circuit with every unknown parameter changed."""
+        rows = np.flatnonzero(self.is_symbolic)
+        made = {
+            k: tuple([change(v) if isinstance(v, Affine) else v for v in self.symbolic[k]])
+            for k in np.unique(self.link[rows]).tolist()
+        }
+        parameters, link = self.parameters.copy(), self.link.copy()
+        kept: list[tuple[Parameter, ...]] = []
+        place: dict[int, int] = {}
+        for row in rows.tolist():
+            old = int(link[row])
+            numbers = made[old]
+            if any(isinstance(value, Affine) for value in numbers):
+                link[row] = place.setdefault(old, len(kept))
+                if link[row] == len(kept):
+                    kept.append(numbers)
+                continue
+            limits = ranges.get(self.table[self.op[row]].name) or ((-np.inf, np.inf),) * len(numbers)
+            start = self.parameter_offsets[row]
+            for column, (value, limit) in enumerate(zip(numbers, limits, strict=True)):
+                assert not isinstance(value, Affine)
+                parameters[start + column] = within(value, *limit)
+            link[row] = -1
+        return replace(self, parameters=parameters, link=link, symbolic=tuple(kept), inputs=inputs)
 
     def lanes(self) -> tuple[Integers, NDArray[np.int64]]:
         """Return `qubits` and `offsets` with the classical bit of each measurement as one more wire, n_qubits + bit.
@@ -192,7 +290,7 @@ class Circuit:
         )
 
     def matrix_groups(self, index: ArrayLike | None = None) -> Iterator[tuple[NDArray[np.int64], Array]]:
-        """Yield ``(rows, matrices)`` for the unitary operations, one batch a kind and size.
+        """Yield ``(rows, matrices)`` for the unitary operations, one batch a kind and size; others are passed over.
 
         Parameters
         ----------
@@ -205,6 +303,8 @@ class Circuit:
         matrices : ndarray, shape (k, d, d)
         """
         chosen = np.arange(len(self)) if index is None else np.asarray(index, dtype=np.int64)
+        if self.symbolic:
+            chosen = chosen[~self.is_symbolic[chosen]]
         kinds = self.op[chosen]
         for k, gate in enumerate(self.table):
             rows = chosen[kinds == k]
@@ -255,9 +355,13 @@ class Circuit:
             raise CircuitError(
                 "too many qubits for a full matrix", required=f"{MAX_DENSE_QUBITS} at most", found=str(self.n_qubits)
             )
-        other = np.flatnonzero(~self.is_unitary & ~self.is_named(BARRIER.name))
+        other = np.flatnonzero(~self.is_unitary & ~self.is_named(BARRIER.name) & ~self.is_named(DELAY.name))
         if len(other):
             name = self.table[self.op[other[0]]].name
+            if self.is_symbolic[other[0]]:
+                raise CircuitError(
+                    f"'{name}' has a parameter that is not known yet", hint="`bind` values for the inputs first"
+                )
             raise CircuitError(f"'{name}' is not unitary", required="a circuit of unitary gates")
         start: Array = np.eye(2**self.n_qubits, dtype=np.complex128) * np.exp(1j * self.phase)
         return apply_operations(self, np.flatnonzero(self.is_unitary).tolist(), range(self.n_qubits), start)
@@ -436,6 +540,8 @@ class Builder:
         self._parameter_offsets: list[int] = [0]
         self._link: list[int] = []
         self._matrices: list[Array] = []
+        self._symbolic: dict[tuple[Parameter, ...], int] = {}
+        self._inputs: dict[str, str] = {}
 
     def __repr__(self) -> str:
         """Return a short summary."""
@@ -445,8 +551,31 @@ class Builder:
         """Return the number of operations so far."""
         return len(self._op)
 
-    def gate(self, gate: str | Gate, *qubits: int, parameters: Sequence[float] = ()) -> Builder:
+    def input(self, name: str, kind: str = "float") -> Builder:
+        """Declare a name that gets its value when the program runs; names that are not declared become floats.
+
+        Parameters
+        ----------
+        name : str
+        kind : str
+            Its OpenQASM type: ``float``, ``angle``, ``int``, ``uint`` or ``bool``, with a width where wanted.
+        """
+        if not INPUT_TYPE.fullmatch(kind):
+            raise CircuitError("unknown type of an input", required="float, angle, int, uint, bool", found=kind[:40])
+        if not name.isidentifier() or not name.isascii() or self._inputs.get(name, kind) != kind:
+            raise CircuitError(f"'{name[:40]}' cannot be the name of an input", required="a name not in use")
+        self._inputs[name] = kind
+        return self
+
+    def gate(self, gate: str | Gate, *qubits: int, parameters: Sequence[Any] = ()) -> Builder:
         """Append a named gate.
+
+        Parameters
+        ----------
+        gate : str or Gate
+        *qubits : int
+        parameters : sequence of float, Affine or SymPy expression
+            Those that are not numbers stay unknown until `Circuit.bind`; a gate of the standard table may have them.
 
         Raises
         ------
@@ -460,6 +589,20 @@ class Builder:
                 required=str(kind.n_parameters),
                 found=str(len(parameters)),
             )
+        if not all(isinstance(value, float | int) for value in parameters):
+            values = tuple(as_parameter(value) for value in parameters)
+            if any(isinstance(value, Affine) for value in values):
+                if kind.name not in GATES:
+                    raise CircuitError(
+                        f"the gate '{kind.name}' cannot have unknown parameters",
+                        required="a gate of the standard table",
+                    )
+                for value in values:
+                    for name in value.names if isinstance(value, Affine) else ():
+                        self._inputs.setdefault(name, "float")
+                blank = [np.nan] * len(values)
+                return self._append(kind, qubits, blank, self._symbolic.setdefault(values, len(self._symbolic)))
+            parameters = values
         return self._append(kind, qubits, parameters)
 
     def unitary(self, matrix: ArrayLike, *qubits: int, check: bool = True) -> Builder:
@@ -487,6 +630,12 @@ class Builder:
     def barrier(self, *qubits: int) -> Builder:
         """Append a barrier on `qubits`, or on all of them if none is given."""
         return self._append(BARRIER, qubits or tuple(range(self.n_qubits)))
+
+    def delay(self, duration: float, *qubits: int) -> Builder:
+        """Append a wait of `duration` nanoseconds on `qubits`, or on all of them if none is given."""
+        if not 0 <= duration < np.inf:
+            raise CircuitError("a delay is out of range", required="0 ns or more", found=str(duration))
+        return self._append(DELAY, qubits or tuple(range(self.n_qubits)), (float(duration),))
 
     def _append(self, kind: Gate, qubits: Sequence[int], parameters: Sequence[float] = (), link: int = -1) -> Builder:
         if kind.n_qubits not in (ANY, len(qubits)):
@@ -526,4 +675,6 @@ class Builder:
             phase=self.phase,
             qubit_registers=self.qubit_registers,
             bit_registers=self.bit_registers,
+            symbolic=tuple(self._symbolic),
+            inputs=tuple(self._inputs.items()),
         )

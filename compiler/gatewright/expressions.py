@@ -85,7 +85,7 @@ class Expression:
 
     text: str
     names: tuple[str, ...]
-    _steps: tuple[_Step, ...] = field(repr=False, compare=False)
+    steps: tuple[_Step, ...] = field(repr=False, compare=False)
 
     def evaluate(self, values: Values | None = None) -> NDArray[np.complex128]:
         """Return the value for arrays of the names.
@@ -163,7 +163,7 @@ class Expression:
             "ln": sympy.log, "log": sympy.log, "sin": sympy.sin, "sqrt": sympy.sqrt, "tan": sympy.tan,
         }  # fmt: skip
         stack: list[Any] = []
-        for step in self._steps:
+        for step in self.steps:
             if step.kind == "number":
                 stack.append(_sympy_number(step.number))
             elif step.kind == "constant":
@@ -186,7 +186,7 @@ class Expression:
     def _run(self, values: Mapping[str, Any], functions: Mapping[str, Callable[..., Any]]) -> Any:
         stack: list[Any] = []
         result: Any
-        for step in self._steps:
+        for step in self.steps:
             kind = step.kind
             try:
                 if kind == "number" or kind == "constant":

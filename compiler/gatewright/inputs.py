@@ -13,6 +13,7 @@ from typing import Literal
 from gatewright.circuit import Circuit
 from gatewright.gates import Gate
 from gatewright.matrices import read_matrix
+from gatewright.program import Program
 from gatewright.qasm import QubitMap, read_map
 from gatewright.qasm import read as read_program
 from gatewright.qasm.source import decode, read_bytes
@@ -32,14 +33,14 @@ class Source:
 
     Attributes
     ----------
-    circuit : Circuit
+    circuit : Circuit or Program
     moved : float
         Operator-norm distance from a matrix as given to the unitary taken for it.
     qubit_map : QubitMap or None
         The placement stated in the header of a program that gatewright wrote.
     """
 
-    circuit: Circuit
+    circuit: Circuit | Program
     moved: float = 0.0
     qubit_map: QubitMap | None = None
 
@@ -51,6 +52,7 @@ def load(
     nearest_unitary: bool = False,
     qubit_order: Literal["first", "last"] = "first",
     natives: Mapping[str, Gate] = MappingProxyType({}),
+    strict: bool = True,
 ) -> Source:
     """Read a program or a matrix, with what else is known about it.
 
@@ -67,6 +69,8 @@ def load(
         Where qubit 0 stands among the Kronecker factors of a matrix.
     natives : mapping of str to Gate, optional
         Gates that stay as they are where the program defines them.
+    strict : bool
+        Whether a definition of such a gate has to agree with it; if not, one that differs is the program's own.
 
     Raises
     ------
@@ -80,7 +84,9 @@ def load(
         data = read_bytes(path)
         if suffix in PROGRAM_SUFFIXES or not _MATRIX.match(data):
             text = decode(data, where=where)
-            return Source(read_program(text, where=where, natives=natives), qubit_map=read_map(text, where=where))
+            return Source(
+                read_program(text, where=where, natives=natives, strict=strict), qubit_map=read_map(text, where=where)
+            )
         source = data
     given = read_matrix(source, qubit_order=qubit_order, tolerance=tolerance, nearest=nearest_unitary, where=where)
     return Source(Circuit.from_unitary(given.matrix), given.moved)
@@ -92,8 +98,8 @@ def read(
     tolerance: float = 1e-12,
     nearest_unitary: bool = False,
     qubit_order: Literal["first", "last"] = "first",
-) -> Circuit:
-    """Read an OpenQASM program or a unitary matrix as a circuit.
+) -> Circuit | Program:
+    """Read an OpenQASM program or a unitary matrix as a circuit, or as a program where it depends on measured bits.
 
     Parameters
     ----------

@@ -18,6 +18,7 @@ __all__ = [
     "checked_unitary",
     "dagger",
     "distance",
+    "embed",
     "haar_unitary",
     "kron",
     "nearest_unitary",
@@ -231,3 +232,11 @@ def checked_unitary(
     if moved > 0.999 and float(np.linalg.svd(u, compute_uv=False)[-1]) < 1e-6:
         raise MatrixError("the matrix is singular, and has no unitary nearest to it", required="full rank", where=where)
     return unitary, moved
+
+
+def embed(matrices: Array, slots: list[int], width: int) -> Array:
+    """Return `matrices` on `slots` of a window of `width` qubits."""
+    rest = [slot for slot in range(width) if slot not in slots]
+    wide = kron(matrices, np.eye(2 ** len(rest)))
+    held = slots + rest
+    return reorder_qubits(wide, tuple(held.index(slot) for slot in range(width)))

@@ -4,44 +4,38 @@ from __future__ import annotations
 
 import time
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import asdict, dataclass, field, replace
-from typing import Any
+from dataclasses import replace
+from typing import Any, overload
 
-import numpy as np
 from numpy.typing import ArrayLike
 
-from gatewright._version import __version__
+from gatewright.branches import combined_costs, thread_program
 from gatewright.circuit import Circuit
-from gatewright.cost import (
-    SUCCESS_MODEL,
-    Bound,
-    Costs,
-    check_budget,
-    count_costs,
-    require_budget,
-)
+from gatewright.cost import Bound, Costs, check_budget, count_costs, require_budget
 from gatewright.devices import Device
 from gatewright.errors import InputError, ProofError, nearest_name
-from gatewright.gates import GATES
 from gatewright.linalg import checked_unitary
-from gatewright.proof import Proof, Verdict, check_legal, check_proof, encode_proof
-from gatewright.proof.dense import dense_distance, dense_work
+from gatewright.lower_bounds import lower_bound
+from gatewright.program import Program
+from gatewright.proof import Proof, Verdict, check_legal, check_program, check_proof
+from gatewright.proof.dense import BINDINGS, dense_distance, dense_work
+from gatewright.result import ProgramResult, Result
 from gatewright.stages.draft import Draft, Settings, Stage
 from gatewright.stages.expand import expand
 from gatewright.stages.fuse import fuse
+from gatewright.stages.parametrise import parametrise
 from gatewright.stages.place import place
+from gatewright.stages.restore import restore
 from gatewright.stages.route import route
 from gatewright.stages.schedule import schedule
+from gatewright.stages.settle import settle
 from gatewright.stages.synthesise import synthesise
-from gatewright.stages.windows import TWO, fuse_circuit, window_unitaries
-from gatewright.synthesis.definition import definition_of
 from gatewright.synthesis.native import NativeSet, native_set
-from gatewright.synthesis.toolkit import least_mixed_uses
 
 __all__ = ["CHAIN", "EFFORTS", "Result", "check", "compile", "count"]
 
 #: The stages in order. A caller may pass a chain of their own to `compile`; what it makes is proven all the same.
-CHAIN: tuple[Stage, ...] = (expand, place, route, fuse, synthesise, schedule)
+CHAIN: tuple[Stage, ...] = (parametrise, expand, place, route, restore, fuse, synthesise, schedule, settle)
 
 EFFORTS = ("quick", "standard", "deep")
 
@@ -53,119 +47,7 @@ DENSE_QUBITS = 9
 DENSE_WORK = 2.5e8
 
 
-@dataclass(frozen=True, eq=False, slots=True, repr=False)
-class Result:
-    """A compiled circuit with everything that is known about it; it exists only if the proof holds.
-
-    Attributes
-    ----------
-    circuit : Circuit
-        Native gates on physical qubits, in order of start time.
-    source : Circuit
-        What was asked for.
-    device : Device
-    proof : Proof
-    verdict : Verdict
-        The checker's findings; ``verdict.error_bound`` bounds the operator-norm distance up to global phase.
-    costs : Costs
-    lower_bound : Bound
-    budget : list of dict
-        Each limit, its value, and whether it is met.
-    starts : ndarray, shape (operations,)
-        Start of each operation: nanoseconds, or layers where the device states no durations.
-    seed, tolerance, effort
-        As used.
-    moved : float
-        Distance from the matrix given to the unitary that was compiled; 0 for circuits.
-    seconds : dict of str to float
-        Time taken by each stage.
-    """
-
-    circuit: Circuit
-    source: Circuit
-    device: Device
-    proof: Proof
-    verdict: Verdict
-    costs: Costs
-    lower_bound: Bound
-    budget: list[dict[str, Any]]
-    starts: np.ndarray
-    seed: int
-    tolerance: float
-    effort: str
-    moved: float = 0.0
-    seconds: dict[str, float] = field(default_factory=dict)
-
-    def __repr__(self) -> str:
-        """Return a short summary."""
-        cost = f"{self.costs.two_qubit_gates} two-qubit gates, at least {self.lower_bound.two_qubit_gates}"
-        return f"Result({self.circuit!r} on {self.device.name}: {cost}; error bound {self.verdict.error_bound:.2g})"
-
-    @property
-    def initial(self) -> tuple[int, ...]:
-        """Physical qubit of each source qubit at the start."""
-        return self.verdict.initial
-
-    @property
-    def final(self) -> tuple[int, ...]:
-        """Physical qubit of each source qubit at the end."""
-        return self.verdict.final
-
-    def summary(self) -> dict[str, Any]:
-        """Return what the command line writes as JSON."""
-        two = self.source.is_unitary & (self.source.widths == 2)
-        return {
-            "version": __version__,
-            "seed": self.seed,
-            "effort": self.effort,
-            "tolerance": self.tolerance,
-            "device": self.device.name,
-            "gate_set": self.device.gate_set.name,
-            "input": {
-                "qubits": self.source.n_qubits,
-                "operations": len(self.source),
-                "two_qubit_gates": int(np.count_nonzero(two)),
-                "distance_moved": self.moved,
-            },
-            "output": {**asdict(self.costs), "success_model": SUCCESS_MODEL},
-            "lower_bound": asdict(self.lower_bound),
-            "placement": {"initial": list(self.initial), "final": list(self.final)},
-            "proof": self.verdict.to_dict(),
-            "budget": self.budget,
-            "seconds": {stage: round(value, 6) for stage, value in self.seconds.items()},
-        }
-
-    def encode_proof(self) -> bytes:
-        """Return the bytes of the proof file, for `gatewright.read_proof` and ``gatewright check``."""
-        return encode_proof(self.proof, self.source, self.circuit)
-
-    def to_qasm(self, *, version: int = 3) -> str:
-        """Return the circuit as an OpenQASM program, with the placement in its header.
-
-        Parameters
-        ----------
-        version : int
-            3 or 2.
-        """
-        from gatewright.qasm import map_lines, write
-
-        definitions = {
-            name: native.definition or definition_of(native.gate)
-            for name, native in self.device.gate_set.gates.items()
-            if native.definition or name not in GATES
-        }
-        header = [
-            f"gatewright {__version__}, seed {self.seed}, device {self.device.name}",
-            f"proven equal to its source within {self.verdict.error_bound:.3g} (operator norm, up to global phase)",
-        ]
-        return write(
-            self.circuit,
-            version=version,
-            definitions=definitions,
-            header=[f"// {line}" for line in header] + map_lines(self.initial, self.final),
-        )
-
-
+@overload
 def compile(  # noqa: A001
     source: Circuit | ArrayLike,
     device: Device,
@@ -174,17 +56,53 @@ def compile(  # noqa: A001
     tolerance: float = 1e-12,
     effort: str = "standard",
     placement: Sequence[int] | None = None,
+    final_placement: Sequence[int] | None = None,
     budget: Mapping[str, float] | None = None,
     nearest_unitary: bool = False,
     moved: float = 0.0,
     chain: Sequence[Stage] = CHAIN,
     progress: Callable[[str], None] | None = None,
-) -> Result:
-    """Compile a circuit or a unitary for a device, and prove the result.
+) -> Result: ...
+
+
+@overload
+def compile(  # noqa: A001
+    source: Program,
+    device: Device,
+    *,
+    seed: int = 0,
+    tolerance: float = 1e-12,
+    effort: str = "standard",
+    placement: Sequence[int] | None = None,
+    final_placement: Sequence[int] | None = None,
+    budget: Mapping[str, float] | None = None,
+    nearest_unitary: bool = False,
+    moved: float = 0.0,
+    chain: Sequence[Stage] = CHAIN,
+    progress: Callable[[str], None] | None = None,
+) -> ProgramResult: ...
+
+
+def compile(  # noqa: A001
+    source: Circuit | Program | ArrayLike,
+    device: Device,
+    *,
+    seed: int = 0,
+    tolerance: float = 1e-12,
+    effort: str = "standard",
+    placement: Sequence[int] | None = None,
+    final_placement: Sequence[int] | None = None,
+    budget: Mapping[str, float] | None = None,
+    nearest_unitary: bool = False,
+    moved: float = 0.0,
+    chain: Sequence[Stage] = CHAIN,
+    progress: Callable[[str], None] | None = None,
+) -> Result | ProgramResult:
+    """Compile a circuit, a program or a unitary for a device, and prove the result.
 
     Parameters
     ----------
-    source : Circuit or array_like, shape (2**n, 2**n)
+    source : Circuit, Program or array_like, shape (2**n, 2**n)
     device : Device
     seed : int
         The same input, seed and version give the same output.
@@ -196,6 +114,8 @@ def compile(  # noqa: A001
         How long to search for placements.
     placement : sequence of int, optional
         Physical qubit of each source qubit at the start; -1 leaves one free.
+    final_placement : sequence of int, optional
+        Physical qubit of each source qubit at the end, reached by swaps; wherever routing leaves them by default.
     budget : mapping of str to float, optional
         Limits on costs, as in `gatewright.cost.BUDGETS`; whether each is met is in the result.
     nearest_unitary : bool
@@ -209,7 +129,8 @@ def compile(  # noqa: A001
 
     Returns
     -------
-    Result
+    Result or ProgramResult
+        The latter for a program with classical control.
 
     Raises
     ------
@@ -232,48 +153,110 @@ def compile(  # noqa: A001
     if not 0 <= tolerance <= 1e-2:
         raise InputError("the tolerance is out of range", required="0 to 0.01", found=str(tolerance))
     clock = _Clock(progress)
-    if isinstance(source, Circuit):
-        circuit = source
+    if isinstance(source, Circuit | Program):
+        asked: Circuit | Program = source
     else:
         unitary, moved = checked_unitary(source, tolerance=tolerance, nearest=nearest_unitary)
-        circuit = Circuit.from_unitary(unitary)
-    device.require_room(circuit.n_qubits)
-    settings = Settings(seed=seed, tolerance=tolerance, effort=effort, placement=_placement(placement, circuit))
+        asked = Circuit.from_unitary(unitary)
+    device.require_room(asked.n_qubits)
+    settings = Settings(
+        seed=seed,
+        tolerance=tolerance,
+        effort=effort,
+        placement=_placement(placement, asked),
+        final=_placement(final_placement, asked),
+    )
     clock.start("plan")
     native = native_set(device.gate_set, tolerance=tolerance)
-    draft = Draft(circuit=circuit, device=device, settings=settings, native=native, expanded=circuit)
+    first = asked if isinstance(asked, Circuit) else next(asked.circuits())
+    draft = Draft(circuit=first, device=device, settings=settings, native=native, expanded=first, source=first)
+    given: dict[str, Any] = {"device": device, "seed": seed, "tolerance": tolerance, "effort": effort, "moved": moved}
+    if isinstance(asked, Program):
+        return _compile_program(asked, draft, chain, clock, budget or {}, given)
     for stage in chain:
         clock.start(stage.__name__)
         draft = stage(draft)
     clock.start("prove")
     proof = Proof(draft.steps)
-    deepest = max((len(entangler.entangler.reach) - 1 for entangler in native.entanglers), default=0)
-    window_tolerance = ROUNDING + (1 + 6 * (deepest + 1)) * tolerance
-    verdict = check_proof(circuit, draft.circuit, proof, device=device, tolerance=window_tolerance)
-    verdict = _second_opinion(circuit, draft.circuit, verdict)
+    verdict = proven(asked, draft.circuit, proof, device=device, tolerance=tolerance)
     clock.start("count")
     costs = count_costs(draft.circuit, device, starts=draft.starts, swaps_inserted=draft.swaps)
-    bound = _lower_bound(circuit, draft.expanded, native, tolerance, stays=verdict.initial == verdict.final)
+    clock.start("bound")
+    stays = verdict.initial == verdict.final
+    bound = lower_bound(draft, asked, stays=stays, placement=settings.placement)
     clock.stop()
     return Result(
         circuit=draft.circuit,
-        source=circuit,
-        device=device,
+        source=asked,
         proof=proof,
         verdict=verdict,
         costs=costs,
         lower_bound=bound,
         budget=check_budget(costs, budget or {}),
         starts=draft.starts,
-        seed=seed,
-        tolerance=tolerance,
-        effort=effort,
-        moved=moved,
         seconds=clock.seconds,
+        **given,
     )
 
 
-def count(source: Circuit | ArrayLike, device: Device, **options: Any) -> Costs:
+def proven(source: Circuit, output: Circuit, proof: Proof, *, device: Device, tolerance: float) -> Verdict:
+    """Check a proof, and compare the full unitaries of small circuits as well.
+
+    Raises
+    ------
+    ProofError
+    """
+    slack = _window_tolerance(native_set(device.gate_set, tolerance=tolerance), tolerance)
+    verdict = check_proof(source, output, proof, device=device, tolerance=slack)
+    return _second_opinion(source, output, verdict)
+
+
+def _window_tolerance(native: NativeSet, tolerance: float) -> float:
+    """Return how far off a window may be: by its class, and by the pulses of the runs around each entangler."""
+    deepest = max((len(entangler.entangler.reach) - 1 for entangler in native.entanglers), default=0)
+    return ROUNDING + (1 + 6 * (deepest + 1)) * tolerance
+
+
+def _compile_program(
+    source: Program,
+    draft: Draft,
+    chain: Sequence[Stage],
+    clock: _Clock,
+    budget: Mapping[str, float],
+    given: dict[str, Any],
+) -> ProgramResult:
+    """Compile and prove a program with classical control."""
+    device, tolerance = draft.device, draft.settings.tolerance
+    clock.start("compile circuits")
+    threaded = thread_program(source, draft, chain)
+    clock.start("prove")
+    proofs = tuple(Proof(part.steps) for part in threaded.drafts)
+    slack = _window_tolerance(draft.native, tolerance)
+    verdict = check_program(source, threaded.program, proofs, device=device, tolerance=slack)
+    clock.start("count")
+    costs, bounds = [], []
+    for circuit, part in zip(source.circuits(), threaded.drafts, strict=True):
+        costs.append(count_costs(part.circuit, device, starts=part.starts, swaps_inserted=part.swaps))
+        stays = bool((part.initial == part.final)[: source.n_qubits].all())
+        # Any circuit may begin where the one before it ends, wherever that is.
+        bounds.append(lower_bound(part, circuit, stays=stays, placement=None))
+    total = combined_costs(threaded.program, costs)
+    how = max((bound.how for bound in bounds), key=len) + "; summed over the circuits of the program"
+    clock.stop()
+    return ProgramResult(
+        program=threaded.program,
+        source=source,
+        proofs=proofs,
+        verdict=verdict,
+        costs=total,
+        lower_bound=Bound(sum(b.two_qubit_gates for b in bounds), how, sum(b.swaps for b in bounds)),
+        budget=check_budget(total, budget),
+        seconds=clock.seconds,
+        **given,
+    )
+
+
+def count(source: Circuit | Program | ArrayLike, device: Device, **options: Any) -> Costs:
     """Return the costs alone of `compile` with the same arguments; a budget that is not met raises `BudgetError`."""
     result = compile(source, device, **options)
     require_budget(result.budget)
@@ -337,11 +320,12 @@ def check(
         worst_distance=0.0,
         initial=places[0],
         final=places[1],
-        method="full unitaries compared; qubits beyond the source's taken to start and end in |0⟩",
+        method="full unitaries compared; qubits beyond the source's taken to start and end in |0⟩"
+        + (f"; at {BINDINGS} random values of the unknown parameters: evidence, no proof" if source.symbolic else ""),
     )
 
 
-def _placement(given: Sequence[int] | None, circuit: Circuit) -> tuple[int, ...] | None:
+def _placement(given: Sequence[int] | None, circuit: Circuit | Program) -> tuple[int, ...] | None:
     if given is None:
         return None
     placement = tuple(int(q) for q in given)
@@ -373,33 +357,10 @@ def _second_opinion(source: Circuit, output: Circuit, verdict: Verdict) -> Verdi
             required=f"distance at most {verdict.error_bound + ROUNDING:.3g}",
             found=f"{distance:.6g}",
         )
-    return replace(verdict, method=verdict.method + "; full unitaries compared as well")
-
-
-def _lower_bound(circuit: Circuit, expanded: Circuit, native: NativeSet, tolerance: float, *, stays: bool) -> Bound:
-    """Sum the least number of entanglers over the input's own windows."""
-    fused = fuse_circuit(expanded)
-    if not native.entanglers or not np.count_nonzero(fused.kind == TWO):
-        return Bound(0, "no two-qubit windows in the input")
-    _, two = window_unitaries(expanded, fused)
-    tools = [tool.entangler for tool in native.straight]
-    counts = least_mixed_uses(two, tools, tolerance=tolerance)
-    names = " or ".join(f"'{tool.gate.name}'" for tool in native.straight)
-    of_what = "the input" if expanded is circuit else "the input, written in gates of one and two qubits"
-    how = (
-        f"sum over the two-qubit windows of {of_what}, of the exact least number of {names} that "
-        "each needs on its own, with free one-qubit gates and all-to-all connectivity"
-    )
-    if not stays:
-        counts = np.minimum(counts, least_mixed_uses(two, tools, tolerance=tolerance, exchanged=True))
-        how += ", its two wires exchanged where that needs fewer"
-    if len(two) == 1 and stays and len(tools) == 1 and int(counts[0]):
-        how += f"; here {tools[0].reason(two[0], tolerance=tolerance)}"
-    how += (
-        "; a bound for circuits that keep this partition into windows, not the optimum of the whole circuit: "
-        "larger windows may need fewer"
-    )
-    return Bound(int(counts.sum()), how)
+    how = "; full unitaries compared as well"
+    if source.symbolic:
+        how += f", at {BINDINGS} random values of the unknown parameters"
+    return replace(verdict, method=verdict.method + how)
 
 
 class _Clock:

@@ -8,6 +8,7 @@ same run, in processor time, the best of three.
 from __future__ import annotations
 
 import re
+import resource
 import sys
 import time
 from collections.abc import Callable
@@ -70,14 +71,34 @@ def main() -> None:
         ("cx, U; any angles; 1000 qubits", 1000, ["cx", "U"], "any"),
     ):
         print(f"{title:38}{measured(random_circuit(n_qubits, size, kinds, angles))}", flush=True)
+    reading, scan = read_and_scan(expressions(size))
+    print(f"{'u3, cx, rz; expressions; 1000 qubits':38}{size / reading:9.3g}{reading / scan:9.1f}")
+    print(f"most memory: {resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 2**20:.2f} GiB")
+
+
+def expressions(size: int, seed: int = 2) -> str:
+    """Return a program of u3, cx and rz whose parameters are distinct arithmetic expressions."""
+    rng = np.random.default_rng(seed)
+    qubits, angles = rng.integers(0, 999, size).tolist(), rng.uniform(0, 1, (size, 2)).tolist()
+    forms = (
+        "u3({a}*pi, pi/2 - {b}, -{a}/2 + {b}*3) q[{q}];",
+        "cx q[{q}], q[999];",
+        "rz(3*pi/8 + {a}) q[{q}];",
+    )
+    body = [forms[k % 3].format(a=a, b=b, q=q) for k, (q, (a, b)) in enumerate(zip(qubits, angles, strict=True))]
+    return "\n".join(['OPENQASM 3.0;\ninclude "stdgates.inc";\nqubit[1000] q;', *body, ""])
+
+
+def read_and_scan(text: str) -> tuple[float, float]:
+    """Return the times of reading a text, and of the floor."""
+    return best(lambda: read(text)), best(lambda: sum(1 for _ in STATEMENT.finditer(text)))
 
 
 def measured(circuit: Circuit) -> str:
     """Return the figures for one circuit."""
     text = write(circuit)
     rows = list(zip(circuit.op.tolist(), circuit.qubits[circuit.offsets[:-1]].tolist(), strict=True))
-    reading = best(lambda: read(text))
-    scan = best(lambda: sum(1 for _ in STATEMENT.finditer(text)))
+    reading, scan = read_and_scan(text)
     writing = best(lambda: write(circuit))
     lines = best(lambda: "\n".join([f"{k} q[{q}];" for k, q in rows]))
     size = len(circuit)

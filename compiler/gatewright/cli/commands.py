@@ -12,11 +12,14 @@ from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from gatewright.errors import GatewrightError, InputError
+from gatewright.errors import GatewrightError, InputError, ProofError
 
 if TYPE_CHECKING:
+    from gatewright.devices import Device
     from gatewright.gates import Gate
-    from gatewright.pipeline import Result
+    from gatewright.inputs import Source
+    from gatewright.proof import Verdict
+    from gatewright.result import ProgramResult, Result
 
 __all__ = ["run"]
 
@@ -116,8 +119,9 @@ def _different(names: list[str | None]) -> None:
         )
 
 
-def _compiled(options: argparse.Namespace) -> Result:
+def _compiled(options: argparse.Namespace) -> Result | ProgramResult:
     from gatewright.devices import read_device
+    from gatewright.gates import GATES
     from gatewright.inputs import load
 
     device = read_device(options.device)
@@ -126,15 +130,19 @@ def _compiled(options: argparse.Namespace) -> Result:
         tolerance=options.tolerance,
         nearest_unitary=options.nearest_unitary,
         qubit_order=options.qubit_order,
+        # The device's own gates stay what they are where the program defines them alike.
+        natives={name: gate for name, gate in device.gate_set.natives.items() if name not in GATES},
+        strict=False,
     )
     device.require_room(source.circuit.n_qubits)
+    given = source.circuit.bind(dict(options.set)) if options.set else source.circuit
     # What is wrong with the input has been said before this: the kernels take longer to load than all of that.
     _prepare()
     from gatewright.pipeline import compile as compile_source
 
     with _progress() as progress:
         return compile_source(
-            source.circuit,
+            given,
             device,
             seed=options.seed,
             tolerance=options.tolerance,
@@ -164,7 +172,7 @@ def _compile(options: argparse.Namespace) -> int:
     return _report(result, quiet=options.quiet)
 
 
-def _report(result: Result, *, quiet: bool) -> int:
+def _report(result: Result | ProgramResult, *, quiet: bool) -> int:
     from gatewright.cost import require_budget
     from gatewright.report.terminal import print_result
 
@@ -190,8 +198,8 @@ def _count(options: argparse.Namespace) -> int:
 def _check(options: argparse.Namespace) -> int:
     from gatewright.devices import read_device
     from gatewright.inputs import load
+    from gatewright.program import Program
     from gatewright.proof import read_proof
-    from gatewright.report.terminal import print_verdict
 
     device = read_device(options.device) if options.device else None
     source = load(
@@ -201,6 +209,8 @@ def _check(options: argparse.Namespace) -> int:
         qubit_order=options.qubit_order,
     )
     output = load(options.output, natives=beyond_the_library() if device is None else device.gate_set.natives)
+    if isinstance(source.circuit, Program) or isinstance(output.circuit, Program):
+        return _check_program(options, source, output, device)
     proof = read_proof(options.proof) if options.proof else None
     places = output.qubit_map
     _prepare()
@@ -222,18 +232,36 @@ def _check(options: argparse.Namespace) -> int:
             own = "native gates of a device are known only with its --device" if changed and device is None else ""
             error.hint = "; ".join(filter(None, (changed or error.hint, own)))
         raise
-    if options.json:
-        _write(
-            {
-                options.json: _to_json(
-                    verdict.to_dict()
-                    | {
-                        "placement": {"initial": list(verdict.initial), "final": list(verdict.final)},
-                        "legality_checked": device is not None,
-                    }
-                )
-            }
+    return _tell(options, verdict, legality_checked=device is not None)
+
+
+def _check_program(options: argparse.Namespace, source: Source, output: Source, device: Device | None) -> int:
+    from gatewright.program import Program
+    from gatewright.proof import check_program, read_program_proof
+
+    if not isinstance(source.circuit, Program) or not isinstance(output.circuit, Program):
+        raise ProofError(
+            "not equal: one of the two has classical control and the other has not",
+            found=f"source {source.circuit!r}, output {output.circuit!r}",
         )
+    if not options.proof:
+        raise InputError(
+            "programs with classical control are checked with their proof only", required="--proof FILE, as compiled"
+        )
+    files = read_program_proof(options.proof)
+    _prepare()
+    proofs = [file.proof for file in files]
+    verdict = check_program(source.circuit, output.circuit, proofs, device=device, tolerance=options.tolerance)
+    return _tell(options, verdict, legality_checked=device is not None)
+
+
+def _tell(options: argparse.Namespace, verdict: Verdict, *, legality_checked: bool) -> int:
+    from gatewright.report.terminal import print_verdict
+
+    if options.json:
+        places = {"initial": list(verdict.initial), "final": list(verdict.final)}
+        facts = verdict.to_dict() | {"placement": places, "legality_checked": legality_checked}
+        _write({options.json: _to_json(facts)})
     if options.json != "-":
         print_verdict(verdict, sys.stdout)
     return 0
@@ -262,24 +290,37 @@ def _changed(source_print: str, output_print: str, source: Any, output: Any) -> 
 def _describe(options: argparse.Namespace) -> int:
     from gatewright.devices import read_any, shipped_gate_sets
     from gatewright.inputs import load
+    from gatewright.program import Program
     from gatewright.report.terminal import print_description
 
     name = options.thing
     of_data = name in shipped_gate_sets() or Path(name).suffix.lower() == ".toml"
-    thing: Any = None
-    if of_data:
-        thing = read_any(name)
-    else:
-        source = load(name, nearest_unitary=options.nearest_unitary, qubit_order=options.qubit_order)
-        thing = source.circuit.unitary()
+    moved = 0.0
+
+    def matrix_in(place: str) -> Any:
+        nonlocal moved
+        source = load(place, nearest_unitary=options.nearest_unitary, qubit_order=options.qubit_order)
+        if isinstance(source.circuit, Program):
+            what = "a program with classical control has no matrix"
+            raise InputError(what, required="a circuit of gates", where=place)
+        moved = source.moved
+        return source.circuit.unitary()
+
+    _different([options.json, options.chamber])
+    targets = {place: matrix_in(place) for place in options.target}
+    thing: Any = read_any(name) if of_data else matrix_in(name)
     _prepare()
     from gatewright.description import describe
 
-    facts = describe(thing)
+    facts = describe(thing, targets=targets)
     if not of_data:
-        facts["distance_moved"] = source.moved
-    if options.json:
-        _write({options.json: _to_json(facts)})
-    if options.json != "-":
+        facts["distance_moved"] = moved
+    outputs = {options.json: _to_json(facts)} if options.json else {}
+    if options.chamber:
+        from gatewright.report.reach import picture_of
+
+        outputs[options.chamber] = picture_of(thing, facts, name=Path(name).name).encode()
+    _write(outputs)
+    if "-" not in outputs:
         print_description(facts, sys.stdout)
     return 0

@@ -3,6 +3,8 @@
 from gatewright.proof.checker import check_legal, check_proof
 from gatewright.proof.dense import dense_distance
 from gatewright.proof.file import ProofFile, encode_proof, read_proof
+from gatewright.proof.joins import check_program
+from gatewright.proof.program_file import decode_program_proof, encode_program_proof, read_program_proof
 from gatewright.proof.windows import Proof, Step, Verdict
 
 __all__ = [
@@ -11,8 +13,12 @@ __all__ = [
     "Step",
     "Verdict",
     "check_legal",
+    "check_program",
     "check_proof",
     "dense_distance",
+    "decode_program_proof",
+    "encode_program_proof",
     "encode_proof",
+    "read_program_proof",
     "read_proof",
 ]

@@ -5,7 +5,7 @@ It knows nothing of how an output was made and imports nothing that makes one. F
 1. each operation lies in one window, on wires of that window, and along every wire (and classical bit) the
    windows come in order, so that the circuit equals the product of its windows;
 2. in every window, output and source agree up to the seams, a permutation and a phase: the Frobenius norm of the
-   difference bounds the operator norm from above;
+   difference bounds the operator norm from above; with unknown parameters, for all their values (`parametrised`);
 3. the places of the wires, and the seams, lead from each window to the next and end as claimed;
 4. every output operation is a native gate, its parameters in range, on qubits that the device allows.
 
@@ -14,7 +14,7 @@ Operator-norm distances add under composition, so their sum bounds the whole cir
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import replace
 from typing import TYPE_CHECKING, NoReturn
 
@@ -23,8 +23,10 @@ from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit, apply_operations
 from gatewright.errors import ProofError
-from gatewright.gates import BARRIER, MEASURE, RESET
-from gatewright.linalg import kron, reorder_qubits
+from gatewright.gates import BARRIER, DELAY, MEASURE, RESET
+from gatewright.linalg import embed, kron
+from gatewright.parameters import Affine
+from gatewright.proof.parametrised import UnknownWindows, require_standard
 from gatewright.proof.windows import Proof, Step, Verdict
 
 if TYPE_CHECKING:
@@ -121,8 +123,15 @@ def check_legal(circuit: Circuit, device: Device) -> None:
         rows = np.flatnonzero(circuit.op == k)
         if not len(rows) or gate.name == BARRIER.name:
             continue
+        if gate.name == DELAY.name and gate.function is None:
+            values = circuit.parameters[circuit.parameter_offsets[rows]]
+            wrong = np.flatnonzero(~(np.isfinite(values) & (values >= 0)))
+            if len(wrong):
+                _illegal(circuit, int(rows[wrong[0]]), "a delay has no duration from 0 up")
+            continue
         width = int(circuit.widths[rows[0]])
         qubits = circuit.qubits[circuit.offsets[rows][:, None] + np.arange(width)]
+        native = None
         if gate.name in (MEASURE.name, RESET.name):
             allowed = active[qubits[:, 0]]
         else:
@@ -137,6 +146,15 @@ def check_legal(circuit: Circuit, device: Device) -> None:
                 pairs = np.asarray(device.allowed_pairs(gate.name), dtype=np.int64).reshape(-1, 2)
                 codes = pairs[:, 0] * device.n_qubits + pairs[:, 1]
                 allowed = np.isin(qubits[:, 0].astype(np.int64) * device.n_qubits + qubits[:, 1], codes)
+        if not allowed.all():
+            _illegal(
+                circuit, int(rows[np.flatnonzero(~allowed)[0]]), f"{device.name} has no '{gate.name}' on these qubits"
+            )
+        if native is not None:
+            if circuit.symbolic:
+                unknown = circuit.link[rows] >= 0
+                _check_unknown(circuit, rows[unknown], native.ranges)
+                rows = rows[~unknown]
             values = circuit.parameters[circuit.parameter_offsets[rows][:, None] + np.arange(gate.n_parameters)]
             for column, (low, high) in enumerate(native.ranges):
                 inside = (values[:, column] >= low - RANGE_SLACK) & (values[:, column] <= high + RANGE_SLACK)
@@ -149,10 +167,27 @@ def check_legal(circuit: Circuit, device: Device) -> None:
                         required=f"{low:.6g} to {high:.6g}",
                         found=f"{values[row, column]:.12g}",
                     )
-        if not allowed.all():
-            _illegal(
-                circuit, int(rows[np.flatnonzero(~allowed)[0]]), f"{device.name} has no '{gate.name}' on these qubits"
-            )
+
+
+def _check_unknown(circuit: Circuit, rows: Rows, ranges: Sequence[tuple[float, float]]) -> None:
+    """Check that every unknown parameter may take any value, up to full turns that change the phase alone."""
+    for row in rows.tolist():
+        gate = circuit.table[circuit.op[row]]
+        turn = 2 * np.pi if gate.n_qubits == 1 else 4 * np.pi
+        for column, (value, (low, high)) in enumerate(zip(circuit.symbolic[circuit.link[row]], ranges, strict=True)):
+            if isinstance(value, Affine):
+                if not high - low >= turn - RANGE_SLACK:
+                    _illegal(
+                        circuit,
+                        row,
+                        f"parameter {column} of '{gate.name}' is not known, and its range is no full turn",
+                        required=f"a range of {turn:.6g}",
+                        found=f"{low:.6g} to {high:.6g}",
+                    )
+            elif not low - RANGE_SLACK <= value <= high + RANGE_SLACK:
+                required = f"{low:.6g} to {high:.6g}"
+                what = f"parameter {column} of '{gate.name}' is out of range"
+                _illegal(circuit, row, what, required=required, found=f"{value:.12g}")
 
 
 def _illegal(circuit: Circuit, row: int, what: str, *, required: str = "", found: str = "") -> NoReturn:
@@ -170,13 +205,17 @@ def _check_step(source: Circuit, output: Circuit, step: Step, tolerance: float) 
     source_slots = _slots_in_order(source, step.source_window, step.wires, slot_window, step, "source")
     output_slots = _slots_in_order(output, step.output_window, step.entry, slot_window, step, "output")
     fixed = _fixed_windows(source, output, step, source_slots, output_slots)
-    before, after = _chain(step, slot_window, fixed)
+    unknown = _unknown_windows(source, output, step, fixed)
+    before, after = _chain(step, slot_window, fixed | unknown)
     distances = np.zeros(step.windows)
     n = step.windows
     sides = [_Side(output, step.output_window, output_slots, n), _Side(source, step.source_window, source_slots, n)]
     widths = np.diff(step.offsets)
-    for width in np.unique(widths[~fixed]).tolist():
-        for block in _blocks(np.flatnonzero((widths == width) & ~fixed), width, sides):
+    if unknown.any():
+        distances[unknown] = _unknown_distances(np.flatnonzero(unknown), widths, sides[1], sides[0])
+    known = ~fixed & ~unknown
+    for width in np.unique(widths[known]).tolist():
+        for block in _blocks(np.flatnonzero((widths == width) & known), width, sides):
             made, meant = (side.products(block, width) for side in sides)
             slots = step.offsets[block][:, None] + np.arange(width)
             made = made @ _tensor(before[slots])
@@ -300,7 +339,7 @@ def _fixed_windows(
     fixed = np.zeros(step.windows, dtype=bool)
     sides = ((source, step.source_window, source_slots), (output, step.output_window, output_slots))
     for circuit, window, _ in sides:
-        fixed[window[~circuit.is_unitary]] = True
+        fixed[window[~circuit.is_gate]] = True
     if not fixed.any():
         return fixed
     held = []
@@ -322,6 +361,9 @@ def _fixed_windows(
     (a, rows_a, slots_a), (b, rows_b, slots_b) = held
     for at, i, j in zip(np.flatnonzero(fixed).tolist(), rows_a.tolist(), rows_b.tolist(), strict=True):
         same = a.table[a.op[i]].name == b.table[b.op[j]].name and a.link[i] == b.link[j]
+        same &= np.array_equal(
+            a.parameters[slice(*a.parameter_offsets[i : i + 2])], b.parameters[slice(*b.parameter_offsets[j : j + 2])]
+        )
         first = slots_a[a.offsets[i] : a.offsets[i + 1]]
         second = slots_b[b.offsets[j] : b.offsets[j + 1]]
         span = slice(step.offsets[at], step.offsets[at + 1])
@@ -335,6 +377,40 @@ def _fixed_windows(
                 found=f"{b.table[b.op[j]].name}, bit {b.link[j]}",
             )
     return fixed
+
+
+def _unknown_windows(source: Circuit, output: Circuit, step: Step, fixed: NDArray[np.bool_]) -> NDArray[np.bool_]:
+    """Find the windows with unknown parameters, and check that nothing but their values is open."""
+    unknown = np.zeros(step.windows, dtype=bool)
+    for circuit, window in ((source, step.source_window), (output, step.output_window)):
+        if circuit.symbolic:
+            require_standard(circuit)
+            unknown[window[circuit.is_symbolic]] = True
+    moved = np.repeat(unknown, np.diff(step.offsets)) & (step.entry != step.exit)
+    if moved.any():
+        at = int(np.searchsorted(step.offsets, np.flatnonzero(moved)[0], side="right")) - 1
+        raise ProofError(
+            f"not equal: {_named(step, at)} with unknown parameters exchanges its wires",
+            window=at,
+            qubits=_window_qubits(step, at),
+        )
+    return unknown & ~fixed
+
+
+def _unknown_distances(windows: Rows, widths: Rows, source: _Side, output: _Side) -> list[float]:
+    """Return the bound of each window with unknown parameters."""
+    bounds = UnknownWindows()
+
+    def held(side: _Side, window: int) -> tuple[Circuit, list[int], list[tuple[int, ...]]]:
+        circuit = side.circuit
+        rows = side.rows[side.starts[window] : side.starts[window + 1]].tolist()
+        slots = [tuple(side.slots[circuit.offsets[row] : circuit.offsets[row + 1]].tolist()) for row in rows]
+        return circuit, rows, slots
+
+    return [
+        bounds.distance(*held(source, window), *held(output, window), int(widths[window]))
+        for window in windows.tolist()
+    ]
 
 
 def _chain(step: Step, slot_window: Rows, fixed: NDArray[np.bool_]) -> tuple[Array, Array]:
@@ -440,7 +516,7 @@ class _Side:
             code = (slots * width ** np.arange(k)).sum(axis=1)
             for value in np.unique(code):
                 same = code == value
-                factors[position[of_kind[same]]] = _embed(matrices[same], slots[same][0].tolist(), width)
+                factors[position[of_kind[same]]] = embed(matrices[same], slots[same][0].tolist(), width)
         return _multiply_out(factors, counts)
 
     def _one_window(self, rows: Rows, width: int) -> Array:
@@ -449,14 +525,6 @@ class _Side:
             span = slice(self.circuit.offsets[row], self.circuit.offsets[row + 1])
             places[self.circuit.qubits[span]] = self.slots[span]
         return apply_operations(self.circuit, rows.tolist(), places.tolist(), np.eye(2**width, dtype=np.complex128))
-
-
-def _embed(matrices: Array, slots: list[int], width: int) -> Array:
-    """Return `matrices` on `slots` of a window of `width` qubits."""
-    rest = [slot for slot in range(width) if slot not in slots]
-    wide = kron(matrices, np.eye(2 ** len(rest)))
-    held = slots + rest
-    return reorder_qubits(wide, tuple(held.index(slot) for slot in range(width)))
 
 
 def _multiply_out(factors: Array, counts: Rows) -> Array:

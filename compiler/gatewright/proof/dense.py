@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit, apply_operations
 from gatewright.errors import CircuitError, ProofError
-from gatewright.gates import BARRIER, MEASURE
+from gatewright.gates import BARRIER, DELAY, MEASURE
 from gatewright.linalg import dagger
 
 __all__ = ["dense_distance", "dense_work", "touched_qubits"]
@@ -21,11 +21,13 @@ Array = NDArray[np.complex128]
 
 #: Largest matrix: 2**24 entries are 256 MiB.
 MAX_LOG_ENTRIES = 24
+#: Unknown parameters are given random values as often as this.
+BINDINGS = 3
 
 
 def touched_qubits(output: Circuit, initial: Sequence[int], final: Sequence[int]) -> list[int]:
     """Return the output's qubits that an operation or a source qubit touches, in order."""
-    acting = np.repeat(~output.is_named(BARRIER.name), output.widths)
+    acting = np.repeat(~(output.is_named(BARRIER.name) | output.is_named(DELAY.name)), output.widths)
     return sorted({*output.qubits[acting].tolist(), *initial, *final})
 
 
@@ -41,7 +43,7 @@ def dense_distance(source: Circuit, output: Circuit, initial: Sequence[int], fin
     Parameters
     ----------
     source, output : Circuit
-        Unitary, but for measurements at the end; these must agree.
+        Unitary, but for measurements at the end; these must agree. Unknown parameters are given a few random values.
     initial, final : sequence of int, length source.n_qubits
         Output qubit of each source qubit at the two ends.
 
@@ -52,6 +54,13 @@ def dense_distance(source: Circuit, output: Circuit, initial: Sequence[int], fin
     ProofError
         The measurements differ.
     """
+    if source.symbolic or output.symbolic:
+        rng = np.random.default_rng(source.n_qubits)
+        atoms = dict.fromkeys((*source.atoms, *output.atoms))
+        draws = [
+            dict(zip(atoms, rng.uniform(-np.pi, np.pi, len(atoms)).tolist(), strict=True)) for _ in range(BINDINGS)
+        ]
+        return max(dense_distance(source.at_atoms(v), output.at_atoms(v), initial, final) for v in draws)
     held = touched_qubits(output, initial, final)
     n = source.n_qubits
     if len(held) + n > MAX_LOG_ENTRIES:
@@ -92,7 +101,7 @@ def _split(circuit: Circuit) -> tuple[list[int], list[tuple[int, int]]]:
     is_unitary = circuit.is_unitary.tolist()
     for k in range(len(circuit)):
         name = circuit.table[circuit.op[k]].name
-        if name == BARRIER.name:
+        if name in (BARRIER.name, DELAY.name):
             continue
         qubits = circuit.qubits_of(k)
         again = done.intersection(qubits)

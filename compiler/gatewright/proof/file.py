@@ -11,7 +11,7 @@ import io
 import json
 import math
 import zipfile
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -22,7 +22,8 @@ from numpy.typing import NDArray
 from gatewright._version import __version__
 from gatewright.circuit import Circuit
 from gatewright.errors import ProofFileError, shorten
-from gatewright.gates import BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
+from gatewright.gates import BARRIER, DELAY, GATES, MEASURE, RESET, UNITARY, Gate
+from gatewright.parameters import Affine, Parameter
 from gatewright.proof.windows import Proof, Step
 
 __all__ = ["FORMAT", "ProofFile", "decode_proof", "encode_proof", "fingerprint", "read_proof"]
@@ -52,7 +53,7 @@ _CIRCUIT = {
     "parameter_offsets": np.int64,
     "link": np.int32,
 }
-_SPECIAL = {gate.name: gate for gate in (MEASURE, RESET, BARRIER, UNITARY)}
+_SPECIAL = {gate.name: gate for gate in (MEASURE, RESET, BARRIER, DELAY, UNITARY)}
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -68,12 +69,58 @@ class ProofFile:
 def fingerprint(circuit: Circuit) -> str:
     """Return a SHA-256 digest of what a circuit does: operations, qubits, parameters, bits and matrices."""
     digest = hashlib.sha256()
-    names = json.dumps([circuit.n_qubits, circuit.n_bits, [gate.name for gate in circuit.table]])
-    digest.update(names.encode())
-    arrays = (circuit.op, circuit.qubits, circuit.offsets, circuit.parameters, circuit.link, *circuit.matrices)
+    # Kinds are numbered as they first occur too.
+    used, places = np.unique(circuit.op, return_index=True)
+    code_of: dict[str, int] = {}
+    codes = np.zeros(len(circuit.table) + 1, dtype=np.int16)
+    for kind in used[np.argsort(places)].tolist():
+        codes[kind] = code_of.setdefault(circuit.table[kind].name, len(code_of))
+    digest.update(json.dumps([circuit.n_qubits, circuit.n_bits, list(code_of)]).encode())
+    link, symbolic = circuit.link, circuit.symbolic
+    if symbolic:
+        # Numbered as they first occur, whatever the order of the table.
+        unknown = circuit.is_symbolic
+        number_of: dict[int, int] = {}
+        link = link.copy()
+        link[unknown] = [number_of.setdefault(k, len(number_of)) for k in link[unknown].tolist()]
+        symbolic = tuple(symbolic[k] for k in number_of)
+    arrays = (codes[circuit.op], circuit.qubits, circuit.offsets, circuit.parameters, link, *circuit.matrices)
     for array in arrays:
         digest.update(np.ascontiguousarray(array).tobytes())
+    if symbolic:
+        digest.update(json.dumps([_encode_symbolic(symbolic), circuit.inputs]).encode())
     return digest.hexdigest()
+
+
+def _encode_symbolic(symbolic: Sequence[Sequence[Parameter]]) -> list[list[Any]]:
+    """Return unknown parameters as numbers, and as a constant with pairs of atom and coefficient."""
+    return [
+        [
+            [value.constant, [list(term) for term in value.terms]] if isinstance(value, Affine) else value
+            for value in row
+        ]
+        for row in symbolic
+    ]
+
+
+def _decode_symbolic(entry: Any) -> tuple[tuple[Parameter, ...], ...]:
+    rows = []
+    for row in entry:
+        values: list[Parameter] = []
+        for value in row:
+            if isinstance(value, list):
+                terms = tuple((str(atom), float(factor)) for atom, factor in value[1])
+                value = Affine(float(value[0]), terms)
+                numbers = (value.constant, *(factor for _, factor in terms))
+                if list(terms) != sorted(terms) or len(dict(terms)) < len(terms) or not terms:
+                    raise ValueError("unknown parameters out of order")
+            else:
+                numbers = (float(value),)
+            if not all(math.isfinite(number) for number in numbers):
+                raise ValueError("a parameter that is not finite")
+            values.append(value if isinstance(value, Affine) else float(value))
+        rows.append(tuple(values))
+    return tuple(rows)
 
 
 def encode_proof(proof: Proof, source: Circuit, output: Circuit) -> bytes:
@@ -132,6 +179,7 @@ def _encode_circuit(circuit: Circuit | None, prefix: str, arrays: dict[str, NDAr
         "n_bits": circuit.n_bits,
         "table": [gate.name for gate in circuit.table],
         "matrix_sizes": [len(matrix) for matrix in circuit.matrices],
+        **({"symbolic": _encode_symbolic(circuit.symbolic)} if circuit.symbolic else {}),
     }
 
 
@@ -229,6 +277,7 @@ def _decode_circuit(entry: dict[str, Any], prefix: str, arrays: dict[str, NDArra
         n_bits=int(entry["n_bits"]),
         table=table,
         matrices=tuple(_split(arrays[f"{prefix}.matrices"], sizes)),
+        symbolic=_decode_symbolic(entry.get("symbolic", [])),
         **columns,
     )
     _require_consistent(circuit)
@@ -263,6 +312,11 @@ def _require_consistent(circuit: Circuit) -> None:
         ok = ok and bool(((link >= 0) & (link < len(circuit.matrices))).all())
         ok = ok and bool((sizes[link] == 2 ** circuit.widths[explicit]).all())
         ok = ok and all(_unitary(matrix) for matrix in circuit.matrices)
+        named = np.array([gate.function is not None for gate in circuit.table])[circuit.op]
+        lengths = np.array([len(row) for row in circuit.symbolic] or [0])
+        link = circuit.link[named & (circuit.link >= 0)]
+        ok = ok and bool((link < len(circuit.symbolic)).all())
+        ok = ok and bool((lengths[link] == numbers[named & (circuit.link >= 0)]).all())
     if not ok:
         raise ProofFileError("the proof file is damaged", required="a consistent circuit between its steps")
 

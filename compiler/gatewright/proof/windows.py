@@ -92,6 +92,9 @@ class Verdict:
     initial, final : tuple of int
         Physical qubit of each source qubit at the two ends.
     method : str
+    round_bound : float or None
+        For programs with classical control: ``error_bound`` covers one round of every loop, and each further round
+        adds this much at most. None for straight-line circuits.
     """
 
     error_bound: float
@@ -101,10 +104,11 @@ class Verdict:
     initial: tuple[int, ...]
     final: tuple[int, ...]
     method: str
+    round_bound: float | None = None
 
     def to_dict(self) -> dict[str, Any]:
         """Return the entries of the JSON summary's ``proof``."""
-        return {
+        facts = {
             "verified": True,
             "error_bound": self.error_bound,
             "windows": self.windows,
@@ -112,3 +116,4 @@ class Verdict:
             "worst_window": self.worst_window,
             "worst_distance": self.worst_distance,
         }
+        return facts if self.round_bound is None else facts | {"error_bound_per_further_round": self.round_bound}

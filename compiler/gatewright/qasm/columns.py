@@ -11,6 +11,7 @@ from gatewright.circuit import Circuit
 
 if TYPE_CHECKING:
     from gatewright.qasm.reader import Reader
+    from gatewright.qasm.scanner import Columns
 
 __all__ = ["MAX_OPERANDS", "circuit"]
 
@@ -18,21 +19,37 @@ __all__ = ["MAX_OPERANDS", "circuit"]
 MAX_OPERANDS = 40_000_000
 
 
-def circuit(reader: Reader, order: NDArray[np.int64]) -> Circuit:
-    """Return the columns for the distinct statements in the order in which they occur."""
+def circuit(reader: Reader, order: NDArray[np.int64], scanned: Columns | None = None) -> Circuit:
+    """Return the columns for the distinct statements in the order in which they occur.
+
+    Those in `scanned`, an operation each, are numbered behind those of the reader.
+    """
     first = np.array(reader.first, dtype=np.int64)
+    op = np.array(reader.op, dtype=np.int64)
+    width = np.array(reader.width, dtype=np.int64)
+    kinds = tuple(reader.table)
+    n_parameters = np.array([kind.n_parameters for kind in kinds], dtype=np.int64)[op]
+    named, values = np.array(reader.qubits, dtype=np.int32), np.array(reader.parameters, dtype=np.float64)
+    if scanned is not None:
+        more = scanned.op
+        first = np.concatenate([first, first[-1] + np.arange(1, len(more) + 1)])
+        op = np.concatenate([op, more])
+        width = np.concatenate([width, np.array([kind.n_qubits for kind in kinds])[more]])
+        n_parameters = np.concatenate([n_parameters, np.array([kind.n_parameters for kind in kinds])[more]])
+        named, values = np.concatenate([named, scanned.qubits]), np.concatenate([values, scanned.parameters])
     lengths = np.diff(first)[order]
     reader.check_total(int(lengths.sum()), 0)
     rows, _ = _spans(first[order], lengths)
-    op = np.array(reader.op, dtype=np.int64)
-    width = np.array(reader.width, dtype=np.int64)
-    n_parameters = np.array([kind.n_parameters for kind in reader.table], dtype=np.int64)[op]
     if width[rows].sum() > MAX_OPERANDS:
         raise reader.source.error("the operations name too many qubits", 0, required=f"at most {MAX_OPERANDS} in all")
-    qubits, offsets = _gather(np.array(reader.qubits, dtype=np.int32), width, rows)
-    parameters, parameter_offsets = _gather(np.array(reader.parameters, dtype=np.float64), n_parameters, rows)
+    qubits, offsets = _gather(named, width, rows)
+    parameters, parameter_offsets = _gather(values, n_parameters, rows)
     link = np.full(len(op), -1, dtype=np.int32)
     link[list(reader.link)] = list(reader.link.values())
+    link[list(reader.marks)] = list(reader.marks.values())
+    symbolic = dict.fromkeys(reader.unknown.values())
+    number_of = {values: k for k, values in enumerate(symbolic)}
+    link[list(reader.unknown)] = [number_of[values] for values in reader.unknown.values()]
     link[list(reader.matrices)] = range(len(reader.matrices))
     phase = np.zeros(len(first))
     phase[list(reader.phases)] = list(reader.phases.values())
@@ -41,7 +58,6 @@ def circuit(reader: Reader, order: NDArray[np.int64]) -> Circuit:
     used = used[np.argsort(places)]
     number = np.zeros(len(reader.table) + 1, dtype=np.int16)
     number[used] = np.arange(len(used))
-    kinds = tuple(reader.table)
     scope = reader.scope
     return Circuit(
         n_qubits=scope.n_qubits or scope.n_physical,
@@ -57,6 +73,8 @@ def circuit(reader: Reader, order: NDArray[np.int64]) -> Circuit:
         phase=float(phase[order].sum()),
         qubit_registers=tuple((name, len(span)) for name, span in scope.qubit_registers.items()),
         bit_registers=tuple((name, len(span)) for name, span in scope.bit_registers.items()),
+        symbolic=tuple(symbolic),
+        inputs=tuple(reader.inputs.items()),
     )
 
 

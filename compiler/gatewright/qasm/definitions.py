@@ -14,6 +14,7 @@ from gatewright.errors import ExpressionError, QasmError
 from gatewright.expressions import Expression
 from gatewright.gates import BARRIER, Gate
 from gatewright.linalg import distance
+from gatewright.parameters import Affine, Parameter, read_affine
 
 __all__ = ["MAX_DEPTH", "Definition", "Emit", "Op", "Record", "Step", "equals", "expand", "same_gate"]
 
@@ -35,7 +36,7 @@ class Emit(Protocol):
         self,
         gate: Gate,
         qubits: Sequence[int],
-        parameters: Sequence[float] = (),
+        parameters: Sequence[Parameter] = (),
         matrix: NDArray[np.complex128] | None = None,
         /,
     ) -> object:
@@ -47,12 +48,12 @@ class Op(NamedTuple):
 
     target: Gate | Definition
     qubits: tuple[int, ...]
-    parameters: tuple[float, ...] = ()
+    parameters: tuple[Parameter, ...] = ()
     matrix: NDArray[np.complex128] | None = None
 
 
 #: Operations and global phase of a definition, by its parameters.
-Record = Callable[[tuple[float, ...]], tuple[Sequence[Op], float]]
+Record = Callable[[tuple[Parameter, ...]], tuple[Sequence[Op], Parameter]]
 
 
 @dataclass(frozen=True, slots=True)
@@ -127,8 +128,8 @@ class Definition:
 
 
 def expand(
-    definition: Definition, values: Sequence[float], qubits: Sequence[int], emit: Emit, *, exact: bool = False
-) -> float:
+    definition: Definition, values: Sequence[Parameter], qubits: Sequence[int], emit: Emit, *, exact: bool = False
+) -> Parameter:
     """Pass the table gates of one call to `emit`, in order, and return the global phase that it adds.
 
     With `exact`, definitions that stand for a known gate up to global phase are expanded as well.
@@ -150,20 +151,23 @@ def expand(
             else:
                 emit(target, on, numbers, matrix)
         return phase
-    named = {**definition.constants, **dict(zip(definition.parameters, values, strict=True))}
-    phase = 0.0
+    named: dict[str, Parameter] = {**definition.constants, **dict(zip(definition.parameters, values, strict=True))}
+    unknown = any(isinstance(value, Affine) for value in values)
+    total: Parameter = 0.0
     for step in definition.steps:
-        numbers = step.values or ()
-        if step.values is None:
-            numbers = tuple([expression.real(named) for expression in step.expressions])
+        angles: tuple[Parameter, ...] = step.values or ()
+        if step.values is None and unknown:
+            angles = tuple([read_affine(expression, values=named) for expression in step.expressions])
+        elif step.values is None:
+            angles = tuple([expression.real(named) for expression in step.expressions])  # type: ignore[arg-type]
         target_of_step = step.target
         if isinstance(target_of_step, Gate):
-            emit(target_of_step, [qubits[q] for q in step.qubits], numbers)
+            emit(target_of_step, [qubits[q] for q in step.qubits], angles)
         elif target_of_step is None:
-            phase += numbers[0]
+            total += angles[0]
         else:
-            phase += expand(target_of_step, numbers, [qubits[q] for q in step.qubits], emit, exact=exact)
-    return phase
+            total += expand(target_of_step, angles, [qubits[q] for q in step.qubits], emit, exact=exact)
+    return total
 
 
 def equals(definition: Definition, gate: Gate, *, tolerance: float = 1e-9, exact: bool = False) -> bool:
@@ -182,9 +186,11 @@ def equals(definition: Definition, gate: Gate, *, tolerance: float = 1e-9, exact
         builder = Builder(definition.n_qubits)
 
         try:
-            builder.phase = expand(definition, values, range(definition.n_qubits), _into(builder), exact=exact)
+            phase = expand(definition, values, range(definition.n_qubits), _into(builder), exact=exact)
         except (ExpressionError, QasmError):
             return False
+        assert not isinstance(phase, Affine)  # the parameters are numbers
+        builder.phase = phase
         made, wanted = builder.build().unitary(), gate.matrix(values)
         if not (np.abs(made - wanted).max() if exact else distance(made, wanted)) <= tolerance:
             return False
@@ -197,7 +203,7 @@ def _into(builder: Builder) -> Emit:
     def emit(
         kind: Gate,
         qubits: Sequence[int],
-        numbers: Sequence[float] = (),
+        numbers: Sequence[Parameter] = (),
         matrix: NDArray[np.complex128] | None = None,
         /,
     ) -> None:

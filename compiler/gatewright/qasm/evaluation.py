@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
+from gatewright.classical import Bits
 from gatewright.errors import ExpressionError, QasmError, UnsupportedError, nearest_name, shorten
 from gatewright.qasm.scope import RESERVED, Scope
 from gatewright.qasm.values import BUILT_IN, Array, Kind, Value, binary, cast, function, unary
@@ -61,11 +62,17 @@ class Pending:
 
 @dataclass(slots=True)
 class Variable:
-    """A classical variable or constant."""
+    """A classical variable or constant.
+
+    `depth` counts the blocks around its declaration that run or not depending on the run; `runtime` is its name at
+    run time, once it has a place there.
+    """
 
     kind: Kind
     value: Value | Array | None
     constant: bool = False
+    depth: int = 0
+    runtime: str = ""
 
 
 class Evaluator:
@@ -112,9 +119,15 @@ class Evaluator:
         """Count steps of unrolling, and refuse too many."""
         self.steps += steps
         if self.steps > MAX_STEPS:
-            raise self.error(
+            self.charge_at(0, self.at(node))
+
+    def charge_at(self, steps: int, offset: int) -> None:
+        """Count steps for what begins at an offset, and refuse too many."""
+        self.steps += steps
+        if self.steps > MAX_STEPS:
+            raise self.source.error(
                 "unrolling the program takes too many steps",
-                node,
+                offset,
                 required=f"at most {MAX_STEPS} gates, a statement counting for {STATEMENT}",
             )
 
@@ -154,6 +167,8 @@ class Evaluator:
     @staticmethod
     def hidden(known: Any) -> bool:
         """Whether something global is out of sight inside gates and subroutines."""
+        if isinstance(known, Variable) and isinstance(known.value, Value) and known.value.is_open:
+            return True
         return isinstance(known, Places) or (isinstance(known, Variable) and not known.constant)
 
     def declare(self, name: str, thing: Any, what: str, node: Any) -> None:
@@ -184,9 +199,15 @@ class Evaluator:
         problem = Unknown(f"{what} is not yet supported here", required="a value that is known when compiling")
         return self.source.locate(problem, self.at(node))
 
+    def known(self, value: Value, node: Any) -> Value:
+        """Return a value, which has to be known when compiling."""
+        if value.is_open:
+            raise self.unknown("a value that depends on the run", node)
+        return value
+
     def real(self, node: ast.Expression) -> float:
         """Return the value of a gate parameter."""
-        value = self.scalar(node, real=True)
+        value = self.known(self.scalar(node, real=True), node)
         try:
             return float(cast(value, Kind("float")).data)
         except ExpressionError as problem:
@@ -194,7 +215,7 @@ class Evaluator:
 
     def integer(self, node: ast.Expression, least: int | None = None, most: int | None = None) -> int:
         """Return the value of an index, a size or a bound."""
-        value = self.scalar(node)
+        value = self.known(self.scalar(node), node)
         data = value.data
         if value.kind.name == "angle" or data != math.floor(data):
             raise self.error("a number is not an integer", node, required="an integer", found=shorten(data, 30))
@@ -204,13 +225,6 @@ class Evaluator:
                 "an integer is out of range", node, required=f"an integer from {least} to {most}", found=f"'{whole}'"
             )
         return whole
-
-    def condition(self, node: ast.Expression, what: str, statement: Any) -> bool:
-        """Return whether a condition of control flow holds."""
-        try:
-            return bool(self.scalar(node).data)
-        except Unknown:
-            raise self.unsupported(f"'{what}' on a bit that is not known when compiling", statement) from None
 
     def evaluate(self, node: Any, *, real: bool = False) -> Value | Array | Pending:
         """Return the value of an expression."""
@@ -243,9 +257,6 @@ class Evaluator:
     def _ImaginaryLiteral(self, node: Any, real: bool) -> Value:
         raise self.unsupported("a complex number", node)
 
-    def _DurationLiteral(self, node: Any, real: bool) -> Value:
-        raise self.unsupported("a duration", node)
-
     def _DurationOf(self, node: Any, real: bool) -> Value:
         raise self.unsupported("'durationof'", node)
 
@@ -264,13 +275,15 @@ class Evaluator:
 
     def read_bits(self, places: Places, node: Any) -> Value:
         """Return the value of bits that are all known."""
-        data = 0
-        for k, place in enumerate(places.indices):
-            bit = self.bits.get(place)
-            if bit is None:
-                raise self.unknown("a value that depends on a measured bit", node)
-            data |= bit << k
-        return Value(Kind("bit", 0 if places.single else len(places.indices)), data)
+        kind = Kind("bit", 0 if places.single else len(places.indices))
+        if not all(place in self.bits for place in places.indices):
+            self.store_bits(places.indices, node)
+            return Value(kind, Bits(tuple(places.indices), places.single))
+        return Value(kind, sum(self.bits[place] << k for k, place in enumerate(places.indices)))
+
+    def store_bits(self, places: Sequence[int], node: Any) -> None:
+        """Assign to bits at run time what is known of them; the interpreter does."""
+        raise NotImplementedError
 
     def _UnaryExpression(self, node: ast.UnaryExpression, real: bool) -> Value:
         return unary(node.op.name, self.scalar(node.expression, real=real))
@@ -285,7 +298,7 @@ class Evaluator:
         value = self.scalar(chain[-1].lhs, real=real)
         for part in reversed(chain):
             op = part.op.name
-            if op in ("&&", "||") and bool(value.data) == (op == "||"):
+            if op in ("&&", "||") and not value.is_open and bool(value.data) == (op == "||"):
                 value = Value(Kind("bool"), op == "||")
                 continue
             value = binary(op, value, self.scalar(part.rhs, real=real), real=real)
@@ -329,6 +342,7 @@ class Evaluator:
             return Array(a.kind, [*a.copy().items, *b.copy().items])
         if isinstance(a, Value) and isinstance(b, Value) and a.kind.name == b.kind.name == "bit":
             # The first operand holds the lower indices, as for registers of qubits.
+            a, b = self.known(a, node.lhs), self.known(b, node.rhs)
             return Value(Kind("bit", a.bits + b.bits), int(a.data) | int(b.data) << a.bits)
         raise self.error("'++' joins registers, bits or arrays of one type", node)
 
@@ -361,7 +375,7 @@ class Evaluator:
             if value.kind.name not in ("bit", "int", "uint") or not value.kind.width:
                 raise self.error("this value has no elements", node, found=str(value.kind))
             chosen, single = self.positions(value.bits, part, node)
-            data = sum((int(value.data) >> k & 1) << place for place, k in enumerate(chosen))
+            data = sum((int(self.known(value, node).data) >> k & 1) << place for place, k in enumerate(chosen))
             value = Value(Kind("bit", 0 if single else len(chosen)), data)
         return value
 
@@ -444,7 +458,8 @@ class Evaluator:
     def kind(self, node: Any) -> Kind:
         """Return a scalar type."""
         name = {"IntType": "int", "UintType": "uint", "FloatType": "float", "AngleType": "angle"}.get(
-            type(node).__name__, {"BitType": "bit", "BoolType": "bool"}.get(type(node).__name__, "")
+            type(node).__name__,
+            {"BitType": "bit", "BoolType": "bool", "DurationType": "duration"}.get(type(node).__name__, ""),
         )
         if not name:
             written = type(node).__name__.removesuffix("Type").lower()

@@ -2,7 +2,7 @@
 
 Each statement is parsed by the standard's reference parser and carried out on the names and columns that the fast
 lane has: loops are unrolled, branches decided, subroutines written out in place, modifiers resolved. After the
-OpenQASM 3 specification (arXiv:2104.14722). What depends on a measurement, timing, inputs and calibrations is refused.
+OpenQASM 3 specification (arXiv:2104.14722). Timing, inputs and calibrations are refused.
 """
 
 from __future__ import annotations
@@ -10,38 +10,48 @@ from __future__ import annotations
 import re
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from types import SimpleNamespace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from gatewright.errors import CannotError, ExpressionError, shorten
+from gatewright.classical import Bits, Name
+from gatewright.errors import ExpressionError, shorten
+from gatewright.program import Assign
+from gatewright.qasm.control import End, Return
 from gatewright.qasm.evaluation import MAX_ELEMENTS, STATEMENT, Pending, Places, Variable
-from gatewright.qasm.grammar import parse_statement, statement_end
-from gatewright.qasm.operations import Operations
+from gatewright.qasm.grammar import MAX_STATEMENT, parse_statement, statement_end
 from gatewright.qasm.scope import MAX_QUBITS, NAME, RESERVED
-from gatewright.qasm.values import Array, Kind, Value, binary, cast
+from gatewright.qasm.shapes import Shape, signature
+from gatewright.qasm.timing import Timing
+from gatewright.qasm.values import Array, Kind, Value, binary, cast, expression
 
 if TYPE_CHECKING:
     from gatewright.qasm.reader import Reader
 
-__all__ = ["MAX_CALLS", "FullLane"]
+__all__ = ["MAX_CALLS", "MAX_PARSED", "FullLane"]
 
 #: Subroutine calls open at once.
 MAX_CALLS = 40
 
-#: Parsed statements that are remembered.
+#: Characters that the reference parser is given in all: some ten seconds.
+MAX_PARSED = 1_000_000
+
+#: Statements, and shapes of them, that are remembered.
 _REMEMBERED = 10_000
+
+_KEPT = re.compile(r"\b(?:def|gate|extern|cal|defcal|if|while|switch|box)\b")
 
 _WORD = re.compile(NAME)
 _REFUSED = {
-    "IODeclaration": "",
-    "ExternDeclaration": "'extern'",
-    "CalibrationGrammarDeclaration": "'defcalgrammar'",
-    "CalibrationStatement": "'cal'",
-    "CalibrationDefinition": "'defcal'",
-    "DelayInstruction": "'delay'",
-    "Box": "'box'",
+    "CalibrationGrammarDeclaration": "'defcalgrammar' inside a block",
+    "CalibrationStatement": "'cal' inside a block",
+    "CalibrationDefinition": "'defcal' inside a block",
 }
+
+
+class Extern:
+    """A function that is declared, and not part of the program."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -52,18 +62,7 @@ class Subroutine:
     start: int
 
 
-@dataclass(frozen=True, slots=True)
-class _Return:
-    """The end of a subroutine."""
-
-    value: Value | Array | Pending | None
-
-
-class _End(Exception):
-    """The end of the program."""
-
-
-class FullLane(Operations):
+class FullLane(Timing):
     """Carries out the statements that the fast lane hands over.
 
     Parameters
@@ -76,7 +75,9 @@ class FullLane(Operations):
         super().__init__(reader)
         self.calls = 0
         self.returning: Any = None  # the type that the subroutine at hand returns
-        self.parsed: dict[str, Any] = {}
+        self.shapes: dict[Any, Shape] = {}
+        self.pieces: dict[str, tuple[Shape, list[str]]] = {}  # statements that end with their first semicolon
+        self.characters = 0  # given to the parser
 
     # ---------------------------------------------------------------- one statement of the program
 
@@ -98,19 +99,15 @@ class FullLane(Operations):
         ------
         QasmError, UnsupportedError
         """
-        end, skipped = statement_end(self.source, start)
-        text = self.source.text[start:end]
-        node = self.parsed.get(text)
-        if node is None:
-            node = parse_statement(self.source, start, end, skipped)
-            if len(self.parsed) < _REMEMBERED:
-                self.parsed[text] = node
+        end, node = self.parse(start)
         self.start = start
         self.phase = 0.0
         self.frames, self.enclosed, self.calls = [], False, 0
+        self.depth, self.loops = 0, []
         try:
-            self.execute(node)
-        except _End:
+            if self.execute(node) == "gone":
+                return end, True
+        except End:
             return end, True
         except RecursionError:
             raise self.source.error(
@@ -121,10 +118,44 @@ class FullLane(Operations):
                 self.reader.add_phase(self.phase)
         return end, False
 
-    def execute(self, node: Any) -> str | _Return | None:
+    def parse(self, start: int) -> tuple[int, Any]:
+        """Return the end and the tree of the statement at an offset; the tree is good until the next call."""
+        source = self.source
+        stop = source.text.find(";", start, start + MAX_STATEMENT) + 1
+        piece = source.text[start:stop]
+        known = self.pieces.get(piece)
+        if known is not None:
+            return stop, known[0].fill(known[1])
+        end, skipped = statement_end(source, start)
+        text = source.text[start:end].replace("\n", " ")
+        # Nodes that outlive their statement, and what is left out of it, are no matter of its shape.
+        if skipped or _KEPT.search(text):
+            return end, self.parsed_anew(start, end, skipped)
+        key, parts = signature(text)
+        shape = self.shapes.get(key)
+        if shape is None:
+            shape = Shape(self.parsed_anew(start, end, skipped), parts, key)
+            if shape.sound and len(self.shapes) < _REMEMBERED:
+                self.shapes[key] = shape
+        if end == stop and shape.sound and len(self.pieces) < _REMEMBERED:
+            self.pieces[piece] = shape, parts
+        return end, shape.fill(parts)
+
+    def parsed_anew(self, start: int, end: int, skipped: list[tuple[int, int]]) -> Any:
+        """Return the tree of a statement that the reference parser makes, unless it has done too much already."""
+        self.characters += end - start
+        if self.characters > MAX_PARSED:
+            raise self.source.error(
+                "the statements outside the plain ones are too long in all",
+                start,
+                required=f"at most {MAX_PARSED} characters in statements of different shapes",
+            )
+        return parse_statement(self.source, start, end, skipped)
+
+    def execute(self, node: Any) -> str | Return | None:
         """Carry out a statement; return how it leaves the block that it stands in, if it does."""
         self.charge(STATEMENT, node)
-        method: Callable[[Any], str | _Return | None] | None = self.methods.get(type(node))
+        method: Callable[[Any], str | Return | None] | None = self.methods.get(type(node))
         if method is None:
             name = type(node).__name__
             if name in _REFUSED:
@@ -138,7 +169,7 @@ class FullLane(Operations):
         except ExpressionError as problem:
             raise self.fault(problem, node) from None
 
-    def block(self, statements: Sequence[Any], names: dict[str, Any] | None = None) -> str | _Return | None:
+    def block(self, statements: Sequence[Any], names: dict[str, Any] | None = None) -> str | Return | None:
         """Carry out the statements of a block in a frame of their own."""
         self.frames.append(names or {})
         try:
@@ -153,91 +184,18 @@ class FullLane(Operations):
     def do_Pragma(self, node: Any) -> None:
         """Pass over a pragma."""
 
-    def do_CompoundStatement(self, node: Any) -> str | _Return | None:
+    def do_CompoundStatement(self, node: Any) -> str | Return | None:
         """Carry out a block."""
         return self.block(node.statements)
 
-    # ---------------------------------------------------------------- control flow
-
-    def do_BranchingStatement(self, node: Any) -> str | _Return | None:
-        """Carry out the branch of ``if`` that is taken."""
-        return self.block(node.if_block if self.condition(node.condition, "if", node) else node.else_block)
-
-    def do_WhileLoop(self, node: Any) -> str | _Return | None:
-        """Unroll ``while``."""
-        while self.condition(node.while_condition, "while", node):
-            self.charge(STATEMENT, node)
-            left = self.block(node.block)
-            if left == "break":
-                break
-            if isinstance(left, _Return):
-                return left
-        return None
-
-    def do_ForInLoop(self, node: Any) -> str | _Return | None:
-        """Unroll ``for``."""
-        kind = self.kind(node.type)
-        declared = node.set_declaration
-        what = type(declared).__name__
-        values: Sequence[Any]
-        if what == "RangeDefinition":
-            span = self.span(declared, None)
-            self.charge(STATEMENT * len(span), node)
-            values = [Value(Kind("int"), k) for k in span]
-        elif what == "DiscreteSet":
-            values = [self.scalar(item, real=kind.name in ("float", "angle")) for item in declared.values]
-        else:
-            whole = self.evaluate(declared)
-            if isinstance(whole, Array):
-                values = list(whole.items)
-            elif isinstance(whole, Value) and whole.kind.name == "bit":
-                values = [Value(Kind("bit"), int(whole.data) >> k & 1) for k in range(whole.bits)]
-            else:
-                raise self.error("'for' over what is not a range, a set or an array", declared)
-        name = node.identifier.name
-        if name in RESERVED:
-            raise self.error(f"'{shorten(name)}' is a reserved word", node.identifier, required="another name")
-        for value in values:
-            if isinstance(value, Array):
-                raise self.error("'for' over the rows of an array", declared, required="an array of one dimension")
-            left = self.block(node.block, {name: Variable(kind, cast(value, kind))})
-            if left == "break":
-                break
-            if isinstance(left, _Return):
-                return left
-        return None
-
-    def do_SwitchStatement(self, node: Any) -> str | _Return | None:
-        """Carry out the case of ``switch`` that is met."""
-        try:
-            wanted = self.integer(node.target)
-        except CannotError:
-            raise self.unsupported("'switch' on a bit that is not known when compiling", node) from None
-        for labels, body in node.cases:
-            if any(self.integer(label) == wanted for label in labels):
-                return self.block(body.statements)
-        return None if node.default is None else self.block(node.default.statements)
-
-    def do_BreakStatement(self, node: Any) -> str:
-        """Leave a loop."""
-        return "break"
-
-    def do_ContinueStatement(self, node: Any) -> str:
-        """Go to the next round of a loop."""
-        return "continue"
-
-    def do_EndStatement(self, node: Any) -> None:
-        """End the program."""
-        raise _End
-
-    def do_ReturnStatement(self, node: Any) -> _Return:
+    def do_ReturnStatement(self, node: Any) -> Return:
         """Leave a subroutine."""
         if node.expression is None:
-            return _Return(None)
+            return Return(None)
         if type(node.expression).__name__ == "QuantumMeasurement":
-            return _Return(Pending(self.places(node.expression.qubit)))
+            return Return(Pending(self.places(node.expression.qubit)))
         real = type(self.returning).__name__ in ("FloatType", "AngleType")
-        return _Return(self.evaluate(node.expression, real=real))
+        return Return(self.evaluate(node.expression, real=real))
 
     # ---------------------------------------------------------------- declarations and assignments
 
@@ -251,6 +209,33 @@ class FullLane(Operations):
             raise self.error("qubits are declared inside a block", identifier, required="a declaration outside")
         number = None if size is None else self.integer(size, 1, MAX_QUBITS)
         self.scope.add_register(identifier.name, number, self.at(identifier), quantum=quantum)
+
+    def do_IODeclaration(self, node: Any) -> None:
+        """Declare an input: a name whose value is not known when compiling."""
+        name = node.identifier.name
+        if node.io_identifier.name != "input":
+            self.declare_output(node)
+            return
+        if self.frames:
+            raise self.error("an input is declared inside a block", node, required="a declaration outside")
+        kind = self.kind(node.type)
+        if kind.name == "bit":
+            raise self.unsupported("an input of bits", node)
+        made = Variable(kind, Value(kind, Name(name)), constant=True)
+        self.declare(name, made, "an input", node.identifier)
+        size = getattr(node.type, "size", None) if kind.name == "float" else None
+        self.reader.inputs[name] = str(kind) if size is None else f"float[{self.integer(size, 1, 4096)}]"
+
+    def declare_output(self, node: Any) -> None:
+        """Declare an output: bits and variables like any others, since all of them are kept."""
+        if self.frames:
+            raise self.error("an output is declared inside a block", node, required="a declaration outside")
+        declaration = SimpleNamespace(type=node.type, identifier=node.identifier, init_expression=None, span=node.span)
+        self.do_ClassicalDeclaration(declaration)
+
+    def do_ExternDeclaration(self, node: Any) -> None:
+        """Declare a function that is not part of the program; only calls of it are refused."""
+        self.declare(node.name.name, Extern(), "an extern function", node.name)
 
     def do_ConstantDeclaration(self, node: Any) -> None:
         """Declare a constant."""
@@ -293,7 +278,15 @@ class FullLane(Operations):
             kind = self.kind(node.type)
             if given is not None:
                 value = self.assigned(kind, self.evaluate(given, real=kind.name in ("float", "angle")), given)
-        made = Variable(kind, value, constant)
+        if isinstance(value, Value) and not constant:
+            value = self.settled(value)
+        lasting = isinstance(value, Value) and self.lasting(value)
+        known = value if lasting or not isinstance(value, Value) or not value.is_open else None
+        made = Variable(kind, known, constant, self.depth)
+        if isinstance(value, Value) and value.is_open and (constant or not lasting):
+            if constant:
+                raise self.unknown("a constant that depends on the run", given)
+            self.store(made, node.identifier.name, value, node)
         self.declare(node.identifier.name, made, "a constant" if constant else "a variable", node.identifier)
         return made
 
@@ -352,7 +345,7 @@ class FullLane(Operations):
                 if not isinstance(old, Value):
                     raise self.error(f"'{shorten(name)}' has no value yet", node.lvalue)
                 value = binary(op, old, value, real=real)
-            found.value = self.assigned(found.kind, value, node.rvalue)
+            self.assign(found, name, self.assigned(found.kind, value, node.rvalue), node)
             return
         self.set_element(found, node, value, op, real)
 
@@ -360,6 +353,8 @@ class FullLane(Operations):
         """Assign to an element of an array, or to bits of a variable."""
         flat = [part for index in node.lvalue.indices for part in (index if isinstance(index, list) else [index])]
         holder = variable.value
+        if value.is_open or self.depth or (isinstance(holder, Value) and holder.is_open):
+            raise self.unsupported("assigning to an element of a variable, depending on a measurement", node)
         if isinstance(holder, Value) or holder is None:
             if (
                 holder is None
@@ -402,12 +397,17 @@ class FullLane(Operations):
         if isinstance(value, Array):
             raise self.error("an array cannot become bits", node)
         kind = Kind("bit", 0 if places.single else len(places.indices))
-        measured = set(self.reader.link.values())
-        if not measured.isdisjoint(places.indices):
-            raise self.unsupported("assigning to a bit that was measured", node)
-        data = int(self.assigned(kind, value, node).data)
+        # Measurements that the fast lane remembers would pass by what is known from here on.
+        self.reader.statements.clear()
+        value = self.assigned(kind, value, node)
+        if value.is_open or self.depth:
+            self.mark("assign", Assign(Bits(tuple(places.indices), places.single), expression(value)), node)
+            self.stored.update(places.indices)
+            for place in places.indices:
+                self.bits.pop(place, None)
+            return
         for k, place in enumerate(places.indices):
-            self.bits[place] = data >> k & 1
+            self.bits[place] = int(value.data) >> k & 1
 
     # ---------------------------------------------------------------- subroutines
 
@@ -421,15 +421,18 @@ class FullLane(Operations):
         """Call a subroutine for its effect."""
         call = node.expression
         known = self.globals.get(call.name.name) if type(call).__name__ == "FunctionCall" else None
-        if not isinstance(known, Subroutine):
+        if not isinstance(known, Subroutine | Extern):
             raise self.error("this is not a statement", node, required="a call of a subroutine")
-        if isinstance(self.call_subroutine(call), Pending):
-            raise self.unsupported("a measurement into no bit", node)
+        value = self.call_subroutine(call)
+        if isinstance(value, Pending):
+            self.unread(value.qubits, node)
 
     def call_subroutine(self, node: Any) -> Value | Array | Pending | None:
         """Write a subroutine out in place."""
         name = node.name.name
         known = self.globals.get(name)
+        if isinstance(known, Extern):
+            raise self.unsupported(f"a call of the extern function '{shorten(name)}'", node)
         if not isinstance(known, Subroutine):
             raise self.error(f"'{shorten(name)}' is not a subroutine", node, found=f"it is {self.scope.declared[name]}")
         definition = known.node
@@ -456,7 +459,7 @@ class FullLane(Operations):
         self.calls += 1
         try:
             left = self.block(definition.body, names)
-            value = left.value if isinstance(left, _Return) else None
+            value = left.value if isinstance(left, Return) else None
             if definition.return_type is None or value is None:
                 return None
             kind = self.kind(definition.return_type)
@@ -498,8 +501,8 @@ class FullLane(Operations):
             if not isinstance(value, Array) or value.kind != kind:
                 raise self.error("an argument of another type", given, required=f"an array of {kind}")
             mutable = formal.access is not None and formal.access.name == "mutable"
-            return Variable(kind, value if mutable else value.copy(), constant=not mutable)
-        return Variable(kind, self.assigned(kind, value, given))
+            return Variable(kind, value if mutable else value.copy(), not mutable, self.depth)
+        return Variable(kind, self.assigned(kind, value, given), depth=self.depth)
 
 
 def _blank(kind: Kind, sizes: Sequence[int]) -> Array:

@@ -19,7 +19,16 @@ from numpy.typing import NDArray
 from gatewright.circuit import apply_matrix
 from gatewright.errors import CircuitError, UnsupportedError
 from gatewright.gates import BARRIER, GATES, UNITARY, Gate
+from gatewright.parameters import Affine, Parameter
 from gatewright.qasm.definitions import Definition, Op, expand
+from gatewright.qasm.unknowns import (
+    controlled_unknown,
+    inverse_unknown,
+    is_unknown,
+    known_parameters,
+    phase_under,
+    power_unknown,
+)
 
 __all__ = ["MAX_EXPLICIT", "MAX_REPEATED", "Passage", "controlled", "inverse", "matrix_of", "passage_of", "power"]
 
@@ -53,10 +62,10 @@ class Passage:
 
     n_qubits: int
     operations: tuple[Op, ...] = ()
-    phase: float = 0.0
+    phase: Parameter = 0.0
 
 
-def passage_of(target: Gate | Definition, values: Sequence[float]) -> Passage:
+def passage_of(target: Gate | Definition, values: Sequence[Parameter]) -> Passage:
     """Return the operations of a gate at given parameters, definitions expanded to the last, phases included."""
     places = tuple(range(target.n_qubits))
     if isinstance(target, Gate):
@@ -64,7 +73,7 @@ def passage_of(target: Gate | Definition, values: Sequence[float]) -> Passage:
     found: list[Op] = []
 
     def emit(
-        gate: Gate, qubits: Sequence[int], parameters: Sequence[float] = (), matrix: Array | None = None, /
+        gate: Gate, qubits: Sequence[int], parameters: Sequence[Parameter] = (), matrix: Array | None = None, /
     ) -> None:
         found.append(Op(gate, tuple(qubits), tuple(parameters), matrix))
 
@@ -92,11 +101,16 @@ def matrix_of(passage: Passage) -> Array:
             required=f"at most {MAX_EXPLICIT} qubits",
             found=str(n),
         )
-    state: Array = np.eye(2**n, dtype=np.complex128) * np.exp(1j * passage.phase)
+    state: Array = np.eye(2**n, dtype=np.complex128) * np.exp(1j * _known(passage.phase))
     for op in passage.operations:
         if op.target != BARRIER:
             state = apply_matrix(_matrix(op), op.qubits, state, n)
     return state
+
+
+def _known(phase: Parameter) -> float:
+    assert not isinstance(phase, Affine)
+    return phase
 
 
 def inverse(passage: Passage) -> Passage:
@@ -113,13 +127,16 @@ def inverse(passage: Passage) -> Passage:
         if op.target == BARRIER:
             operations.append(op)
             continue
+        if is_unknown(op):
+            operations.append(inverse_unknown(op))
+            continue
         alike = op._replace(qubits=()) if op.matrix is None else None
         if alike in known:
             operations += [one._replace(qubits=op.qubits) for one in known[alike]]
             continue
-        v = tuple(-value for value in op.parameters)
+        v = tuple(-value for value in known_parameters(op))
         # U(θ, φ, λ) is inverted by U(−θ, −λ, −φ).
-        hints = [(v[0], v[2], v[1], *v[3:]) if len(v) > 2 else v, v, op.parameters]
+        hints = [(v[0], v[2], v[1], *v[3:]) if len(v) > 2 else v, v, known_parameters(op)]
         made = _resolved(_matrix(op).conj().T, op.qubits, hints, op.target)
         operations += made
         if alike is not None:
@@ -147,6 +164,8 @@ def power(passage: Passage, exponent: float) -> Passage:
         )
     if exponent == 1:
         return passage
+    if any(is_unknown(op) for op in passage.operations) or isinstance(passage.phase, Affine):
+        return _unknown_power(passage, exponent)
     if exponent == math.floor(exponent):
         if exponent < 0:
             return power(inverse(passage), -exponent)
@@ -169,12 +188,33 @@ def power(passage: Passage, exponent: float) -> Passage:
             phase = phase + math.tau if phase <= -math.pi + _CUT else phase
         return Passage(0, (), phase * exponent)
     only = passage.operations[0] if len(passage.operations) == 1 else None
-    hints = [] if only is None else [tuple(value * exponent for value in only.parameters), only.parameters]
+    hints = []
+    if only is not None:
+        known = known_parameters(only)
+        hints = [tuple(value * exponent for value in known), known]
     places = tuple(range(n))
     matrix = _power(matrix_of(passage), exponent)
     if only is not None and only.qubits == places:
         return Passage(n, tuple(_resolved(matrix, places, hints, only.target)))
     return Passage(n, tuple(_resolved(matrix, places, hints)))
+
+
+def _unknown_power(passage: Passage, exponent: float) -> Passage:
+    """Return an integer power of a passage with unknown parameters, written out."""
+    if exponent != math.floor(exponent):
+        raise UnsupportedError(
+            "a power that is not an integer, of a gate whose angle is not known when compiling, is not yet supported",
+            required="an integer power",
+            found=f"{exponent:.6g}",
+        )
+    phase = passage.phase * exponent
+    if len(passage.operations) == 1 and is_unknown(passage.operations[0]):
+        return Passage(passage.n_qubits, tuple(power_unknown(passage.operations[0], exponent)), phase)
+    if exponent < 0:
+        passage, exponent = inverse(passage), -exponent
+    if exponent * len(passage.operations) > MAX_REPEATED:
+        raise UnsupportedError("a power repeats too many operations", required=f"at most {MAX_REPEATED}")
+    return Passage(passage.n_qubits, passage.operations * int(exponent), phase)
 
 
 def controlled(passage: Passage, controls: Sequence[bool]) -> Passage:
@@ -195,6 +235,15 @@ def controlled(passage: Passage, controls: Sequence[bool]) -> Passage:
         if op.target == BARRIER:
             operations.append(Op(BARRIER, places))
             continue
+        if is_unknown(op):
+            if k + len(op.qubits) > MAX_EXPLICIT:
+                raise UnsupportedError(
+                    "a controlled gate on this many qubits is not yet supported",
+                    required=f"at most {MAX_EXPLICIT} qubits",
+                    found=str(k + len(op.qubits)),
+                )
+            operations += controlled_unknown(op, k)
+            continue
         alike = op._replace(qubits=()) if op.matrix is None else None
         if alike in known:
             operations += [one._replace(qubits=(*front, *places)) for one in known[alike]]
@@ -206,7 +255,7 @@ def controlled(passage: Passage, controls: Sequence[bool]) -> Passage:
                 required=f"at most {MAX_EXPLICIT} qubits",
                 found=str(k + len(op.qubits)),
             )
-        made = _resolved(_under(inner, k), (*front, *places), [op.parameters])
+        made = _resolved(_under(inner, k), (*front, *places), [known_parameters(op)])
         operations += made
         if alike is not None:
             known[alike] = made
@@ -217,6 +266,8 @@ def controlled(passage: Passage, controls: Sequence[bool]) -> Passage:
                 required=f"at most {MAX_EXPLICIT} qubits",
                 found=str(k),
             )
+        if isinstance(passage.phase, Affine):
+            return Passage(passage.n_qubits + k, (*operations, *phase_under(passage.phase, k), *flips))
         bare = np.array([[np.exp(1j * passage.phase)]])
         operations += _resolved(_under(bare, k), front, [(passage.phase,)])
     n = passage.n_qubits + k
@@ -237,7 +288,7 @@ def _matrix(op: Op) -> Array:
         return op.matrix
     if op.target.function is None:
         raise CircuitError(f"'{op.target.name}' is not unitary", required="a unitary gate under a modifier")
-    return op.target.matrix(op.parameters)
+    return op.target.matrix(known_parameters(op))
 
 
 def _power(matrix: Array, exponent: float) -> Array:

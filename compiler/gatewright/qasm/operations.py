@@ -8,13 +8,16 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from gatewright.errors import CannotError, CircuitError, QasmError, shorten
+from gatewright.classical import Name
+from gatewright.errors import CannotError, CircuitError, ExpressionError, QasmError, shorten
 from gatewright.gates import BARRIER, MEASURE, RESET, UNITARY, Gate
+from gatewright.parameters import Affine, Parameter
 from gatewright.qasm.definitions import MAX_DEPTH, Definition, Op, expand, same_gate
 from gatewright.qasm.evaluation import Evaluator, Places, ValueFault, Variable
 from gatewright.qasm.modifiers import Passage, controlled, inverse, passage_of, power
 from gatewright.qasm.scope import MAX_QUBITS, RESERVED
-from gatewright.qasm.values import Kind, Value
+from gatewright.qasm.unknowns import as_parameter, is_unknown, known_parameters, reads_bits, with_values
+from gatewright.qasm.values import Kind, Value, cast
 
 if TYPE_CHECKING:
     from gatewright.qasm.reader import Reader
@@ -45,7 +48,7 @@ class Operations(Evaluator):
         super().__init__(reader.scope)
         self.reader = reader
         self.sink: list[Op] | None = None  # takes the operations while the body of a gate is recorded
-        self.phase = 0.0
+        self.phase: Parameter = 0.0
         self.defining: set[str] = set()
         self.modified: dict[Any, tuple[Any, Passage]] = {}
 
@@ -55,7 +58,29 @@ class Operations(Evaluator):
 
     # ---------------------------------------------------------------- gates
 
-    def emit(self, target: Gate | Definition, qubits: Sequence[int], values: Sequence[float], node: Any) -> None:
+    def parameter(self, node: Any) -> Parameter:
+        """Return the value of a gate parameter, which need not be known when compiling."""
+        value = self.scalar(node, real=True)
+        if not value.is_open:
+            try:
+                return float(cast(value, Kind("float")).data)
+            except ExpressionError as problem:
+                raise self.fault(problem, node) from None
+        tree = value.data
+        if reads_bits(tree):
+            # Bits change from one measurement to the next: what they are now is kept under a name.
+            tree = self.kept(value, node)
+        try:
+            made = as_parameter(tree)
+        except ExpressionError as problem:
+            raise self.fault(problem, node) from None
+        return made if not isinstance(made, Affine) or made.terms else made.constant
+
+    def kept(self, value: Value, node: Any) -> Name:
+        """Assign a value to a variable of its own at run time; the interpreter does."""
+        raise NotImplementedError
+
+    def emit(self, target: Gate | Definition, qubits: Sequence[int], values: Sequence[Parameter], node: Any) -> None:
         """Append one operation where operations go at the moment."""
         self.charge(target.size if isinstance(target, Definition) else 1, node)
         if self.sink is not None:
@@ -73,7 +98,7 @@ class Operations(Evaluator):
         if name in self.defining:
             raise self.error(f"the gate '{shorten(name)}' is defined by itself", node)
         target = self.reader.target(name, self.at(node.name))
-        values = [self.real(argument) for argument in node.arguments]
+        values = [self.parameter(argument) for argument in node.arguments]
         self.count(node, "parameters", target.n_parameters, len(values))
         changes = self.changes(node.modifiers)
         controls = sum(len(change) for change in changes if isinstance(change, tuple))
@@ -99,7 +124,7 @@ class Operations(Evaluator):
         changes = self.changes(node.modifiers)
         controls = sum(len(change) for change in changes if isinstance(change, tuple))
         self.count(node, "qubits", controls, len(node.qubits))
-        passage = self.change(Passage(0, (), self.real(node.argument)), changes, node)
+        passage = self.change(Passage(0, (), self.parameter(node.argument)), changes, node)
         self.place(passage, self.broadcast(node) if controls else [()], node)
 
     def count(self, node: Any, what: str, required: int, found: int) -> None:
@@ -149,11 +174,13 @@ class Operations(Evaluator):
         """Return an operation as the device has it: its gate of that name, or a matrix where that one differs."""
         gate = op.target
         native = self.reader.natives.get(gate.name)
+        if is_unknown(op):
+            return op if native is None else op._replace(target=native)
         if native is None or native is gate or not isinstance(gate, Gate) or gate.function is None:
             return op
         if same_gate(native, gate, exact=True):
             return op._replace(target=native)
-        return Op(UNITARY, op.qubits, (), np.array(gate.matrix(op.parameters), dtype=np.complex128))
+        return Op(UNITARY, op.qubits, (), np.array(gate.matrix(known_parameters(op)), dtype=np.complex128))
 
     def place(self, passage: Passage, rows: Sequence[Sequence[int]], node: Any) -> None:
         """Append a passage on each list of qubits."""
@@ -205,15 +232,21 @@ class Operations(Evaluator):
                 seen.add(item.name)
         self.scope.declare(node.name.name, "a gate", self.at(node.name))
         start = self.start
-        known: dict[tuple[float, ...], tuple[list[Op], float]] = {}
+        known: dict[tuple[float | Name, ...], tuple[list[Op], Parameter]] = {}
 
-        def record(values: tuple[float, ...]) -> tuple[list[Op], float]:
+        def record(given: tuple[Parameter, ...]) -> tuple[list[Op], Parameter]:
+            # What is not known goes through the body under the name of the parameter.
+            unknown = {name: value for name, value in zip(parameters, given, strict=True) if isinstance(value, Affine)}
+            values = tuple(
+                Name(name) if isinstance(value, Affine) else value
+                for name, value in zip(parameters, given, strict=True)
+            )
             found = known.get(values)
             if found is None:
                 found = self.record(node, parameters, wires, values, start)
                 if len(known) < _REMEMBERED_BODIES:
                     known[values] = found
-            return found
+            return with_values(*found, unknown) if unknown else found
 
         size, depth = len(node.body), 1
         self.defining.add(node.name.name)
@@ -233,8 +266,13 @@ class Operations(Evaluator):
         self.reader.define(made, self.at(node))
 
     def record(
-        self, node: Any, parameters: tuple[str, ...], wires: tuple[str, ...], values: tuple[float, ...], start: int
-    ) -> tuple[list[Op], float]:
+        self,
+        node: Any,
+        parameters: tuple[str, ...],
+        wires: tuple[str, ...],
+        values: tuple[float | Name, ...],
+        start: int,
+    ) -> tuple[list[Op], Parameter]:
         """Carry out the body of a gate for given parameters."""
         names: dict[str, Any] = {
             name: Variable(Kind("angle"), Value(Kind("angle"), value), constant=True)
@@ -278,11 +316,19 @@ class Operations(Evaluator):
     def do_QuantumMeasurementStatement(self, node: Any) -> None:
         """Measure into bits."""
         if node.target is None:
-            raise self.unsupported("a measurement into no bit", node)
+            self.unread(self.places(node.measure.qubit), node)
+            return
         found = self.find(node.target.name if isinstance(node.target.name, str) else node.target.name.name, node.target)
         if isinstance(found, Variable):
             raise self.unsupported("a measurement into a bit of a block or a subroutine", node)
         self.measurement(self.places(node.measure.qubit), self.places(node.target, quantum=False), node)
+
+    def unread(self, sources: Places, node: Any) -> None:
+        """Measure qubits into bits of their own that nothing reads."""
+        self.outside("measure", node)
+        self.charge(len(sources.indices), node)
+        for qubit in sources.indices:
+            self.reader.measure_unread(qubit, self.at(node))
 
     def measurement(self, sources: Places, targets: Places, node: Any) -> None:
         """Append the measurement of qubits into as many bits."""

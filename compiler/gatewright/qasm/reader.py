@@ -8,22 +8,28 @@ distinct statements, which NumPy turns into columns. Statements of OpenQASM 3 be
 
 from __future__ import annotations
 
+import math
 import re
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
+from itertools import count
 from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
+from gatewright.classical import Bits, Literal, Operation
 from gatewright.errors import ExpressionError, QasmError, UnsupportedError, nearest_name, shorten
-from gatewright.gates import BARRIER, GATES, MEASURE, RESET, Gate
+from gatewright.gates import BARRIER, CONTROL, GATES, MEASURE, RESET, Gate
+from gatewright.parameters import Affine, Parameter
+from gatewright.program import Mark, Program, split_at_marks
 from gatewright.qasm.bodies import read_definition
 from gatewright.qasm.columns import MAX_OPERANDS, circuit
 from gatewright.qasm.definitions import Definition, equals, expand, same_gate
 from gatewright.qasm.lanes import CONST, EITHER, FAST, beyond, lane, leading_word
 from gatewright.qasm.library import BUILT_IN, LIBRARIES, LIBRARY_FILES
+from gatewright.qasm.scanner import Scanner, pays
 from gatewright.qasm.scope import MAX_QUBITS, NAME, UNSUPPORTED, Scope, split
 from gatewright.qasm.source import Source
 
@@ -46,11 +52,17 @@ _REGISTER = re.compile(rf"(qreg|creg)\s+({NAME})\s*(?:\[([^][]*)\])?")
 _DECLARATION = re.compile(rf"(qubit|bit)\s*(?:\[([^][]*)\])?\s*({NAME})\s*(?:=(.*))?", re.DOTALL)
 _OPAQUE = re.compile(rf"opaque\s+({NAME})\s*(?:\([^()]*\))?\s*[^()]*")
 _BLOCK = re.compile(r"\s*gate\b")
+_BRACES = re.compile(r"[{}]")
+_CALIBRATED = re.compile(rf"defcal\s+({NAME})")
+_NOTES = re.compile(r"(?:\s*(?:@|#|pragma\b)[^\n]*)++")
 _MEASURE = re.compile(r"measure\b(.*)", re.DOTALL)
+_IF = re.compile(r"if\s*\(\s*([^\s=()]+)\s*==\s*([^=()]*?)\s*\)\s*(.*)", re.DOTALL)
 _ARROW = re.compile(r"measure\b(.*)->(.*)", re.DOTALL)
 
 
-def read(text: str, *, where: str = "", natives: Mapping[str, Gate] | None = None) -> Circuit:
+def read(
+    text: str, *, where: str = "", natives: Mapping[str, Gate] | None = None, strict: bool = True
+) -> Circuit | Program:
     """Read an OpenQASM program.
 
     Versions 2.0, 3.0 and 3.1 (3.0 where the version line is missing); ``include`` of the version's own standard
@@ -72,6 +84,9 @@ def read(text: str, *, where: str = "", natives: Mapping[str, Gate] | None = Non
     natives : mapping of str to Gate, optional
         Native gates of a device: calls of these names stay what they are. Where the program or its library
         defines such a gate, it has to agree with the native matrix up to global phase.
+    strict : bool
+        If False, natives are known only where the program defines or declares them, and one that differs is the
+        program's own.
 
     Returns
     -------
@@ -90,13 +105,15 @@ def read(text: str, *, where: str = "", natives: Mapping[str, Gate] | None = Non
     >>> [(op.name, op.qubits) for op in c]
     [('h', (0,)), ('cx', (0, 1)), ('rz', (0,)), ('rz', (1,))]
     """
-    return Reader(Source(text, where), natives or {}).read()
+    return Reader(Source(text, where), natives or {}, strict=strict).read()
 
 
 class Reader:
     """One program being read; with `only_full` the full lane takes every statement that it can."""
 
-    def __init__(self, source: Source, natives: Mapping[str, Gate], *, only_full: bool = False) -> None:
+    def __init__(
+        self, source: Source, natives: Mapping[str, Gate], *, only_full: bool = False, strict: bool = True
+    ) -> None:
         self.source = source
         self.only_full = only_full
         self.full: FullLane | None = None
@@ -104,10 +121,13 @@ class Reader:
         self.ended = False
         self.scope = Scope(source)
         self.natives = natives
+        self.strict = strict
         self.pieces = source.pieces()
         self.position = 0  # offset of the piece at hand
         self.started = False
-        self.gates: dict[str, Gate | Definition] = {**{name: GATES[name] for name in BUILT_IN[3]}, **natives}
+        self.gates: dict[str, Gate | Definition] = {name: GATES[name] for name in BUILT_IN[3]}
+        if strict:
+            self.gates.update(natives)
         self.opaque: set[str] = set()
         self.clashes: set[str] = set()  # native gates that differ from the library's
         self.statements: dict[str, int] = {}
@@ -121,7 +141,15 @@ class Reader:
         self.qubits: list[int] = []
         self.parameters: list[float] = []
         self.link: dict[int, int] = {}  # bits of measurements
+        self.calibrations: list[str] = []
+        self.calibrated: set[str] = set()  # gates with a calibration
+        self.unread: dict[int, int] = {}  # bits of qubits whose outcomes are dropped
         self.matrices: dict[int, NDArray[np.complex128]] = {}  # of explicit unitaries
+        self.marks: dict[int, int] = {}  # of control flow that depends on the run: numbers of their contents
+        self.contents: list[Mark] = []
+        self.variables: dict[str, str] = {}  # at run time: names and types
+        self.inputs: dict[str, str] = {}  # names and types
+        self.unknown: dict[int, tuple[Parameter, ...]] = {}  # parameters of operations of which some are not known
         self.handlers: dict[str, Callable[[str, int], None]] = {
             "OPENQASM": self.version_line,
             "include": self.include,
@@ -139,17 +167,20 @@ class Reader:
 
     # ---------------------------------------------------------------- the program as a whole
 
-    def read(self) -> Circuit:
+    def read(self) -> Circuit | Program:
         """Read all statements and put the columns together."""
         order: list[int] = []
         known = self.statements.get
-        for piece in self.pieces:
+        scanner = Scanner(self) if not self.only_full and pays(self.source.text) else None
+        while (piece := next(self.pieces, None)) is not None:
             number = known(piece)
             if number is None:
                 try:
                     # What is plainly for the full lane is spared the complaint of the fast one.
                     full = self.full
-                    plain = full is None or not (":" in piece or (full.globals and full.concerns(piece)))
+                    plain = "++" not in piece and (
+                        full is None or not (":" in piece or (full.globals and full.concerns(piece)))
+                    )
                     number = self.flat_call(piece) if plain and not self.only_full else -1
                 except (QasmError, UnsupportedError):
                     if not beyond(piece, self.scope, self.full):
@@ -161,13 +192,51 @@ class Reader:
             self.position += len(piece) + 1
             if self.ended:
                 break
+            if scanner is not None:
+                scanner.advance(order)
         end = len(self.source.text.rstrip()) - 1
         if self.source.text[end] not in ";}" and self.closed <= end and not self.ended:
             raise self.source.error("a ';' is missing", end, required="';' behind the last statement")
         if not self.scope.n_qubits and not self.scope.n_physical:
             hint = "such as 'qubit[2] q;' or 'qreg q[2];'"
             raise self.source.error("no qubits are declared", 0, required="a declaration of qubits", hint=hint)
-        return circuit(self, np.array(order, dtype=np.int64))
+        if self.full is not None and self.full.bits:
+            self.full.finish()
+            order.append(self.finish(None))
+        if scanner is None or not scanner.count:
+            flat = circuit(self, np.array(order, dtype=np.int64))
+        else:
+            flat = circuit(self, scanner.order(order), scanner.columns())
+        if self.calibrations and self.marks:
+            raise self.scope.unsupported("'cal' or 'defcal' beside control that depends on the run", 0)
+        flat = replace(flat, calibrations=tuple(self.calibrations))
+        return self.with_control(flat) if self.marks else flat
+
+    def with_control(self, flat: Circuit) -> Program:
+        """Return the program that a circuit with marks stands for."""
+        rows = np.flatnonzero(flat.is_named(CONTROL.name))
+        marks = [self.contents[k] for k in flat.link[rows].tolist()]
+        return Program(
+            n_qubits=flat.n_qubits,
+            n_bits=flat.n_bits,
+            body=split_at_marks(replace(flat, phase=0.0), rows.tolist(), marks),
+            variables=tuple(self.variables.items()),
+            qubit_registers=flat.qubit_registers,
+            bit_registers=flat.bit_registers,
+        )
+
+    def mark(self, mark: Mark) -> None:
+        """Append a mark of control flow."""
+        self.marks[len(self.op)] = len(self.contents)
+        self.contents.append(mark)
+        self.emit(CONTROL, ())
+
+    def variable(self, name: str, kind: object) -> str:
+        """Give a variable a place at run time; return its name there."""
+        taken = {*self.variables, *(self.scope.declared if name not in self.scope.declared else ())}
+        free = next(other for k in count() if (other := f"{name}_{k}" if k else name) not in taken)
+        self.variables[free] = str(kind)
+        return free
 
     def check_total(self, operations: int, offset: int) -> None:
         """Refuse a program that is too long."""
@@ -191,8 +260,10 @@ class Reader:
             return None
         word, start = leading[0], self.position + leading[1]
         if word in ("@", "#", "pragma"):
-            end = self.source.text.find("\n", start)
-            return self.behind(piece, len(self.source.text) if end < 0 else end)
+            skipped = _NOTES.match(self.source.text, start)
+            return self.behind(piece, skipped.end() if skipped else start)
+        if word in ("cal", "defcal", "defcalgrammar"):
+            return self.behind(piece, self.calibration(word, start))
         choice = lane(word, piece, start, self.scope, self.full)
         if choice == FAST or (choice == EITHER and not self.only_full):
             return None
@@ -200,8 +271,30 @@ class Reader:
             from gatewright.qasm.full import FullLane
 
             self.full = FullLane(self)
+        # Blocks in a row without any semicolon are gone through again and again.
+        self.full.charge_at(len(piece) >> 10, start)
         end, self.ended = self.full.statement(start)
         return self.behind(piece, end)
+
+    def calibration(self, word: str, start: int) -> int:
+        """Keep a calibration statement as it stands; return the offset behind it."""
+        text = self.source.text
+        if word == "defcalgrammar":
+            end = text.find(";", start) + 1
+        else:
+            depth, end = 0, 0
+            for match in _BRACES.finditer(text, start):
+                depth += 1 if match[0] == "{" else -1
+                if depth <= 0:
+                    end = match.end() if match[0] == "}" and depth == 0 else 0
+                    break
+        if not end:
+            raise self.source.error(f"a '{word}' is not closed", start, required="';'" if word[6:] else "'}'")
+        self.calibrations.append(self.source.original[start:end])
+        name = _CALIBRATED.match(text, start)
+        if name is not None:
+            self.calibrated.add(name[1])
+        return end
 
     def behind(self, piece: str, end: int) -> str:
         """Go on behind the offset `end`; return what follows it up to a semicolon."""
@@ -279,6 +372,8 @@ class Reader:
         if word in self.handlers:
             self.handlers[word](text, offset)
             return word in ("measure", "reset", "gphase") or (word == "barrier" and text != word)
+        if word == "if" and self.scope.version == 2:
+            return self.conditional(text, offset)
         if word in UNSUPPORTED:
             raise self.scope.unsupported(f"'{word}'", offset)
         if word in self.scope.bit_registers and "=" in text:
@@ -288,15 +383,33 @@ class Reader:
             self.call(text, offset)
         return True
 
+    def conditional(self, text: str, offset: int) -> bool:
+        """Read ``if(register == integer)`` of OpenQASM 2 and the statement behind it."""
+        match = _IF.fullmatch(text)
+        if match is None or _WORD.match(match[3]) is None or match[3].startswith(("if", "gate", "qreg", "creg")):
+            raise self.source.error("this 'if' cannot be read", offset, required="if(register==integer) and a gate")
+        span, single = self.scope.operand(match[1], offset + match.start(1), self.scope.bit_registers)
+        if single or len(span) == 0:
+            raise self.source.error("'if' compares a whole register", offset, required="if(register==integer)")
+        wanted = self.scope.integer(match[2], offset + match.start(2), 0, 2**63)
+        condition = Operation("==", (Bits(tuple(span)), Literal(str(wanted))))
+        self.mark(Mark("if", condition))
+        remember = self.statement(match[3], offset + match.start(3))
+        self.mark(Mark("else"))
+        self.mark(Mark("close"))
+        return remember
+
     def emit(
         self,
         gate: Gate,
         qubits: Sequence[int],
-        parameters: Sequence[float] = (),
+        parameters: Sequence[Parameter] = (),
         matrix: NDArray[np.complex128] | None = None,
         /,
     ) -> None:
         """Append one operation; `matrix` is that of an explicit unitary."""
+        if self.inputs or self.variables:
+            parameters = self.numbers(gate, parameters)
         if matrix is not None:
             self.matrices[len(self.op)] = matrix
         if len(self.op) >= MAX_OPERATIONS:
@@ -304,7 +417,18 @@ class Reader:
         self.op.append(self.table.setdefault(gate, len(self.table)))
         self.width.append(len(qubits))
         self.qubits += qubits
-        self.parameters += parameters
+        self.parameters += parameters  # type: ignore[arg-type]
+
+    def numbers(self, gate: Gate, parameters: Sequence[Parameter]) -> Sequence[float]:
+        """Return the parameters of the next operation as numbers; put what is not known aside."""
+        parameters = [v.constant if isinstance(v, Affine) and not v.terms else v for v in parameters]
+        numbers = [math.nan if isinstance(value, Affine) else value for value in parameters]
+        if any(isinstance(value, Affine) for value in parameters):
+            if gate.name not in GATES:
+                what = f"an angle of '{shorten(gate.name)}' that is not known when compiling"
+                raise self.scope.unsupported(what, self.position)
+            self.unknown[len(self.op)] = tuple(parameters)
+        return numbers
 
     def call(self, text: str, offset: int) -> None:
         """Read the call of a gate."""
@@ -328,13 +452,14 @@ class Reader:
             return
         self.check_total(len(self.op) + len(rows) * target.size, offset)
         try:
-            phase = sum(expand(target, values, row, self.emit) for row in rows)
+            phase: Parameter = sum(expand(target, values, row, self.emit) for row in rows)
         except ExpressionError as problem:
             raise self.scope.at_fault(problem, offset, inside=False) from None
         self.add_phase(phase)
 
-    def add_phase(self, phase: float) -> None:
-        """Add a global phase to the distinct statement at hand."""
+    def add_phase(self, phase: Parameter) -> None:
+        """Add a global phase to the distinct statement at hand; what of it is not known is no one's concern."""
+        phase = phase.constant if isinstance(phase, Affine) else phase
         if phase:
             number = len(self.first) - 1
             self.phases[number] = self.phases.get(number, 0.0) + phase
@@ -349,6 +474,8 @@ class Reader:
         gate = self.gates.get(name)
         if gate is not None:
             return gate
+        if name in self.calibrated:
+            raise self.scope.unsupported(f"calling '{shorten(name)}', which has a 'defcal' and no definition,", offset)
         scope = self.scope
         library = LIBRARY_FILES[scope.version]
         if name in scope.declared:
@@ -402,8 +529,23 @@ class Reader:
         if match is None:
             if self.scope.version == 2:
                 raise self.source.error("a measurement has no bit", offset, required="measure qubits -> bits")
-            raise self.scope.unsupported("a measurement into no bit", offset)
+            at = offset + len("measure")
+            span, _ = self.scope.operand(text[len("measure") :], at, self.scope.qubit_registers)
+            for qubit in span:
+                self.measure_unread(qubit, offset)
+            return
         self.measurement(match[1], offset + match.start(1), match[2], offset + match.start(2))
+
+    def measure_unread(self, qubit: int, offset: int) -> None:
+        """Measure a qubit whose outcome nobody asks for: into a bit of a register of our own."""
+        if qubit not in self.unread:
+            scope = self.scope
+            name = next(name for k in count() if (name := f"unread_outcomes{k or ''}") not in scope.declared)
+            size = scope.n_qubits or scope.n_physical
+            scope.add_register(name, size, offset, quantum=False)
+            self.unread.update((q, bit) for q, bit in enumerate(scope.bit_registers[name]) if q not in self.unread)
+        self.link[len(self.op)] = self.unread[qubit]
+        self.emit(MEASURE, (qubit,))
 
     def assign(self, target: str, target_offset: int, value: str, offset: int) -> None:
         """Read ``bits = measure qubits``."""
@@ -522,6 +664,8 @@ class Reader:
         self.scope.declare(match[1], "an opaque gate", offset + match.start(1))
         if match[1] not in self.natives:
             self.opaque.add(match[1])
+        else:
+            self.gates[match[1]] = self.natives[match[1]]
 
     # ---------------------------------------------------------------- gate definitions
 
@@ -553,7 +697,7 @@ class Reader:
         name = made.name
         known = self.natives.get(name) or GATES.get(name)
         same = known is not None and equals(made, known)
-        if name in self.natives and not same:
+        if name in self.natives and not same and self.strict:
             raise self.source.error(
                 f"the definition of '{shorten(name)}' differs from the device's native gate",
                 start,

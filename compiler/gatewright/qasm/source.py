@@ -19,7 +19,7 @@ MAX_BYTES = 2**28
 # The last alternative meets only a comment that is not closed.
 _SKIP = re.compile(r'"[^"\n]*"|//[^\n]*|/\*(?s:.*?)\*/|/\*')
 _VISIBLE = re.compile(r"[^\n]")
-_CHUNK = 2**20
+_FIRST_CHUNK, _CHUNK = 2**8, 2**20
 
 Error = TypeVar("Error", bound=GatewrightError)
 
@@ -102,7 +102,7 @@ class Source:
         text = text.removeprefix("\ufeff")
         if "\r" in text:
             text = text.replace("\r\n", "\n").replace("\r", "\n")
-        self.text = text
+        self.text = self.original = text
         if "\0" in text:
             raise self.error(
                 "this is not a text", text.index("\0"), required="an OpenQASM program", found="a zero byte"
@@ -120,12 +120,13 @@ class Source:
             raise self.error("a comment is not closed", match.start(), required="'*/' behind it", found="the end")
         return " " * len(found) if "\n" not in found else _VISIBLE.sub(" ", found)
 
-    def pieces(self) -> Iterator[str]:
-        """Yield what lies between semicolons, from the beginning to the end of the text."""
-        text, start = self.text, 0
-        while (end := text.find(";", start + _CHUNK)) >= 0:
+    def pieces(self, start: int = 0) -> Iterator[str]:
+        """Yield what lies between semicolons, from an offset behind one to the end of the text."""
+        text, chunk = self.text, _FIRST_CHUNK
+        while (end := text.find(";", start + chunk)) >= 0:
             yield from text[start:end].split(";")
             start = end + 1
+            chunk = min(4 * chunk, _CHUNK)
         yield from text[start:].split(";")
 
     def locate(self, problem: Error, offset: int) -> Error:

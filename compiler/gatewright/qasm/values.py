@@ -13,11 +13,13 @@ import math
 import operator
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from typing import Any
 
+from gatewright.classical import Bits, Expression, Literal, Name, Operation
 from gatewright.errors import ExpressionError, shorten
 from gatewright.expressions import CONSTANTS
 
-__all__ = ["BUILT_IN", "Array", "Kind", "Value", "binary", "cast", "function", "unary"]
+__all__ = ["BUILT_IN", "Array", "Kind", "Value", "binary", "cast", "expression", "function", "unary"]
 
 #: Width of integers without a stated one, and the widest that may be stated.
 UNSIZED = 64
@@ -38,10 +40,18 @@ class Kind:
 
 @dataclass(frozen=True, slots=True)
 class Value:
-    """A scalar: its type and a Python number. Bits are an integer, bit 0 the least significant."""
+    """A scalar: its type and a Python number. Bits are an integer, bit 0 the least significant.
+
+    What is known only when the program runs has an expression instead of the number: `is_open`.
+    """
 
     kind: Kind
-    data: float
+    data: Any
+
+    @property
+    def is_open(self) -> bool:
+        """Whether its number is not known when compiling."""
+        return isinstance(self.data, Literal | Name | Bits | Operation)
 
     @property
     def is_integer(self) -> bool:
@@ -110,6 +120,13 @@ def cast(value: Value, kind: Kind, *, implicit: bool = False) -> Value:
     """
     data, source = value.data, value.kind
     name = kind.name
+    if "duration" in (name, source.name):
+        if name != source.name or value.is_open:
+            raise ExpressionError(f"{source} cannot become {kind}", required="a duration that is known when compiling")
+        return value
+    if value.is_open:
+        same = source == kind or implicit
+        return Value(kind, data if same else Operation(str(kind), (data,)))
     if kind.width > MAX_WIDTH:
         raise ExpressionError("a type is too wide", required=f"at most {MAX_WIDTH} bits", found=str(kind))
     if name == "bool":
@@ -190,6 +207,10 @@ def binary(op: str, a: Value, b: Value, *, real: bool = False) -> Value:
     >>> binary("/", seven, two).data, binary("/", seven, two, real=True).data
     (3, 3.5)
     """
+    if "duration" in (a.kind.name, b.kind.name):
+        return _duration(op, a, b)
+    if a.is_open or b.is_open:
+        return _open_binary(op, a, b, real=real)
     if op in _COMPARISONS:
         return Value(_BOOL, _COMPARISONS[op](a.data, b.data))
     if op == "&&":
@@ -213,6 +234,55 @@ def binary(op: str, a: Value, b: Value, *, real: bool = False) -> Value:
     if a.is_integer and b.is_integer and not (op == "/" and real):
         return _whole(op, int(a.data), int(b.data), _common(a, b))
     return _real(op, a, b)
+
+
+def _duration(op: str, a: Value, b: Value) -> Value:
+    """Return a sum, a difference, a multiple, a quotient or a comparison of durations."""
+    if a.is_open or b.is_open:
+        raise ExpressionError("a duration depends on the run", required="a duration that is known when compiling")
+    both = a.kind.name == b.kind.name
+    if both and op in _COMPARISONS:
+        return Value(_BOOL, _COMPARISONS[op](a.data, b.data))
+    if not (op in ("+", "-", "/") if both else op == "*" or (op == "/" and a.kind.name == "duration")):
+        raise ExpressionError(f"'{op}' between {a.kind} and {b.kind}", required="durations, or multiples of them")
+    value = _real(op, Value(_FLOAT, a.data), Value(_FLOAT, b.data))
+    return value if both and op == "/" else Value(Kind("duration"), value.data)
+
+
+def expression(value: Value) -> Expression:
+    """Return a value as an expression: a literal where it is known."""
+    data = value.data
+    if value.is_open:
+        return data  # type: ignore[no-any-return]
+    if value.kind.name == "bool":
+        return Literal("true" if data else "false")
+    if value.kind.name == "duration":
+        return Literal(f"{data!r}ns")
+    if value.kind.name == "bit" and value.kind.width:
+        return Literal(f'"{int(data):0{value.kind.width}b}"')
+    return Literal(repr(data) if isinstance(data, float) else str(int(data)))
+
+
+def _open_binary(op: str, a: Value, b: Value, *, real: bool) -> Value:
+    """Return the expression of an operator whose operands are not both known."""
+    left, right = expression(a), expression(b)
+    if op in _COMPARISONS or op in ("&&", "||"):
+        return Value(_BOOL, Operation(op, (left, right)))
+    kind = a.kind
+    if op in _BITWISE or op in ("<<", ">>"):
+        for value in (a, b):
+            if not value.is_integer and value.kind.name != "angle":
+                raise ExpressionError("an integer, bits or a truth value is required", found=str(value.kind))
+        if op in _BITWISE and "bit" not in (a.kind.name, b.kind.name) and a.kind != b.kind:
+            kind = _common(a, b)
+    elif a.is_integer and b.is_integer:
+        kind = _common(a, b)
+        if op == "/" and real:
+            kind, left = _FLOAT, Operation("float", (left,))
+    else:
+        angles = [value.kind for value in (a, b) if value.kind.name == "angle"]
+        kind = angles[0] if len(angles) == 1 or (angles and op in "+-") else _FLOAT
+    return Value(kind, Operation(op, (left, right)))
 
 
 def _shift(op: str, a: Value, places: int) -> Value:
@@ -274,6 +344,12 @@ def _real(op: str, a: Value, b: Value) -> Value:
 
 def unary(op: str, a: Value) -> Value:
     """Return the value of ``-``, ``!`` or ``~``."""
+    if a.is_open:
+        return Value(_BOOL if op == "!" else a.kind, Operation(op, (a.data,)))
+    if a.kind.name == "duration":
+        if op != "-":
+            raise ExpressionError(f"'{op}' of a duration", required="'-'")
+        return Value(a.kind, -a.data)
     if op == "!":
         return Value(_BOOL, not a.data)
     if op == "~":
@@ -321,6 +397,10 @@ def function(name: str, values: Sequence[Value]) -> Value | None:
     if len(values) != wanted:
         raise ExpressionError(f"wrong number of arguments for '{name}'", required=str(wanted), found=str(len(values)))
     a = values[0]
+    if any(value.is_open for value in values):
+        kinds = {"mod": a.kind, "rotl": a.kind, "rotr": a.kind, "popcount": Kind("uint")}
+        whole = Kind("int") if name in ("ceiling", "floor") else _FLOAT
+        return Value(kinds.get(name, whole), Operation(name, tuple(expression(value) for value in values)))
     if name in _REALS:
         try:
             return Value(_FLOAT, _finite(_REALS[name](float(a.data))))

@@ -12,11 +12,16 @@ from collections.abc import Iterable, Mapping, Sequence
 from types import MappingProxyType
 
 import numpy as np
-from numpy.typing import ArrayLike, NDArray
+from numpy.typing import NDArray
 
+from gatewright.angles import angle_texts
 from gatewright.circuit import Circuit
+from gatewright.classical import Bits, bits_text
 from gatewright.errors import CircuitError, QasmError, UnsupportedError, shorten
-from gatewright.gates import BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
+from gatewright.gates import BARRIER, DELAY, GATES, MEASURE, RESET, UNITARY, Gate
+from gatewright.parameters import Affine
+from gatewright.program import Program
+from gatewright.qasm.blocks import block_lines, conditional_lines
 from gatewright.qasm.definitions import same_gate
 from gatewright.qasm.library import BUILT_IN, DEFINITIONS, LIBRARIES, LIBRARY_FILES
 from gatewright.qasm.reader import read
@@ -24,16 +29,13 @@ from gatewright.qasm.scope import RESERVED
 
 __all__ = ["angle_texts", "write"]
 
-_DIVISORS = (*range(1, 65), *(2**k for k in range(7, 21)))
-_LARGEST_FACTOR = 1024
-
 _WORD = re.compile(r"[^\W\d]\w*")
 _NAMES = {2: re.compile(r"[a-z][A-Za-z0-9_]*"), 3: re.compile(r"[A-Za-z_][A-Za-z0-9_]*")}
 _PHASE_STEP = re.compile(r"\bgphase\b[^;]*;\s*")
 
 
 def write(
-    circuit: Circuit,
+    circuit: Circuit | Program,
     *,
     version: int = 3,
     definitions: Mapping[str, str] = MappingProxyType({}),
@@ -43,7 +45,7 @@ def write(
 
     Parameters
     ----------
-    circuit : Circuit
+    circuit : Circuit or Program
         Explicit unitaries of one qubit are written as ``U``; larger ones cannot be written.
     version : {3, 2}
         OpenQASM 2 has no global phase: it is left out there.
@@ -76,13 +78,46 @@ def write(
     """
     if version not in LIBRARY_FILES:
         raise CircuitError("unknown version of OpenQASM", required="2 or 3", found=str(version))
-    defined = _definitions(circuit, version, definitions)
-    qubits, bits = _registers(circuit, version, defined)
-    lines, phase = _statements(circuit, version, _elements(qubits), _elements(bits), [name for name, _ in qubits])
+    flat = circuit if isinstance(circuit, Circuit) else circuit.joined()
+    if flat.inputs and version == 2:
+        raise CircuitError(
+            "OpenQASM 2 has no inputs",
+            required="values for all parameters",
+            found=f"'{flat.inputs[0][0]}'",
+            hint="write OpenQASM 3, or bind the inputs first",
+        )
+    defined = _definitions(flat, version, definitions)
+    qubits, bits = _registers(flat, version, defined)
+    phase = 0.0
+
+    def lines_of(part: Circuit) -> list[str]:
+        nonlocal phase
+        made, phase = _statements(part, version, _elements(qubits), _elements(bits), [name for name, _ in qubits])
+        return made
+
+    if isinstance(circuit, Circuit):
+        lines = lines_of(circuit)
+    else:
+        text_of = block_lines if version == 3 else conditional_lines
+        joined: dict[str, str] = {}
+
+        def bit_text(given: Bits) -> str:
+            text = bits_text(given, bits)
+            # The language joins registers in aliases alone.
+            return text if "++" not in text else joined.setdefault(text, f"joined_bits_{len(joined)}")
+
+        lines = list(text_of(circuit.body, lines_of, bit_text))
+        lines = [f"let {name} = {text};" for text, name in joined.items()] + lines
+        lines = [f"{kind} {name};" for name, kind in circuit.variables] + lines
+        phase = 0.0  # of a run, and never seen
     comments = [line for text in header for line in text.splitlines()]
     head = [line if line.startswith("//") else f"// {line}" for line in comments]
     head += [f"OPENQASM {version}.0;", f'include "{LIBRARY_FILES[version]}";', "", *defined.values()]
-    if defined:
+    head += [f"input {kind} {name};" for name, kind in flat.inputs]
+    if flat.calibrations and version == 2:
+        raise CircuitError("OpenQASM 2 has no 'cal' and 'defcal'", hint="write OpenQASM 3")
+    head += flat.calibrations
+    if defined or flat.inputs or flat.calibrations:
         head.append("")
     quantum, classical = ("qreg {0}[{1}];", "creg {0}[{1}];") if version == 2 else ("qubit[{1}] {0};", "bit[{1}] {0};")
     head += [quantum.format(name, size) for name, size in qubits]
@@ -90,53 +125,6 @@ def write(
     if phase and version == 3:
         head.append(f"gphase({angle_texts([phase])[0]});")
     return "\n".join([*head, *lines, ""])
-
-
-def angle_texts(values: ArrayLike) -> list[str]:
-    """Return the text of each angle: a multiple of pi where that is the same float when read, else a decimal.
-
-    Raises
-    ------
-    CircuitError
-        If an angle is not finite.
-
-    Examples
-    --------
-    >>> angle_texts([0.0, np.pi, -3 * np.pi / 8, 0.1, 1e-7])
-    ['0', 'pi', '-3*pi/8', '0.1', '1.0e-07']
-    """
-    given = np.asarray(values, dtype=np.float64).ravel()
-    if not np.isfinite(given).all():
-        raise CircuitError("an angle is not finite", required="finite angles", found=str(given[~np.isfinite(given)][0]))
-    # Unique by bits, which keeps -0.0 apart from 0.0.
-    bits, inverse = np.unique(given.view(np.int64), return_inverse=True)
-    unique = bits.view(np.float64)
-    texts = list(map(repr, unique.tolist()))
-    size = np.abs(unique)
-    for place in np.flatnonzero((size < 1e-3) | (size > 1e15)).tolist():
-        texts[place] = _decimal(texts[place])
-    rest = np.flatnonzero((size > 0) & (size <= _LARGEST_FACTOR * np.pi))
-    angles, turns = unique[rest], unique[rest] / np.pi
-    for divisor in _DIVISORS:
-        factor = np.rint(turns * divisor)
-        same = factor * np.pi / divisor == angles
-        if not same.any():
-            continue
-        # In lowest terms only: 13*pi/13 is the neighbour of pi, and no better than its decimals.
-        small = (factor != 0) & (np.abs(factor) <= _LARGEST_FACTOR)
-        same[same] = small[same] & (np.gcd(factor[same].astype(np.int64), divisor) == 1)
-        for place, k in zip(rest[same].tolist(), factor[same].astype(int).tolist(), strict=True):
-            number = {1: "pi", -1: "-pi"}.get(k, f"{k}*pi")
-            texts[place] = number if divisor == 1 else f"{number}/{divisor}"
-        rest, angles, turns = rest[~same], angles[~same], turns[~same]
-    return [texts[k] for k in inverse.tolist()]
-
-
-def _decimal(text: str) -> str:
-    """Return a float's repr as both versions spell it: OpenQASM 2 wants a point before an exponent."""
-    if "e" in text and "." not in text:
-        return text.replace("e", ".0e")
-    return "0" if text == "0.0" else text
 
 
 # ---------------------------------------------------------------- gates and their definitions
@@ -200,7 +188,7 @@ def _registers(
     circuit: Circuit, version: int, defined: Iterable[str]
 ) -> tuple[tuple[tuple[str, int], ...], tuple[tuple[str, int], ...]]:
     """Return the registers to declare: those of the circuit where they fit, else ``q`` and ``c``."""
-    taken = {*RESERVED, *LIBRARIES[version], *BUILT_IN[version], *defined}
+    taken = {*RESERVED, *LIBRARIES[version], *BUILT_IN[version], *defined, *(name for name, _ in circuit.inputs)}
     qubits, bits = circuit.qubit_registers, circuit.bit_registers
     names = [name for name, _ in (*qubits, *bits)]
     fit = len(set(names)) == len(names) and all(_NAMES[version].fullmatch(n) and n not in taken for n in names)
@@ -255,6 +243,10 @@ def _statements(
                 places = circuit.qubits_of(row)
                 names = registers if places == whole else [qubits[q] for q in places]
                 lines[row] = f"barrier {', '.join(names)};"
+        elif gate.name == DELAY.name and gate.function is None and version == 3:
+            for row in rows.tolist():
+                time = repr(float(circuit.parameters[circuit.parameter_offsets[row]])).removesuffix(".0")
+                lines[row] = f"delay[{time}ns] {', '.join([qubits[q] for q in circuit.qubits_of(row)])};"
         elif gate.function is not None or gate.name == RESET.name:
             lines[rows] = _calls(circuit, gate, rows, qubits)
         else:
@@ -270,7 +262,16 @@ def _calls(circuit: Circuit, gate: Gate, rows: NDArray[np.int64], names: list[st
     if not gate.n_parameters:
         return [f"{gate.name} {text};" for text in operands]
     values = circuit.parameters[circuit.parameter_offsets[rows][:, None] + np.arange(gate.n_parameters)]
-    angles = angle_texts(values)
+    unknown = circuit.link[rows] >= 0 if circuit.symbolic else np.zeros(len(rows), dtype=bool)
+    angles = angle_texts(np.where(unknown[:, None], 0, values))
+    whole = {name for name, kind in circuit.inputs if kind.partition("[")[0] in ("int", "uint", "bool")}
+    known: dict[int, list[str]] = {}
+    for place in np.flatnonzero(unknown).tolist():
+        link = int(circuit.link[rows[place]])
+        if link not in known:
+            row = circuit.symbolic[link]
+            known[link] = [v.text(whole) if isinstance(v, Affine) else angle_texts([v])[0] for v in row]
+        angles[place * gate.n_parameters : (place + 1) * gate.n_parameters] = known[link]
     if gate.n_parameters > 1:
         steps = [angles[k :: gate.n_parameters] for k in range(gate.n_parameters)]
         angles = [", ".join(parts) for parts in zip(*steps, strict=True)]

@@ -14,7 +14,7 @@ from gatewright.stages.draft import Draft
 from gatewright.synthesis.expansions import expansion
 from gatewright.synthesis.shannon import MAX_QUBITS, shannon_pieces
 
-__all__ = ["expand"]
+__all__ = ["each_alone", "expand"]
 
 
 def expand(draft: Draft) -> Draft:
@@ -50,7 +50,7 @@ def expand(draft: Draft) -> Draft:
         origins += [part.key // room for part in made]
         del rows
     expanded, order = assemble(replace(circuit, matrices=tuple(matrices)), circuit.n_qubits, pieces)
-    step = _claim(circuit, expanded, np.concatenate(origins)[order])
+    step = each_alone(circuit, expanded, np.concatenate(origins)[order])
     return replace(draft, circuit=expanded, expanded=expanded, steps=(*draft.steps, step))
 
 
@@ -82,8 +82,8 @@ def _unitaries(piece: Piece, matrices: list[np.ndarray]) -> list[Piece]:
     ]
 
 
-def _claim(source: Circuit, expanded: Circuit, origin: np.ndarray) -> Step:
-    """One window an operation; nothing moves and nothing is carried over."""
+def each_alone(source: Circuit, expanded: Circuit, origin: np.ndarray) -> Step:
+    """Return the claim with one window for each operation of the source; nothing moves, nothing is carried over."""
     place = np.arange(source.n_qubits, dtype=np.int32)
     seams = np.zeros((len(source.qubits), 4))
     seams[:, 0] = 1

@@ -1,0 +1,199 @@
+"""Judge programs with classical control: every straight-line circuit by its own proof, and the joins between them.
+
+Source and output have the same shape: the same conditions and assignments in the same places. Whatever the measured
+bits are, a run passes the same circuits on both sides; on each side its effect is the product of the circuits' (a
+Kraus operator for the outcomes), and distances add along the run. What has to hold beside the proofs of the circuits
+is that each begins where the one before left the qubits: where branches meet, all that go on have left them on the
+same places; a loop's body, and whatever leaves or repeats its round, ends where the body began; and a program that
+ends early ends where every run ends. Source qubits alone have to agree: idle ones hold nothing of the source.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import replace
+from typing import TYPE_CHECKING
+
+from gatewright.errors import ProofError
+from gatewright.program import Assign, Block, If, Leave, Program, Statement, While
+from gatewright.proof.checker import check_proof
+from gatewright.proof.windows import Proof, Verdict
+
+if TYPE_CHECKING:
+    from gatewright.devices import Device
+
+__all__ = ["check_program"]
+
+Places = tuple[int, ...]
+
+
+def check_program(
+    source: Program,
+    output: Program,
+    proofs: Sequence[Proof],
+    *,
+    device: Device | None = None,
+    tolerance: float = 1e-9,
+) -> Verdict:
+    """Check the proofs of a program's circuits and the joins between them.
+
+    Parameters
+    ----------
+    source, output : Program
+    proofs : sequence of Proof
+        One for each circuit, in the order of the text.
+    device, tolerance
+        As for `gatewright.proof.check_proof`.
+
+    Returns
+    -------
+    Verdict
+        ``error_bound`` holds for every run that passes each loop once at most; ``round_bound`` is what each further
+        round adds at most.
+
+    Raises
+    ------
+    ProofError
+        Naming the part of the program.
+    """
+    for what in ("n_bits", "variables"):
+        mine, other = getattr(source, what), getattr(output, what)
+        if mine != other:
+            raise ProofError("not equal: the classical variables differ", required=str(mine), found=str(other))
+    return _Walk(proofs, device, tolerance).program(source, output)
+
+
+class _Walk:
+    """One walk through two programs side by side."""
+
+    def __init__(self, proofs: Sequence[Proof], device: Device | None, tolerance: float) -> None:
+        self.proofs = list(proofs)
+        self.device = device
+        self.tolerance = tolerance
+        self.parts: list[Verdict] = []
+        self.round_bound = 0.0
+        self.early: Places | None = None  # where the qubits are when the program ends before its end
+
+    def program(self, source: Program, output: Program) -> Verdict:
+        if len(self.proofs) != sum(1 for _ in source.circuits()):
+            raise ProofError(
+                "the proof does not fit the program",
+                required=f"{sum(1 for _ in source.circuits())} circuits",
+                found=str(len(self.proofs)),
+            )
+        begin: list[Places] = []
+        final, bound = self.block(source.body, output.body, None, None, begin)
+        if final is None:
+            final = self.early
+        assert final is not None
+        if self.early is not None and self.early != final:
+            raise ProofError("not equal: a run that ends early leaves the qubits on other places", found=_listed(final))
+        worst = max(self.parts, key=lambda part: part.worst_distance)
+        return replace(
+            worst,
+            error_bound=bound,
+            windows=sum(part.windows for part in self.parts),
+            initial=begin[0],
+            final=final,
+            method=f"{worst.method}; {len(self.parts)} circuits and the joins between them",
+            round_bound=self.round_bound,
+        )
+
+    def block(
+        self, source: Block, output: Block, place: Places | None, loop: Places | None, begin: list[Places]
+    ) -> tuple[Places | None, float]:
+        """Check a block that begins with the qubits on `place`; return where it leaves them, and its bound."""
+        if len(source.statements) != len(output.statements):
+            raise ProofError(
+                "not equal: the output has other classical statements",
+                required=f"{len(source.statements)} in this block",
+                found=str(len(output.statements)),
+            )
+        total = 0.0
+        gone = False
+        circuits = zip(source.circuits, output.circuits, strict=True)
+        pairs = zip(source.statements, output.statements, strict=True)
+        for meant, made in circuits:
+            number = len(self.parts)
+            try:
+                part = check_proof(meant, made, self.proofs[number], device=self.device, tolerance=self.tolerance)
+            except ProofError as problem:
+                problem.what = f"{problem.what} (circuit {number} of the program)"
+                raise
+            if place is not None and part.initial != place:
+                raise ProofError(
+                    f"not equal: circuit {number} of the program does not begin where its qubits are",
+                    required=_listed(place),
+                    found=_listed(part.initial),
+                )
+            if not begin:
+                begin.append(part.initial)
+            self.parts.append(part)
+            total += part.error_bound
+            place = part.final
+            statement, other = next(pairs, (None, None))
+            if statement is None or other is None:
+                break
+            # Behind a statement that never goes on, what follows is never reached; it is checked all the same.
+            there, more = self.statement(statement, other, place, loop)
+            gone |= there is None
+            place = place if there is None else there
+            total += more
+        return (None if gone else place), total
+
+    def statement(
+        self, source: Statement, output: Statement, place: Places, loop: Places | None
+    ) -> tuple[Places | None, float]:
+        match source, output:
+            case Assign(), Assign() if source == output:
+                return place, 0.0
+            case Leave(word), Leave(other) if word == other:
+                self.leave(word, place, loop)
+                return None, 0.0
+            case If(condition, then, otherwise), If(other, then_made, otherwise_made) if condition == other:
+                first, a = self.block(then, then_made, place, loop, [place])
+                second, b = self.block(otherwise, otherwise_made, place, loop, [place])
+                if first is not None and second is not None and first != second:
+                    raise ProofError(
+                        "not equal: the branches of an 'if' leave the qubits on different places",
+                        required=_listed(first),
+                        found=_listed(second),
+                    )
+                return (first if first is not None else second), max(a, b)
+            case While(condition, body), While(other, made) if condition == other:
+                end, bound = self.block(body, made, place, place, [place])
+                if end is not None and end != place:
+                    raise ProofError(
+                        "not equal: a round of a loop does not leave the qubits where it found them",
+                        required=_listed(place),
+                        found=_listed(end),
+                    )
+                self.round_bound += bound
+                return place, bound
+        raise ProofError(
+            "not equal: a classical statement of the output differs from the source",
+            required=_shown(source),
+            found=_shown(output),
+        )
+
+    def leave(self, word: str, place: Places, loop: Places | None) -> None:
+        wanted = self.early if word == "end" else loop
+        if word == "end" and self.early is None:
+            self.early = wanted = place
+        if wanted != place:
+            raise ProofError(
+                f"not equal: a '{word}' leaves the qubits on other places than the rest",
+                required=_listed(wanted or ()),
+                found=_listed(place),
+            )
+
+
+def _listed(places: Places) -> str:
+    return "qubits on " + ", ".join(map(str, places[:16]))
+
+
+def _shown(statement: Statement) -> str:
+    match statement:
+        case If(condition) | While(condition):
+            return f"{type(statement).__name__.lower()} {condition}"[:120]
+    return str(statement)[:120]
