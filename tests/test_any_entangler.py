@@ -27,7 +27,7 @@ POINTS = {
     "its inverse": (Q / 2, Q / 2, -Q / 2),
     "fSim": (Q, Q, Q / 6),
     "over-rotated CZ": (Q * 0.97, 0, 0),
-    "all but CX": (Q, 1e-5, 0),
+    "nearly CX": (Q, 1e-3, 0),
     "generic": (0.5, 0.31, -0.2),
 }
 

@@ -50,6 +50,9 @@ def spread(state: np.ndarray, places: tuple[int, ...], n: int) -> np.ndarray:
 
 def agree(source: Circuit | Program, output: Circuit | Program, initial: Any, final: Any, seed: int) -> float:
     """Run both on the same outcomes; compare bits and variables, and return how far apart the states are."""
+    rng = np.random.default_rng(seed)
+    values = {name: float(rng.uniform(-3, 3)) for name, _ in source.inputs}
+    source, output = source.bind(values), output.bind(values)
     start = haar_unitary(2**source.n_qubits, rng=seed)[:, 0]
     meant = run(source, start, seed)
     made = run(output, spread(start, initial, output.n_qubits), seed)
