@@ -218,11 +218,22 @@ def _invariants(matrices: Array) -> NDArray[np.float64]:
 
 
 def factors_of(matrix: Array) -> tuple[Array, Array] | None:
-    """Return the two one-qubit unitaries whose product a matrix is, or None."""
+    """Return the two one-qubit unitaries whose product a 4 × 4 unitary is, up to phase, or None."""
     realigned = matrix.reshape(2, 2, 2, 2).transpose(0, 2, 1, 3).reshape(4, 4)
-    i, j = divmod(int(np.argmax(np.abs(realigned))), 4)
-    a, b = realigned[:, j], realigned[i] / realigned[i, j]
+    a = realigned[:, int(np.argmax(np.abs(realigned))) % 4]
+    # Alternating least squares: from a column this close the factors are the nearest ones, so that along a chain of
+    # blocks rounding does not grow, as it does if a column and a row are taken as they are.
+    b = (a.conj() @ realigned) / np.vdot(a, a)
+    a = (realigned @ b.conj()) / np.vdot(b, b)
     if not np.abs(realigned - a[:, None] * b).max() < LOOSE:
         return None
-    b = b * (np.sqrt(2.0) / np.linalg.norm(b))
-    return (a * (np.sqrt(2.0) / np.linalg.norm(a))).reshape(2, 2), b.reshape(2, 2)
+    return _unitary(a), _unitary(b)
+
+
+def _unitary(flat: Array) -> Array:
+    """Return the nearest matrix of SU(2), up to sign, to four entries that are close to a multiple of one."""
+    p, q, r, s = flat / np.sqrt(flat[0] * flat[3] - flat[1] * flat[2])
+    a, b = (p + s.conjugate()) / 2, (r - q.conjugate()) / 2
+    size = np.sqrt(abs(a) ** 2 + abs(b) ** 2)
+    a, b = a / size, b / size
+    return np.array([[a, -b.conjugate()], [b, a.conjugate()]])

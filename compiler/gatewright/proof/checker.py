@@ -209,6 +209,7 @@ def _check_shapes(source: Circuit, output: Circuit, step: Step) -> None:
         "entry": (step.entry, (slots,)),
         "exit": (step.exit, (slots,)),
         "seams": (step.seams, (slots, 4)),
+        "claims": (step.claims, (step.windows,)),
     }
     for name, (array, shape) in expected.items():
         if array.shape != shape:
@@ -230,6 +231,8 @@ def _check_shapes(source: Circuit, output: Circuit, step: Step) -> None:
     for name, array in (("initial", step.initial), ("final", step.final)):
         if not np.array_equal(np.sort(array), np.arange(n)):
             _refuse(f"'{name}' is not a placement", required=f"each of 0 to {n - 1} once")
+    if not ((step.claims >= 0) & (step.claims < len(CLAIM_KINDS))).all():
+        _refuse("a claim is of no known kind", required=f"0 to {len(CLAIM_KINDS) - 1}")
     norms = np.linalg.norm(step.seams, axis=1)
     if not (np.abs(norms - 1) < 1e-6).all():
         _refuse("a seam is not a unit quaternion", required="norm 1")

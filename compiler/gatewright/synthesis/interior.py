@@ -89,16 +89,6 @@ def inner_gates(points: Vector, sequences: Vector, which: NDArray[np.int64]) -> 
         apart = np.abs(targets[left_over, None, :] - targets[None, helpers, :]).sum(axis=2)
         apart[row[left_over, None] != row[None, helpers]] += 10.0
         nearest = helpers[np.argsort(apart, axis=1)[:, :_NEIGHBOURS]]
-<<<<<<< HEAD
-        tried, error = np.empty((len(rest), k + 1, 2, 4)), np.empty(len(rest))
-        refine(targets[rest], row[rest], phases, found[nearest, :k], free, nearest.shape[1], _STEPS, tried, error)
-        better = error < residual[rest]
-        found[rest[better]], residual[rest[better]] = tried[better], error[better]
-    for n in np.flatnonzero(~(residual <= _ACCEPTED)).tolist() if k > 1 else ():
-        other, left_over = _on_facets(points[n], sequences[row[n]], targets[[n]], phases[[row[n]]])
-        if left_over < residual[n]:
-            found[n], residual[n] = other, left_over
-=======
         tried, error = np.empty((len(left_over), k + 1, 2, 4)), np.empty(len(left_over))
         refine(
             targets[left_over], row[left_over], phases, found[nearest, :k], free, nearest.shape[1], _STEPS, tried, error
@@ -109,7 +99,6 @@ def inner_gates(points: Vector, sequences: Vector, which: NDArray[np.int64]) -> 
         other, rest = _on_facets(points[n], sequences[row[n]], targets[[n]], phases[[row[n]]])
         if rest < residual[n]:
             found[n], residual[n] = other, rest
->>>>>>> 0b4017d73fa82357e5e06b26df615333d1218d91
     return found[:, : k - 1], _left(found, targets, phases[row]), found[:, k - 1], residual
 
 
