@@ -244,13 +244,16 @@ def _check_program(options: argparse.Namespace, source: Source, output: Source, 
             "not equal: one of the two has classical control and the other has not",
             found=f"source {source.circuit!r}, output {output.circuit!r}",
         )
-    if not options.proof:
-        raise InputError(
-            "programs with classical control are checked with their proof only", required="--proof FILE, as compiled"
-        )
-    proofs = read_program_proof(options.proof)
+    proofs = read_program_proof(options.proof) if options.proof else None
     _prepare()
-    verdict = check_program(source.circuit, output.circuit, proofs, device=device, tolerance=options.tolerance)
+    verdict = check_program(
+        source.circuit,
+        output.circuit,
+        proofs,
+        device=device,
+        initial=output.qubit_map.initial if output.qubit_map else None,
+        tolerance=options.tolerance,
+    )
     return _tell(options, verdict, legality_checked=device is not None)
 
 
