@@ -7,7 +7,6 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
 from typing import Any, overload
 
-import numpy as np
 from numpy.typing import ArrayLike
 
 from gatewright.branches import combined_costs, thread_program
@@ -16,6 +15,7 @@ from gatewright.cost import Bound, Costs, check_budget, count_costs, require_bud
 from gatewright.devices import Device
 from gatewright.errors import InputError, ProofError, nearest_name
 from gatewright.linalg import checked_unitary
+from gatewright.lower_bounds import lower_bound
 from gatewright.program import Program
 from gatewright.proof import Fingerprints, Proof, Verdict, check_legal, check_program, check_proof
 from gatewright.proof.dense import BINDINGS, dense_distance, dense_work
@@ -29,15 +29,14 @@ from gatewright.stages.place import place
 from gatewright.stages.restore import restore
 from gatewright.stages.route import route
 from gatewright.stages.schedule import schedule
+from gatewright.stages.settle import settle
 from gatewright.stages.synthesise import synthesise
-from gatewright.stages.windows import TWO, fuse_circuit, window_unitaries
 from gatewright.synthesis.native import NativeSet, native_set
-from gatewright.synthesis.toolkit import least_mixed_uses
 
 __all__ = ["CHAIN", "EFFORTS", "Result", "check", "compile", "count"]
 
 #: The stages in order. A caller may pass a chain of their own to `compile`; what it makes is proven all the same.
-CHAIN: tuple[Stage, ...] = (parametrise, expand, place, route, restore, fuse, synthesise, schedule)
+CHAIN: tuple[Stage, ...] = (parametrise, expand, place, route, restore, fuse, synthesise, schedule, settle)
 
 EFFORTS = ("quick", "standard", "deep")
 
@@ -171,7 +170,7 @@ def compile(  # noqa: A001
     clock.start("plan")
     native = native_set(device.gate_set, tolerance=tolerance)
     first = asked if isinstance(asked, Circuit) else next(asked.circuits())
-    draft = Draft(circuit=first, device=device, settings=settings, native=native, expanded=first)
+    draft = Draft(circuit=first, device=device, settings=settings, native=native, expanded=first, source=first)
     given: dict[str, Any] = {"device": device, "seed": seed, "tolerance": tolerance, "effort": effort, "moved": moved}
     if isinstance(asked, Program):
         return _compile_program(asked, draft, chain, clock, budget or {}, given)
@@ -183,7 +182,9 @@ def compile(  # noqa: A001
     verdict = proven(asked, draft.circuit, proof, device=device, tolerance=tolerance)
     clock.start("count")
     costs = count_costs(draft.circuit, device, starts=draft.starts, swaps_inserted=draft.swaps)
-    bound = _lower_bound(asked, draft.expanded, native, tolerance, stays=verdict.initial == verdict.final)
+    clock.start("bound")
+    stays = verdict.initial == verdict.final
+    bound = lower_bound(draft, asked, stays=stays, placement=settings.placement)
     clock.stop()
     return Result(
         circuit=draft.circuit,
@@ -241,7 +242,8 @@ def _compile_program(
     for circuit, part in zip(source.circuits(), threaded.drafts, strict=True):
         costs.append(count_costs(part.circuit, device, starts=part.starts, swaps_inserted=part.swaps))
         stays = bool((part.initial == part.final)[: source.n_qubits].all())
-        bounds.append(_lower_bound(circuit, part.expanded, draft.native, tolerance, stays=stays))
+        # Any circuit may begin where the one before it ends, wherever that is.
+        bounds.append(lower_bound(part, circuit, stays=stays, placement=None))
     total = combined_costs(threaded.program, costs)
     how = max((bound.how for bound in bounds), key=len) + "; summed over the circuits of the program"
     clock.stop()
@@ -251,7 +253,7 @@ def _compile_program(
         proofs=proofs,
         verdict=verdict,
         costs=total,
-        lower_bound=Bound(sum(bound.two_qubit_gates for bound in bounds), how),
+        lower_bound=Bound(sum(b.two_qubit_gates for b in bounds), how, sum(b.swaps for b in bounds)),
         budget=check_budget(total, budget),
         seconds=clock.seconds,
         **given,
@@ -348,32 +350,6 @@ def _second_opinion(source: Circuit, output: Circuit, verdict: Verdict) -> Verdi
     if source.symbolic:
         how += f", at {BINDINGS} random values of the unknown parameters"
     return replace(verdict, method=verdict.method + how)
-
-
-def _lower_bound(circuit: Circuit, expanded: Circuit, native: NativeSet, tolerance: float, *, stays: bool) -> Bound:
-    """Sum the least number of entanglers over the input's own windows."""
-    fused = fuse_circuit(expanded)
-    if not native.entanglers or not np.count_nonzero(fused.kind == TWO):
-        return Bound(0, "no two-qubit windows in the input")
-    _, two = window_unitaries(expanded, fused)
-    tools = [tool.entangler for tool in native.straight]
-    counts = least_mixed_uses(two, tools, tolerance=tolerance)
-    names = " or ".join(f"'{tool.gate.name}'" for tool in native.straight)
-    of_what = "the input" if expanded is circuit else "the input, written in gates of one and two qubits"
-    how = (
-        f"sum over the two-qubit windows of {of_what}, of the exact least number of {names} that "
-        "each needs on its own, with free one-qubit gates and all-to-all connectivity"
-    )
-    if not stays:
-        counts = np.minimum(counts, least_mixed_uses(two, tools, tolerance=tolerance, exchanged=True))
-        how += ", its two wires exchanged where that needs fewer"
-    if len(two) == 1 and stays and len(tools) == 1 and int(counts[0]):
-        how += f"; here {tools[0].reason(two[0], tolerance=tolerance)}"
-    how += (
-        "; a bound for circuits that keep this partition into windows, not the optimum of the whole circuit: "
-        "larger windows may need fewer"
-    )
-    return Bound(int(counts.sum()), how)
 
 
 class _Clock:

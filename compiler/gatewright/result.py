@@ -54,6 +54,7 @@ class _Compiled:
             "tolerance": self.tolerance,
             "device": self.device.name,
             "gate_set": self.device.gate_set.name,
+            "measured_gates": self.device.gate_set.measured,
             "input": {
                 "qubits": source.n_qubits,
                 "operations": len(source),

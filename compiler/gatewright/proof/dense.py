@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit, apply_operations
 from gatewright.errors import CircuitError, ProofError
-from gatewright.gates import BARRIER, MEASURE
+from gatewright.gates import BARRIER, DELAY, MEASURE
 from gatewright.linalg import dagger
 from gatewright.proof.products import multiplication, operation_matrices
 
@@ -39,7 +39,7 @@ BINDINGS = 3
 
 def touched_qubits(output: Circuit, initial: Sequence[int], final: Sequence[int]) -> list[int]:
     """Return the output's qubits that an operation or a source qubit touches, in order."""
-    acting = np.repeat(~output.is_named(BARRIER.name), output.widths)
+    acting = np.repeat(~(output.is_named(BARRIER.name) | output.is_named(DELAY.name)), output.widths)
     return sorted({*output.qubits[acting].tolist(), *initial, *final})
 
 
@@ -171,7 +171,7 @@ def _split(circuit: Circuit) -> tuple[list[int], list[tuple[int, int]]]:
     is_unitary = circuit.is_unitary.tolist()
     for k in range(len(circuit)):
         name = circuit.table[circuit.op[k]].name
-        if name == BARRIER.name:
+        if name in (BARRIER.name, DELAY.name):
             continue
         qubits = circuit.qubits_of(k)
         again = done.intersection(qubits)

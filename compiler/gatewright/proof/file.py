@@ -27,7 +27,7 @@ from numpy.typing import NDArray
 from gatewright._version import __version__
 from gatewright.circuit import Circuit
 from gatewright.errors import InputError, ProofFileError, shorten
-from gatewright.gates import BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
+from gatewright.gates import BARRIER, DELAY, GATES, MEASURE, RESET, UNITARY, Gate
 from gatewright.parameters import Affine, Parameter
 from gatewright.proof.claims import CLAIM_KINDS
 from gatewright.proof.fingerprints import Fingerprints
@@ -60,7 +60,7 @@ _CIRCUIT = {
 }
 _GROWING = ("offsets", "parameter_offsets")
 _SEAMS = ("code", "steps", "small", "odd")
-_SPECIAL = {gate.name: gate for gate in (MEASURE, RESET, BARRIER, UNITARY)}
+_SPECIAL = {gate.name: gate for gate in (MEASURE, RESET, BARRIER, DELAY, UNITARY)}
 
 
 def encode_proof(proof: Proof) -> bytes:

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
 from gatewright.errors import ProofError
-from gatewright.gates import BARRIER, MEASURE, RESET
+from gatewright.gates import BARRIER, DELAY, MEASURE, RESET
 from gatewright.parameters import Affine
 
 if TYPE_CHECKING:
@@ -42,6 +42,12 @@ def check_legal(circuit: Circuit, device: Device) -> None:
     for k, gate in enumerate(circuit.table):
         rows = np.flatnonzero(circuit.op == k)
         if not len(rows) or gate.name == BARRIER.name:
+            continue
+        if gate.name == DELAY.name and gate.function is None:
+            values = circuit.parameters[circuit.parameter_offsets[rows]]
+            wrong = np.flatnonzero(~(np.isfinite(values) & (values >= 0)))
+            if len(wrong):
+                _illegal(circuit, int(rows[wrong[0]]), "a delay has no duration from 0 up")
             continue
         width = int(circuit.widths[rows[0]])
         qubits = circuit.qubits[circuit.offsets[rows][:, None] + np.arange(width)]
