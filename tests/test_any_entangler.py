@@ -195,6 +195,21 @@ def test_several_entanglers_and_directions_in_one_circuit():
     assert result.verdict.error_bound < 1e-11
 
 
+def test_what_is_preferred_decides_between_entanglers():
+    native = gate_set(
+        {"long": canonical_matrix((Q, Q / 2, 0)), "quick": CZ},
+        long={"error": 0.02, "duration_ns": 500},
+        quick={"error": 0.001, "duration_ns": 50},
+    )
+    device = Device.from_graph([(0, 1)], native)
+    target = haar_unitary(4, rng=1)
+    uses = {prefer: gw.compile(target, device, prefer=prefer).costs for prefer in ("uses", "fidelity", "duration")}
+    assert uses["uses"].two_qubit_gates == 2
+    assert uses["fidelity"].by_gate["quick"] == uses["duration"].by_gate["quick"] == 3
+    with pytest.raises(gw.errors.InputError, match="unknown preference 'speed'"):
+        gw.compile(target, device, prefer="speed")
+
+
 @pytest.mark.parametrize(
     ("matrix", "message"),
     [

@@ -53,10 +53,10 @@ def _say(line: str) -> None:
     print(line, file=sys.stderr, flush=True)
 
 
-def _prepare() -> None:
+def _prepare(device: Device | None = None) -> None:
     from gatewright.kernels import load_kernels
 
-    load_kernels(lambda line: _say(f"gatewright: {line}"))
+    load_kernels(lambda line: _say(f"gatewright: {line}"), device)
 
 
 @contextmanager
@@ -137,7 +137,7 @@ def _compiled(options: argparse.Namespace) -> Result | ProgramResult:
     device.require_room(source.circuit.n_qubits)
     given = source.circuit.bind(dict(options.set)) if options.set else source.circuit
     # What is wrong with the input has been said before this: the kernels take longer to load than all of that.
-    _prepare()
+    _prepare(device)
     from gatewright.pipeline import compile as compile_source
 
     with _progress() as progress:
@@ -147,6 +147,7 @@ def _compiled(options: argparse.Namespace) -> Result | ProgramResult:
             seed=options.seed,
             tolerance=options.tolerance,
             effort=options.effort,
+            prefer=options.prefer,
             placement=options.placement,
             budget=dict(options.budget),
             progress=progress,
