@@ -15,7 +15,7 @@ from typing import Any
 
 __all__ = ["load_kernels"]
 
-_OTHERS = "import gc; gc.disable(); import gatewright.mapping._kernels, gatewright.stages.windows"
+_OTHERS = "import gc; gc.disable(); import gatewright.mapping.search, gatewright.stages.windows"
 
 
 def load_kernels(tell: Callable[[str], None]) -> None:
@@ -49,6 +49,7 @@ def load_kernels(tell: Callable[[str], None]) -> None:
     gc.disable()
     try:
         import gatewright.cost
+        import gatewright.mapping._beam
         import gatewright.stages._kernels
         import gatewright.synthesis._kernels
 

@@ -24,6 +24,7 @@ from gatewright.circuit import Circuit
 from gatewright.errors import ProofFileError, shorten
 from gatewright.gates import BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
 from gatewright.parameters import Affine, Parameter
+from gatewright.proof.reorder import Reorder
 from gatewright.proof.windows import Proof, Step
 
 __all__ = ["FORMAT", "ProofFile", "decode_proof", "encode_proof", "fingerprint", "read_proof"]
@@ -129,6 +130,11 @@ def encode_proof(proof: Proof, source: Circuit, output: Circuit) -> bytes:
     arrays: dict[str, NDArray[Any]] = {}
     steps: list[dict[str, Any]] = []
     for number, step in enumerate(proof.steps):
+        if isinstance(step, Reorder):
+            arrays[f"{number}.window"] = np.asarray(step.window, dtype=np.int32)
+            arrays[f"{number}.rank"] = np.asarray(step.rank, dtype=np.int32)
+            steps.append({"reorder": True})
+            continue
         for name, dtype in _STEP.items():
             arrays[f"{number}.{name}"] = np.asarray(getattr(step, name), dtype=dtype)
         steps.append({"output": _encode_circuit(step.output, f"{number}.output", arrays)})
@@ -243,8 +249,13 @@ def _array(archive: zipfile.ZipFile, members: dict[str, zipfile.ZipInfo], name: 
 
 
 def _decode(header: dict[str, Any], arrays: dict[str, NDArray[Any]]) -> ProofFile:
-    steps = []
+    steps: list[Step | Reorder] = []
     for number, entry in enumerate(header["steps"]):
+        if entry.get("reorder") is True:
+            claim = {name: arrays[f"{number}.{name}"].astype(np.int32) for name in ("window", "rank")}
+            _require_dimensions(claim, {})
+            steps.append(Reorder(**claim))
+            continue
         columns = {name: arrays[f"{number}.{name}"].astype(dtype) for name, dtype in _STEP.items()}
         _require_dimensions(columns, {"seams": 2})
         if len(columns["offsets"]) < 1 or columns["offsets"][-1] != len(columns["wires"]):

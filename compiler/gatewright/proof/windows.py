@@ -20,6 +20,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
+from gatewright.proof.reorder import Reorder
 
 __all__ = ["Proof", "Step", "Verdict"]
 
@@ -69,7 +70,7 @@ class Step:
 class Proof:
     """The steps from source to output, in order; each starts where the one before ended."""
 
-    steps: tuple[Step, ...]
+    steps: tuple[Step | Reorder, ...]
 
     @property
     def windows(self) -> int:
