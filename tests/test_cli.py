@@ -153,7 +153,9 @@ def test_count_and_budgets(examples: Path, capsys: pytest.CaptureFixture[str]) -
     common = ("count", examples / "ghz-9.qasm", "--device", examples / DEVICE)
     code, printed, _ = run(capsys, *common)
     assert code == 0
-    assert re.search(r"two-qubit gates +\d+ +at least 8", printed)
+    # The tree of its CNOTs does not embed in the grid: eight of them, and one more for a swap.
+    assert re.search(r"two-qubit gates +\d+ +at least 9", printed)
+    assert re.search(r"swaps inserted +\d+ +at least 1 ", printed)
     code, printed, error = run(capsys, *common, "--budget", "two_qubit_gates=7", "--json", "-")
     assert code == 4
     assert json.loads(printed)["budget"][0]["met"] is False
@@ -194,6 +196,30 @@ def test_describe(examples: Path, tmp_path: Path, capsys: pytest.CaptureFixture[
         code, printed, _ = run(capsys, "describe", thing)
         assert code == 0
         assert printed
+
+
+def test_describe_draws_the_chamber_and_counts_targets(
+    examples: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    target, picture = examples / "haar-2.npy", tmp_path / "chamber.svg"
+    swap = tmp_path / "swap.npy"
+    np.save(swap, np.eye(4)[[0, 2, 1, 3]])
+    common = ("describe", "sqrt-iswap-virtual-z", "--target", target, "--target", swap)
+    code, printed, _ = run(capsys, *common, "--json", "-", "--chamber", picture)
+    facts = json.loads(printed)
+    assert code == 0
+    assert facts["targets"][str(swap)]["uses"] == 3 and facts["targets"][str(target)]["uses"] == 2
+    assert "haar-2.npy" in picture.read_text() and picture.read_text().startswith("<svg")
+    code, printed, _ = run(capsys, "describe", examples / "chain-11.toml", "--chamber", "-")
+    assert code == 0 and printed.startswith("<svg") and printed.endswith("</svg>\n")
+    assert run(capsys, "describe", target, "--chamber", picture)[0] == 0
+    picture.unlink()
+    swap.unlink()
+    refused(capsys, tmp_path, "required: a gate set or a device", "describe", target, "--target", target)
+    wide = examples / "haar-3.npy"
+    refused(capsys, tmp_path, "2 qubits", "describe", "cz-virtual-z", "--target", wide, "--chamber", picture)
+    refused(capsys, tmp_path, "2 qubits", "describe", wide, "--chamber", picture)
+    refused(capsys, tmp_path, "same destination", "describe", target, "--chamber", picture, "--json", picture)
 
 
 def test_help_and_usage(capsys: pytest.CaptureFixture[str]) -> None:

@@ -14,7 +14,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from openqasm3 import ast
-from scipy.linalg import expm
+from scipy.linalg import expm, norm, polar
 from scipy.spatial.transform import Rotation
 
 from gatewright.devices.gateset import (
@@ -67,6 +67,17 @@ LITERATURE: dict[str, Callable[..., Any]] = {
     "iswap": lambda: 0.25j * np.pi * (np.kron(X, X) + np.kron(Y, Y)),
     "rxx": lambda t: -0.5j * t * np.kron(X, X),
     "zx90": lambda: -0.25j * np.pi * np.kron(Z, X),
+    "h": lambda: -0.5j * np.pi * (X + Z) / np.sqrt(2),
+    "rn": lambda t: -0.5j * t * (np.sin(np.pi / 3) * X + np.cos(np.pi / 3) * Z),
+    "cp": lambda t: 0.25j * t * np.kron(ONE - Z, ONE - Z),
+    "csx": lambda: 0.125j * np.pi * np.kron(ONE - Z, ONE - X),
+    "half_iswap": lambda: 0.125j * np.pi * (np.kron(X, X) + np.kron(Y, Y)),
+    # SWAP is -1 on the singlet, its root i: Loss & DiVincenzo, PRA 57, 120 (1998).
+    "half_swap": lambda: -0.125j * np.pi * (np.kron(X, X) + np.kron(Y, Y) + np.kron(Z, Z)),
+    # Zhang, Vala, Sastry & Whaley, PRL 93, 020502 (2004).
+    "b": lambda: 0.25j * np.pi * np.kron(X, X) + 0.125j * np.pi * np.kron(Y, Y),
+    # fSim(80 degrees, 30 degrees): Foxen et al., PRL 125, 120504 (2020).
+    "fsim": lambda: -2j / 9 * np.pi * (np.kron(X, X) + np.kron(Y, Y)) - 1j / 24 * np.pi * np.kron(ONE - Z, ONE - Z),
 }
 
 
@@ -97,11 +108,12 @@ def test_shipped_sets_are_unitary_sufficient_and_complete(shipped: GateSet) -> N
         assert (native.duration_ns == 0) == native.virtual
         assert native.definition or name in STANDARD_LIBRARY
         pair = native.gate.n_qubits == 2
-        assert native.symmetric == (name in {"cz", "iswap", "rxx"}) or not pair
+        either_way = {"cz", "iswap", "rxx", "cp", "half_iswap", "half_swap", "b", "fsim"}
+        assert native.symmetric == (name in either_way) or not pair
 
 
 def test_names_are_those_of_the_files() -> None:
-    assert len(shipped_gate_sets()) >= 6
+    assert len(shipped_gate_sets()) >= 15
     for name in shipped_gate_sets():
         assert read_gate_set(name).name == name
         path = gate_set_folder() / f"{name}.toml"
@@ -126,9 +138,13 @@ def value_of(node: ast.Expression, names: dict[str, float]) -> float:
         return {**names, "pi": math.pi}[node.name]
     if isinstance(node, (ast.IntegerLiteral, ast.FloatLiteral)):
         return node.value
+    if isinstance(node, ast.UnaryExpression):
+        assert node.op.name == "-"
+        return -value_of(node.expression, names)
     assert isinstance(node, ast.BinaryExpression)
     left, right = value_of(node.lhs, names), value_of(node.rhs, names)
-    return {"+": left + right, "-": left - right, "/": left / right if right else math.nan}[node.op.name]
+    quotient = left / right if right else math.nan
+    return {"+": left + right, "-": left - right, "*": left * right, "/": quotient}[node.op.name]
 
 
 def defined_matrix(text: str, point: list[float]) -> Any:
@@ -239,6 +255,48 @@ def test_symmetric_gates_are_found_from_the_matrix() -> None:
 def test_what_entangles(matrix: Any, entangles: bool) -> None:
     # Brylinski & Brylinski (2002): everything but products and products times SWAP.
     assert read_gate_set(made_of(mine={"qubits": 2, "matrix": matrix})).can_entangle is entangles
+
+
+# --- measured gates
+
+
+def noisy(u: Any, size: float, seed: int) -> Any:
+    rng = np.random.default_rng(seed)
+    return u + size * (rng.normal(size=u.shape) + 1j * rng.normal(size=u.shape))
+
+
+@given(st.floats(-12, -1.6), st.integers(0, 2**32 - 1), st.sampled_from([2, 4]))
+@settings(max_examples=30, deadline=None)
+def test_measured_matrices_become_the_nearest_unitary(power: float, seed: int, size: int) -> None:
+    # Fan and Hoffman, Proc. AMS 6, 111 (1955): the polar factor, here by SciPy; its distance by SciPy's norm.
+    matrix = noisy(haar_unitary(size, rng=seed), 10**power, seed)
+    entry = {"qubits": size.bit_length() - 1, "matrix": matrix, "measured": True}
+    native = read_gate_set(made_of(mine=entry)).gates["mine"]
+    factor = polar(matrix)[0]
+    assert np.abs(native.gate.matrix() - factor).max() < 1e-13
+    assert native.measured and native.moved == pytest.approx(norm(matrix - factor, 2), abs=1e-14)
+    assert read_gate_set(made_of(mine=entry)).measured == {"mine": native.moved}
+    if power > -11:
+        with pytest.raises(GateSetError, match="is not unitary"):
+            read_gate_set(made_of(mine={**entry, "measured": False}))
+
+
+def test_what_cannot_be_a_measured_gate() -> None:
+    def refused(**entry: Any) -> str:
+        with pytest.raises(GateSetError) as caught:
+            read_gate_set(made_of(mine={"qubits": 1, "measured": True, **entry}))
+        return str(caught.value)
+
+    far = "the measured matrix of 'gates.mine' is too far from any unitary; required: at most 0.3 in operator norm"
+    assert far in refused(matrix=[[1, 0], [0, 0.6]])
+    assert "singular" in refused(matrix=[[1, 0], [0, 0]])
+    assert "required: a matrix without parameters" in refused(parameters=[RANGED], matrix=RZ["matrix"])
+    assert "required: true or false" in refused(matrix=[[1, 0], [0, 1]], measured="nearly")
+    with pytest.raises(GateSetError, match="say measured = true"):
+        read_gate_set(made_of(mine={"qubits": 1, "matrix": [[1, 0.01], [0, 1]]}))
+    # A measured CZ is not the CZ of that name.
+    with pytest.raises(GateSetError, match="'cz' is the name of another gate"):
+        read_gate_set(made_of(cz={"qubits": 2, "measured": True, "matrix": noisy(np.diag([1, 1, 1, -1]), 0.01, 1)}))
 
 
 def test_a_set_without_a_two_qubit_gate_is_allowed() -> None:

@@ -15,8 +15,8 @@ from gatewright.circuit import Builder, Circuit
 from gatewright.errors import ProofError
 from gatewright.mapping.operations import GROUP
 from gatewright.mapping.routing import Router, make_graph, make_operations
-from gatewright.proof import check_proof
-from gatewright.proof.file import decode_proof
+from gatewright.proof import Proof, check_proof
+from gatewright.proof.file import decode_proof, encode_proof
 from gatewright.proof.reorder import Reorder, check_reorder
 from gatewright.stages.blocks import cut_blocks
 from gatewright.synthesis.native import native_set
@@ -72,7 +72,7 @@ def test_what_a_group_holds_commutes(n: int, count: int, seed: int) -> None:
     assert np.abs(shuffled.unitary() - circuit.unitary()).max() < 1e-12
     rank = np.empty(len(order), dtype=np.int32)
     rank[order] = np.arange(len(order))
-    made, distance = check_reorder(circuit, Reorder(blocks.item, rank), 1e-9)
+    made, distance, _ = check_reorder(circuit, Reorder(blocks.item, rank), 1e-9)
     assert distance < 1e-12
     assert np.array_equal(made.op, shuffled.op)
 
@@ -84,7 +84,7 @@ def same(operations: object, i: int, j: int) -> bool:
 def test_what_does_not_commute_is_refused() -> None:
     circuit = Builder(3).gate("cx", 0, 1).gate("cx", 1, 2).gate("cz", 0, 2).build()
     windows = np.arange(3, dtype=np.int32)
-    made, distance = check_reorder(circuit, Reorder(windows, np.array([0, 1, 2], np.int32)), 1e-9)
+    made, distance, _ = check_reorder(circuit, Reorder(windows, np.array([0, 1, 2], np.int32)), 1e-9)
     assert distance == 0
     for rank in ([1, 0, 2], [0, 2, 1], [2, 1, 0]):
         with pytest.raises(ProofError, match="change places and do not commute"):
@@ -105,14 +105,16 @@ def test_a_proof_with_a_new_order_goes_through_a_file_and_a_wrong_one_does_not()
     assert result.costs.two_qubit_gates <= 26
     claims = [step for step in result.proof.steps if isinstance(step, Reorder)]
     assert len(claims) == 1
-    read = decode_proof(result.encode_proof()).proof
-    assert check_proof(source, result.circuit, read, device=device).error_bound == result.verdict.error_bound
+    read = decode_proof(encode_proof(result.proof)).proof
+    assert check_proof(source, result.circuit, read, device=device).error_bound == pytest.approx(
+        result.verdict.error_bound, rel=0.1
+    )
     wrong = replace(claims[0], rank=claims[0].rank[::-1].copy())
     steps = tuple(wrong if step is claims[0] else step for step in result.proof.steps)
     with pytest.raises(ProofError):
-        check_proof(source, result.circuit, gw.Proof(steps), device=device)
+        check_proof(source, result.circuit, Proof(steps), device=device)
     with pytest.raises(ProofError, match="leads to no output"):
-        check_proof(source, result.circuit, gw.Proof(result.proof.steps[:1]), device=device)
+        check_proof(source, result.circuit, Proof(result.proof.steps[:1]), device=device)
 
 
 @pytest.mark.parametrize("n", [4, 5, 6])

@@ -10,7 +10,7 @@ from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from typing import TypeAlias
 
-__all__ = ["Bits", "Expression", "Literal", "Name", "Operation", "bits_text", "expression_text", "leaves"]
+__all__ = ["Bits", "Expression", "Literal", "Name", "Operation", "bits_text", "depth_of", "expression_text", "leaves"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -49,11 +49,25 @@ Expression: TypeAlias = Literal | Name | Bits | Operation
 _BINDING = {
     operator: strength
     for strength, operators in enumerate(
-        ("||", "&&", "|", "^", "&", "== !=", "< <= > >=", "<< >>", "++", "+ -", "* / %", "**"), start=1
+        ("||", "&&", "|", "^", "&", "== !=", "< <= > >=", "<< >>", "+ -", "* / %", "**"), start=1
     )
     for operator in operators.split()
 }
 _UNARY = 12
+
+
+def depth_of(expression: Expression | object | None) -> int:
+    """Return the levels of operations in each other, 0 for a leaf.
+
+    Examples
+    --------
+    >>> depth_of(Operation("+", (Name("k"), Operation("-", (Literal("1"),)))))
+    2
+    """
+    level, waiting = 0, [expression]
+    while waiting := [inner for part in waiting if isinstance(part, Operation) for inner in part.operands]:
+        level += 1
+    return level
 
 
 def leaves(expression: Expression) -> Iterator[Literal | Name | Bits]:

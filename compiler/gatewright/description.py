@@ -2,17 +2,20 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from gatewright.devices import Device, GateSet
-from gatewright.errors import GateSetError, GatewrightError, UnsupportedError
+from gatewright.errors import GateSetError, GatewrightError, InputError, UnsupportedError
 from gatewright.linalg import checked_unitary, unitarity_defect
+from gatewright.reach_facts import edge_facts, haar_facts, target_facts, uses_in_shipped_sets
 from gatewright.synthesis.controlled_not import cnot_count, count_reason
-from gatewright.synthesis.coverage import coverage
+from gatewright.synthesis.entangler import classify
 from gatewright.synthesis.euler import euler_angles
+from gatewright.synthesis.haar_cost import reach_by_number
 from gatewright.synthesis.native import entangler_parameters, native_set
 from gatewright.synthesis.weyl import (
     canonical_coordinates,
@@ -24,12 +27,16 @@ from gatewright.synthesis.weyl import (
 __all__ = ["counting_bound", "describe"]
 
 
-def describe(thing: Device | GateSet | ArrayLike) -> dict[str, Any]:
+def describe(
+    thing: Device | GateSet | ArrayLike, *, targets: Mapping[str, NDArray[np.complex128]] | None = None
+) -> dict[str, Any]:
     """Describe a device, a native gate set or a unitary matrix.
 
     Parameters
     ----------
     thing : Device, GateSet or array_like, shape (2**n, 2**n)
+    targets : mapping of str to ndarray, shape (4, 4), optional
+        Two-qubit unitaries: how many uses of the gate set's entanglers each needs, and why no fewer.
 
     Returns
     -------
@@ -40,17 +47,29 @@ def describe(thing: Device | GateSet | ArrayLike) -> dict[str, Any]:
     ------
     MatrixError, NotUnitaryError
         For a matrix that is not a unitary.
+    InputError
+        Targets for a matrix, or a target that is not on two qubits.
 
     Examples
     --------
     >>> describe(np.diag([1, 1, 1, -1]))["cnot_count"]
     1
     """
-    if isinstance(thing, Device):
-        return _device(thing)
-    if isinstance(thing, GateSet):
-        return _gate_set(thing)
-    return _matrix(thing)
+    if not isinstance(thing, (Device, GateSet)):
+        if targets:
+            raise InputError("targets are counted in a gate set's entanglers", required="a gate set or a device")
+        return _matrix(thing)
+    facts = _device(thing) if isinstance(thing, Device) else _gate_set(thing)
+    if targets:
+        gate_set = thing.gate_set if isinstance(thing, Device) else thing
+        facts["targets"] = {name: _target(gate_set, name, unitary) for name, unitary in targets.items()}
+    return facts
+
+
+def _target(gate_set: GateSet, name: str, unitary: NDArray[np.complex128]) -> dict[str, Any]:
+    if unitary.shape != (4, 4):
+        raise InputError("not a two-qubit target", required="2 qubits", found=f"shape {unitary.shape}", where=name)
+    return {"coordinates": canonical_coordinates(unitary).tolist(), **target_facts(gate_set, unitary)}
 
 
 def counting_bound(n: int) -> int:
@@ -89,6 +108,7 @@ def _matrix(matrix: ArrayLike) -> dict[str, Any]:
             "perfect_entangler": bool(is_perfect_entangler(coordinates)),
             "cnot_count": uses,
             "reason": count_reason(coordinates, uses),
+            "uses_in_shipped_sets": uses_in_shipped_sets(unitary),
         }
     return facts
 
@@ -104,6 +124,8 @@ def _gate_set(gate_set: GateSet) -> dict[str, Any]:
                 "qubits": native.gate.n_qubits,
                 "ranges": [list(bounds) for bounds in native.ranges],
                 "virtual": native.virtual,
+                "measured": native.measured,
+                "distance_moved": native.moved,
                 "duration_ns": native.duration_ns,
                 "error": native.error,
             }
@@ -126,6 +148,8 @@ def _gate_set(gate_set: GateSet) -> dict[str, Any]:
     else:
         facts["compiles"] = True
         facts["entangler_used"] = ", ".join(tool.gate.name for tool in chosen.straight) or None
+        facts["one_qubit_gates"] = chosen.plan.summary
+        facts["haar_random_gates"] = haar_facts(gate_set)
     return facts
 
 
@@ -133,8 +157,6 @@ def _entangler(native: Any) -> dict[str, Any]:
     facts: dict[str, Any] = {"name": native.gate.name, "parameters": [], "mean_uses": None, "reach": None}
     try:
         parameters = entangler_parameters(native)
-        from gatewright.synthesis.entangler import classify
-
         coordinates = canonical_coordinates(native.gate.matrix(parameters))
         facts |= {
             "parameters": list(parameters),
@@ -142,8 +164,13 @@ def _entangler(native: Any) -> dict[str, Any]:
             "coordinates_over_pi": (coordinates / np.pi).tolist(),
             "perfect_entangler": bool(is_perfect_entangler(coordinates)),
         }
-        known = coverage([(native.gate.name, classify(native.gate.matrix(parameters)).ideal)])
-        facts |= {"mean_uses": known.mean_uses, "reach": known.reach}
+        x, y, z = classify(native.gate.matrix(parameters)).ideal.tolist()
+        levels = reach_by_number(((x, y, z),))
+        gains = np.maximum(np.diff([level.share for level in levels], prepend=0.0), 0.0)
+        facts |= {
+            "mean_uses": float(gains @ np.arange(len(levels))),
+            "reach": {str(level.uses): float(gain) for level, gain in zip(levels, gains, strict=True)},
+        }
     except (GateSetError, UnsupportedError) as error:
         facts["note"] = str(error)
     return facts
@@ -152,7 +179,7 @@ def _entangler(native: Any) -> dict[str, Any]:
 def _device(device: Device) -> dict[str, Any]:
     edges = device.edges
     degrees = np.bincount(edges.ravel(), minlength=device.n_qubits)[device.active]
-    return {
+    facts: dict[str, Any] = {
         "kind": "device",
         "name": device.name,
         "description": device.description,
@@ -171,6 +198,11 @@ def _device(device: Device) -> dict[str, Any]:
         "health": _health(device),
         "gate_set_facts": _gate_set(device.gate_set),
     }
+    try:
+        each, spread = edge_facts(device)
+    except GatewrightError:
+        return facts  # the gate set's facts say why
+    return facts | {"haar_random_gates": spread, "each_edge": each}
 
 
 def _health(device: Device) -> dict[str, Any]:

@@ -11,9 +11,9 @@ from typing import Any
 
 import numpy as np
 
-from gatewright.gates import GATES
+from gatewright.gates import GATES, Gate
 from gatewright.linalg import haar_unitary
-from gatewright.synthesis.euler import euler_angles, virtual_z
+from gatewright.synthesis.euler import euler_angles, rotation, virtual_z
 from gatewright.synthesis.one_qubit import plan_one_qubit
 
 FULL = (-np.pi, np.pi)
@@ -23,6 +23,17 @@ def native(name: str, *ranges: tuple[float, float], virtual: bool = False) -> Si
     return SimpleNamespace(gate=GATES[name], ranges=ranges, virtual=virtual, duration_ns=None)
 
 
+def tilted(degrees: float) -> SimpleNamespace:
+    axis = [np.sin(np.radians(degrees)), 0, np.cos(np.radians(degrees))]
+    gate = Gate("tilted", 1, 1, lambda p: rotation(axis, p[..., 0]))
+    return SimpleNamespace(gate=gate, ranges=(FULL,), virtual=False, duration_ns=None)
+
+
+def pulse(angle: float) -> SimpleNamespace:
+    gate = Gate("pulse", 1, 0, lambda p: np.broadcast_to(rotation("x", angle), (*p.shape[:-1], 2, 2)))
+    return SimpleNamespace(gate=gate, ranges=(), virtual=False, duration_ns=None)
+
+
 RZ = native("rz", FULL, virtual=True)
 SETS = {
     "virtual z, quarter turn": [RZ, native("sx")],
@@ -30,6 +41,9 @@ SETS = {
     "z and x rotations": [native("rz", FULL), native("rx", FULL)],
     "equatorial and virtual z": [RZ, native("r", (0, np.pi), FULL)],
     "equatorial alone": [native("r", (0, np.pi), FULL)],
+    "quarter turn 3 % too long, virtual z": [RZ, pulse(1.03 * np.pi / 2)],
+    "axis at 60 degrees, virtual z": [RZ, tilted(60)],
+    "two axes at 60 degrees": [native("rz", FULL), tilted(60)],
     "general pulse": [native("u", (0, np.pi), FULL, FULL)],
 }
 

@@ -121,6 +121,7 @@ def _different(names: list[str | None]) -> None:
 
 def _compiled(options: argparse.Namespace) -> Result | ProgramResult:
     from gatewright.devices import read_device
+    from gatewright.gates import GATES
     from gatewright.inputs import load
 
     device = read_device(options.device)
@@ -129,15 +130,19 @@ def _compiled(options: argparse.Namespace) -> Result | ProgramResult:
         tolerance=options.tolerance,
         nearest_unitary=options.nearest_unitary,
         qubit_order=options.qubit_order,
+        # The device's own gates stay what they are where the program defines them alike.
+        natives={name: gate for name, gate in device.gate_set.natives.items() if name not in GATES},
+        strict=False,
     )
     device.require_room(source.circuit.n_qubits)
+    given = source.circuit.bind(dict(options.set)) if options.set else source.circuit
     # What is wrong with the input has been said before this: the kernels take longer to load than all of that.
     _prepare()
     from gatewright.pipeline import compile as compile_source
 
     with _progress() as progress:
         return compile_source(
-            source.circuit,
+            given,
             device,
             seed=options.seed,
             tolerance=options.tolerance,
@@ -216,14 +221,14 @@ def _check(options: argparse.Namespace) -> int:
             source.circuit,
             output.circuit,
             device=device,
-            proof=proof.proof if proof else None,
+            proof=proof,
             initial=places.initial if places else None,
             final=places.final if places else None,
             tolerance=options.tolerance,
         )
     except GatewrightError as error:
         if proof is not None and error.exit_code == 3:
-            changed = _changed(proof.source, proof.output, source.circuit, output.circuit)
+            changed = _changed(proof.made_for.source, proof.made_for.output, source.circuit, output.circuit)
             own = "native gates of a device are known only with its --device" if changed and device is None else ""
             error.hint = "; ".join(filter(None, (changed or error.hint, own)))
         raise
@@ -243,9 +248,8 @@ def _check_program(options: argparse.Namespace, source: Source, output: Source, 
         raise InputError(
             "programs with classical control are checked with their proof only", required="--proof FILE, as compiled"
         )
-    files = read_program_proof(options.proof)
+    proofs = read_program_proof(options.proof)
     _prepare()
-    proofs = [file.proof for file in files]
     verdict = check_program(source.circuit, output.circuit, proofs, device=device, tolerance=options.tolerance)
     return _tell(options, verdict, legality_checked=device is not None)
 
@@ -272,12 +276,12 @@ def beyond_the_library() -> dict[str, Gate]:
 
 def _changed(source_print: str, output_print: str, source: Any, output: Any) -> str:
     """Say which of the two circuits is not the one that the proof was made for."""
-    from gatewright.proof.file import fingerprint
+    from gatewright.proof import fingerprint
 
     changed = [
         name
         for name, circuit, known in (("source", source, source_print), ("output", output, output_print))
-        if fingerprint(circuit) != known
+        if known and fingerprint(circuit) != known
     ]
     return f"the {' and the '.join(changed)} has been changed since the proof was made" if changed else ""
 
@@ -290,23 +294,32 @@ def _describe(options: argparse.Namespace) -> int:
 
     name = options.thing
     of_data = name in shipped_gate_sets() or Path(name).suffix.lower() == ".toml"
-    thing: Any = None
-    if of_data:
-        thing = read_any(name)
-    else:
-        source = load(name, nearest_unitary=options.nearest_unitary, qubit_order=options.qubit_order)
+    moved = 0.0
+
+    def matrix_in(place: str) -> Any:
+        nonlocal moved
+        source = load(place, nearest_unitary=options.nearest_unitary, qubit_order=options.qubit_order)
         if isinstance(source.circuit, Program):
             what = "a program with classical control has no matrix"
-            raise InputError(what, required="a circuit of gates", where=name)
-        thing = source.circuit.unitary()
+            raise InputError(what, required="a circuit of gates", where=place)
+        moved = source.moved
+        return source.circuit.unitary()
+
+    _different([options.json, options.chamber])
+    targets = {place: matrix_in(place) for place in options.target}
+    thing: Any = read_any(name) if of_data else matrix_in(name)
     _prepare()
     from gatewright.description import describe
 
-    facts = describe(thing)
+    facts = describe(thing, targets=targets)
     if not of_data:
-        facts["distance_moved"] = source.moved
-    if options.json:
-        _write({options.json: _to_json(facts)})
-    if options.json != "-":
+        facts["distance_moved"] = moved
+    outputs = {options.json: _to_json(facts)} if options.json else {}
+    if options.chamber:
+        from gatewright.report.reach import picture_of
+
+        outputs[options.chamber] = picture_of(thing, facts, name=Path(name).name).encode()
+    _write(outputs)
+    if "-" not in outputs:
         print_description(facts, sys.stdout)
     return 0

@@ -27,12 +27,13 @@ from gatewright.errors import (
     ExpressionError,
     GateSetError,
     GatewrightError,
+    MatrixError,
     NotUnitaryError,
     nearest_name,
     shorten,
 )
 from gatewright.expressions import Expression, parse
-from gatewright.gates import BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
+from gatewright.gates import BARRIER, DELAY, GATES, MEASURE, RESET, UNITARY, Gate
 from gatewright.linalg import checked_unitary, distance, reorder_qubits, unitarity_defect
 
 __all__ = [
@@ -61,7 +62,7 @@ _NAME = re.compile(r"[a-z][A-Za-z0-9_]{0,31}")
 
 #: Words of OpenQASM 2 and 3 that cannot name a gate, and what operations of a circuit are called.
 _RESERVED = frozenset(
-    f"{MEASURE.name} {RESET.name} {BARRIER.name} {UNITARY.name} "
+    f"{MEASURE.name} {RESET.name} {BARRIER.name} {DELAY.name} {UNITARY.name} "
     "gate opaque include def cal defcal defcalgrammar extern box let break continue if else end return for while in "
     "switch case default nop pragma input output const readonly mutable qreg creg qubit bit bool int uint float angle "
     "complex array void duration stretch gphase inv pow ctrl negctrl dim durationof delay true false pi tau euler im "
@@ -78,6 +79,9 @@ _MAX_ANGLE = 1e4
 #: What ‖U†U − 1‖ may be, and the distance from a standard gate of the same name or from the definition.
 _TOLERANCE = 1e-12
 _SAME = 1e-9
+
+#: How far, in operator norm, a measured matrix may be from the unitary that stands for it.
+_MEASURED = 0.3
 
 
 @dataclass(frozen=True, slots=True)
@@ -122,6 +126,10 @@ class NativeGate:
         An OpenQASM gate definition; empty where there is none in the file.
     symmetric : bool
         For a two-qubit gate: exchanging its qubits changes nothing but a global phase.
+    measured : bool
+        The matrix of the file was measured; the gate is the unitary nearest to it.
+    moved : float
+        Operator norm of the matrix of the file minus the gate's.
     """
 
     gate: Gate
@@ -132,6 +140,8 @@ class NativeGate:
     error: float | None = None
     definition: str = ""
     symmetric: bool = False
+    measured: bool = False
+    moved: float = 0.0
 
     def samples(self) -> Vector:
         """Return points of the parameters' range: a grid with the ends and corners, and fixed random ones.
@@ -182,6 +192,11 @@ class GateSet:
     def natives(self) -> dict[str, Gate]:
         """The gates' names, sizes and matrix functions."""
         return {name: gate.gate for name, gate in self.gates.items()}
+
+    @property
+    def measured(self) -> dict[str, float]:
+        """The gates that were measured, and how far each matrix is from the unitary that stands for it."""
+        return {name: gate.moved for name, gate in self.gates.items() if gate.measured}
 
     @cached_property
     def reach(self) -> Reach:
@@ -248,6 +263,9 @@ def read_gate_set(source: str | os.PathLike[str] | Mapping[str, Any], *, where: 
         ``gates.NAME.parameters``
             A list of ``{name = …, from = …, to = …, unit = …}``. The range is given in `unit`, which is ``"rad"`` if
             left out, ``"deg"`` or ``"turn"``; in the matrix, the definition and circuits the parameter is in radians.
+        ``gates.NAME.measured``
+            True for a matrix without parameters that was measured, by process tomography for example, and so is
+            not quite unitary: the gate is the unitary nearest to it, and how far that is, is reported.
         ``gates.NAME.virtual``
             True for a change of frame: a diagonal one-qubit gate.
         ``gates.NAME.duration_ns``, ``gates.NAME.error``
@@ -307,7 +325,7 @@ def _read(data: object, where: str) -> GateSet:
 
 
 def _read_gate(gates: Table, name: str) -> NativeGate:
-    known = ("qubits", "parameters", "matrix", "virtual", "duration_ns", "error", "definition")
+    known = ("qubits", "parameters", "matrix", "measured", "virtual", "duration_ns", "error", "definition")
     if not (_NAME.fullmatch(name) and name not in _RESERVED) and name not in GATES:
         raise gates.fail(
             f"'{shorten(name)}' cannot name a gate",
@@ -316,7 +334,10 @@ def _read_gate(gates: Table, name: str) -> NativeGate:
     table = gates.table(name, known)
     n_qubits = table.integer("qubits", 1, 2)
     parameters, ranges = _read_parameters(table)
-    function = _read_matrix(table, 2**n_qubits, parameters)
+    measured = table.boolean("measured", False)
+    if measured and parameters:
+        raise table.fault("measured", "a matrix without parameters", True)
+    function, moved = _read_matrix(table, 2**n_qubits, parameters, measured)
     gate = Gate(name, n_qubits, len(parameters), function)
 
     points = _samples(ranges)
@@ -345,6 +366,8 @@ def _read_gate(gates: Table, name: str) -> NativeGate:
         error=error,
         definition=_read_definition(table, gate),
         symmetric=symmetric,
+        measured=measured,
+        moved=moved,
     )
 
 
@@ -402,7 +425,8 @@ def _in_entry(table: Table, key: str, problem: GatewrightError) -> GatewrightErr
     )
 
 
-def _read_matrix(table: Table, size: int, names: tuple[str, ...]) -> _Entries:
+def _read_matrix(table: Table, size: int, names: tuple[str, ...], measured: bool) -> tuple[_Entries, float]:
+    """Return the matrix function, and how far a fixed matrix was moved to be unitary."""
     rows = table.sequence("matrix")
     if len(rows) != size:
         raise table.fault("matrix", f"{size} rows", found=f"{len(rows)} rows")
@@ -436,13 +460,22 @@ def _read_matrix(table: Table, size: int, names: tuple[str, ...]) -> _Entries:
     if not np.isfinite(base).all():
         r, c = np.argwhere(~np.isfinite(base))[0].tolist()
         raise table.fault(f"matrix[{r}][{c}]", "a finite number", rows[r][c])
+    moved = 0.0
     if not names:
         try:
-            base, _ = checked_unitary(base, tolerance=_TOLERANCE)
+            base, moved = checked_unitary(base, tolerance=_TOLERANCE, nearest=measured)
         except NotUnitaryError as problem:
             raise _not_unitary(table, problem.defect) from None
+        except MatrixError as problem:
+            raise table.fail(f"the matrix of '{table.key}' cannot be used: {problem.what}") from None
+        if moved > _MEASURED:
+            raise table.fail(
+                f"the measured matrix of '{table.key}' is too far from any unitary",
+                required=f"at most {_MEASURED:g} in operator norm",
+                found=f"{moved:.3g}",
+            )
     base.setflags(write=False)
-    return _Entries(" ".join(texts), base, names, tuple(entries))
+    return _Entries(" ".join(texts), base, names, tuple(entries)), moved
 
 
 def _check_unitary(table: Table, matrices: Array, points: Vector, names: tuple[str, ...]) -> None:
@@ -459,7 +492,9 @@ def _not_unitary(table: Table, defect: float, at: str = "") -> GatewrightError:
         f"the matrix of '{table.key}' is not unitary" + (f" at {at}" if at else ""),
         required=f"‖U†U − 1‖ ≤ {_TOLERANCE:g}",
         found=f"{defect:.3g}",
-        hint='write roots and fractions as expressions, such as "1/sqrt(2)"' if defect < 1e-4 else "",
+        hint='write roots and fractions as expressions, such as "1/sqrt(2)"'
+        if defect < 1e-4
+        else "if the matrix was measured, say measured = true",
     )
 
 

@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit, apply_operations
 from gatewright.errors import ProofError
+from gatewright.proof.products import UNIT, multiplication
 
 __all__ = ["Reorder", "check_reorder"]
 
@@ -53,8 +54,8 @@ class Reorder:
         return circuit.take(np.argsort(self.rank[self.window], kind="stable"))
 
 
-def check_reorder(source: Circuit, claim: Reorder, tolerance: float) -> tuple[Circuit, float]:
-    """Check the claim; return the circuit in its new order, and a bound on its distance from the source.
+def check_reorder(source: Circuit, claim: Reorder, tolerance: float) -> tuple[Circuit, float, float]:
+    """Check the claim; return the circuit in its new order, a bound on its distance from the source, and its rounding.
 
     Raises
     ------
@@ -77,7 +78,8 @@ def check_reorder(source: Circuit, claim: Reorder, tolerance: float) -> tuple[Ci
     # Each window once on each of its wires.
     once = np.ones(len(at), dtype=bool)
     once[1:] = (np.diff(at) != 0) | (np.diff(lane) != 0)
-    total = 0.0
+    total, rounding = 0.0, 0.0
+    counts = np.bincount(window, minlength=len(rank))
     for first, second in _exchanged(at[once], lane[once].astype(np.int64), rank.astype(np.int64)):
         distances = _Commutators(source, claim).norms(first, second)
         wrong = np.flatnonzero(~(distances <= tolerance))
@@ -91,7 +93,9 @@ def check_reorder(source: Circuit, claim: Reorder, tolerance: float) -> tuple[Ci
                 found=f"{distances[k]:.6g}",
             )
         total += float(distances.sum())
-    return claim.apply(source), total
+        # Two products of all operations of both windows, each applied to at most two qubits.
+        rounding += float((counts[first] + counts[second]).sum()) * 2 * (multiplication(4) + 8 * UNIT)
+    return claim.apply(source), total, rounding
 
 
 def _exchanged(at: Rows, lane: Rows, rank: Rows) -> list[tuple[Rows, Rows]]:

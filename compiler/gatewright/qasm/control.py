@@ -11,13 +11,13 @@ from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
-from gatewright.classical import Bits, Expression, Literal, Name, Operation
+from gatewright.classical import Bits, Expression, Literal, Name, Operation, depth_of
 from gatewright.errors import shorten
 from gatewright.program import Assign, Leave, Mark
 from gatewright.qasm.evaluation import STATEMENT, Pending, Places, Variable
 from gatewright.qasm.operations import Operations
 from gatewright.qasm.scope import RESERVED
-from gatewright.qasm.unknowns import as_name, as_parameter, names_of, reads_bits
+from gatewright.qasm.unknowns import as_parameter, as_tree, names_of, reads_bits
 from gatewright.qasm.values import Array, Kind, Value, cast, expression
 
 if TYPE_CHECKING:
@@ -36,6 +36,9 @@ class Return:
 class End(Exception):
     """The end of the program."""
 
+
+#: Levels of an expression that is kept for the run.
+MAX_LEVELS = 200
 
 LEAVING = ("BreakStatement", "ContinueStatement", "EndStatement")
 
@@ -69,6 +72,9 @@ class Control(Operations):
         if self.sink is not None:
             raise self.unsupported("a gate definition that depends on the run", node)
         self.charge(STATEMENT, node)
+        if depth_of(content.value if isinstance(content, Assign) else content) > MAX_LEVELS:
+            required = f"at most {MAX_LEVELS} operations in each other"
+            raise self.error("an expression that depends on the run is too long", node, required=required)
         self.reader.mark(Mark(word, content))
 
     def lasting(self, value: Value) -> bool:
@@ -78,10 +84,10 @@ class Control(Operations):
         return not reads_bits(value.data) and names_of(value.data) <= self.reader.inputs.keys()
 
     def settled(self, value: Value) -> Value:
-        """Return a number that depends on inputs alone as one leaf, so that expressions of it do not grow."""
+        """Return a number that depends on inputs alone in its affine form, so that expressions of it do not grow."""
         if value.kind.name not in ("float", "angle") or not self.lasting(value):
             return value
-        return Value(value.kind, as_name(as_parameter(value.data)))
+        return Value(value.kind, as_tree(as_parameter(value.data)))
 
     def store(self, variable: Variable, name: str, value: Value, node: Any) -> None:
         """Assign to a variable at run time."""

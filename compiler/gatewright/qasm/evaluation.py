@@ -7,10 +7,10 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
-from gatewright.classical import Bits, Operation
+from gatewright.classical import Bits
 from gatewright.errors import ExpressionError, QasmError, UnsupportedError, nearest_name, shorten
 from gatewright.qasm.scope import RESERVED, Scope
-from gatewright.qasm.values import BUILT_IN, Array, Kind, Value, binary, cast, expression, function, unary
+from gatewright.qasm.values import BUILT_IN, Array, Kind, Value, binary, cast, function, unary
 
 if TYPE_CHECKING:
     from openqasm3 import ast
@@ -119,9 +119,15 @@ class Evaluator:
         """Count steps of unrolling, and refuse too many."""
         self.steps += steps
         if self.steps > MAX_STEPS:
-            raise self.error(
+            self.charge_at(0, self.at(node))
+
+    def charge_at(self, steps: int, offset: int) -> None:
+        """Count steps for what begins at an offset, and refuse too many."""
+        self.steps += steps
+        if self.steps > MAX_STEPS:
+            raise self.source.error(
                 "unrolling the program takes too many steps",
-                node,
+                offset,
                 required=f"at most {MAX_STEPS} gates, a statement counting for {STATEMENT}",
             )
 
@@ -251,9 +257,6 @@ class Evaluator:
     def _ImaginaryLiteral(self, node: Any, real: bool) -> Value:
         raise self.unsupported("a complex number", node)
 
-    def _DurationLiteral(self, node: Any, real: bool) -> Value:
-        raise self.unsupported("a duration", node)
-
     def _DurationOf(self, node: Any, real: bool) -> Value:
         raise self.unsupported("'durationof'", node)
 
@@ -339,8 +342,7 @@ class Evaluator:
             return Array(a.kind, [*a.copy().items, *b.copy().items])
         if isinstance(a, Value) and isinstance(b, Value) and a.kind.name == b.kind.name == "bit":
             # The first operand holds the lower indices, as for registers of qubits.
-            if a.is_open or b.is_open:
-                return Value(Kind("bit", a.bits + b.bits), Operation("++", (expression(a), expression(b))))
+            a, b = self.known(a, node.lhs), self.known(b, node.rhs)
             return Value(Kind("bit", a.bits + b.bits), int(a.data) | int(b.data) << a.bits)
         raise self.error("'++' joins registers, bits or arrays of one type", node)
 
@@ -456,7 +458,8 @@ class Evaluator:
     def kind(self, node: Any) -> Kind:
         """Return a scalar type."""
         name = {"IntType": "int", "UintType": "uint", "FloatType": "float", "AngleType": "angle"}.get(
-            type(node).__name__, {"BitType": "bit", "BoolType": "bool"}.get(type(node).__name__, "")
+            type(node).__name__,
+            {"BitType": "bit", "BoolType": "bool", "DurationType": "duration"}.get(type(node).__name__, ""),
         )
         if not name:
             written = type(node).__name__.removesuffix("Type").lower()

@@ -10,6 +10,7 @@ from __future__ import annotations
 import re
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from types import SimpleNamespace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -17,32 +18,40 @@ import numpy as np
 from gatewright.classical import Bits, Name
 from gatewright.errors import ExpressionError, shorten
 from gatewright.program import Assign
-from gatewright.qasm.control import Control, End, Return
+from gatewright.qasm.control import End, Return
 from gatewright.qasm.evaluation import MAX_ELEMENTS, STATEMENT, Pending, Places, Variable
-from gatewright.qasm.grammar import parse_statement, statement_end
+from gatewright.qasm.grammar import MAX_STATEMENT, parse_statement, statement_end
 from gatewright.qasm.scope import MAX_QUBITS, NAME, RESERVED
+from gatewright.qasm.shapes import Shape, signature
+from gatewright.qasm.timing import Timing
 from gatewright.qasm.values import Array, Kind, Value, binary, cast, expression
 
 if TYPE_CHECKING:
     from gatewright.qasm.reader import Reader
 
-__all__ = ["MAX_CALLS", "FullLane"]
+__all__ = ["MAX_CALLS", "MAX_PARSED", "FullLane"]
 
 #: Subroutine calls open at once.
 MAX_CALLS = 40
 
-#: Parsed statements that are remembered.
+#: Characters that the reference parser is given in all: some ten seconds.
+MAX_PARSED = 1_000_000
+
+#: Statements, and shapes of them, that are remembered.
 _REMEMBERED = 10_000
+
+_KEPT = re.compile(r"\b(?:def|gate|extern|cal|defcal|if|while|switch|box)\b")
 
 _WORD = re.compile(NAME)
 _REFUSED = {
-    "ExternDeclaration": "'extern'",
-    "CalibrationGrammarDeclaration": "'defcalgrammar'",
-    "CalibrationStatement": "'cal'",
-    "CalibrationDefinition": "'defcal'",
-    "DelayInstruction": "'delay'",
-    "Box": "'box'",
+    "CalibrationGrammarDeclaration": "'defcalgrammar' inside a block",
+    "CalibrationStatement": "'cal' inside a block",
+    "CalibrationDefinition": "'defcal' inside a block",
 }
+
+
+class Extern:
+    """A function that is declared, and not part of the program."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,7 +62,7 @@ class Subroutine:
     start: int
 
 
-class FullLane(Control):
+class FullLane(Timing):
     """Carries out the statements that the fast lane hands over.
 
     Parameters
@@ -66,7 +75,9 @@ class FullLane(Control):
         super().__init__(reader)
         self.calls = 0
         self.returning: Any = None  # the type that the subroutine at hand returns
-        self.parsed: dict[str, Any] = {}
+        self.shapes: dict[Any, Shape] = {}
+        self.pieces: dict[str, tuple[Shape, list[str]]] = {}  # statements that end with their first semicolon
+        self.characters = 0  # given to the parser
 
     # ---------------------------------------------------------------- one statement of the program
 
@@ -88,13 +99,7 @@ class FullLane(Control):
         ------
         QasmError, UnsupportedError
         """
-        end, skipped = statement_end(self.source, start)
-        text = self.source.text[start:end]
-        node = self.parsed.get(text)
-        if node is None:
-            node = parse_statement(self.source, start, end, skipped)
-            if len(self.parsed) < _REMEMBERED:
-                self.parsed[text] = node
+        end, node = self.parse(start)
         self.start = start
         self.phase = 0.0
         self.frames, self.enclosed, self.calls = [], False, 0
@@ -112,6 +117,40 @@ class FullLane(Control):
             if self.phase:
                 self.reader.add_phase(self.phase)
         return end, False
+
+    def parse(self, start: int) -> tuple[int, Any]:
+        """Return the end and the tree of the statement at an offset; the tree is good until the next call."""
+        source = self.source
+        stop = source.text.find(";", start, start + MAX_STATEMENT) + 1
+        piece = source.text[start:stop]
+        known = self.pieces.get(piece)
+        if known is not None:
+            return stop, known[0].fill(known[1])
+        end, skipped = statement_end(source, start)
+        text = source.text[start:end].replace("\n", " ")
+        # Nodes that outlive their statement, and what is left out of it, are no matter of its shape.
+        if skipped or _KEPT.search(text):
+            return end, self.parsed_anew(start, end, skipped)
+        key, parts = signature(text)
+        shape = self.shapes.get(key)
+        if shape is None:
+            shape = Shape(self.parsed_anew(start, end, skipped), parts, key)
+            if shape.sound and len(self.shapes) < _REMEMBERED:
+                self.shapes[key] = shape
+        if end == stop and shape.sound and len(self.pieces) < _REMEMBERED:
+            self.pieces[piece] = shape, parts
+        return end, shape.fill(parts)
+
+    def parsed_anew(self, start: int, end: int, skipped: list[tuple[int, int]]) -> Any:
+        """Return the tree of a statement that the reference parser makes, unless it has done too much already."""
+        self.characters += end - start
+        if self.characters > MAX_PARSED:
+            raise self.source.error(
+                "the statements outside the plain ones are too long in all",
+                start,
+                required=f"at most {MAX_PARSED} characters in statements of different shapes",
+            )
+        return parse_statement(self.source, start, end, skipped)
 
     def execute(self, node: Any) -> str | Return | None:
         """Carry out a statement; return how it leaves the block that it stands in, if it does."""
@@ -175,7 +214,8 @@ class FullLane(Control):
         """Declare an input: a name whose value is not known when compiling."""
         name = node.identifier.name
         if node.io_identifier.name != "input":
-            raise self.unsupported(f"'{node.io_identifier.name}'", node)
+            self.declare_output(node)
+            return
         if self.frames:
             raise self.error("an input is declared inside a block", node, required="a declaration outside")
         kind = self.kind(node.type)
@@ -185,6 +225,17 @@ class FullLane(Control):
         self.declare(name, made, "an input", node.identifier)
         size = getattr(node.type, "size", None) if kind.name == "float" else None
         self.reader.inputs[name] = str(kind) if size is None else f"float[{self.integer(size, 1, 4096)}]"
+
+    def declare_output(self, node: Any) -> None:
+        """Declare an output: bits and variables like any others, since all of them are kept."""
+        if self.frames:
+            raise self.error("an output is declared inside a block", node, required="a declaration outside")
+        declaration = SimpleNamespace(type=node.type, identifier=node.identifier, init_expression=None, span=node.span)
+        self.do_ClassicalDeclaration(declaration)
+
+    def do_ExternDeclaration(self, node: Any) -> None:
+        """Declare a function that is not part of the program; only calls of it are refused."""
+        self.declare(node.name.name, Extern(), "an extern function", node.name)
 
     def do_ConstantDeclaration(self, node: Any) -> None:
         """Declare a constant."""
@@ -370,15 +421,18 @@ class FullLane(Control):
         """Call a subroutine for its effect."""
         call = node.expression
         known = self.globals.get(call.name.name) if type(call).__name__ == "FunctionCall" else None
-        if not isinstance(known, Subroutine):
+        if not isinstance(known, Subroutine | Extern):
             raise self.error("this is not a statement", node, required="a call of a subroutine")
-        if isinstance(self.call_subroutine(call), Pending):
-            raise self.unsupported("a measurement into no bit", node)
+        value = self.call_subroutine(call)
+        if isinstance(value, Pending):
+            self.unread(value.qubits, node)
 
     def call_subroutine(self, node: Any) -> Value | Array | Pending | None:
         """Write a subroutine out in place."""
         name = node.name.name
         known = self.globals.get(name)
+        if isinstance(known, Extern):
+            raise self.unsupported(f"a call of the extern function '{shorten(name)}'", node)
         if not isinstance(known, Subroutine):
             raise self.error(f"'{shorten(name)}' is not a subroutine", node, found=f"it is {self.scope.declared[name]}")
         definition = known.node

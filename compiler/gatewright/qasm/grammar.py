@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import importlib
 import re
+import sys
 from collections.abc import Iterator
 from typing import TYPE_CHECKING, Any
 
@@ -23,6 +24,9 @@ __all__ = ["MAX_NESTING", "MAX_STATEMENT", "MAX_STATEMENT_TOKENS", "parse_statem
 MAX_STATEMENT = 65_536
 MAX_STATEMENT_TOKENS = 20_000
 MAX_NESTING = 100
+
+#: Frames of the interpreter that the parser may take for a statement of the largest size.
+_FRAMES = 250_000
 
 _TOKEN = re.compile(r'\s*("[^"\n]*"?|[^\W\d]\w*|[0-9.][\w.]*|->|\*\*|\+\+|&&|\|\||[<>=!]=|<<|>>|\S)')
 _LINE = re.compile(r"[^\n]*")
@@ -103,7 +107,10 @@ def parse_statement(source: Source, start: int, end: int, skipped: list[tuple[in
         text = text[: first - start] + " " * (last - first) + text[last - start :]
     # On one line columns are offsets, for nodes of every kind.
     text = text.replace("\n", " ")
+    limit = sys.getrecursionlimit()
     try:
+        # The parser walks down a long sum term by term; tokens and nesting are bounded already.
+        sys.setrecursionlimit(max(limit, _FRAMES))
         program = _parse(text)
     except _Fault as problem:
         raise source.error(problem.what, start + problem.column, found=problem.found) from None
@@ -113,6 +120,8 @@ def parse_statement(source: Source, start: int, end: int, skipped: list[tuple[in
         ) from None
     except Exception as problem:  # the parser's own tree walk fails on some malformed texts
         raise source.error("this is not a statement", start, found=f"'{shorten(text, 30)}'") from problem
+    finally:
+        sys.setrecursionlimit(limit)
     if len(program.statements) != 1 or program.version is not None:
         raise source.error("this is not a statement", start, found=f"'{shorten(text, 30)}'")
     return program.statements[0]

@@ -225,7 +225,7 @@ class Scope:
         if -1 in found:
             parts = split(text, offset)
             spans = [self.operand(part, begin, self.qubit_registers) for part, begin in parts]
-            if not all(single for _, single in spans):
+            if not spans or not all(single for _, single in spans):
                 return None
             found = [span[0] for span, _ in spans]
             self._singles.update(zip(text.split(","), found, strict=True))

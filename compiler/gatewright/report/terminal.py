@@ -12,6 +12,10 @@ if TYPE_CHECKING:
 __all__ = ["print_description", "print_result", "print_verdict"]
 
 
+#: Entries of a list of tables that are shown.
+_MOST_SHOWN = 16
+
+
 def print_result(result: Result | ProgramResult, stream: TextIO) -> None:
     """Print costs, bounds, placement and proof of a compilation."""
     costs, verdict = result.costs, result.verdict
@@ -19,7 +23,11 @@ def print_result(result: Result | ProgramResult, stream: TextIO) -> None:
     rows = [
         ("two-qubit gates", str(costs.two_qubit_gates), f"at least {result.lower_bound.two_qubit_gates} (see note)"),
         ("one-qubit gates", str(costs.one_qubit_gates), "physical pulses; virtual ones are free"),
-        ("swaps inserted", str(costs.swaps_inserted), "merged into neighbouring windows where there are any"),
+        (
+            "swaps inserted",
+            str(costs.swaps_inserted),
+            f"at least {result.lower_bound.swaps} (see note); merged into neighbouring windows where there are any",
+        ),
         ("two-qubit depth", str(costs.two_qubit_depth), ""),
         ("depth", str(costs.depth), "layers of physical operations"),
     ]
@@ -32,6 +40,8 @@ def print_result(result: Result | ProgramResult, stream: TextIO) -> None:
         rows.append(("for a further round", f"{verdict.round_bound:.2g}", "of a loop, at most"))
     if result.moved:
         rows.append(("input moved by", f"{result.moved:.2g}", "to the nearest unitary"))
+    for name, moved in result.device.gate_set.measured.items():
+        rows.append((f"measured {name} moved by", f"{moved:.2g}", "to the nearest unitary, which is compiled to"))
     for entry in result.budget:
         met = "met" if entry["met"] else "NOT MET"
         rows.append((f"budget {entry['name']}", f"{entry['relation']} {entry['limit']:g}", met))
@@ -54,6 +64,8 @@ def print_verdict(verdict: Verdict, stream: TextIO) -> None:
     print(f"equal within {verdict.error_bound:.3g} (operator norm, up to global phase)", file=stream)
     if verdict.round_bound:
         print(f"each further round of a loop adds {verdict.round_bound:.3g} at most", file=stream)
+    if verdict.rounding:
+        print(f"of this, {verdict.rounding:.3g} is what the checker's own rounding may hide", file=stream)
     print(f"method: {verdict.method}", file=stream)
     if verdict.windows:
         worst = f"the worst, number {verdict.worst_window}, is {verdict.worst_distance:.3g} off"
@@ -77,10 +89,12 @@ def _lines(value: dict[str, Any], depth: int) -> Iterable[str]:
             yield from [f"{pad}{name}:", *lines] if lines else []
         elif isinstance(entry, list) and entry and isinstance(entry[0], dict):
             yield f"{pad}{name}:"
-            for item in entry:
+            for item in entry[:_MOST_SHOWN]:
                 lines = list(_lines(item, depth + 2))
                 yield f"{pad}  - {lines[0].strip()}"
                 yield from lines[1:]
+            if len(entry) > _MOST_SHOWN:
+                yield f"{pad}  … ({len(entry)} in all; --json has them)"
         elif entry not in ("", None, []):
             yield f"{pad}{name}: {_short(entry)}"
 

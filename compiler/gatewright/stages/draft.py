@@ -79,6 +79,8 @@ class Draft:
         Of the scheduled circuit: nanoseconds where the device states durations, else layers.
     swaps : int
         Swaps inserted.
+    source : Circuit or None
+        What the chain began with, if it may be given back unchanged.
     """
 
     circuit: Circuit
@@ -95,6 +97,7 @@ class Draft:
     fused: Fused | None = None
     starts: NDArray[np.float64] = field(default_factory=lambda: np.zeros(0))
     swaps: int = 0
+    source: Circuit | None = None
 
 
 #: A stage of the chain.

@@ -18,10 +18,11 @@ from numba import types
 
 from gatewright.synthesis._kernels import SIGNS
 
-__all__ = ["refine"]
+__all__ = ["PAIRS", "refine"]
 
-_PAIRS = np.array([[1, 0], [2, 0], [3, 0], [3, 2], [1, 3], [2, 1]], dtype=np.int64)
+PAIRS = np.array([[1, 0], [2, 0], [3, 0], [3, 2], [1, 3], [2, 1]], dtype=np.int64)
 """Planes of the six turns: about 1 and the unit i, then about the two others, so that quaternions come out easily."""
+_DIAGONAL = np.array([0, 4, 7, 9], dtype=np.int64)
 _DONE = 4e-31
 """Sum of the squares of E and of Re W − 1 that is rounding."""
 _NEAR = 1e-24
@@ -37,7 +38,8 @@ def _in(dtype: Any, dimensions: int) -> Any:
         _in(types.float64, 2),
         _in(types.int64, 1),
         _in(types.complex128, 3),
-        _in(types.float64, 4),
+        _in(types.float64, 5),
+        _in(types.boolean, 2),
         types.int64,
         types.int64,
         types.float64[:, :, :, ::1],
@@ -52,6 +54,7 @@ def refine(
     which: Any,
     phases: Any,
     starts: Any,
+    free: Any,
     attempts: Any,
     steps: Any,
     found: Any,
@@ -60,7 +63,8 @@ def refine(
     """Fill found (N, k + 1, 2, 4) with quaternions of O_1 … O_{k−1}, R, L, and residual (N); return the failures.
 
     targets (N, 4) holds the phases a, ascending; phases (P, k, 4) the diagonals of D_j, of which target n uses row
-    which[n]. The first `attempts` of starts (S, k, 2, 4), quaternions of O_j and R, are tried for `steps` steps each.
+    which[n]. The first `attempts` of starts (N or 1, S, k, 2, 4), quaternions of O_j and R, are tried for `steps` steps
+    each. O_j and R turn only in the planes with free (k, 6).
     """
     k = phases.shape[1]
     count = 6 * k
@@ -73,7 +77,7 @@ def refine(
     twist, step = np.empty(4, np.complex128), np.empty(6)
     failures = 0
     for index in range(targets.shape[0]):
-        row = which[index]
+        row, own = which[index], index % starts.shape[0]
         for b in range(4):
             twist[b] = complex(math.cos(targets[index, b]), -math.sin(targets[index, b]))
         overall = np.inf
@@ -81,8 +85,8 @@ def refine(
             for j in range(k):
                 for q in range(2):
                     for m in range(4):
-                        new[j, q, m] = starts[start, j, q, m]
-            merit, damping, stretch, refused = np.inf, 1e-3, 1.0, 0
+                        new[j, q, m] = starts[own, start, j, q, m]
+            merit, damping, stretch, refused, weight = np.inf, 1e-3, 1.0, 0, 1.0
             for _step in range(steps):
                 # part[j] = B_j R e^{−ia}, what stands to the right of O_j; part[k − 1] is M R e^{−ia}.
                 for j in range(k):
@@ -127,44 +131,49 @@ def refine(
                                 old[j, q, m] = new[j, q, m]
                     if merit <= _DONE:
                         break
+                    # Turns of R cost little, those of O_j the more the nearer the target: where phases all but coincide
+                    # R has to turn far before the small errors left say anything about O_j.
+                    weight = min(1.0, math.sqrt(math.sqrt(merit)))
                     for j in range(k):
                         for t in range(6):
-                            p, q, r = _PAIRS[t, 0], _PAIRS[t, 1], 0
+                            scale = 0.0 if not free[j, t] else 2.0 * weight if j < k - 1 else 2.0
+                            p, q, r = PAIRS[t, 0], PAIRS[t, 1], 0
                             for b in range(4):
                                 for c in range(b, 4):
                                     if j < k - 1:
                                         z = np.conj(part[j, p, b]) * part[j, q, c]
                                         z -= np.conj(part[j, q, b]) * part[j, p, c]
-                                        column[6 * j + t, r] = 2.0 * z.imag
+                                        column[6 * j + t, r] = scale * z.imag
                                     else:
                                         a = 1.0 if b == p and c == q else -1.0 if b == q and c == p else 0.0
                                         sine = math.sin(targets[index, b] - targets[index, c])
-                                        column[6 * j + t, r] = 2.0 * a * sine
+                                        column[6 * j + t, r] = scale * a * sine
                                     r += 1
                     for r in range(10):
                         for m in range(r + 1):
-                            a = (
-                                1.0
-                                if (r == 0 or r == 4 or r == 7 or r == 9) and (m == 0 or m == 4 or m == 7 or m == 9)
-                                else 0.0
-                            )
+                            a = 0.0
                             for t in range(count):
                                 a += column[t, r] * column[t, m]
                             normal[r, m] = a
+                    # The sum of the diagonal equations says nothing: keep it apart, on the scale of the others.
+                    a = 0.25 * (normal[0, 0] + normal[4, 4] + normal[7, 7] + normal[9, 9])
+                    for r in range(4):
+                        for m in range(r + 1):
+                            normal[_DIAGONAL[r], _DIAGONAL[m]] += a
                 else:
                     refused += 1
-                    if merit < _NEAR and refused > 3:
+                    if refused > 3 and merit < _NEAR:
                         break
                     damping = damping if stretch == 2.0 else 8.0 * damping + 1e-15
                     stretch = 1.0
-                # Cholesky of normal + damping, tied to how far away the target still is.
-                shift = damping * min(1.0, merit) + 1e-16
+                # Cholesky, with damping tied to how far the target still is.
+                shift = 1.0 + damping * min(1.0, merit) + 1e-16
                 for r in range(10):
                     for m in range(r + 1):
-                        a = normal[r, m] + (shift if r == m else 0.0)
+                        a = normal[r, m] * shift + 1e-22 if r == m else normal[r, m]
                         for t in range(m):
                             a -= factor[r, t] * factor[m, t]
-                        factor[r, m] = math.sqrt(max(a, 1e-17)) if r == m else a / factor[m, m]
+                        factor[r, m] = math.sqrt(max(a, 1e-17 * normal[r, r], 1e-300)) if r == m else a / factor[m, m]
                 for r in range(10):
                     a = -error[r]
                     for t in range(r):
@@ -180,7 +189,7 @@ def refine(
                         a = 0.0
                         for r in range(10):
                             a += column[6 * j + t, r] * y[r]
-                        step[t] = 0.5 * stretch * a
+                        step[t] = 0.5 * stretch * a * (weight if j < k - 1 else 1.0)
                     for q in range(2):
                         # p (1 + u) and q (1 + w), normalised, for the turn v → u v − v w.
                         sign = 1.0 if q == 0 else -1.0

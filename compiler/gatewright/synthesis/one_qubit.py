@@ -3,7 +3,8 @@
 What the gates do is found from their matrices (`gatewright.synthesis.recognise`). The ways to combine them: Euler
 angles (Nielsen and Chuang, theorem 4.1); one or two fixed quarter turns between rotations, which cost nothing where
 they are virtual (McKay et al., PRA 96, 022330 (2017)); one equatorial pulse before a rotation about the pole; two
-equatorial pulses of least total angle; one general rotation.
+equatorial pulses of least total angle; one general rotation. For axes and pulses at other angles:
+`gatewright.synthesis.tilted`.
 """
 
 from __future__ import annotations
@@ -20,8 +21,9 @@ from gatewright.gates import Gate
 from gatewright.linalg import haar_unitary
 from gatewright.synthesis.euler import ROUNDING, axis_vector, euler_angles, fewest_turns, quaternion, rotation, settle
 from gatewright.synthesis.recognise import SAME, Equatorial, Fixed, General, Kind, NativeOneQubit, Turn, recognise
+from gatewright.synthesis.tilted import TwoTilted, tilted_ways, too_weak
 
-__all__ = ["Emission", "NativeOneQubit", "OneQubitPlan", "plan_one_qubit"]
+__all__ = ["Emission", "NativeOneQubit", "OneQubitPlan", "Rows", "plan_one_qubit"]
 
 Real: TypeAlias = NDArray[np.float64]
 Complex: TypeAlias = NDArray[np.complex128]
@@ -125,7 +127,7 @@ class OneQubitPlan:
         width = max(gate.n_parameters for gate in self.gates)
         gates, parameters = [], []
         for rows in _blocks(len(values)):
-            written = _Rows(len(values[rows]), width, self._local)
+            written = Rows(len(values[rows]), width, self._local)
             self._way.emit(written, values[rows], last[rows])
             gates.append(np.stack(written.gates, axis=1))
             parameters.append(np.stack(written.parameters, axis=1))
@@ -141,7 +143,7 @@ def _blocks(n: int) -> Iterator[slice]:
     return (slice(start, start + _BLOCK) for start in range(0, max(n, 1), _BLOCK))
 
 
-class _Rows:
+class Rows:
     """Operations being written, one column of all sites at a time."""
 
     def __init__(self, n: int, width: int, local: dict[int, int]) -> None:
@@ -152,6 +154,7 @@ class _Rows:
         self.parameters: list[Real] = []
 
     def add(self, index: int, where: Mask, values: dict[int, Real | float]) -> None:
+        """Write a column: a gate where wanted."""
         parameters = np.zeros((self.n, self.width))
         for slot, value in values.items():
             parameters[:, slot] = np.where(where, value, 0.0)
@@ -159,9 +162,11 @@ class _Rows:
         self.parameters.append(parameters)
 
     def fixed(self, pulse: Fixed, where: Mask) -> None:
+        """Write a fixed pulse."""
         self.add(pulse.index, where, dict(enumerate(pulse.parameters)))
 
     def turn(self, turn: Turn, copies: int, angle: Real, where: Mask | bool = True) -> None:
+        """Rotate by `angle` in (-π, π], by up to `copies` equal pulses."""
         value, count = turn.knob.split(angle, copies)
         for k in range(copies):
             self.add(turn.index, (angle != 0) & (count > k) & where, {turn.knob.slot: value})
@@ -179,6 +184,7 @@ class _Rows:
             self.add(gate.index, (theta != 0) & (count > k), {gate.turn.slot: value, gate.azimuth.slot: place})
 
     def general(self, gate: General, alpha: Real, beta: Real, gamma: Real, where: Mask) -> None:
+        """Write a general rotation, `beta` in [-π, π]."""
         back = (beta < 0) if gate.sign > 0 else (beta > 0)
         a, _ = gate.left.split(settle(alpha + _PI * back)[0])
         b, _ = gate.middle.split(np.where(back, -beta, beta))
@@ -205,7 +211,7 @@ class _Way(Protocol):
 
     def angles(self, u: Complex, tolerance: float) -> Real: ...
 
-    def emit(self, rows: _Rows, angles: Real, trailing: Mask) -> None: ...
+    def emit(self, rows: Rows, angles: Real, trailing: Mask) -> None: ...
 
 
 def _euler(u: Complex, frame: tuple[Real, Real], tolerance: float) -> Real:
@@ -249,7 +255,7 @@ class _TwoAxes:
         angles[half, 0], angles[half, 2] = settle(-angles[half, 2])[0], 0.0
         return fewest_turns(angles)[0] if self.both_ways else angles
 
-    def emit(self, rows: _Rows, angles: Real, trailing: Mask) -> None:
+    def emit(self, rows: Rows, angles: Real, trailing: Mask) -> None:
         alpha, beta, gamma = _gathered(angles, trailing)
         if self.both_ways:
             full = np.stack([alpha, beta, gamma], axis=1)
@@ -303,7 +309,7 @@ class _Pulsed:
         angles[two] = fewest_turns(generic)[0]
         return angles
 
-    def emit(self, rows: _Rows, angles: Real, trailing: Mask) -> None:
+    def emit(self, rows: Rows, angles: Real, trailing: Mask) -> None:
         alpha, beta, gamma = _gathered(angles, trailing)
         half = np.abs(beta) == _PI
         two = (beta != 0) & (beta != _QUARTER)
@@ -341,7 +347,7 @@ class _Steered:
         angles[half, 0], angles[half, 2] = settle(-angles[half, 2])[0], 0.0
         return fewest_turns(angles)[0]
 
-    def emit(self, rows: _Rows, angles: Real, trailing: Mask) -> None:
+    def emit(self, rows: Rows, angles: Real, trailing: Mask) -> None:
         beta, gamma = angles[:, 1], settle(angles[:, 2])[0]
         alpha = settle(angles[:, 0])[0]
         # R_n(α) R_m(β) R_n(γ) = R_n(α + γ) · [R_n(-γ) R_m(β) R_n(γ)], and for β = π also [R_n(φ) R_m(β) R_n(-φ)] with
@@ -379,7 +385,7 @@ class _One:
     def angles(self, u: Complex, tolerance: float) -> Real:
         return _euler(u, self.frame, tolerance)
 
-    def emit(self, rows: _Rows, angles: Real, trailing: Mask) -> None:
+    def emit(self, rows: Rows, angles: Real, trailing: Mask) -> None:
         if self.outer is None:
             rows.general(self.pulse, angles[:, 0], angles[:, 1], angles[:, 2], np.count_nonzero(angles, axis=1) > 0)
             return
@@ -428,7 +434,7 @@ class _TwoEquatorial:
         spread = np.where(one, 0.0, spread)
         return np.stack([theta, settle(tilt + spread)[0], settle(tilt - spread)[0]], axis=1)
 
-    def emit(self, rows: _Rows, angles: Real, trailing: Mask) -> None:
+    def emit(self, rows: Rows, angles: Real, trailing: Mask) -> None:
         theta, first, second = angles.T
         one = first == second
         rows.equatorial(self.pulse, np.where(one, 2 * theta, theta), first)
@@ -475,15 +481,16 @@ def plan_one_qubit(gates: Sequence[NativeOneQubit], *, passing: Sequence[ArrayLi
     [0, 1, 2]
     """
     kinds = [recognise(index, native) for index, native in enumerate(gates)]
-    plans = [_planned(way, gates) for way in _ways(kinds)]
+    ways = [*_ways(kinds), *tilted_ways(kinds, [native.virtual for native in gates])]
+    plans = [_planned(way, gates) for way in ways]
     if not plans:
         found = "; ".join(f"'{native.gate.name}' {kind.describe()}" for native, kind in zip(gates, kinds, strict=True))
         raise UnsupportedError(
             "cannot yet make every one-qubit unitary from these gates",
             required="a general rotation; or equatorial rotations; or rotations by any angle about an axis, with "
-            "rotations about an orthogonal axis or with a fixed gate that turns the axis by exactly a quarter",
+            "rotations about another axis or with a fixed gate that tilts the axis",
             found=found or "no one-qubit gate",
-            hint=f"an angle may be made of up to 4 equal pulses; axes and angles must be right to {SAME:.0e}",
+            hint=too_weak(kinds) or "an angle may be made of up to 64 equal pulses",
         )
     samples = _samples([plan._way.frame for plan in plans])
     timed = all(native.virtual or native.duration_ns is not None for native in gates)
@@ -543,7 +550,7 @@ def _pulsed(outer: Turn, copies: int, fixed: Sequence[Fixed]) -> Iterator[_Way]:
 
 def _planned(way: _Way, gates: Sequence[NativeOneQubit]) -> OneQubitPlan:
     used = sorted(kind.index for kind in way.members)
-    outer = any(isinstance(kind, Turn) for kind in way.members)
+    outer = any(isinstance(kind, Turn) for kind in way.members) and not isinstance(way, TwoTilted)
     return OneQubitPlan(
         gates=tuple(gates[index].gate for index in used),
         virtual=tuple(gates[index].virtual for index in used),

@@ -26,6 +26,7 @@ from numpy.typing import ArrayLike, NDArray
 __all__ = [
     "FORMS",
     "ROUNDING",
+    "SETS",
     "WALLS",
     "Polytope",
     "covers",
@@ -49,9 +50,9 @@ _QUARTER = np.pi / 4
 #: Phases of a class over (x, y, z), in descending order.
 _PHASES = np.array([[1.0, 1, -1], [1, -1, 1], [-1, 1, 1], [-1, -1, -1]])
 #: The sets of one, two and three phases whose sums are bounded, numbered from 0.
-_SETS = [subset for r in (1, 2, 3) for subset in itertools.combinations(range(4), r)]
+SETS = [subset for r in (1, 2, 3) for subset in itertools.combinations(range(4), r)]
 #: The sums over (x, y, z), shape (14, 3): ±2x, ±2y, ±2z and the eight ±x ± y ± z.
-FORMS: Vector = np.array([_PHASES[list(subset)].sum(axis=0) for subset in _SETS])
+FORMS: Vector = np.array([_PHASES[list(subset)].sum(axis=0) for subset in SETS])
 #: The alcove: WALLS @ p ≥ (0, 0, 0, −π/2).
 WALLS: Vector = np.array([[1.0, -1, 0], [0, 1, -1], [0, 1, 1], [-1, -1, 0]])
 _WALL_OFFSETS = np.array([0.0, 0, 0, -np.pi / 2])
@@ -83,8 +84,8 @@ def quantum_products() -> tuple[NDArray[np.int64], ...]:
         roots = np.exp(1j * np.pi * (2 * np.arange(4) + (r + 1) % 2) / 4)
         zeta = np.array(list(itertools.combinations(roots, r)))
         # The partition of the set {i_1 < … < i_r} (from 0) has parts 4 − r + j − i_j, for j = 0 … r − 1.
-        numbers = [k for k, subset in enumerate(_SETS) if len(subset) == r]
-        parts = [tuple(4 - r + j - i for j, i in enumerate(_SETS[k])) for k in numbers]
+        numbers = [k for k, subset in enumerate(SETS) if len(subset) == r]
+        parts = [tuple(4 - r + j - i for j, i in enumerate(SETS[k])) for k in numbers]
         powers = np.arange(r)[::-1]
         vandermonde = np.linalg.det(zeta[:, :, None] ** powers)
         alternants = np.array([np.linalg.det(zeta[:, :, None] ** (np.array(part) + powers)) for part in parts])
@@ -221,7 +222,7 @@ def reached(points: ArrayLike) -> Polytope:
     (True, 1.0)
     """
     # The empty product is the class of the lowest r phases: these sum to at most 0, and here to at least 0.
-    lowest = [subset == tuple(range(4 - len(subset), 4)) for subset in _SETS]
+    lowest = [subset == tuple(range(4 - len(subset), 4)) for subset in SETS]
     polytope = Polytope(np.where(lowest, 0.0, -np.inf))
     for point in np.asarray(points, dtype=np.float64).reshape(-1, 3):
         polytope = polytope.extended(point)

@@ -28,7 +28,7 @@ Complex: TypeAlias = NDArray[np.complex128]
 #: Axes count as parallel or orthogonal, and the model of a gate as right, within this.
 SAME = 2e-14
 # A rotation whose range is too short is made of at most so many equal pulses.
-_MOST_COPIES = 4
+_MOST_COPIES = 64
 _PI = float(np.pi)
 
 
