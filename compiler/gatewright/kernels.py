@@ -18,7 +18,7 @@ if TYPE_CHECKING:
 
 __all__ = ["load_kernels"]
 
-_OTHERS = "import gc; gc.disable(); import gatewright.mapping._kernels, gatewright.stages.windows"
+_OTHERS = "import gc; gc.disable(); import gatewright.mapping.search, gatewright.stages.windows"
 
 
 def load_kernels(tell: Callable[[str], None], device: Device | None = None) -> None:
@@ -54,6 +54,7 @@ def load_kernels(tell: Callable[[str], None], device: Device | None = None) -> N
     gc.disable()
     try:
         import gatewright.cost
+        import gatewright.mapping._beam
         import gatewright.stages._kernels
         import gatewright.synthesis._kernels
 
