@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 import sympy
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from gatewright.circuit import Builder
@@ -29,6 +29,7 @@ def test_every_parametrised_gate_of_the_table_has_a_form() -> None:
 
 
 @pytest.mark.parametrize("name", sorted(PARAMETRISED))
+@settings(max_examples=8)
 @given(values=st.lists(ANGLES, min_size=4, max_size=4))
 def test_rotations(name: str, values: list[float]) -> None:
     gate = GATES[name]
@@ -40,6 +41,7 @@ def test_rotations(name: str, values: list[float]) -> None:
 
 @pytest.mark.parametrize("name", sorted(PARAMETRISED))
 @pytest.mark.parametrize("controls", [0, 1, 2, 3])
+@settings(max_examples=8)
 @given(values=st.lists(ANGLES, min_size=4, max_size=4))
 def test_controlled_exactly(name: str, controls: int, values: list[float]) -> None:
     gate = GATES[name]
@@ -53,6 +55,7 @@ def test_controlled_exactly(name: str, controls: int, values: list[float]) -> No
 
 
 @pytest.mark.parametrize("name", sorted(PARAMETRISED))
+@settings(max_examples=8)
 @given(values=st.lists(ANGLES, min_size=4, max_size=4))
 def test_inverse_exactly(name: str, values: list[float]) -> None:
     gate = GATES[name]

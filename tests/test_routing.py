@@ -36,13 +36,31 @@ def coupling(graph: nx.Graph) -> Graph:
 
 
 def replay(graph: nx.Graph, ops: list[Op], routing: Routing) -> float:
-    """Check a routing against the circuit and the graph; return its cost: 1 a gate or a merging swap, else 3."""
+    """Check a routing against the circuit and the graph; return its cost.
+
+    A window on a pair costs what its CNOTs and swaps need: a CNOT 1, a swap 3, both 2, nothing more than 3.
+    """
     n = len(graph)
     where = dict(enumerate(routing.initial.tolist()))
     assert sorted(where.values()) == list(range(n))
     seen: dict[int, list[int]] = {}
-    last: dict[int, object] = {}
+    last: dict[int, list[object]] = {}
     cost, swaps = 0, 0
+
+    def window(p: int, q: int, content: str) -> int:
+        """Return what `content` adds to the open window of p and q, or to a new one."""
+        if last.get(p) is None or last.get(p) is not last.get(q):
+            last[p] = last[q] = [0, 3]
+        costs = last[p]
+        before = costs[0]
+        if content == "swap":
+            costs.reverse()
+        elif 0 in costs:
+            costs[:] = [1, 2] if costs[0] == 0 else [2, 1]
+        else:
+            costs[:] = [min(3, costs[0] + 1), min(3, costs[1] + 1)]
+        return costs[0] - before
+
     for event in routing.events.tolist():
         if event < 0:
             assert event == -1 - swaps
@@ -50,8 +68,7 @@ def replay(graph: nx.Graph, ops: list[Op], routing: Routing) -> float:
             swaps += 1
             assert graph.has_edge(p, q)
             where = {wire: {p: q, q: p}.get(at, at) for wire, at in where.items()}
-            cost += 1 if last.get(p) == last.get(q) == ("gate", frozenset((p, q))) else 3
-            last[p] = last[q] = "swap"
+            cost += window(p, q, "swap")
             continue
         wires, coupled = ops[event]
         for wire in wires:
@@ -59,8 +76,7 @@ def replay(graph: nx.Graph, ops: list[Op], routing: Routing) -> float:
         if coupled:
             p, q = where[wires[0]], where[wires[1]]
             assert graph.has_edge(p, q), f"operation {event} is not on an edge"
-            cost += 1
-            last[p] = last[q] = ("gate", frozenset((p, q)))
+            cost += window(p, q, "gate")
     assert swaps == len(routing.swaps)
     assert sorted(e for e in routing.events if e >= 0) == list(range(len(ops)))
     assert all(numbers == sorted(numbers) for numbers in seen.values()), "order is kept on every wire"

@@ -21,6 +21,7 @@ if TYPE_CHECKING:
     from gatewright.errors import GatewrightError
     from gatewright.gates import Gate
     from gatewright.inputs import read
+    from gatewright.parameters import Affine
     from gatewright.pipeline import CHAIN, check, compile, count
     from gatewright.program import Program
     from gatewright.proof import Proof, Verdict, check_program, read_program_proof, read_proof
@@ -28,6 +29,7 @@ if TYPE_CHECKING:
 
 __all__ = [
     "CHAIN",
+    "Affine",
     "Bound",
     "Builder",
     "Circuit",
@@ -62,6 +64,7 @@ _HOMES = {
     "errors": ("GatewrightError",),
     "gates": ("Gate",),
     "inputs": ("read",),
+    "parameters": ("Affine",),
     "pipeline": ("CHAIN", "check", "compile", "count"),
     "program": ("Program",),
     "proof": ("Proof", "Verdict", "check_program", "read_program_proof", "read_proof"),

@@ -117,7 +117,7 @@ class _Threader:
 
     def circuit(self, circuit: Circuit, start: Places, target: Places | None) -> Draft:
         settings = replace(self.draft.settings, placement=start, final=target)
-        made = replace(self.draft, circuit=circuit, expanded=circuit, settings=settings)
+        made = replace(self.draft, circuit=circuit, expanded=circuit, source=circuit, settings=settings)
         for stage in self.chain:
             made = stage(made)
         return made

@@ -16,7 +16,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from gatewright.errors import CircuitError
-from gatewright.gates import ANY, BARRIER, GATES, MEASURE, RESET, UNITARY, Gate, find_gate
+from gatewright.gates import ANY, BARRIER, DELAY, GATES, MEASURE, RESET, UNITARY, Gate, find_gate
 from gatewright.linalg import checked_unitary, kron
 from gatewright.parameters import INPUT_TYPE, Affine, Parameter, as_parameter, checked_values, within
 
@@ -76,6 +76,8 @@ class Circuit:
         Global phase, radians.
     qubit_registers, bit_registers : tuple of (str, int)
         Names and sizes, for writing; empty if there are none to keep.
+    calibrations : tuple of str
+        ``cal``, ``defcal`` and ``defcalgrammar`` statements of the program, kept as they stand for writing.
     symbolic : tuple of tuples of float or Affine
         All parameters of a gate of which some are not known yet.
     inputs : tuple of (str, str)
@@ -97,6 +99,7 @@ class Circuit:
     bit_registers: tuple[tuple[str, int], ...] = ()
     symbolic: tuple[tuple[Parameter, ...], ...] = ()
     inputs: tuple[tuple[str, str], ...] = ()
+    calibrations: tuple[str, ...] = ()
 
     @classmethod
     def from_unitary(cls, matrix: ArrayLike, *, tolerance: float = 1e-12, nearest: bool = False) -> Circuit:
@@ -212,7 +215,10 @@ class Circuit:
     ) -> Circuit:
         """Return the circuit with every unknown parameter changed."""
         rows = np.flatnonzero(self.is_symbolic)
-        made = [tuple([change(v) if isinstance(v, Affine) else v for v in row]) for row in self.symbolic]
+        made = {
+            k: tuple([change(v) if isinstance(v, Affine) else v for v in self.symbolic[k]])
+            for k in np.unique(self.link[rows]).tolist()
+        }
         parameters, link = self.parameters.copy(), self.link.copy()
         kept: list[tuple[Parameter, ...]] = []
         place: dict[int, int] = {}
@@ -349,7 +355,7 @@ class Circuit:
             raise CircuitError(
                 "too many qubits for a full matrix", required=f"{MAX_DENSE_QUBITS} at most", found=str(self.n_qubits)
             )
-        other = np.flatnonzero(~self.is_unitary & ~self.is_named(BARRIER.name))
+        other = np.flatnonzero(~self.is_unitary & ~self.is_named(BARRIER.name) & ~self.is_named(DELAY.name))
         if len(other):
             name = self.table[self.op[other[0]]].name
             if self.is_symbolic[other[0]]:
@@ -624,6 +630,12 @@ class Builder:
     def barrier(self, *qubits: int) -> Builder:
         """Append a barrier on `qubits`, or on all of them if none is given."""
         return self._append(BARRIER, qubits or tuple(range(self.n_qubits)))
+
+    def delay(self, duration: float, *qubits: int) -> Builder:
+        """Append a wait of `duration` nanoseconds on `qubits`, or on all of them if none is given."""
+        if not 0 <= duration < np.inf:
+            raise CircuitError("a delay is out of range", required="0 ns or more", found=str(duration))
+        return self._append(DELAY, qubits or tuple(range(self.n_qubits)), (float(duration),))
 
     def _append(self, kind: Gate, qubits: Sequence[int], parameters: Sequence[float] = (), link: int = -1) -> Builder:
         if kind.n_qubits not in (ANY, len(qubits)):

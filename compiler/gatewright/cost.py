@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
 from gatewright.errors import BudgetError, InputError, nearest_name
-from gatewright.gates import BARRIER, RESET
+from gatewright.gates import BARRIER, DELAY, RESET
 
 if TYPE_CHECKING:
     from gatewright.devices import Device
@@ -92,10 +92,11 @@ class Costs:
 
 @dataclass(frozen=True, slots=True)
 class Bound:
-    """A lower bound on two-qubit gates, and exactly what it bounds."""
+    """Lower bounds on two-qubit gates and on swaps, and exactly what they bound."""
 
     two_qubit_gates: int
     how: str
+    swaps: int = 0
 
 
 @nb.njit("f8(i4[::1], i8[::1], f8[::1], f8[::1], f8[::1])", cache=True, nogil=True)
@@ -128,15 +129,18 @@ def as_soon_as_possible(circuit: Circuit, durations: Vector) -> tuple[Vector, fl
 
 
 def is_virtual(circuit: Circuit, device: Device) -> NDArray[np.bool_]:
-    """Return which operations take no action on the device: virtual gates and barriers."""
+    """Return which operations take no action on the device: virtual gates, barriers and delays."""
     gates = device.gate_set.gates
-    names = {BARRIER.name, *(name for name, native in gates.items() if native.virtual)}
+    names = {BARRIER.name, DELAY.name, *(name for name, native in gates.items() if native.virtual)}
     return np.isin(circuit.op, [k for k, gate in enumerate(circuit.table) if gate.name in names])
 
 
 def operation_durations(circuit: Circuit, device: Device) -> Vector:
     """Return each operation's duration in nanoseconds, NaN where the device does not state it."""
-    return _per_operation(circuit, device, device.durations)
+    durations = _per_operation(circuit, device, device.durations)
+    waits = np.flatnonzero(circuit.is_named(DELAY.name))
+    durations[waits] = circuit.parameters[circuit.parameter_offsets[waits]]
+    return durations
 
 
 def operation_errors(circuit: Circuit, device: Device) -> Vector:
@@ -170,7 +174,7 @@ def count_costs(circuit: Circuit, device: Device, *, starts: Vector, swaps_inser
     """
     free = is_virtual(circuit, device)
     gate = circuit.is_gate
-    barrier = circuit.is_named(BARRIER.name)
+    barrier = circuit.is_named(BARRIER.name) | circuit.is_named(DELAY.name)
     two = gate & (circuit.widths == 2)
     durations = operation_durations(circuit, device)
     known = not np.isnan(durations).any()
@@ -179,7 +183,7 @@ def count_costs(circuit: Circuit, device: Device, *, starts: Vector, swaps_inser
         operations=int(np.count_nonzero(~barrier)),
         one_qubit_gates=int(np.count_nonzero(gate & (circuit.widths == 1) & ~free)),
         two_qubit_gates=int(np.count_nonzero(two)),
-        by_gate={name: number for name, number in circuit.counts().items() if name != BARRIER.name},
+        by_gate={name: number for name, number in circuit.counts().items() if name not in (BARRIER.name, DELAY.name)},
         depth=round(as_soon_as_possible(circuit, np.where(free, 0.0, 1.0))[1]),
         two_qubit_depth=round(as_soon_as_possible(circuit, two.astype(float))[1]),
         swaps_inserted=swaps_inserted,
@@ -206,6 +210,7 @@ def success_estimate(circuit: Circuit, device: Device, starts: Vector | None, du
     factor = np.where(circuit.is_gate, np.where(circuit.widths == 2, 1.25, 1.5), 1.0)
     log_success = float(np.log(np.maximum(1 - factor * errors, 1e-300)).sum())
     if starts is not None:
+        durations = np.where(circuit.is_named(DELAY.name), 0.0, durations)  # to wait is to idle
         owner = np.repeat(np.arange(len(circuit)), circuit.widths)
         order = np.lexsort((owner, circuit.qubits))
         wire, at = circuit.qubits[order], owner[order]

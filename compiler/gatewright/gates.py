@@ -16,7 +16,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from gatewright.errors import CircuitError, nearest_name
 
-__all__ = ["ANY", "BARRIER", "CONTROL", "GATES", "MEASURE", "RESET", "UNITARY", "Gate", "find_gate"]
+__all__ = ["ANY", "BARRIER", "CONTROL", "DELAY", "GATES", "MEASURE", "RESET", "UNITARY", "Gate", "find_gate"]
 
 Array = NDArray[np.complex128]
 MatrixFunction = Callable[[NDArray[np.float64]], Array]
@@ -261,6 +261,8 @@ GATES: dict[str, Gate] = _table(
 MEASURE = Gate("measure", 1)
 RESET = Gate("reset", 1)
 BARRIER = Gate("barrier", ANY)
+#: Nothing for a time, in nanoseconds, which is its parameter; like a barrier, nothing crosses it.
+DELAY = Gate("delay", ANY, 1)
 UNITARY = Gate("unitary", ANY)
 #: A mark among the operations while a program with classical control is read; no circuit keeps it.
 CONTROL = Gate("control", 0)

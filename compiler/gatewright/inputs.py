@@ -52,6 +52,7 @@ def load(
     nearest_unitary: bool = False,
     qubit_order: Literal["first", "last"] = "first",
     natives: Mapping[str, Gate] = MappingProxyType({}),
+    strict: bool = True,
 ) -> Source:
     """Read a program or a matrix, with what else is known about it.
 
@@ -68,6 +69,8 @@ def load(
         Where qubit 0 stands among the Kronecker factors of a matrix.
     natives : mapping of str to Gate, optional
         Gates that stay as they are where the program defines them.
+    strict : bool
+        Whether a definition of such a gate has to agree with it; if not, one that differs is the program's own.
 
     Raises
     ------
@@ -81,7 +84,9 @@ def load(
         data = read_bytes(path)
         if suffix in PROGRAM_SUFFIXES or not _MATRIX.match(data):
             text = decode(data, where=where)
-            return Source(read_program(text, where=where, natives=natives), qubit_map=read_map(text, where=where))
+            return Source(
+                read_program(text, where=where, natives=natives, strict=strict), qubit_map=read_map(text, where=where)
+            )
         source = data
     given = read_matrix(source, qubit_order=qubit_order, tolerance=tolerance, nearest=nearest_unitary, where=where)
     return Source(Circuit.from_unitary(given.matrix), given.moved)

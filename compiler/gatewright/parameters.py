@@ -91,7 +91,7 @@ class Affine:
     def __add__(self, other: Affine | float) -> Affine:
         """Return the sum."""
         if not isinstance(other, Affine):
-            return Affine(_finite(self.constant + other), self.terms)
+            return Affine(_finite(self.constant + other) + 0.0, self.terms)
         sums = dict(self.terms)
         for atom, factor in other.terms:
             sums[atom] = sums.get(atom, 0.0) + factor
@@ -231,7 +231,8 @@ def _affine(constant: float, terms: Mapping[str, float]) -> Affine:
     if len(terms) > MAX_ATOMS:
         raise ExpressionError("an expression has too many unknown parts", required=f"{MAX_ATOMS} at most")
     kept = tuple(sorted((atom, _finite(factor)) for atom, factor in terms.items() if factor))
-    return Affine(_finite(constant), kept)
+    # Adding zero turns -0.0 into 0.0, which is what its text is read as.
+    return Affine(_finite(constant) + 0.0, kept)
 
 
 def names_in(atom: str) -> tuple[str, ...]:
@@ -267,6 +268,8 @@ def _is_product(text: str) -> bool:
 
 def shown(value: Parameter) -> str:
     """Return a parameter as OpenQASM text."""
+    if not isinstance(value, Affine) and value.is_integer() and abs(value) < 2**53:
+        return str(int(value))
     return str(value) if isinstance(value, Affine) else angle_texts([value])[0]
 
 
@@ -296,7 +299,7 @@ def product(first: Parameter, second: Parameter) -> Parameter:
             )
         else:
             texts.append(f"({part})")
-    return Affine(0.0, (("*".join(sorted(texts)), 1.0),)) * factor
+    return Affine.of("*".join(sorted(texts))) * factor
 
 
 def _plain_product(atom: str) -> bool:

@@ -7,7 +7,6 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
 from typing import Any, overload
 
-import numpy as np
 from numpy.typing import ArrayLike
 
 from gatewright.branches import combined_costs, thread_program
@@ -16,11 +15,14 @@ from gatewright.cost import Bound, Costs, check_budget, count_costs, require_bud
 from gatewright.devices import Device
 from gatewright.errors import InputError, ProofError, nearest_name
 from gatewright.linalg import checked_unitary
+from gatewright.lower_bounds import lower_bound
 from gatewright.program import Program
-from gatewright.proof import Proof, Verdict, check_legal, check_program, check_proof
+from gatewright.proof import Fingerprints, Proof, Verdict, check_legal, check_program, check_proof
 from gatewright.proof.dense import BINDINGS, dense_distance, dense_work
+from gatewright.proof.judge import judge
 from gatewright.result import ProgramResult, Result
 from gatewright.stages.draft import Draft, Settings, Stage
+from gatewright.stages.edges import PREFERENCES
 from gatewright.stages.expand import expand
 from gatewright.stages.fuse import fuse
 from gatewright.stages.parametrise import parametrise
@@ -28,15 +30,14 @@ from gatewright.stages.place import place
 from gatewright.stages.restore import restore
 from gatewright.stages.route import route
 from gatewright.stages.schedule import schedule
+from gatewright.stages.settle import settle
 from gatewright.stages.synthesise import synthesise
-from gatewright.stages.windows import TWO, fuse_circuit, window_unitaries
 from gatewright.synthesis.native import NativeSet, native_set
-from gatewright.synthesis.toolkit import least_mixed_uses
 
 __all__ = ["CHAIN", "EFFORTS", "Result", "check", "compile", "count"]
 
 #: The stages in order. A caller may pass a chain of their own to `compile`; what it makes is proven all the same.
-CHAIN: tuple[Stage, ...] = (parametrise, expand, place, route, restore, fuse, synthesise, schedule)
+CHAIN: tuple[Stage, ...] = (parametrise, expand, place, route, restore, fuse, synthesise, schedule, settle)
 
 EFFORTS = ("quick", "standard", "deep")
 
@@ -56,6 +57,7 @@ def compile(  # noqa: A001
     seed: int = 0,
     tolerance: float = 1e-12,
     effort: str = "standard",
+    prefer: str = "uses",
     placement: Sequence[int] | None = None,
     final_placement: Sequence[int] | None = None,
     budget: Mapping[str, float] | None = None,
@@ -74,6 +76,7 @@ def compile(  # noqa: A001
     seed: int = 0,
     tolerance: float = 1e-12,
     effort: str = "standard",
+    prefer: str = "uses",
     placement: Sequence[int] | None = None,
     final_placement: Sequence[int] | None = None,
     budget: Mapping[str, float] | None = None,
@@ -91,6 +94,7 @@ def compile(  # noqa: A001
     seed: int = 0,
     tolerance: float = 1e-12,
     effort: str = "standard",
+    prefer: str = "uses",
     placement: Sequence[int] | None = None,
     final_placement: Sequence[int] | None = None,
     budget: Mapping[str, float] | None = None,
@@ -113,6 +117,9 @@ def compile(  # noqa: A001
         Nothing else is approximated. A matrix may be non-unitary by as much.
     effort : {"standard", "quick", "deep"}
         How long to search for placements.
+    prefer : {"uses", "fidelity", "duration"}
+        What is made least in each window where its qubits have several entanglers: the number of uses, the loss of
+        fidelity, or the duration. The others decide between equals. What the device does not state is not compared.
     placement : sequence of int, optional
         Physical qubit of each source qubit at the start; -1 leaves one free.
     final_placement : sequence of int, optional
@@ -151,6 +158,8 @@ def compile(  # noqa: A001
     """
     if effort not in EFFORTS:
         raise InputError(f"unknown effort '{str(effort)[:60]}'", hint=nearest_name(str(effort), EFFORTS))
+    if prefer not in PREFERENCES:
+        raise InputError(f"unknown preference '{str(prefer)[:60]}'", hint=nearest_name(str(prefer), PREFERENCES))
     if not 0 <= tolerance <= 1e-2:
         raise InputError("the tolerance is out of range", required="0 to 0.01", found=str(tolerance))
     clock = _Clock(progress)
@@ -164,13 +173,14 @@ def compile(  # noqa: A001
         seed=seed,
         tolerance=tolerance,
         effort=effort,
+        prefer=prefer,
         placement=_placement(placement, asked),
         final=_placement(final_placement, asked),
     )
     clock.start("plan")
     native = native_set(device.gate_set, tolerance=tolerance)
     first = asked if isinstance(asked, Circuit) else next(asked.circuits())
-    draft = Draft(circuit=first, device=device, settings=settings, native=native, expanded=first)
+    draft = Draft(circuit=first, device=device, settings=settings, native=native, expanded=first, source=first)
     given: dict[str, Any] = {"device": device, "seed": seed, "tolerance": tolerance, "effort": effort, "moved": moved}
     if isinstance(asked, Program):
         return _compile_program(asked, draft, chain, clock, budget or {}, given)
@@ -178,11 +188,13 @@ def compile(  # noqa: A001
         clock.start(stage.__name__)
         draft = stage(draft)
     clock.start("prove")
-    proof = Proof(draft.steps)
+    proof = Proof(draft.steps, Fingerprints.of(asked, draft.circuit, device))
     verdict = proven(asked, draft.circuit, proof, device=device, tolerance=tolerance)
     clock.start("count")
     costs = count_costs(draft.circuit, device, starts=draft.starts, swaps_inserted=draft.swaps)
-    bound = _lower_bound(asked, draft.expanded, native, tolerance, stays=verdict.initial == verdict.final)
+    clock.start("bound")
+    stays = verdict.initial == verdict.final
+    bound = lower_bound(draft, asked, stays=stays, placement=settings.placement)
     clock.stop()
     return Result(
         circuit=draft.circuit,
@@ -229,7 +241,10 @@ def _compile_program(
     clock.start("compile circuits")
     threaded = thread_program(source, draft, chain)
     clock.start("prove")
-    proofs = tuple(Proof(part.steps) for part in threaded.drafts)
+    proofs = tuple(
+        Proof(part.steps, Fingerprints.of(circuit, part.circuit, device))
+        for circuit, part in zip(source.circuits(), threaded.drafts, strict=True)
+    )
     slack = _window_tolerance(draft.native, tolerance)
     verdict = check_program(source, threaded.program, proofs, device=device, tolerance=slack)
     clock.start("count")
@@ -237,7 +252,8 @@ def _compile_program(
     for circuit, part in zip(source.circuits(), threaded.drafts, strict=True):
         costs.append(count_costs(part.circuit, device, starts=part.starts, swaps_inserted=part.swaps))
         stays = bool((part.initial == part.final)[: source.n_qubits].all())
-        bounds.append(_lower_bound(circuit, part.expanded, draft.native, tolerance, stays=stays))
+        # Any circuit may begin where the one before it ends, wherever that is.
+        bounds.append(lower_bound(part, circuit, stays=stays, placement=None))
     total = combined_costs(threaded.program, costs)
     how = max((bound.how for bound in bounds), key=len) + "; summed over the circuits of the program"
     clock.stop()
@@ -247,7 +263,7 @@ def _compile_program(
         proofs=proofs,
         verdict=verdict,
         costs=total,
-        lower_bound=Bound(sum(bound.two_qubit_gates for bound in bounds), how),
+        lower_bound=Bound(sum(b.two_qubit_gates for b in bounds), how, sum(b.swaps for b in bounds)),
         budget=check_budget(total, budget),
         seconds=clock.seconds,
         **given,
@@ -279,9 +295,9 @@ def check(
     device : Device, optional
         Without it, legality is not checked.
     proof : Proof, optional
-        With it, circuits of any size; without, full unitaries are compared, up to about 10 qubits.
+        Without it, whatever can decide is tried: see `gatewright.proof.judge`.
     initial, final : sequence of int, optional
-        Without a proof: output qubit of each source qubit at the two ends; each at its own number by default.
+        Without a proof: output qubit of each source qubit at the two ends; found if not given.
     tolerance : float
         Largest operator-norm distance that counts as equal: of a window with a proof, of the whole without one.
 
@@ -289,38 +305,23 @@ def check(
     ------
     ProofError
         Not equal, or not legal, and where.
+    UndecidedError
+        Without a proof: no method could tell.
     """
     if proof is not None:
         return check_proof(source, output, proof, device=device, tolerance=tolerance)
     if device is not None:
         check_legal(output, device)
-    places = [tuple(range(source.n_qubits)) if given is None else tuple(given) for given in (initial, final)]
-    for name, given in zip(("initial", "final"), places, strict=True):
-        if len(set(given)) != source.n_qubits or not all(0 <= q < output.n_qubits for q in given):
+    for name, given in (("initial", initial), ("final", final)):
+        if given is not None and (
+            len(set(given)) != source.n_qubits or not all(0 <= q < output.n_qubits for q in given)
+        ):
             raise InputError(
                 f"the {name} placement does not fit",
                 required=f"{source.n_qubits} different qubits below {output.n_qubits}",
                 found=", ".join(map(str, given[:16])),
             )
-    distance = dense_distance(source, output, *places)
-    if not distance <= tolerance:
-        raise ProofError(
-            "not equal: the full unitaries differ",
-            distance=distance,
-            required=f"operator-norm distance at most {tolerance:.3g}",
-            found=f"{distance:.6g}",
-            hint="check with the --proof file to see which window differs",
-        )
-    return Verdict(
-        error_bound=distance,
-        windows=0,
-        worst_window=0,
-        worst_distance=0.0,
-        initial=places[0],
-        final=places[1],
-        method="full unitaries compared; qubits beyond the source's taken to start and end in |0⟩"
-        + (f"; at {BINDINGS} random values of the unknown parameters: evidence, no proof" if source.symbolic else ""),
-    )
+    return judge(source, output, initial=initial, final=final, tolerance=tolerance)
 
 
 def _placement(given: Sequence[int] | None, circuit: Circuit | Program) -> tuple[int, ...] | None:
@@ -359,32 +360,6 @@ def _second_opinion(source: Circuit, output: Circuit, verdict: Verdict) -> Verdi
     if source.symbolic:
         how += f", at {BINDINGS} random values of the unknown parameters"
     return replace(verdict, method=verdict.method + how)
-
-
-def _lower_bound(circuit: Circuit, expanded: Circuit, native: NativeSet, tolerance: float, *, stays: bool) -> Bound:
-    """Sum the least number of entanglers over the input's own windows."""
-    fused = fuse_circuit(expanded)
-    if not native.entanglers or not np.count_nonzero(fused.kind == TWO):
-        return Bound(0, "no two-qubit windows in the input")
-    _, two = window_unitaries(expanded, fused)
-    tools = [tool.entangler for tool in native.straight]
-    counts = least_mixed_uses(two, tools, tolerance=tolerance)
-    names = " or ".join(f"'{tool.gate.name}'" for tool in native.straight)
-    of_what = "the input" if expanded is circuit else "the input, written in gates of one and two qubits"
-    how = (
-        f"sum over the two-qubit windows of {of_what}, of the exact least number of {names} that "
-        "each needs on its own, with free one-qubit gates and all-to-all connectivity"
-    )
-    if not stays:
-        counts = np.minimum(counts, least_mixed_uses(two, tools, tolerance=tolerance, exchanged=True))
-        how += ", its two wires exchanged where that needs fewer"
-    if len(two) == 1 and stays and len(tools) == 1 and int(counts[0]):
-        how += f"; here {tools[0].reason(two[0], tolerance=tolerance)}"
-    how += (
-        "; a bound for circuits that keep this partition into windows, not the optimum of the whole circuit: "
-        "larger windows may need fewer"
-    )
-    return Bound(int(counts.sum()), how)
 
 
 class _Clock:

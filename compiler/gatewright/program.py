@@ -6,8 +6,9 @@ programs of the same shape can be walked side by side, and there is a place for 
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
+from types import MappingProxyType
 from typing import TypeAlias
 
 import numpy as np
@@ -16,9 +17,12 @@ from numpy.typing import NDArray
 from gatewright.circuit import Circuit, Piece, assemble
 from gatewright.classical import Bits, Expression, Literal, Name, Operation, leaves
 from gatewright.gates import MEASURE, UNITARY
-from gatewright.parameters import Parameter
+from gatewright.parameters import Parameter, checked_values
 
 __all__ = ["Assign", "Block", "If", "Leave", "Mark", "Program", "Statement", "While", "split_at_marks"]
+
+
+NO_VALUES: Mapping[str, float] = MappingProxyType({})
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -130,6 +134,16 @@ class Program:
             replace(template, matrices=tuple(matrices), symbolic=tuple(symbolic)), template.n_qubits, pieces
         )[0]
 
+    @property
+    def inputs(self) -> tuple[tuple[str, str], ...]:
+        """Names that the program is given values for when it runs, with their OpenQASM types."""
+        return self.body.circuits[0].inputs
+
+    def bind(self, values: Mapping[str, float]) -> Program:
+        """Put numbers in the place of inputs, in gates and in classical expressions; see `Circuit.bind`."""
+        known = checked_values(self.inputs, values)
+        return replace(self, body=_map(self.body, lambda circuit: circuit.bind(known), known))
+
     def map_circuits(self, change: Callable[[Circuit], Circuit]) -> Program:
         """Return the program with every circuit replaced by what `change` makes of it."""
         return replace(self, body=_map(self.body, change))
@@ -152,17 +166,31 @@ def _circuits(block: Block) -> Iterator[Circuit]:
             yield from _circuits(inner)
 
 
-def _map(block: Block, change: Callable[[Circuit], Circuit]) -> Block:
+def _given(expression: Expression, values: Mapping[str, float]) -> Expression:
+    """Put numbers in the place of names in an expression."""
+    match expression:
+        case Name(name) if name in values:
+            return Literal(str(int(values[name])) if values[name].is_integer() else repr(values[name]))
+        case Operation(op, operands):
+            return Operation(op, tuple(_given(operand, values) for operand in operands))
+    return expression
+
+
+def _map(block: Block, change: Callable[[Circuit], Circuit], values: Mapping[str, float] = NO_VALUES) -> Block:
     made = []
     statements: list[Statement] = []
     for circuit, statement in zip(block.circuits, (*block.statements, None), strict=True):
         made.append(change(circuit))
         match statement:
             case If(condition, then, otherwise):
-                statements.append(If(condition, _map(then, change), _map(otherwise, change)))
+                statements.append(
+                    If(_given(condition, values), _map(then, change, values), _map(otherwise, change, values))
+                )
             case While(condition, body):
-                statements.append(While(condition, _map(body, change)))
-            case Assign() | Leave():
+                statements.append(While(_given(condition, values), _map(body, change, values)))
+            case Assign(target, value):
+                statements.append(Assign(target, _given(value, values)))
+            case Leave():
                 statements.append(statement)
     return Block(tuple(made), tuple(statements))
 

@@ -9,8 +9,8 @@ from gatewright._version import __version__
 __all__ = ["build_parser"]
 
 _EXITS = (
-    "exit codes: 0 done; 1 the input, gate set or device is at fault; 2 usage; 3 not proven equal, or not legal; "
-    "4 over budget; 130 interrupted"
+    "exit codes: 0 done; 1 the input, gate set or device is at fault; 2 usage; 3 not proven equal (different or "
+    "undecided), or not legal; 4 over budget; 130 interrupted"
 )
 _INPUT = "OpenQASM 2 or 3, or a unitary as .npy, .npz, .csv, .txt or .json; - for standard input"
 _JSON = "write the summary as JSON to FILE, - for standard output"
@@ -26,6 +26,22 @@ def _budget(text: str) -> tuple[str, float]:
     if not mark or not name or value != value:
         raise argparse.ArgumentTypeError(f"{text[:60]!r}: a budget is NAME=NUMBER, such as two_qubit_gates=40")
     return name, value
+
+
+def _value(text: str) -> tuple[str, float]:
+    name, mark, value = text.partition("=")
+    # Imported here: --help loads nothing that reads expressions.
+    from gatewright.errors import ExpressionError
+    from gatewright.expressions import parse
+
+    try:
+        number = parse(value, imaginary=False).real()
+    except ExpressionError:
+        mark = ""
+        number = 0.0
+    if not mark or not name.isidentifier():
+        raise argparse.ArgumentTypeError(f"{text[:60]!r}: a value is NAME=NUMBER, such as theta=0.3 or theta=pi/4")
+    return name, number
 
 
 def _tolerance(text: str) -> float:
@@ -107,6 +123,13 @@ def _compile_options(parser: argparse.ArgumentParser) -> None:
         help="how long to search for placements (default: standard)",
     )
     parser.add_argument(
+        "--prefer",
+        choices=("uses", "fidelity", "duration"),
+        default="uses",
+        help="what is made least where qubits have several entanglers: their uses (the default), the loss of fidelity, "
+        "or the duration",
+    )
+    parser.add_argument(
         "--tolerance",
         type=_tolerance,
         default=1e-12,
@@ -115,6 +138,15 @@ def _compile_options(parser: argparse.ArgumentParser) -> None:
     )
     parser.add_argument(
         "--placement", type=_placement, metavar="Q,Q,...", help="physical qubit of each source qubit, -1 where free"
+    )
+    parser.add_argument(
+        "--set",
+        type=_value,
+        action="append",
+        default=[],
+        metavar="NAME=VALUE",
+        help="give an input of the program its value before compiling; those that are not set stay open in the "
+        "output; may be repeated",
     )
     parser.add_argument(
         "--budget",
@@ -166,7 +198,7 @@ def _add_check(commands: argparse._SubParsersAction) -> None:  # type: ignore[ty
     parser.add_argument("source", metavar="SOURCE", help=_INPUT)
     parser.add_argument("output", metavar="OUTPUT", help="OpenQASM program to judge")
     parser.add_argument("--device", metavar="FILE", help="device file (TOML); without it, legality is not checked")
-    parser.add_argument("--proof", metavar="FILE", help="proof file; without it, up to about 10 qubits are compared")
+    parser.add_argument("--proof", metavar="FILE", help="proof file; without it, whatever can decide is tried")
     parser.add_argument("--json", metavar="FILE", help=_JSON)
     parser.add_argument(
         "--tolerance",

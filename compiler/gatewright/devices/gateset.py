@@ -33,7 +33,7 @@ from gatewright.errors import (
     shorten,
 )
 from gatewright.expressions import Expression, parse
-from gatewright.gates import BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
+from gatewright.gates import BARRIER, DELAY, GATES, MEASURE, RESET, UNITARY, Gate
 from gatewright.linalg import checked_unitary, distance, reorder_qubits, unitarity_defect
 
 __all__ = [
@@ -62,7 +62,7 @@ _NAME = re.compile(r"[a-z][A-Za-z0-9_]{0,31}")
 
 #: Words of OpenQASM 2 and 3 that cannot name a gate, and what operations of a circuit are called.
 _RESERVED = frozenset(
-    f"{MEASURE.name} {RESET.name} {BARRIER.name} {UNITARY.name} "
+    f"{MEASURE.name} {RESET.name} {BARRIER.name} {DELAY.name} {UNITARY.name} "
     "gate opaque include def cal defcal defcalgrammar extern box let break continue if else end return for while in "
     "switch case default nop pragma input output const readonly mutable qreg creg qubit bit bool int uint float angle "
     "complex array void duration stretch gphase inv pow ctrl negctrl dim durationof delay true false pi tau euler im "

@@ -1,11 +1,12 @@
-"""Compiled loops of placement and routing: operation lines, the SABRE sweep, weaving, graph embedding.
+"""Compiled loops of routing: running what can run, looking ahead, the greedy sweep, weaving.
 
-The sweep is the heuristic search of Li, Ding and Xie, ASPLOS 2019, arXiv:1809.02573; the embedding is a
-backtracking search with the fewest-candidates-first rule of Haralick and Elliott, Artif. Intell. 14, 263 (1980).
+The sweep is a heuristic search in the manner of Li, Ding and Xie, ASPLOS 2019, arXiv:1809.02573.
 
-Every wire has a *line*: its operations in order, closed by -1 at both ends. Beside each entry stand the partner on
-the other wire of a two-qubit gate (-1 for any other operation, -2 at the ends) and where that gate is on the
-partner's line. Callers allocate the work arrays, and slices are not assigned to: both keep compilation short.
+Every wire has a *line*: its operations in order, closed by a sentinel. An entry of `lane` holds the operation (-1 at
+the end), the partner's wire of a two-qubit gate (-1 for any other operation, -2 at the end), where the gate is on the
+partner's line, the ordinal of its group on the wire, and where the group stops. Operations of one group commute and
+run in any order; a wire's state is the first entry of its group, how many of them are left and which are done.
+Callers allocate the work arrays, and slices are not assigned to: both keep compilation short.
 """
 
 # mypy: disable-error-code="no-untyped-def, untyped-decorator"
@@ -14,424 +15,426 @@ from __future__ import annotations
 import numpy as np
 from numba import njit
 
-__all__ = ["embed", "link", "sweep", "weave"]
+__all__ = [
+    "CLOCK", "CURRENT", "DONE", "EVENTS", "GROUP", "HEAD", "LEFT", "MATE", "OCCUPANT", "OTHER", "PENDING", "POSITION", "ROWS",
+    "SHAKEN", "SPOT", "STACK", "STALE", "SWAPPED", "TOUCHED", "WAITING", "WAITS", "advance", "survey", "sweep", "weave",
+]  # fmt: skip
+
+#: Rows of the integer state: per wire its qubit; per qubit its wire; per wire the head of its line, the operations left
+#: in the head's group, its place in the list of waiting wires; that list; per qubit the other end of its open window,
+#: and with which other it was swapped last, if nothing came after; per wire whether its outlook is stale, and whether it
+#: is on the stack; the wires to be looked at again; the stack.
+POSITION, OCCUPANT, HEAD, LEFT, SPOT, WAITS, MATE, SWAPPED, STALE, PENDING, TOUCHED, STACK, ROWS = range(13)
+#: Rows of the float state: what a qubit's open window costs, what it would cost with its wires exchanged, the time.
+CURRENT, OTHER, CLOCK = range(3)
+#: Places in the counts.
+WAITING, EVENTS, DONE, SHAKEN = range(4)
+#: Operations of a group at most: their marks are the bits of one integer.
+GROUP = 60
 
 _MULTIPLIER = np.uint64(0x2545F4914F6CDD1D)  # xorshift64*: Vigna, ACM Trans. Math. Softw. 42, 30 (2016)
 _S12, _S25, _S27, _S33 = np.uint64(12), np.uint64(25), np.uint64(27), np.uint64(33)
+_ONE = np.int64(1)
+
+_STATE = "int32[:, ::1], int64[::1], float64[:, ::1], int64[::1]"
+
+
+@njit(inline="always")
+def advance(
+    lane, wires, offsets, entries, costs, starts, neighbours, distance, weight, top, events,
+    state, done, tally, counts,
+):  # fmt: skip
+    """Run everything that can run, beginning at the `top` wires on the stack; return what it costs.
+
+    `costs` has for each operation the entanglers it needs, and those it needs together with a swap; its last row has
+    those of a swap alone, and the most that any window needs.
+    """
+    n = starts.shape[0] - 1
+    most = costs[costs.shape[0] - 1, 1]
+    record = events.shape[0] > 0
+    spent = 0.0
+    while top > 0:
+        top -= 1
+        w = state[STACK, top]
+        state[PENDING, w] = 0
+        if state[STALE, w] != 2:
+            state[STALE, w] = 2
+            state[TOUCHED, counts[SHAKEN]] = w
+            counts[SHAKEN] += 1
+        waits = False
+        e = state[HEAD, w]
+        stop = lane[e, 4]
+        while e < stop:
+            if done[w] >> (e - state[HEAD, w]) & 1:
+                e += 1
+                continue
+            g = lane[e, 0]
+            x = lane[e, 1]
+            if x >= 0:
+                c = lane[e, 2]
+                if c >= lane[state[HEAD, x], 4]:
+                    e += 1
+                    continue
+                p = state[POSITION, w]
+                q = state[POSITION, x]
+                if distance[p, q] != 1:
+                    waits = True
+                    if state[SPOT, x] < 0:
+                        state[SPOT, x] = counts[WAITING]
+                        state[WAITS, counts[WAITING]] = x
+                        counts[WAITING] += 1
+                        if state[STALE, x] != 2:
+                            state[STALE, x] = 2
+                            state[TOUCHED, counts[SHAKEN]] = x
+                            counts[SHAKEN] += 1
+                    e += 1
+                    continue
+                plain = costs[g, 0]
+                crossed = costs[g, 1]
+                begin = 0.0
+                late = max(tally[CLOCK, p], tally[CLOCK, q])
+                if state[MATE, p] == q and state[MATE, q] == p:
+                    begin = tally[CURRENT, p]
+                    if tally[OTHER, p] == 0.0:
+                        plain = costs[g, 1]
+                        crossed = costs[g, 0]
+                    elif begin > 0.0:
+                        plain = min(most, plain + begin)
+                        crossed = min(most, costs[g, 0] + tally[OTHER, p])
+                state[MATE, p] = q
+                state[MATE, q] = p
+                state[SWAPPED, p] = -1
+                state[SWAPPED, q] = -1
+                tally[CURRENT, p] = plain
+                tally[CURRENT, q] = plain
+                tally[OTHER, p] = crossed
+                tally[OTHER, q] = crossed
+                tally[CLOCK, p] = late + plain - begin
+                tally[CLOCK, q] = late + plain - begin
+                i = starts[p]
+                while neighbours[i] != q:
+                    i += 1
+                spent += (plain - begin) * weight[i]
+                counts[DONE] += 1
+                if record:
+                    events[counts[EVENTS]] = g
+                    counts[EVENTS] += 1
+            else:
+                runs = True
+                for j in range(offsets[g], offsets[g + 1]):
+                    if entries[j] >= lane[state[HEAD, wires[j]], 4]:
+                        runs = False
+                        break
+                if not runs:
+                    e += 1
+                    continue
+            for j in range(offsets[g], offsets[g + 1]):
+                y = wires[j]
+                done[y] |= _ONE << (entries[j] - state[HEAD, y])
+                state[LEFT, y] -= 1
+                if x < 0 and y < n:
+                    state[MATE, state[POSITION, y]] = -1
+                if state[LEFT, y] == 0:
+                    h = lane[state[HEAD, y], 4]
+                    state[HEAD, y] = h
+                    state[LEFT, y] = lane[h, 4] - h
+                    done[y] = 0
+                if y != w and state[PENDING, y] == 0:
+                    state[PENDING, y] = 1
+                    state[STACK, top] = y
+                    top += 1
+            e += 1
+            if e - state[HEAD, w] > 0 and lane[state[HEAD, w], 4] == stop:
+                continue
+            e = state[HEAD, w]
+            stop = lane[e, 4]
+            waits = False
+        if waits != (state[SPOT, w] >= 0):
+            if waits:
+                state[SPOT, w] = counts[WAITING]
+                state[WAITS, counts[WAITING]] = w
+                counts[WAITING] += 1
+            else:
+                counts[WAITING] -= 1
+                y = state[WAITS, counts[WAITING]]
+                state[WAITS, state[SPOT, w]] = y
+                state[SPOT, y] = state[SPOT, w]
+                state[SPOT, w] = -1
+    return spent
+
+
+@njit(inline="always")
+def survey(lane, starts, neighbours, distance, ahead, rise, pull, w, state, done):
+    """Fill `pull` on the edges of wire w: what moving w along each changes in the weighted sum of its distances ahead.
+
+    Returns that sum, of distances beyond 1, as it is; a gate is as deep as it is on the later of its wires.
+    """
+    depths = ahead.shape[1]
+    p = state[POSITION, w]
+    first = starts[p]
+    last = starts[p + 1]
+    for i in range(first, last):
+        pull[i] = 0.0
+    total = 0.0
+    e = state[HEAD, w]
+    base = lane[e, 3] - (state[SPOT, w] < 0)
+    stop = lane[e, 4]
+    head = e
+    while lane[e, 1] >= -1 and lane[e, 3] - base < depths:
+        x = lane[e, 1]
+        if x >= 0 and (e >= stop or not done[w] >> (e - head) & 1):
+            h = state[HEAD, x]
+            depth = max(lane[e, 3] - base, lane[lane[e, 2], 3] - lane[h, 3] + (state[SPOT, x] < 0))
+            if depth < depths:
+                home = state[POSITION, x]
+                free = 1 if lane[e, 3] == lane[e + 1, 3] or lane[e, 3] == lane[e - 1, 3] else 0
+                a = ahead[free, depth]
+                d = rise[distance[home, p]]
+                total += a * (d - rise[1])
+                for i in range(first, last):
+                    q = neighbours[i]
+                    if q != home:
+                        pull[i] += a * (rise[distance[home, q]] - d)
+        e += 1
+    return total
 
 
 @njit(
-    "void(int32[::1], int32[::1], uint8[::1], int32[::1], int32[::1], int32[::1], int32[::1], int32[::1])",
-    cache=True,
-    nogil=True,
-)
-def link(wires, offsets, coupled, cursor, line, mates, cross, layer):
-    """Fill the lines and the ASAP layer of each operation; `cursor` starts at the first entry of each line."""
-    for g in range(coupled.shape[0]):
-        first = offsets[g]
-        stop = offsets[g + 1]
-        deep = 0
-        for j in range(first, stop):
-            w = wires[j]
-            at = cursor[w]
-            earlier = line[at - 1]
-            if earlier >= 0 and layer[earlier] >= deep:
-                deep = layer[earlier] + 1
-            line[at] = g
-            mates[at] = -1
-            if coupled[g] and j < first + 2:
-                x = wires[2 * first + 1 - j]
-                mates[at] = x
-                cross[at] = cursor[x] if j == first else cursor[x] - 1
-            cursor[w] = at + 1
-        layer[g] = deep
-
-
-@njit(
-    "Tuple((int64, int64, float64, int64[::1]))(int32[::1], int32[::1], uint8[::1], int64,"
-    "int32[::1], int32[::1], int32[::1], int32[::1],"
-    "int32[::1], int32[::1], int32[::1], int16[:, ::1], float32[::1], int32[::1],"
-    "float64[::1], float64, float64, int64, int32[::1], int32[:, ::1], float64[::1], int64[::1], uint64, boolean)",
+    "Tuple((int64, float64, int64[::1]))(int32[:, ::1], int32[::1], int32[::1], int32[::1], float32[:, ::1],"
+    "int32[::1], int32[::1], int32[::1], int16[:, ::1], float32[::1], float32[:, ::1], float32[::1], float64[::1],"
+    "int64[::1], float64[::1], " + _STATE + ", int64[::1], int64, uint64, boolean)",
     cache=True,
     nogil=True,
 )
 def sweep(
-    wires, offsets, coupled, step,
-    cursor, line, mates, cross,
-    starts, neighbours, twin, distance, weight, position,
-    ahead, price, decay, patience, arrived, work, pull, events, state, record,
+    lane, wires, offsets, entries, costs, starts, neighbours, twin, distance, weight, ahead, rise, terms, script, pull,
+    state, done, tally, counts, moved, patience, seed, record,
 ):  # fmt: skip
-    """Run one pass over all operations; `position` (wire to qubit) is moved to where the wires end.
+    """Run all operations from the placement in `state`, which is moved to where the wires end; see `Router.run`.
 
-    `step` is +1 forwards (`cursor` at the first entries) or -1 backwards (at the last). A swap's score is the
-    change of the sum over the gates within sight of ``ahead[depth] * distance``, plus `price` for each entangler
-    it costs (1 beside a gate on the same pair, else 3), plus the decay. `pull` holds the first part for each edge,
-    renewed only where something moved.
+    A swap's score is what it changes in the sum of distances ahead, plus its entanglers times ``terms[0]``, plus
+    ``terms[1]`` on qubits moved since the last gate ran. With ``terms[2]`` set, only the waiting gate whose qubits are
+    free first is served, and brought nearer. Swaps of the `script` come first.
 
-    Returns the number of swaps, how many of them merge, the weighted entanglers (of the gates too), and the events: a
-    gate, or ``-1 - (p*n + q)`` for a swap of p and q.
+    Returns the number of swaps, the weighted entanglers, and the events: a gate, or ``-1 - (p*n + q)`` for a swap.
     """
     n = starts.shape[0] - 1
-    n_ahead = ahead.shape[0]
-    occupant, blocked, spot, front, mate = work[0], work[1], work[2], work[3], work[4]
-    moved, stack, stale, shaken, renew = work[5], work[6], work[7], work[8], work[9]
-    for w in range(n):
-        occupant[position[w]] = w
-        blocked[w] = -1  # the gate of the front layer that waits on this wire
-        mate[w] = -1  # what a qubit did last: q after a gate with q, -2-q after a swap with q
-        moved[w] = -1  # how many gates were left when the qubit was last swapped
-        stale[w] = 2  # of its pulls: 2 as the wire has moved or advanced, 1 as a partner within sight has
-        shaken[w] = w
-    n_shaken = n
-    n_renew = n_front = fruitless = n_events = n_swaps = n_merged = n_left = top = 0
-    forced = -1
-    cost = 0.0
-    for g in range(coupled.shape[0]):
-        n_left += coupled[g]
-    for w in range(cursor.shape[0]):
-        g = line[cursor[w]]
-        if g >= 0:
-            arrived[g] += 1
-            if arrived[g] == offsets[g + 1] - offsets[g]:
-                stack[top] = g
-                top += 1
+    total = 0
+    for g in range(costs.shape[0] - 1):
+        total += 1
+    swap = costs[total, 0]
+    events = np.empty(2 * total + 64 if record else 0, np.int64)
+    top = state.shape[1]
+    for w in range(top):
+        state[STACK, w] = w
+        state[PENDING, w] = 1
+    n_swaps = fruitless = 0
+    chased = -1
+    spent = 0.0
+    random = seed
     while True:
-        while top > 0:  # everything that can run, runs
-            top -= 1
-            g = stack[top]
-            first = offsets[g]
-            runs = True
-            if coupled[g]:
-                a = wires[first]
-                b = wires[first + 1]
-                p = position[a]
-                q = position[b]
-                if distance[p, q] != 1:
-                    runs = False
-                    blocked[a] = g
-                    blocked[b] = g
-                    spot[a] = n_front
-                    spot[b] = n_front
-                    front[n_front] = g
-                    n_front += 1
-                else:
-                    mate[p] = q
-                    mate[q] = p
-                    fruitless = 0
-                    n_left -= 1
-                    for i in range(starts[p], starts[p + 1]):
-                        if neighbours[i] == q:
-                            cost += weight[i]
-                            break
-                    if record:
-                        events[n_events] = g
-                        n_events += 1
-            for j in range(first, offsets[g + 1]):
-                w = wires[j]
-                if runs:
-                    cursor[w] += step
-                    h = line[cursor[w]]
-                    if h >= 0:
-                        arrived[h] += 1
-                        if arrived[h] == offsets[h + 1] - offsets[h]:
-                            stack[top] = h
-                            top += 1
-                if w < n:
-                    if not coupled[g]:
-                        mate[position[w]] = -1
-                    if stale[w] == 0:
-                        stale[w] = 2
-                        shaken[n_shaken] = w
-                        n_shaken += 1
-        if n_front == 0:
+        before = counts[DONE]
+        spent += advance(
+            lane, wires, offsets, entries, costs, starts, neighbours, distance, weight, top, events,
+            state, done, tally, counts,
+        )  # fmt: skip
+        if counts[WAITING] == 0:
             break
-        if record and n_events + n_left + 2 > events.shape[0]:
-            grown = np.empty(2 * (n_events + n_left + 2), np.int64)
-            for k in range(n_events):
+        if counts[DONE] > before:
+            fruitless = 0
+            chased = -1
+        if record and counts[EVENTS] + total - counts[DONE] + 2 > events.shape[0]:
+            grown = np.empty(2 * events.shape[0] + total, np.int64)
+            for k in range(counts[EVENTS]):
                 grown[k] = events[k]
             events = grown
-
         chosen = -1
-        if fruitless > patience and forced < 0:  # livelock: lead the closest gate home
-            nearest = 1 << 30
-            for k in range(n_front):
-                a = wires[offsets[front[k]]]
-                d = distance[position[a], position[mates[cursor[a]]]]
-                if d < nearest:
-                    nearest = d
-                    forced = front[k]
-        if forced >= 0:
-            a = wires[offsets[forced]]
-            p = position[a]
-            home = position[mates[cursor[a]]]
+        if n_swaps < script.shape[0]:
+            p = script[n_swaps] // n
+            q = script[n_swaps] - p * n
             for i in range(starts[p], starts[p + 1]):
-                if distance[neighbours[i], home] < distance[p, home]:
+                if neighbours[i] == q:
                     chosen = i
         else:
-            while n_shaken > 0:
-                n_shaken -= 1
-                x = shaken[n_shaken]
-                c = cursor[x]
-                for _ in range(n_ahead + 1):
-                    if x >= 0 and stale[x] != 1:
-                        stale[x] = 1
-                        renew[n_renew] = x
-                        n_renew += 1
-                    x = mates[c]
-                    if x < -1:
-                        break
-                    c += step
-            while n_renew > 0:
-                n_renew -= 1
-                w = renew[n_renew]
-                stale[w] = 0
-                p = position[w]
+            n_list = counts[WAITING]
+            a = b = -1
+            if chased < 0 and fruitless > patience or terms[2] > 0.0:
+                # Serve one gate: the closest of all in a livelock, else the one whose qubits are free first.
+                least = 1e300
+                for k in range(n_list):
+                    w = state[WAITS, k]
+                    p = state[POSITION, w]
+                    e = state[HEAD, w]
+                    head = e
+                    stop = lane[e, 4]
+                    while e < stop:
+                        x = lane[e, 1]
+                        if x >= 0 and not done[w] >> (e - head) & 1 and lane[e, 2] < lane[state[HEAD, x], 4]:
+                            q = state[POSITION, x]
+                            key = float(distance[p, q])
+                            if fruitless <= patience:
+                                key = 1e-3 * key + max(tally[CLOCK, p], tally[CLOCK, q])
+                            if key < least:
+                                least = key
+                                a = w
+                                b = x
+                                if fruitless > patience:
+                                    chased = e
+                        e += 1
+            if chased >= 0:  # lead it home
+                if fruitless > patience and a >= 0:
+                    moved[0] = a
+                    moved[1] = b
+                p = state[POSITION, moved[0]]
+                home = state[POSITION, moved[1]]
                 for i in range(starts[p], starts[p + 1]):
-                    pull[i] = 0.0
-                c = cursor[w]
-                for k in range(0 if blocked[w] >= 0 else 1, n_ahead):
-                    x = mates[c]
-                    if x < -1:
-                        break
-                    if x >= 0:  # a gate is as deep as it is on the later of its wires
-                        depth = abs(cross[c] - cursor[x])
-                        if blocked[x] < 0:
-                            depth += 1
-                        if depth < k:
-                            depth = k
-                        if depth < n_ahead:
-                            home = position[x]
-                            d = distance[home, p]
-                            for i in range(starts[p], starts[p + 1]):
-                                q = neighbours[i]
-                                if q != home:
-                                    pull[i] += ahead[depth] * (distance[home, q] - d)
-                    c += step
-            best = 1e300
-            ties = 1
-            for k in range(2 * n_front):
-                p = position[wires[offsets[front[k >> 1]] + (k & 1)]]
-                for i in range(starts[p], starts[p + 1]):
-                    q = neighbours[i]
-                    if blocked[occupant[q]] >= 0 and q < p:
-                        continue  # seen from its other end
-                    if mate[p] == -2 - q and mate[q] == -2 - p:
-                        continue  # would only undo the swap just made
-                    share = 1.0 if mate[p] == q and mate[q] == p else 3.0
-                    score = pull[i] + pull[twin[i]] + price * share * weight[i]
-                    if moved[p] == n_left or moved[q] == n_left:
-                        score += decay
-                    if score < best - 1e-9:
-                        best = score
+                    if distance[neighbours[i], home] < distance[p, home]:
                         chosen = i
-                        ties = 1
-                    elif score <= best + 1e-9:
-                        ties += 1
-                        state ^= state >> _S12
-                        state ^= state << _S25
-                        state ^= state >> _S27
-                        if np.int64((state * _MULTIPLIER) >> _S33) % ties == 0:
+            else:
+                while counts[SHAKEN] > 0:
+                    counts[SHAKEN] -= 1
+                    w = state[TOUCHED, counts[SHAKEN]]
+                    state[STALE, w] = 1
+                    e = state[HEAD, w]
+                    base = lane[e, 3]
+                    while lane[e, 1] >= -1 and lane[e, 3] - base < ahead.shape[1]:
+                        x = lane[e, 1]
+                        if x >= 0 and state[STALE, x] == 0:
+                            state[STALE, x] = 1
+                        e += 1
+                if a >= 0:
+                    n_list = 2
+                best = 1e300
+                ties = 1
+                near = 1 << 14
+                for k in range(n_list):
+                    w = state[WAITS, k]
+                    if a >= 0:
+                        w = a if k == 0 else b
+                        near = distance[state[POSITION, a], state[POSITION, b]]
+                    p = state[POSITION, w]
+                    for i in range(starts[p] - 1, starts[p + 1]):
+                        q = p if i < starts[p] else neighbours[i]
+                        v = state[OCCUPANT, q]
+                        if i >= starts[p]:
+                            if a < 0 and state[SPOT, v] >= 0 and q < p:
+                                continue  # seen from its other end
+                            if a >= 0 and distance[q, state[POSITION, b if k == 0 else a]] >= near:
+                                continue
+                        if state[STALE, v]:
+                            state[STALE, v] = 0
+                            survey(lane, starts, neighbours, distance, ahead, rise, pull, v, state, done)
+                        if i < starts[p]:
+                            continue
+                        share = swap
+                        if state[MATE, p] == q and state[MATE, q] == p:
+                            share = tally[OTHER, p] - tally[CURRENT, p]
+                            if state[SWAPPED, p] == q:
+                                continue  # would only undo the swap just made
+                        score = pull[i] + pull[twin[i]] + terms[0] * share * weight[i]
+                        if moved[2 + p] == counts[DONE] or moved[2 + q] == counts[DONE]:
+                            score += terms[1]
+                        if terms[3] > 0.0:
+                            score += terms[3] * max(tally[CLOCK, p], tally[CLOCK, q])
+                        if score < best - 1e-9:
+                            best = score
                             chosen = i
-            if chosen < 0:
-                fruitless = patience + 1
-                continue
+                            ties = 1
+                        elif score <= best + 1e-9:
+                            ties += 1
+                            random ^= random >> _S12
+                            random ^= random << _S25
+                            random ^= random >> _S27
+                            if np.int64((random * _MULTIPLIER) >> _S33) % ties == 0:
+                                chosen = i
+        if chosen < 0:
+            fruitless = patience + 1
+            continue
 
         q = neighbours[chosen]
         p = neighbours[twin[chosen]]
-        u = occupant[p]
-        v = occupant[q]
-        occupant[p] = v
-        occupant[q] = u
-        position[u] = q
-        position[v] = p
-        moved[p] = n_left
-        moved[q] = n_left
-        if mate[p] == q and mate[q] == p:
-            cost += weight[chosen]
-            n_merged += 1
-        else:
-            cost += 3.0 * weight[chosen]
-        mate[p] = -2 - q
-        mate[q] = -2 - p
+        u = state[OCCUPANT, p]
+        v = state[OCCUPANT, q]
+        state[OCCUPANT, p] = v
+        state[OCCUPANT, q] = u
+        state[POSITION, u] = q
+        state[POSITION, v] = p
+        moved[2 + p] = counts[DONE]
+        moved[2 + q] = counts[DONE]
+        late = max(tally[CLOCK, p], tally[CLOCK, q])
+        begin = 0.0
+        crossed = 0.0
+        plain = swap
+        if state[MATE, p] == q and state[MATE, q] == p:
+            begin = tally[CURRENT, p]
+            crossed = begin
+            plain = tally[OTHER, p]
+        state[MATE, p] = q
+        state[MATE, q] = p
+        state[SWAPPED, p] = q
+        state[SWAPPED, q] = p
+        tally[CURRENT, p] = plain
+        tally[CURRENT, q] = plain
+        tally[OTHER, p] = crossed
+        tally[OTHER, q] = crossed
+        tally[CLOCK, p] = late + plain - begin
+        tally[CLOCK, q] = late + plain - begin
+        spent += (plain - begin) * weight[chosen]
         n_swaps += 1
         fruitless += 1
         if record:
-            events[n_events] = -1 - (np.int64(p) * n + q)
-            n_events += 1
-        w = u
-        for _ in range(2):
-            if stale[w] == 0:
-                stale[w] = 2
-                shaken[n_shaken] = w
-                n_shaken += 1
-            g = blocked[w]
-            if g >= 0:
-                b = mates[cursor[w]]
-                if distance[position[w], position[b]] == 1:
-                    n_front -= 1
-                    h = front[n_front]
-                    k = spot[w]
-                    front[k] = h
-                    spot[wires[offsets[h]]] = k
-                    spot[wires[offsets[h] + 1]] = k
-                    blocked[w] = -1
-                    blocked[b] = -1
-                    stack[top] = g
-                    top += 1
-                    if forced == g:
-                        forced = -1
-            w = v
-    return n_swaps, n_merged, cost, events[:n_events]
+            events[counts[EVENTS]] = -1 - (np.int64(p) * n + q)
+            counts[EVENTS] += 1
+        state[STACK, 0] = u
+        state[STACK, 1] = v
+        state[PENDING, u] = 1
+        state[PENDING, v] = 1
+        top = 2
+    return n_swaps, spent, events[: counts[EVENTS]]
 
 
 @njit(
-    "int64(int64[::1], int32[::1], int32[::1], int32[::1], int32[::1], uint8[::1], int32[::1], int64[::1])",
+    "int64(int64[::1], int32[::1], int32[::1], int32[::1], int32[::1], int32[::1], uint8[::1], int64[::1],int64[::1])",
     cache=True,
     nogil=True,
 )
-def weave(order, wires, offsets, line, cursor, done, stack, events):
+def weave(order, wires, offsets, groups, line, cursor, done, stack, events):
     """Put all operations into `order` (gates in a valid order, and negative codes) as late as possible.
 
-    What stands before a gate on its wires comes right before it; what is left comes last, in source order.
-    Returns the number of `events` written.
+    What stands in earlier groups on a gate's wires comes right before it; what is left comes last, in source order.
+    `line` lists the slots (places in `wires`) of every wire, `groups` the group of each slot, `stack` begins with the
+    operation of each slot. Returns the number of `events` written.
     """
+    slots = wires.shape[0]
     filled = 0
-    for k in range(order.shape[0]):
-        if order[k] < 0:
-            events[filled] = order[k]
+    for k in range(order.shape[0] + done.shape[0]):
+        g = order[k] if k < order.shape[0] else k - order.shape[0]
+        if g < 0:
+            events[filled] = g
             filled += 1
             continue
-        stack[0] = order[k]
-        top = 1
-        while top > 0:
-            g = stack[top - 1]
-            first = g
+        if done[g]:
+            continue
+        top = slots
+        stack[top] = g
+        while top >= slots:
+            g = stack[top]
+            clear = True
             for j in range(offsets[g], offsets[g + 1]):
-                first = line[cursor[wires[j]]]
-                if first != g:
-                    stack[top] = first
+                c = cursor[wires[j]]
+                while line[c] >= 0 and groups[line[c]] < groups[j]:
+                    if not done[stack[line[c]]]:
+                        clear = False
+                        break
+                    c += 1
+                cursor[wires[j]] = c
+                if not clear:
                     top += 1
+                    stack[top] = stack[line[c]]
                     break
-            if first == g:
+            if clear:
                 top -= 1
                 events[filled] = g
                 filled += 1
                 done[g] = 1
-                for j in range(offsets[g], offsets[g + 1]):
-                    cursor[wires[j]] += 1
-    for g in range(done.shape[0]):
-        if done[g] == 0:
-            events[filled] = g
-            filled += 1
     return filled
-
-
-@njit(
-    "int64(int32[::1], int32[::1], int32[::1], int32[::1], int16[:, ::1], int32[::1], int32[::1], float64[::1],"
-    "int32[::1], int32[:, ::1], int32[:, ::1], int64)",
-    cache=True,
-    nogil=True,
-)
-def embed(
-    begin, peers, starts, neighbours, distance, component, home, appeal, place, work, options, budget,
-):  # fmt: skip
-    """Seek a qubit for each wire so that all peers are adjacent; `place` holds the pinned wires, else -1.
-
-    A wire may stand on qubits whose component is its `home`; those with few free neighbours and a low `appeal` are
-    tried first, as many as `options` has room for. Returns the number of tests spent on success, -1 when the options
-    are exhausted, -2 when the budget is.
-    """
-    n = place.shape[0]
-    occupant, free, need, ties, chosen, at, count = work[0], work[1], work[2], work[3], work[4], work[5], work[6]
-    for w in range(n):
-        occupant[w] = -1
-    for w in range(n):
-        if place[w] >= 0:
-            occupant[place[w]] = w
-    for w in range(n):
-        free[w] = 0  # of a qubit: its free neighbours
-        for i in range(starts[w], starts[w + 1]):
-            free[w] += occupant[neighbours[i]] < 0
-        need[w] = 0  # of a wire: its peers still to be placed, and those that are
-        for i in range(begin[w], begin[w + 1]):
-            need[w] += place[peers[i]] < 0
-        ties[w] = begin[w + 1] - begin[w] - need[w]
-    spent = 0
-    depth = 0
-    count[0] = -1
-    while depth >= 0:
-        if spent > budget:
-            return -2
-        if count[depth] < 0:  # a new level: the wire with the fewest places left beside its placed peers
-            spent += n
-            best = -1
-            fewest = 1 << 30
-            for w in range(n):
-                if place[w] >= 0 or begin[w] == begin[w + 1]:
-                    continue
-                found = n + 1
-                for j in range(begin[w], begin[w + 1]):
-                    anchor = place[peers[j]]
-                    if anchor >= 0:
-                        found = 0
-                        for k in range(starts[anchor], starts[anchor + 1]):
-                            q = neighbours[k]
-                            spent += 1
-                            found += occupant[q] < 0 and free[q] >= need[w]
-                        break
-                if found < fewest or (found == fewest and need[w] + ties[w] > need[best] + ties[best]):
-                    best = w
-                    fewest = found
-            if best < 0:
-                return spent
-            chosen[depth] = best
-            at[depth] = 0
-            found = 0
-            for q in range(n):
-                fits = occupant[q] < 0 and component[q] == home[best] and free[q] >= need[best]
-                if fits:
-                    for i in range(begin[best], begin[best + 1]):
-                        if place[peers[i]] >= 0 and distance[q, place[peers[i]]] != 1:
-                            fits = False
-                if fits:
-                    k = found
-                    if found < options.shape[1]:
-                        found += 1
-                    else:
-                        k -= 1
-                        if free[options[depth, k]] + appeal[options[depth, k]] <= free[q] + appeal[q]:
-                            continue
-                    while k > 0 and free[options[depth, k - 1]] + appeal[options[depth, k - 1]] > free[q] + appeal[q]:
-                        options[depth, k] = options[depth, k - 1]
-                        k -= 1
-                    options[depth, k] = q
-            count[depth] = found
-        w = chosen[depth]
-        sign = 1
-        if place[w] >= 0:  # back from below, or walled in: take the wire off again
-            sign = -1
-            q = place[w]
-            place[w] = -1
-            occupant[q] = -1
-        elif at[depth] < count[depth]:
-            q = options[depth, at[depth]]
-            at[depth] += 1
-            place[w] = q
-            occupant[q] = w
-            spent += 1
-        else:
-            depth -= 1
-            continue
-        fits = sign > 0
-        for i in range(begin[w], begin[w + 1]):
-            need[peers[i]] -= sign
-            ties[peers[i]] += sign
-        for i in range(starts[q], starts[q + 1]):
-            x = neighbours[i]
-            free[x] -= sign
-            if occupant[x] >= 0 and free[x] < need[occupant[x]]:
-                fits = False  # the wire on x needs more free neighbours than it has left
-        if fits:
-            depth += 1
-            count[depth] = -1
-    return -1

@@ -1,14 +1,14 @@
 """Choose where a circuit's wires start on the device.
 
-Three sources of starts: an embedding of the interaction graph, or of as much of its beginning as embeds, found by
-bounded backtracking, the wire with the fewest places first (Haralick and Elliott, Artif. Intell. 14, 263 (1980));
-greedy growth along the strongest interactions; compact random regions. Each is improved by passes to and fro over the
-circuit (Li, Ding, Xie, ASPLOS 2019, arXiv:1809.02573), and the cheapest wins.
+Sources of starts: an embedding of the interaction graph, or of as much of its beginning as embeds, found by bounded
+backtracking, the wire with the fewest places first (Haralick and Elliott, Artif. Intell. 14, 263 (1980)); annealing
+(Kirkpatrick, Gelatt, Vecchi, Science 220, 671 (1983)); greedy growth along the strongest interactions; compact random
+regions. `gatewright.mapping.search` improves them and chooses.
 """
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -17,27 +17,30 @@ from scipy.sparse import coo_array
 from scipy.sparse.csgraph import connected_components
 
 from gatewright.errors import DisconnectedError, InputError
-from gatewright.mapping import _kernels
-from gatewright.mapping.routing import Graph, Operations, Router
+from gatewright.mapping import _places
+from gatewright.mapping.routing import Graph, Operations
 
-__all__ = ["TRIALS", "embed", "place"]
+__all__ = [
+    "Task",
+    "annealed",
+    "completed",
+    "embed",
+    "embedded_beginning",
+    "grown",
+    "perfect_start",
+    "prepare",
+    "random_region",
+    "restored",
+]
 
 Integers = NDArray[np.int32]
 
-#: Starts tried, by effort: at least and at most, and between them as many as fit into so many gates times qubits.
-TRIALS = {"quick": (2, 8, 5e4), "standard": (4, 32, 6e5), "deep": (16, 256, 1e7)}
-#: Passes to and fro from each start.
-ROUNDS = {"quick": 2, "standard": 5, "deep": 12}
-#: Starts are improved on so many joint operations of the beginning; what comes later hardly depends on them.
-PREFIX = 2_000
-#: Work spent on passes over the whole circuit to compare the best of them, in gates times qubits, by effort.
-WHOLE = {"quick": 1e6, "standard": 1e7, "deep": 3e7}
-#: Restarts of the search for an embedding.
-RESTARTS = {"quick": 4, "standard": 16, "deep": 200}
+#: Last temperature of the annealing.
+COLD = 0.2
 
 
 @dataclass(frozen=True, eq=False, slots=True)
-class _Task:
+class Task:
     """What every start must respect."""
 
     graph: Graph
@@ -51,110 +54,103 @@ class _Task:
     expense: NDArray[np.float64]
 
 
-def place(
+def prepare(
     graph: Graph,
     operations: Operations,
     *,
     n_source: int,
     active: NDArray[np.bool_],
-    effort: str = "standard",
     seed: int = 0,
     fixed: Sequence[int] | None = None,
-) -> Integers:
-    """Return a start placement.
+) -> Task:
+    """Check what is asked for, and assign every group of interacting wires to a component of the device.
 
-    `gatewright.mapping.routing.route` with the same seed finds again what the winner cost here.
-
-    Parameters
-    ----------
-    graph : Graph
-        With weights, regions of low cost are preferred, and the weighted cost decides.
-    operations : Operations
-    n_source : int
-        Wires of the circuit; those beyond it, up to ``graph.n``, are idle.
-    active : ndarray of bool, shape (n,)
-        Qubits in service.
-    effort : {"quick", "standard", "deep"}
-    seed : int
-    fixed : sequence of int, length n_source, optional
-        Qubit of each wire, -1 where it is free; respected exactly.
-
-    Returns
-    -------
-    ndarray of int32, shape (n,)
-        Qubit of each wire, idle ones included.
-
-    Raises
-    ------
-    DisconnectedError
-        Wires that interact do not fit into one connected part of the device.
-    InputError
-        `fixed` names a qubit twice, or one that does not exist or is out of service.
-
-    Examples
-    --------
-    >>> from gatewright.mapping.routing import make_graph, make_operations, route
-    >>> graph = make_graph([(0, 1), (1, 2), (2, 3)], 4)
-    >>> star = make_operations([3, 0, 3, 1], [0, 2, 4], [1, 1], 4)
-    >>> len(route(graph, star, place(graph, star, n_source=4, active=np.ones(4, bool))).swaps)
-    0
+    Parameters and errors are those of `gatewright.mapping.search.plan`.
     """
-    rng = np.random.default_rng(seed)
     active = np.asarray(active, dtype=bool)
     pairs = operations.pairs
     pinned = _checked(fixed, n_source, active)
     used = np.arange(n_source, dtype=np.int32)
     home = _homes(graph, pairs, pinned, used, active)
-    task = _Task(graph, pairs, _interactions(pairs, graph.n), pinned, home, used, active, rng, _expense(graph))
+    rng = np.random.default_rng(seed)
+    return Task(graph, pairs, _interactions(pairs, graph.n), pinned, home, used, active, rng, _expense(graph))
+
+
+def perfect_start(task: Task, *, restarts: int) -> Integers | None:
+    """Return a start from which no swap is needed, if one is found; where costs differ, the cheapest of several."""
     own = _where_they_are(task)
+    graph = task.graph
     if own is not None and not graph.uneven:
-        return _completed(own, task)
-    if (pinned[used] >= 0).all():
-        return _completed(pinned, task)
-    perfect = [] if own is None else [own]
+        return completed(own, task)
+    if (task.fixed[task.used] >= 0).all():
+        return completed(task.fixed, task)
+    found = [] if own is None else [own]
     for _ in range(8 if graph.uneven else 1):  # where costs differ, one embedding may be better than the next
-        found = embed(graph, task.weight > 0, pinned, home, active, restarts=RESTARTS[effort], rng=rng)
-        if found is None:
+        made = embed(graph, task.weight > 0, task.fixed, task.home, task.active, restarts=restarts, rng=task.rng)
+        if made is None:
             break
-        perfect.append(found)
-    if perfect:
-        return min((_completed(start, task) for start in perfect), key=lambda start: _cost_in_place(task, start))
-
-    joint = operations.joint
-    whole = Router(graph, operations.take(joint))
-    first = np.argsort(whole.layer, kind="stable")[:PREFIX]
-    short = len(first) == len(joint)
-    router = whole if short else Router(graph, operations.take(joint[np.sort(first)]))
-    improved: list[tuple[float, int, Integers]] = []
-    least, most, work = TRIALS[effort]
-    trials = max(least, min(most, int(work / (len(first) * graph.n))))
-    for start in _starts(task, trials):
-        improved.append(_improved(router, start, task, rounds=ROUNDS[effort], seed=seed))
-    improved.sort(key=lambda entry: entry[:2])
-    if short:
-        return improved[0][2]
-    passes = max(1, min(len(improved), int(WHOLE[effort] / (len(joint) * graph.n))))
-    finalists = [start for _, _, start in improved[:passes]]
-    if passes == 1:
-        return finalists[0]
-    outcomes = [whole.run(start, seed=seed) for start in finalists]
-    return finalists[min(range(passes), key=lambda k: (outcomes[k].cost, outcomes[k].swaps))]
+        found.append(made)
+    return min((completed(start, task) for start in found), key=lambda x: _cost_in_place(task, x)) if found else None
 
 
-def _improved(router: Router, start: Integers, task: _Task, *, rounds: int, seed: int) -> tuple[float, int, Integers]:
-    """Run to and fro from `start`; return the cost, the swaps and the start of the cheapest pass forwards."""
-    best: tuple[float, int, Integers] | None = None
-    for round_ in range(rounds + 1):
-        made = router.run(start, seed=seed)
-        if best is None or (made.cost, made.swaps) < best[:2]:
-            best = (made.cost, made.swaps, start)
-        if round_ < rounds:
-            start = _restored(router.run(made.end, seed=seed + 1 + round_, backwards=True).end, task.fixed)
-    assert best is not None
-    return best
+def annealed(
+    task: Task, *, moves: int, fading: float | None, hot: float, seed: int, start: Integers | None = None
+) -> Integers:
+    """Anneal a start: the sum over gates of the distance of their wires, later gates counting less.
+
+    Parameters
+    ----------
+    task : Task
+    moves : int
+    fading : float or None
+        Share of the circuit after which a gate counts half.
+    hot : float
+        First temperature, in mean weights of a pair.
+    seed : int
+    start : ndarray of int32, shape (n,), optional
+        Random by default.
+    """
+    graph, n, pairs = task.graph, task.graph.n, task.pairs
+    rng = np.random.default_rng(seed)
+    weight = np.ones(len(pairs)) if fading is None else 0.5 ** (np.arange(len(pairs)) / max(1.0, fading * len(pairs)))
+    both = np.concatenate([pairs, pairs[:, ::-1]])
+    matrix = coo_array((np.tile(weight, 2), (both[:, 0], both[:, 1])), shape=(n, n)).tocsr()
+    matrix.sum_duplicates()
+    scale = matrix.data.mean() if matrix.nnz else 1.0
+    place = (completed(random_region(task), task) if start is None else start).astype(np.int32)
+    movable = task.used[task.fixed[task.used] < 0]
+    if not len(movable) or not matrix.nnz:
+        return place
+    occupant = np.full(n, -1, dtype=np.int32)
+    occupant[~task.active] = -2
+    occupant[place[task.used]] = task.used
+    pinned = task.used[task.fixed[task.used] >= 0]
+    occupant[place[pinned]] = -2
+    load = np.asarray(matrix.sum(axis=1)).ravel() / scale
+    place[np.setdiff1d(np.arange(n), task.used)] = -1
+    _places.anneal(
+        matrix.indptr.astype(np.int32),
+        matrix.indices.astype(np.int32),
+        matrix.data / scale,
+        graph.starts,
+        graph.neighbours,
+        graph.distance,
+        graph.component,
+        task.home,
+        movable,
+        load,
+        0.5 * task.expense if graph.uneven else np.zeros(n),
+        place,
+        occupant,
+        moves,
+        hot,
+        COLD,
+        np.uint64(rng.integers(1 << 62) * 2 + 1),
+    )
+    return completed(place, task)
 
 
-def _restored(placement: Integers, fixed: Integers) -> Integers:
+def restored(placement: Integers, fixed: Integers) -> Integers:
     """Put fixed wires back on their qubits, in exchange with whatever stands there."""
     out = placement.copy()
     for wire in np.flatnonzero(fixed >= 0).tolist():
@@ -163,7 +159,7 @@ def _restored(placement: Integers, fixed: Integers) -> Integers:
     return out
 
 
-def _cost_in_place(task: _Task, start: Integers) -> float:
+def _cost_in_place(task: Task, start: Integers) -> float:
     """Return the weighted cost of all gates on a placement where each meets an edge."""
     weight = np.zeros((task.graph.n, task.graph.n))
     weight[np.repeat(np.arange(task.graph.n), np.diff(task.graph.starts)), task.graph.neighbours] = task.graph.weight
@@ -179,7 +175,7 @@ def _expense(graph: Graph) -> NDArray[np.float64]:
     return np.where(degree > 0, total / np.maximum(degree, 1), 1.0)
 
 
-def _where_they_are(task: _Task) -> Integers | None:
+def _where_they_are(task: Task) -> Integers | None:
     """Return the placement of every wire on the qubit of its own number, if no gate needs a swap there."""
     own = np.full(task.graph.n, -1, dtype=np.int32)
     own[task.used] = task.used
@@ -283,7 +279,7 @@ def _packed(sizes: list[int], room: list[int], budget: int = 20_000) -> list[int
     return chosen
 
 
-def _completed(placement: Integers, task: _Task) -> Integers:
+def completed(placement: Integers, task: Task) -> Integers:
     """Put wires that have no place yet, idle ones last, on the qubits that are left."""
     out = placement.copy()
     taken = np.zeros(task.graph.n, dtype=bool)
@@ -299,18 +295,7 @@ def _completed(placement: Integers, task: _Task) -> Integers:
     return out
 
 
-def _starts(task: _Task, trials: int) -> Iterator[Integers]:
-    """Yield starts of the three kinds in turn, the embedded beginning first."""
-    for trial in range(trials):
-        if trial % 3 == 0 and (trial == 0 or task.graph.n <= 200):
-            yield _completed(_grow(task, _embedded_beginning(task)), task)
-        elif trial % 3 < 2:
-            yield _completed(_grow(task, task.fixed), task)
-        else:
-            yield _completed(_region(task), task)
-
-
-def _embedded_beginning(task: _Task) -> Integers:
+def embedded_beginning(task: Task, hint: Integers | None = None) -> Integers:
     """Embed the longest run of first interactions that is found to embed."""
     low, high = np.minimum(*task.pairs.T), np.maximum(*task.pairs.T)
     _, first = np.unique(low.astype(np.int64) * task.graph.n + high, return_index=True)
@@ -321,7 +306,7 @@ def _embedded_beginning(task: _Task) -> Integers:
         linked = np.zeros_like(task.weight, dtype=bool)
         linked[distinct[:middle, 0], distinct[:middle, 1]] = True
         linked |= linked.T
-        found = embed(task.graph, linked, task.fixed, task.home, task.active, restarts=1, rng=task.rng)
+        found = embed(task.graph, linked, task.fixed, task.home, task.active, restarts=1, rng=task.rng, hint=hint)
         if found is None:
             bad = middle
         else:
@@ -329,7 +314,7 @@ def _embedded_beginning(task: _Task) -> Integers:
     return best
 
 
-def _grow(task: _Task, placed: Integers) -> Integers:
+def grown(task: Task, placed: Integers) -> Integers:
     """Place wire after wire, the one bound most to those placed, where its partners are nearest."""
     graph, weight, rng = task.graph, task.weight, task.rng
     out = placed.copy()
@@ -363,7 +348,7 @@ def _grow(task: _Task, placed: Integers) -> Integers:
     return out
 
 
-def _region(task: _Task) -> Integers:
+def random_region(task: Task) -> Integers:
     """Place the wires of each component at random in a compact region around a random qubit."""
     out = task.fixed.copy()
     taken = ~task.active
@@ -390,6 +375,7 @@ def embed(
     *,
     restarts: int,
     rng: np.random.Generator,
+    hint: Integers | None = None,
 ) -> Integers | None:
     """Search for a placement of all interacting wires on which every gate meets an edge.
 
@@ -404,6 +390,8 @@ def embed(
     restarts : int
         Bounded searches, each with another order among equals, before the search is given up.
     rng : numpy.random.Generator
+    hint : ndarray of int32, shape (n,), optional
+        Where to look for each wire's qubit first.
 
     Returns
     -------
@@ -425,6 +413,8 @@ def embed(
     expense = _expense(graph)
     options = np.empty((np.count_nonzero(degrees) + 1, min(n, max(64, degree.max()))), dtype=np.int32)
     work = np.empty((7, n + 1), dtype=np.int32)
+    keys = np.empty(options.shape[1])
+    where = np.full(n, -1, dtype=np.int32) if hint is None else hint
     budget = min(max(100_000, 100 * n * n), 8_000_000)  # a fraction of a second
     for trial in range(restarts):
         # The first tries prefer qubits with few free neighbours, the others leave that more and more to chance.
@@ -433,7 +423,7 @@ def embed(
             appeal += 8 * expense
         found = fixed.copy()
         arrays = (begin, peers.astype(np.int32), graph.starts, graph.neighbours, graph.distance, component, home)
-        outcome = _kernels.embed(*arrays, appeal, found, work, options, budget)
+        outcome = _places.embed(*arrays, appeal, where, found, work, options, keys, budget)
         if outcome >= 0:
             found[(degrees == 0) & (fixed < 0)] = -1
             return found

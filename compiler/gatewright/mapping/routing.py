@@ -10,7 +10,8 @@ only keep operations in order.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -18,19 +19,22 @@ from scipy.sparse import csr_array
 from scipy.sparse.csgraph import connected_components, shortest_path
 
 from gatewright.errors import CircuitError, DeviceError, DisconnectedError, InputError
-from gatewright.mapping._kernels import link, sweep, weave
+from gatewright.mapping._kernels import CLOCK, GROUP, HEAD, LEFT, OCCUPANT, POSITION, ROWS, STALE, sweep, weave
 
 __all__ = ["Graph", "Operations", "Pass", "Router", "Routing", "make_graph", "make_operations", "route", "run_pass"]
 
 Integers = NDArray[np.int32]
 
-#: Weight of a gate by its depth below the blocked ones, which count 1. Set by trial on random, QFT, adder, planted and
-#: regular-graph circuits on lines, grids and hexagons, as are the next two.
-AHEAD = np.concatenate([[1.0], 0.25 * 0.6 ** np.arange(5)])
-#: What an entangler spent on a swap weighs against one step of a blocked gate.
-PRICE = 0.15
-#: Penalty on qubits already swapped since the last gate ran, the paper's decay: enough to break ties.
-DECAY = 0.001
+#: Weight of a gate by its depth below the blocked ones; in the second row, of one that may change places with another.
+AHEAD = np.tile(np.concatenate([[1.0], 0.25 * 0.6 ** np.arange(5)]), (2, 1)).astype(np.float32)
+#: Of a swap's score: what an entangler weighs against one step of a blocked gate; the penalty on qubits moved since the
+#: last gate ran, the paper's decay: enough to break ties; whether the gate is served first whose qubits are free
+#: first; what a layer of waiting weighs.
+TERMS = (0.15, 0.001, 0.0, 0.0)
+#: Of a state in the beam: what a gate done is worth, an entangler costs; levels beyond the first that ends; the weight of
+#: time; the weight of a swap when results are compared.
+BEAM = (0.5, 0.0, 0.0, 0.0, 1.0)
+NO_SCRIPT = np.zeros(0, dtype=np.int64)
 #: Distance of qubits without a path.
 FAR = 30_000
 
@@ -153,12 +157,21 @@ class Operations:
         1 for gates whose first two wires must be neighbours.
     n_all : int
         Number of wires, further ones included.
+    groups : ndarray of int32, like `wires`
+        Along a wire, never falling; neighbours of one group may change places.
+    costs : ndarray of float32, shape (m, 2)
+        Entanglers that each operation needs alone, and together with a swap of its wires.
+    swap_cost : float
+        Entanglers of a swap alone.
     """
 
     wires: Integers
     offsets: Integers
     coupled: NDArray[np.uint8]
     n_all: int
+    groups: Integers
+    costs: NDArray[np.float32]
+    swap_cost: float
 
     def __len__(self) -> int:
         """Return the number of operations."""
@@ -180,11 +193,26 @@ class Operations:
         lengths = np.diff(self.offsets)[rows]
         offsets = np.concatenate([[0], np.cumsum(lengths)]).astype(np.int32)
         at = np.arange(offsets[-1]) + np.repeat(self.offsets[:-1][rows] - offsets[:-1], lengths)
-        return Operations(np.ascontiguousarray(self.wires[at]), offsets, self.coupled[rows], self.n_all)
+        wires, groups = np.ascontiguousarray(self.wires[at]), np.ascontiguousarray(self.groups[at])
+        return replace(
+            self, wires=wires, offsets=offsets, coupled=self.coupled[rows], groups=groups, costs=self.costs[rows]
+        )
 
 
-def make_operations(wires: ArrayLike, offsets: ArrayLike, coupled: ArrayLike, n_all: int) -> Operations:
+def make_operations(
+    wires: ArrayLike,
+    offsets: ArrayLike,
+    coupled: ArrayLike,
+    n_all: int,
+    *,
+    groups: ArrayLike | None = None,
+    costs: ArrayLike | None = None,
+    swap_cost: float = 3.0,
+) -> Operations:
     """Return `Operations` with the types that the compiled loops want.
+
+    Without `groups` every operation keeps its place; without `costs` every gate costs what a CNOT does among CNOTs: one
+    entangler alone, two with a swap.
 
     Raises
     ------
@@ -192,22 +220,29 @@ def make_operations(wires: ArrayLike, offsets: ArrayLike, coupled: ArrayLike, n_
         The arrays do not fit together, or a coupled operation has fewer than two wires.
     """
     # Compiled signatures hold for writable arrays only, so read-only ones are copied.
-    made = Operations(
-        np.require(wires, np.int32, ["C", "W"]),
-        np.require(offsets, np.int32, ["C", "W"]),
-        np.require(coupled, np.uint8, ["C", "W"]),
-        n_all,
-    )
-    lengths = np.diff(made.offsets)
+    made_wires = np.require(wires, np.int32, ["C", "W"])
+    made_offsets = np.require(offsets, np.int32, ["C", "W"])
+    made_coupled = np.require(coupled, np.uint8, ["C", "W"])
+    lengths, m = np.diff(made_offsets), len(made_coupled)
     if (
-        made.offsets.shape != (len(made) + 1,)
-        or made.offsets[0] != 0
-        or made.offsets[-1] != len(made.wires)
-        or (lengths < 2 * (made.coupled == 1)).any()
-        or (len(made.wires) and not 0 <= made.wires.min() <= made.wires.max() < n_all)
+        made_offsets.shape != (m + 1,)
+        or made_offsets[0] != 0
+        or made_offsets[-1] != len(made_wires)
+        or (lengths < 2 * (made_coupled == 1)).any()
+        or (len(made_wires) and not 0 <= made_wires.min() <= made_wires.max() < n_all)
     ):
         raise CircuitError("the arrays of operations do not fit together", required=f"wires 0 to {n_all - 1}")
-    return made
+    made_groups = np.repeat(np.arange(m), lengths) if groups is None else groups
+    made_costs = np.tile([1.0, 2.0], (m, 1)) if costs is None else costs
+    return Operations(
+        made_wires,
+        made_offsets,
+        made_coupled,
+        n_all,
+        np.require(made_groups, np.int32, ["C", "W"]),
+        np.require(made_costs, np.float32, ["C", "W"]),
+        float(swap_cost),
+    )
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -220,7 +255,9 @@ class Pass:
         Qubit of each wire after the pass.
     swaps : int
     cost : float
-        Entanglers, weighted, roughly: one a gate and a swap beside a gate on the same pair, three any other swap.
+        Entanglers, weighted by the edges they are on: of each window, as far as the costs of its parts tell.
+    depth : float
+        Of entanglers.
     events : ndarray of int64
         Coupled operations as numbered, and ``-1 - (p * n + q)`` for a swap of qubits p and q; empty unless recorded.
     """
@@ -228,7 +265,63 @@ class Pass:
     end: Integers
     swaps: int
     cost: float
+    depth: float
     events: NDArray[np.int64]
+
+    def script(self) -> NDArray[np.int64]:
+        """Return the swaps alone, as ``p * n + q``."""
+        return np.asarray(-1 - self.events[self.events < 0])
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Lines:
+    """Operations along their wires, forwards or backwards; see `_kernels`."""
+
+    lane: NDArray[np.int32]
+    heads: Integers
+    wires: Integers
+    offsets: Integers
+    entries: Integers
+    costs: NDArray[np.float32]
+
+
+def make_lines(operations: Operations, *, backwards: bool = False) -> Lines:
+    """Lay the operations out along their wires; those on one wire only may be left out."""
+    o, m = operations, len(operations)
+    slots = len(o.wires)
+    if backwards:
+        order = slots - 1 - np.argsort(o.wires[::-1], kind="stable")
+    else:
+        order = np.argsort(o.wires, kind="stable")
+    wire = o.wires[order]
+    at = np.arange(slots, dtype=np.int64) + wire
+    owner = np.repeat(np.arange(m, dtype=np.int32), np.diff(o.offsets))
+    entries = np.empty(slots, dtype=np.int32)
+    entries[order] = at
+    lane = np.empty((slots + o.n_all, 5), dtype=np.int32)
+    lane[:] = (-1, -2, 0, 1 << 30, 0)
+    lane[at, 0] = owner[order]
+    # The partner of each slot of a gate is the other one of the operation's first two.
+    within = np.arange(slots) - o.offsets[:-1][owner]
+    pair = (o.coupled[owner] == 1) & (within < 2)
+    other = np.where(pair, np.arange(slots) + 1 - 2 * within, 0)
+    lane[at, 1] = np.where(pair, o.wires[other] if slots else 0, -1)[order]
+    lane[at, 2] = np.where(pair, entries[other] if slots else 0, 0)[order]
+    if slots:
+        fresh = np.ones(slots, dtype=bool)
+        fresh[1:] = (wire[1:] != wire[:-1]) | (np.diff(o.groups[order]) != 0)
+        run = np.cumsum(fresh) - 1
+        rank = np.arange(slots) - np.flatnonzero(fresh)[run]
+        fresh |= rank % GROUP == 0
+        run = np.cumsum(fresh) - 1
+        lane[at, 3] = run
+        begins = at[fresh]
+        lane[at, 4] = (begins + np.bincount(run))[run]
+    ends = np.cumsum(np.bincount(o.wires, minlength=o.n_all) + 1)
+    heads = np.concatenate([[0], ends[:-1]]).astype(np.int32)
+    lane[ends - 1, 4] = ends - 1
+    tail = np.array([[o.swap_cost, max(o.swap_cost, float(o.costs.max(initial=0.0)))]], dtype=np.float32)
+    return Lines(lane, heads, o.wires, o.offsets, entries, np.concatenate([o.costs, tail]))
 
 
 class Router:
@@ -240,59 +333,146 @@ class Router:
         A coupled operation is on a wire that is no qubit.
     """
 
-    def __init__(self, graph: Graph, operations: Operations) -> None:
+    def __init__(self, graph: Graph, operations: Operations, *, terms: tuple[float, ...] = TERMS) -> None:
         self.graph = graph
         self.operations = operations
         pairs = operations.pairs
         if len(pairs) and pairs.max() >= graph.n or operations.n_all < graph.n:
             raise CircuitError("the circuit does not fit the device", required=f"coupled wires below {graph.n}")
-        lengths = np.bincount(operations.wires, minlength=operations.n_all)
-        ends = np.cumsum(lengths + 2)
-        self._first = (ends - lengths - 1).astype(np.int32)
-        self._last = (ends - 2).astype(np.int32)
-        self._line = np.full(ends[-1], -1, dtype=np.int32)
-        self._mates = np.full(ends[-1], -2, dtype=np.int32)
-        self._cross = np.zeros(ends[-1], dtype=np.int32)
-        #: Earliest layer of each operation.
-        self.layer = np.zeros(len(operations), dtype=np.int32)
-        o = operations
-        link(o.wires, o.offsets, o.coupled, self._first.copy(), self._line, self._mates, self._cross, self.layer)
+        self._lines: dict[bool, Lines] = {}
+        diameter = int(graph.distance[graph.distance < FAR].max(initial=1))
+        self.terms = np.array(terms)
+        self.ahead = AHEAD
+        self.rise = np.arange(diameter + 2, dtype=np.float32)
         # Without progress for longer than this, a pass is led out of a livelock.
-        self._patience = 10 + 2 * graph.n + 4 * int(graph.distance[graph.distance < FAR].max(initial=1))
+        self._patience = 10 + 2 * graph.n + 4 * diameter
+        self.pull = np.zeros(max(len(graph.neighbours), 1))
 
-    def run(self, start: Integers, *, seed: int, backwards: bool = False, record: bool = False) -> Pass:
-        """Make one pass from the placement `start` (qubit of each wire, shape (n,)), which is left as it is."""
-        position = start.astype(np.int32)
-        g, o = self.graph, self.operations
+    def lines(self, backwards: bool) -> Lines:
+        """Return the lines of one direction."""
+        if backwards not in self._lines:
+            self._lines[backwards] = make_lines(self.operations, backwards=backwards)
+        return self._lines[backwards]
+
+    def state(self, lines: Lines, start: Integers) -> tuple[Any, ...]:
+        """Return the state before the first operation."""
+        n, n_all = self.graph.n, self.operations.n_all
+        state = np.full((ROWS, n_all), -1, dtype=np.int32)
+        state[POSITION, :n] = start
+        state[OCCUPANT, start] = np.arange(n)
+        state[HEAD] = lines.heads
+        state[LEFT] = lines.lane[lines.heads, 4] - lines.heads
+        state[STALE] = 0
+        return state, np.zeros(n_all, dtype=np.int64), np.zeros((3, n_all)), np.zeros(4, dtype=np.int64)
+
+    def run(
+        self,
+        start: Integers,
+        *,
+        seed: int,
+        backwards: bool = False,
+        record: bool = False,
+        script: NDArray[np.int64] = NO_SCRIPT,
+    ) -> Pass:
+        """Make one pass from the placement `start` (qubit of each wire, shape (n,)), which is left as it is.
+
+        Swaps of the `script`, coded ``p * n + q``, come before those that the pass chooses.
+        """
+        g, lines = self.graph, self.lines(backwards)
+        state, done, tally, counts = self.state(lines, start)
         # Odd, and so never zero, where the generator would stay.
-        state = np.uint64((seed * 0x9E3779B97F4A7C15 + 0x1234567) % 2**64 | 1)
-        swaps, _, cost, events = sweep(
-            o.wires,
-            o.offsets,
-            o.coupled,
-            -1 if backwards else 1,
-            (self._last if backwards else self._first).copy(),
-            self._line,
-            self._mates,
-            self._cross,
+        random = np.uint64((seed * 0x9E3779B97F4A7C15 + 0x1234567) % 2**64 | 1)
+        swaps, cost, events = sweep(
+            lines.lane,
+            lines.wires,
+            lines.offsets,
+            lines.entries,
+            lines.costs,
             g.starts,
             g.neighbours,
             g.twin,
             g.distance,
             g.weight,
-            position,
-            AHEAD,
-            PRICE,
-            DECAY,
-            self._patience,
-            np.zeros(len(o), dtype=np.int32),
-            np.empty((10, o.n_all), dtype=np.int32),
-            np.zeros(len(g.neighbours)),
-            np.empty(2 * len(o) if record else 0, dtype=np.int64),
+            self.ahead,
+            self.rise,
+            self.terms,
+            script,
+            self.pull.copy(),
             state,
+            done,
+            tally,
+            counts,
+            np.full(g.n + 2, -1, dtype=np.int64),
+            self._patience,
+            random,
             record,
         )
-        return Pass(position, int(swaps), float(cost), events)
+        return Pass(state[POSITION, : g.n].copy(), int(swaps), float(cost), float(tally[CLOCK].max()), events)
+
+    def search(
+        self,
+        starts: list[Integers],
+        *,
+        width: int,
+        limit: int,
+        terms: tuple[float, ...] = BEAM,
+        backwards: bool = False,
+    ) -> tuple[Integers, NDArray[np.int64]] | None:
+        """Search by a beam from several starts at once; return the start and the swaps of the best sequence found.
+
+        None if there is none of fewer than `limit` swaps.
+        """
+        from gatewright.mapping._beam import beam
+
+        g, lines, n_all = self.graph, self.lines(backwards), self.operations.n_all
+        room = max(3 * width, len(starts))
+        made = [self.state(lines, start) for start in starts]
+        states, dones = np.zeros((2, room, ROWS, n_all), dtype=np.int32), np.zeros((2, room, n_all), dtype=np.int64)
+        states[:, :, STALE] = 2
+        tallies, counters = np.zeros((2, room, 3, n_all)), np.zeros((2, room, 4), dtype=np.int64)
+        for k, (state, done, tally, counts) in enumerate(made):
+            states[0, k], dones[0, k], tallies[0, k], counters[0, k] = state, done, tally, counts
+        fan = 8
+        parents, chosen = np.zeros((limit + 1, room), dtype=np.int32), np.zeros((limit + 1, room), dtype=np.int32)
+        level, number, _ = beam(
+            lines.lane,
+            lines.wires,
+            lines.offsets,
+            lines.entries,
+            lines.costs,
+            g.starts,
+            g.neighbours,
+            g.twin,
+            g.distance,
+            g.weight,
+            self.ahead,
+            self.rise,
+            np.array(terms),
+            self.pull.copy(),
+            states,
+            dones,
+            tallies,
+            counters,
+            NO_SCRIPT,
+            parents,
+            chosen,
+            np.zeros((2, 2 * room)),
+            np.zeros((2, room), dtype=np.uint64),
+            np.zeros((room, fan), dtype=np.int32),
+            np.zeros((room + 1, max(fan, room))),
+            np.zeros(1 << (2 * width * (limit + 1)).bit_length(), dtype=np.uint64),
+            len(starts),
+            width,
+        )
+        if number < 0:
+            return None
+        script = np.empty(level, dtype=np.int64)
+        while level > 0:
+            edge = chosen[level, number]
+            script[level - 1] = g.neighbours[g.twin[edge]] * np.int64(g.n) + g.neighbours[edge]
+            number = parents[level, number]
+            level -= 1
+        return starts[number], script
 
 
 def run_pass(graph: Graph, operations: Operations, start: Integers, *, seed: int = 0) -> Pass:
@@ -319,7 +499,14 @@ class Routing:
     swaps: Integers
 
 
-def route(graph: Graph, operations: Operations, initial: ArrayLike, *, seed: int = 0) -> Routing:
+def route(
+    graph: Graph,
+    operations: Operations,
+    initial: ArrayLike,
+    *,
+    seed: int = 0,
+    script: NDArray[np.int64] = NO_SCRIPT,
+) -> Routing:
     """Insert swaps from the placement `initial` on.
 
     Operations that are not coupled come as late as their successors allow, so that a swap stands right beside the gate
@@ -333,6 +520,8 @@ def route(graph: Graph, operations: Operations, initial: ArrayLike, *, seed: int
         Qubit of each wire, a permutation.
     seed : int
         For ties; the same seed gives the same routing, in any thread.
+    script : ndarray of int64
+        Swaps to make first, in order, coded ``p * n + q``.
 
     Returns
     -------
@@ -370,17 +559,27 @@ def route(graph: Graph, operations: Operations, initial: ArrayLike, *, seed: int
             found=f"none from physical qubit {start[a]} to {start[b]}",
             hint="try another placement, or leave it to the compiler",
         )
-    made = router.run(start, seed=seed, record=True)
+    made = router.run(start, seed=seed, record=True, script=script)
     # What is on one wire only, or on bits, is woven in afterwards.
     is_swap = made.events < 0
     swaps = np.stack(np.divmod(-1 - made.events[is_swap], graph.n), axis=1).astype(np.int32)
     order = np.empty_like(made.events)
     order[is_swap] = -1 - np.arange(len(swaps))
     order[~is_swap] = joint[made.events[~is_swap]]
-    m, o = len(operations), operations
-    line = np.repeat(np.arange(m, dtype=np.int32), np.diff(o.offsets))[np.argsort(o.wires, kind="stable")]
-    counts = np.bincount(o.wires, minlength=o.n_all)
-    woven = np.empty(m + len(swaps), dtype=np.int64)
-    done, stack = np.zeros(m, dtype=np.uint8), np.empty(m + 1, dtype=np.int32)
-    weave(order, o.wires, o.offsets, line, (np.cumsum(counts) - counts).astype(np.int32), done, stack, woven)
-    return Routing(start, made.end, woven, swaps)
+    return Routing(start, made.end, woven(order, operations), swaps)
+
+
+def woven(order: NDArray[np.int64], operations: Operations) -> NDArray[np.int64]:
+    """Add to `order` the operations that it lacks; see `_kernels.weave`."""
+    o, m = operations, len(operations)
+    slots = len(o.wires)
+    by_wire = np.argsort(o.wires, kind="stable")
+    line = np.full(slots + o.n_all, -1, dtype=np.int32)
+    line[np.arange(slots) + o.wires[by_wire]] = by_wire
+    ends = np.cumsum(np.bincount(o.wires, minlength=o.n_all) + 1)
+    cursor = np.concatenate([[0], ends[:-1]]).astype(np.int32)
+    stack = np.empty(slots + m + 1, dtype=np.int64)
+    stack[:slots] = np.repeat(np.arange(m), np.diff(o.offsets))
+    events = np.empty(m + np.count_nonzero(order < 0), dtype=np.int64)
+    weave(order, o.wires, o.offsets, o.groups, line, cursor, np.zeros(m, dtype=np.uint8), stack, events)
+    return events

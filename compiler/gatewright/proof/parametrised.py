@@ -5,11 +5,13 @@ states. So are those of E = W − (tr W/d)·1 with W = output† · source, in e
 equally spaced points, a trigonometric polynomial of degree D is at most its largest sample over cos(πD/N) (Ehlich and
 Zeller, Math. Z. 86, 41 (1964)); taken along one variable after another, and for every linear functional of the matrix,
 this bounds the norm ε of E everywhere. W is unitary, so that output and source differ by ε·√(1 + ε²/d) at most, up to
-a phase that may depend on the unknowns. Unknowns without a small common unit count as independent: that asks more.
+a phase that may depend on the unknowns. Unknowns are affine parts of angles; taken as independent, they ask more.
 """
 
 from __future__ import annotations
 
+import functools
+import itertools
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
@@ -42,10 +44,14 @@ HARMONICS: dict[str, tuple[tuple[int, int], ...]] = {
     "cu": (_HALF, _WHOLE, _WHOLE, _WHOLE),
 }
 
-#: Largest denominator of the ratio of two coefficients that share a unit.
-_LARGEST_DENOMINATOR = 64
-#: Matrix entries that are computed for one window.
-_MOST_ENTRIES = 1 << 23
+#: Largest numerator and denominator of a multiple of an unknown: others count as unknowns of their own.
+_LARGEST = 16
+#: Angles that are combined with each other.
+_MOST_COMBINED = 5
+#: Coefficients that agree to this are taken as equal: the rounding of an angle of that size is as large.
+_ROUNDING = 4e-15
+#: Sampled points for each degree, and the most matrix entries for which so many are taken.
+SAMPLING = ((4.0, 1 << 16), (3.0, 1 << 19), (2.5, 1 << 21), (2.0, 1 << 23))
 #: A standard gate under its name differs from the table's by no more than this, up to phase.
 _SAME = 1e-9
 
@@ -148,11 +154,16 @@ def _same(first: Sequence[Parameter], second: Sequence[Parameter]) -> bool:
 
 
 class _Units:
-    """Finds the independent unknowns of a window, and writes coefficients as integers in units of each."""
+    """Finds independent unknowns of a window, and writes every angle as rational multiples of them.
+
+    An unknown is the affine part of some angle, those of the source first. That what is taken as independent may in
+    truth depend on each other does no harm: the bound then holds for more than is asked.
+    """
 
     def __init__(self) -> None:
-        self._references: list[tuple[str, float]] = []  # atom, first coefficient met
-        self._ratios: list[dict[float, Fraction]] = []
+        self._basis: list[dict[str, float]] = []
+        self._forms: list[tuple[dict[str, float], tuple[tuple[int, Fraction], ...]]] = []  # the first angles met
+        self._known: dict[tuple[tuple[str, float], ...], tuple[tuple[int, Fraction], ...]] = {}
 
     def factor(self, circuit: Circuit, row: int, slots: tuple[int, ...]) -> tuple[_Factor, tuple[Parameter, ...]]:
         gate = circuit.table[circuit.op[row]]
@@ -160,38 +171,75 @@ class _Units:
             return _Factor(gate, slots, (), circuit.matrices[circuit.link[row]].tobytes()), ()
         values = _parameters(circuit, row)
         for value in values:
-            for atom, coefficient in value.terms if isinstance(value, Affine) else ():
-                self._place(atom, coefficient)
+            if isinstance(value, Affine):
+                self._express(value.terms)
         return _Factor(gate, slots), values
 
-    def _place(self, atom: str, coefficient: float) -> int:
-        for number, (other, reference) in enumerate(self._references):
-            if other != atom:
-                continue
-            ratio = coefficient / reference
-            fraction = Fraction(ratio).limit_denominator(_LARGEST_DENOMINATOR)
-            if abs(float(fraction) - ratio) <= 4e-15 * abs(ratio):
-                self._ratios[number][coefficient] = fraction
-                return number
-        self._references.append((atom, coefficient))
-        self._ratios.append({coefficient: Fraction(1)})
-        return len(self._references) - 1
-
     def resolved(self, factor: tuple[_Factor, tuple[Parameter, ...]]) -> _Factor:
-        """Return a factor with its angles in units of the unknowns."""
+        """Return a factor with its angles in units of the unknowns, once all of the window are known."""
         bare, values = factor
-        angles = []
-        for value in values:
-            if not isinstance(value, Affine):
-                angles.append(_Angle(value + 0.0))
-                continue
-            multiples = []
-            for atom, coefficient in value.terms:
-                number = self._place(atom, coefficient)
-                common = math.lcm(*(ratio.denominator for ratio in self._ratios[number].values()))
-                multiples.append((number, int(self._ratios[number][coefficient] * common)))
-            angles.append(_Angle(value.constant + 0.0, tuple(multiples)))
+        units = [1] * len(self._basis)
+        for expressed in self._known.values():
+            for number, times in expressed:
+                units[number] = math.lcm(units[number], times.denominator)
+        angles = [
+            _Angle(
+                value.constant + 0.0,
+                tuple((number, int(times * units[number])) for number, times in self._known[value.terms]),
+            )
+            if isinstance(value, Affine)
+            else _Angle(value + 0.0)
+            for value in values
+        ]
         return _Factor(bare.gate, bare.slots, tuple(angles), bare.matrix)
+
+    def _express(self, terms: tuple[tuple[str, float], ...]) -> None:
+        if terms in self._known:
+            return
+        vector = dict(terms)
+        found = self._one(vector) or self._several(vector)
+        if not found:
+            self._basis.append(vector)
+            found = ((len(self._basis) - 1, Fraction(1)),)
+        self._known[terms] = found
+        if len(self._forms) < _MOST_COMBINED:
+            self._forms.append((vector, found))
+
+    def _one(self, vector: dict[str, float]) -> tuple[tuple[int, Fraction], ...]:
+        """Return the angle as a multiple of one unknown, or nothing."""
+        for number, other in enumerate(self._basis):
+            if other.keys() == vector.keys():
+                first = next(iter(vector))
+                ratio = Fraction(vector[first] / other[first]).limit_denominator(_LARGEST)
+                if abs(ratio) <= _LARGEST and all(
+                    abs(float(ratio) * other[a] - vector[a]) <= _ROUNDING * abs(vector[a]) for a in vector
+                ):
+                    return ((number, ratio),)
+        return ()
+
+    def _several(self, vector: dict[str, float]) -> tuple[tuple[int, Fraction], ...]:
+        """Return the angle as a combination of the first angles with whole and half factors, or nothing."""
+        if len(self._forms) < 2:
+            return ()
+        atoms = list(dict.fromkeys(atom for form in (*(form for form, _ in self._forms), vector) for atom in form))
+        rows = np.array([[form.get(atom, 0.0) for atom in atoms] for form, _ in self._forms])
+        wanted = np.array([vector.get(atom, 0.0) for atom in atoms])
+        factors = _combinations(len(self._forms))
+        size = np.abs(factors) @ np.abs(rows) + np.abs(wanted)
+        fits = np.flatnonzero((np.abs(factors @ rows - wanted) <= _ROUNDING * size).all(axis=1))
+        if not len(fits):
+            return ()
+        best = factors[fits[np.argmin(np.count_nonzero(factors[fits], axis=1))]]
+        total: dict[int, Fraction] = {}
+        for factor, (_, expressed) in zip(best.tolist(), self._forms, strict=True):
+            for number, times in expressed:
+                total[number] = total.get(number, Fraction(0)) + Fraction(factor) * times
+        return tuple((number, times) for number, times in sorted(total.items()) if times)
+
+
+@functools.cache
+def _combinations(count: int) -> NDArray[np.float64]:
+    return np.array(list(itertools.product((0, 1, -1, 0.5, -0.5), repeat=count)))
 
 
 def _bound(width: int, source: tuple[_Factor, ...], output: tuple[_Factor, ...]) -> float:
@@ -208,40 +256,41 @@ def _bound(width: int, source: tuple[_Factor, ...], output: tuple[_Factor, ...])
     # Multiplied by a phase, the exponents lie evenly about zero; half a step more where they cannot.
     degrees = [(highest[unknown] - lowest[unknown] + 1) // 2 for unknown in sorted(lowest)]
     size = 2**width
-    for points in ([4 * d for d in degrees], [3 * d for d in degrees], [2 * d + 1 for d in degrees]):
-        if math.prod(points) * size * size <= _MOST_ENTRIES:
+    for ratio, most in SAMPLING:
+        points = [max(math.ceil(ratio * d), 2 * d + 1) for d in degrees]
+        if math.prod(points) * size * size <= most:
             break
     else:
         raise ProofError(
             "a window depends on too many unknown parameters to be proven",
-            required=f"at most {_MOST_ENTRIES} matrix entries",
-            found=f"{math.prod(points) * size * size}",
+            required=f"at most {SAMPLING[-1][1]} matrix entries at the points to be sampled",
+            found=str(math.prod(points) * size * size),
         )
-    grid = np.meshgrid(*(4 * np.pi * np.arange(n) / n for n in points), indexing="ij")
-    values = {unknown: axis.ravel() for unknown, axis in zip(sorted(lowest), grid, strict=True)}
-    count = math.prod(points)
-    made, meant = (_product(side, values, count, width) for side in (output, source))
+    # One axis for each unknown: a product grows along those that occur in it, no more.
+    axes = np.ix_(*(4 * np.pi * np.arange(n) / n for n in points))
+    values = dict(zip(sorted(lowest), axes, strict=True))
+    made, meant = (_product(side, values, width) for side in (output, source))
     w = dagger(made) @ meant
-    w[:, range(size), range(size)] -= np.trace(w, axis1=1, axis2=2)[:, None] / size
-    sampled = float(np.linalg.norm(w, axis=(1, 2)).max())
+    w[..., range(size), range(size)] -= np.trace(w, axis1=-2, axis2=-1)[..., None] / size
+    sampled = float(np.linalg.norm(w, axis=(-2, -1)).max())
     growth = math.prod(1 / math.cos(math.pi * d / n) for d, n in zip(degrees, points, strict=True))
     epsilon = sampled * growth
     return epsilon * math.sqrt(1 + epsilon**2 / size)
 
 
-def _product(factors: Sequence[_Factor], values: dict[int, NDArray[np.float64]], count: int, width: int) -> Array:
-    """Return the products of a window's gates at all points, shape (count, 2**width, 2**width)."""
-    total: Array = np.broadcast_to(np.eye(2**width, dtype=np.complex128), (count, 2**width, 2**width))
+def _product(factors: Sequence[_Factor], values: dict[int, NDArray[np.float64]], width: int) -> Array:
+    """Return the products of a window's gates on the grid of the unknowns, shape (..., 2**width, 2**width)."""
+    total: Array = np.eye(2**width, dtype=np.complex128)
     for factor in factors:
         if factor.matrix:
             side = 2 ** len(factor.slots)
             matrix = np.frombuffer(factor.matrix, dtype=np.complex128).reshape(side, side)
         elif any(angle.multiples for angle in factor.angles):
             columns = [
-                angle.constant + sum((times * values[unknown] for unknown, times in angle.multiples), np.zeros(count))
+                sum((times * values[unknown] for unknown, times in angle.multiples), np.array(angle.constant))
                 for angle in factor.angles
             ]
-            matrix = GATES[factor.gate.name].matrix(np.stack(columns, axis=-1))
+            matrix = GATES[factor.gate.name].matrix(np.stack(np.broadcast_arrays(*columns), axis=-1))
         else:
             matrix = factor.gate.matrix([angle.constant for angle in factor.angles])
         total = embed(matrix, list(factor.slots), width) @ total

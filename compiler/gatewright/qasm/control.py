@@ -17,7 +17,7 @@ from gatewright.program import Assign, Leave, Mark
 from gatewright.qasm.evaluation import STATEMENT, Pending, Places, Variable
 from gatewright.qasm.operations import Operations
 from gatewright.qasm.scope import RESERVED
-from gatewright.qasm.unknowns import as_name, as_parameter, names_of, reads_bits
+from gatewright.qasm.unknowns import as_parameter, as_tree, names_of, reads_bits
 from gatewright.qasm.values import Array, Kind, Value, cast, expression
 
 if TYPE_CHECKING:
@@ -84,10 +84,10 @@ class Control(Operations):
         return not reads_bits(value.data) and names_of(value.data) <= self.reader.inputs.keys()
 
     def settled(self, value: Value) -> Value:
-        """Return a number that depends on inputs alone as one leaf, so that expressions of it do not grow."""
+        """Return a number that depends on inputs alone in its affine form, so that expressions of it do not grow."""
         if value.kind.name not in ("float", "angle") or not self.lasting(value):
             return value
-        return Value(value.kind, as_name(as_parameter(value.data)))
+        return Value(value.kind, as_tree(as_parameter(value.data)))
 
     def store(self, variable: Variable, name: str, value: Value, node: Any) -> None:
         """Assign to a variable at run time."""

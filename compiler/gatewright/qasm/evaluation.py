@@ -257,9 +257,6 @@ class Evaluator:
     def _ImaginaryLiteral(self, node: Any, real: bool) -> Value:
         raise self.unsupported("a complex number", node)
 
-    def _DurationLiteral(self, node: Any, real: bool) -> Value:
-        raise self.unsupported("a duration", node)
-
     def _DurationOf(self, node: Any, real: bool) -> Value:
         raise self.unsupported("'durationof'", node)
 
@@ -461,7 +458,8 @@ class Evaluator:
     def kind(self, node: Any) -> Kind:
         """Return a scalar type."""
         name = {"IntType": "int", "UintType": "uint", "FloatType": "float", "AngleType": "angle"}.get(
-            type(node).__name__, {"BitType": "bit", "BoolType": "bool"}.get(type(node).__name__, "")
+            type(node).__name__,
+            {"BitType": "bit", "BoolType": "bool", "DurationType": "duration"}.get(type(node).__name__, ""),
         )
         if not name:
             written = type(node).__name__.removesuffix("Type").lower()

@@ -10,6 +10,7 @@ from __future__ import annotations
 import re
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from types import SimpleNamespace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -17,11 +18,12 @@ import numpy as np
 from gatewright.classical import Bits, Name
 from gatewright.errors import ExpressionError, shorten
 from gatewright.program import Assign
-from gatewright.qasm.control import Control, End, Return
+from gatewright.qasm.control import End, Return
 from gatewright.qasm.evaluation import MAX_ELEMENTS, STATEMENT, Pending, Places, Variable
 from gatewright.qasm.grammar import MAX_STATEMENT, parse_statement, statement_end
 from gatewright.qasm.scope import MAX_QUBITS, NAME, RESERVED
 from gatewright.qasm.shapes import Shape, signature
+from gatewright.qasm.timing import Timing
 from gatewright.qasm.values import Array, Kind, Value, binary, cast, expression
 
 if TYPE_CHECKING:
@@ -42,13 +44,14 @@ _KEPT = re.compile(r"\b(?:def|gate|extern|cal|defcal|if|while|switch|box)\b")
 
 _WORD = re.compile(NAME)
 _REFUSED = {
-    "ExternDeclaration": "'extern'",
-    "CalibrationGrammarDeclaration": "'defcalgrammar'",
-    "CalibrationStatement": "'cal'",
-    "CalibrationDefinition": "'defcal'",
-    "DelayInstruction": "'delay'",
-    "Box": "'box'",
+    "CalibrationGrammarDeclaration": "'defcalgrammar' inside a block",
+    "CalibrationStatement": "'cal' inside a block",
+    "CalibrationDefinition": "'defcal' inside a block",
 }
+
+
+class Extern:
+    """A function that is declared, and not part of the program."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -59,7 +62,7 @@ class Subroutine:
     start: int
 
 
-class FullLane(Control):
+class FullLane(Timing):
     """Carries out the statements that the fast lane hands over.
 
     Parameters
@@ -211,7 +214,8 @@ class FullLane(Control):
         """Declare an input: a name whose value is not known when compiling."""
         name = node.identifier.name
         if node.io_identifier.name != "input":
-            raise self.unsupported(f"'{node.io_identifier.name}'", node)
+            self.declare_output(node)
+            return
         if self.frames:
             raise self.error("an input is declared inside a block", node, required="a declaration outside")
         kind = self.kind(node.type)
@@ -221,6 +225,17 @@ class FullLane(Control):
         self.declare(name, made, "an input", node.identifier)
         size = getattr(node.type, "size", None) if kind.name == "float" else None
         self.reader.inputs[name] = str(kind) if size is None else f"float[{self.integer(size, 1, 4096)}]"
+
+    def declare_output(self, node: Any) -> None:
+        """Declare an output: bits and variables like any others, since all of them are kept."""
+        if self.frames:
+            raise self.error("an output is declared inside a block", node, required="a declaration outside")
+        declaration = SimpleNamespace(type=node.type, identifier=node.identifier, init_expression=None, span=node.span)
+        self.do_ClassicalDeclaration(declaration)
+
+    def do_ExternDeclaration(self, node: Any) -> None:
+        """Declare a function that is not part of the program; only calls of it are refused."""
+        self.declare(node.name.name, Extern(), "an extern function", node.name)
 
     def do_ConstantDeclaration(self, node: Any) -> None:
         """Declare a constant."""
@@ -406,15 +421,18 @@ class FullLane(Control):
         """Call a subroutine for its effect."""
         call = node.expression
         known = self.globals.get(call.name.name) if type(call).__name__ == "FunctionCall" else None
-        if not isinstance(known, Subroutine):
+        if not isinstance(known, Subroutine | Extern):
             raise self.error("this is not a statement", node, required="a call of a subroutine")
-        if isinstance(self.call_subroutine(call), Pending):
-            raise self.unsupported("a measurement into no bit", node)
+        value = self.call_subroutine(call)
+        if isinstance(value, Pending):
+            self.unread(value.qubits, node)
 
     def call_subroutine(self, node: Any) -> Value | Array | Pending | None:
         """Write a subroutine out in place."""
         name = node.name.name
         known = self.globals.get(name)
+        if isinstance(known, Extern):
+            raise self.unsupported(f"a call of the extern function '{shorten(name)}'", node)
         if not isinstance(known, Subroutine):
             raise self.error(f"'{shorten(name)}' is not a subroutine", node, found=f"it is {self.scope.declared[name]}")
         definition = known.node

@@ -29,7 +29,7 @@ _CALLS = re.compile(
     r"|\b(?:int|uint|float|angle|bool|bit)\s*(?:\[[^]]*\]\s*)?\("
 )
 _RICH_BODY = re.compile(r"[@%&|<~!]|\b(?:for|if|while|switch|mod|ceiling|floor|popcount|rotl|rotr|pow)\b")
-_REFUSED = frozenset("defcal cal defcalgrammar extern output box delay durationof duration stretch".split())
+_REFUSED = frozenset("durationof stretch".split())
 
 
 def leading_word(piece: str) -> tuple[str, int] | None:

@@ -70,7 +70,11 @@ class Operations(Evaluator):
         if reads_bits(tree):
             # Bits change from one measurement to the next: what they are now is kept under a name.
             tree = self.kept(value, node)
-        return as_parameter(tree)
+        try:
+            made = as_parameter(tree)
+        except ExpressionError as problem:
+            raise self.fault(problem, node) from None
+        return made if not isinstance(made, Affine) or made.terms else made.constant
 
     def kept(self, value: Value, node: Any) -> Name:
         """Assign a value to a variable of its own at run time; the interpreter does."""
@@ -312,11 +316,19 @@ class Operations(Evaluator):
     def do_QuantumMeasurementStatement(self, node: Any) -> None:
         """Measure into bits."""
         if node.target is None:
-            raise self.unsupported("a measurement into no bit", node)
+            self.unread(self.places(node.measure.qubit), node)
+            return
         found = self.find(node.target.name if isinstance(node.target.name, str) else node.target.name.name, node.target)
         if isinstance(found, Variable):
             raise self.unsupported("a measurement into a bit of a block or a subroutine", node)
         self.measurement(self.places(node.measure.qubit), self.places(node.target, quantum=False), node)
+
+    def unread(self, sources: Places, node: Any) -> None:
+        """Measure qubits into bits of their own that nothing reads."""
+        self.outside("measure", node)
+        self.charge(len(sources.indices), node)
+        for qubit in sources.indices:
+            self.reader.measure_unread(qubit, self.at(node))
 
     def measurement(self, sources: Places, targets: Places, node: Any) -> None:
         """Append the measurement of qubits into as many bits."""

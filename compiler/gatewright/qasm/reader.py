@@ -52,13 +52,17 @@ _REGISTER = re.compile(rf"(qreg|creg)\s+({NAME})\s*(?:\[([^][]*)\])?")
 _DECLARATION = re.compile(rf"(qubit|bit)\s*(?:\[([^][]*)\])?\s*({NAME})\s*(?:=(.*))?", re.DOTALL)
 _OPAQUE = re.compile(rf"opaque\s+({NAME})\s*(?:\([^()]*\))?\s*[^()]*")
 _BLOCK = re.compile(r"\s*gate\b")
+_BRACES = re.compile(r"[{}]")
+_CALIBRATED = re.compile(rf"defcal\s+({NAME})")
 _NOTES = re.compile(r"(?:\s*(?:@|#|pragma\b)[^\n]*)++")
 _MEASURE = re.compile(r"measure\b(.*)", re.DOTALL)
 _IF = re.compile(r"if\s*\(\s*([^\s=()]+)\s*==\s*([^=()]*?)\s*\)\s*(.*)", re.DOTALL)
 _ARROW = re.compile(r"measure\b(.*)->(.*)", re.DOTALL)
 
 
-def read(text: str, *, where: str = "", natives: Mapping[str, Gate] | None = None) -> Circuit | Program:
+def read(
+    text: str, *, where: str = "", natives: Mapping[str, Gate] | None = None, strict: bool = True
+) -> Circuit | Program:
     """Read an OpenQASM program.
 
     Versions 2.0, 3.0 and 3.1 (3.0 where the version line is missing); ``include`` of the version's own standard
@@ -80,6 +84,9 @@ def read(text: str, *, where: str = "", natives: Mapping[str, Gate] | None = Non
     natives : mapping of str to Gate, optional
         Native gates of a device: calls of these names stay what they are. Where the program or its library
         defines such a gate, it has to agree with the native matrix up to global phase.
+    strict : bool
+        If False, natives are known only where the program defines or declares them, and one that differs is the
+        program's own.
 
     Returns
     -------
@@ -98,13 +105,15 @@ def read(text: str, *, where: str = "", natives: Mapping[str, Gate] | None = Non
     >>> [(op.name, op.qubits) for op in c]
     [('h', (0,)), ('cx', (0, 1)), ('rz', (0,)), ('rz', (1,))]
     """
-    return Reader(Source(text, where), natives or {}).read()
+    return Reader(Source(text, where), natives or {}, strict=strict).read()
 
 
 class Reader:
     """One program being read; with `only_full` the full lane takes every statement that it can."""
 
-    def __init__(self, source: Source, natives: Mapping[str, Gate], *, only_full: bool = False) -> None:
+    def __init__(
+        self, source: Source, natives: Mapping[str, Gate], *, only_full: bool = False, strict: bool = True
+    ) -> None:
         self.source = source
         self.only_full = only_full
         self.full: FullLane | None = None
@@ -112,10 +121,13 @@ class Reader:
         self.ended = False
         self.scope = Scope(source)
         self.natives = natives
+        self.strict = strict
         self.pieces = source.pieces()
         self.position = 0  # offset of the piece at hand
         self.started = False
-        self.gates: dict[str, Gate | Definition] = {**{name: GATES[name] for name in BUILT_IN[3]}, **natives}
+        self.gates: dict[str, Gate | Definition] = {name: GATES[name] for name in BUILT_IN[3]}
+        if strict:
+            self.gates.update(natives)
         self.opaque: set[str] = set()
         self.clashes: set[str] = set()  # native gates that differ from the library's
         self.statements: dict[str, int] = {}
@@ -129,6 +141,9 @@ class Reader:
         self.qubits: list[int] = []
         self.parameters: list[float] = []
         self.link: dict[int, int] = {}  # bits of measurements
+        self.calibrations: list[str] = []
+        self.calibrated: set[str] = set()  # gates with a calibration
+        self.unread: dict[int, int] = {}  # bits of qubits whose outcomes are dropped
         self.matrices: dict[int, NDArray[np.complex128]] = {}  # of explicit unitaries
         self.marks: dict[int, int] = {}  # of control flow that depends on the run: numbers of their contents
         self.contents: list[Mark] = []
@@ -192,6 +207,9 @@ class Reader:
             flat = circuit(self, np.array(order, dtype=np.int64))
         else:
             flat = circuit(self, scanner.order(order), scanner.columns())
+        if self.calibrations and self.marks:
+            raise self.scope.unsupported("'cal' or 'defcal' beside control that depends on the run", 0)
+        flat = replace(flat, calibrations=tuple(self.calibrations))
         return self.with_control(flat) if self.marks else flat
 
     def with_control(self, flat: Circuit) -> Program:
@@ -244,6 +262,8 @@ class Reader:
         if word in ("@", "#", "pragma"):
             skipped = _NOTES.match(self.source.text, start)
             return self.behind(piece, skipped.end() if skipped else start)
+        if word in ("cal", "defcal", "defcalgrammar"):
+            return self.behind(piece, self.calibration(word, start))
         choice = lane(word, piece, start, self.scope, self.full)
         if choice == FAST or (choice == EITHER and not self.only_full):
             return None
@@ -255,6 +275,26 @@ class Reader:
         self.full.charge_at(len(piece) >> 10, start)
         end, self.ended = self.full.statement(start)
         return self.behind(piece, end)
+
+    def calibration(self, word: str, start: int) -> int:
+        """Keep a calibration statement as it stands; return the offset behind it."""
+        text = self.source.text
+        if word == "defcalgrammar":
+            end = text.find(";", start) + 1
+        else:
+            depth, end = 0, 0
+            for match in _BRACES.finditer(text, start):
+                depth += 1 if match[0] == "{" else -1
+                if depth <= 0:
+                    end = match.end() if match[0] == "}" and depth == 0 else 0
+                    break
+        if not end:
+            raise self.source.error(f"a '{word}' is not closed", start, required="';'" if word[6:] else "'}'")
+        self.calibrations.append(self.source.original[start:end])
+        name = _CALIBRATED.match(text, start)
+        if name is not None:
+            self.calibrated.add(name[1])
+        return end
 
     def behind(self, piece: str, end: int) -> str:
         """Go on behind the offset `end`; return what follows it up to a semicolon."""
@@ -381,6 +421,7 @@ class Reader:
 
     def numbers(self, gate: Gate, parameters: Sequence[Parameter]) -> Sequence[float]:
         """Return the parameters of the next operation as numbers; put what is not known aside."""
+        parameters = [v.constant if isinstance(v, Affine) and not v.terms else v for v in parameters]
         numbers = [math.nan if isinstance(value, Affine) else value for value in parameters]
         if any(isinstance(value, Affine) for value in parameters):
             if gate.name not in GATES:
@@ -433,6 +474,8 @@ class Reader:
         gate = self.gates.get(name)
         if gate is not None:
             return gate
+        if name in self.calibrated:
+            raise self.scope.unsupported(f"calling '{shorten(name)}', which has a 'defcal' and no definition,", offset)
         scope = self.scope
         library = LIBRARY_FILES[scope.version]
         if name in scope.declared:
@@ -486,8 +529,23 @@ class Reader:
         if match is None:
             if self.scope.version == 2:
                 raise self.source.error("a measurement has no bit", offset, required="measure qubits -> bits")
-            raise self.scope.unsupported("a measurement into no bit", offset)
+            at = offset + len("measure")
+            span, _ = self.scope.operand(text[len("measure") :], at, self.scope.qubit_registers)
+            for qubit in span:
+                self.measure_unread(qubit, offset)
+            return
         self.measurement(match[1], offset + match.start(1), match[2], offset + match.start(2))
+
+    def measure_unread(self, qubit: int, offset: int) -> None:
+        """Measure a qubit whose outcome nobody asks for: into a bit of a register of our own."""
+        if qubit not in self.unread:
+            scope = self.scope
+            name = next(name for k in count() if (name := f"unread_outcomes{k or ''}") not in scope.declared)
+            size = scope.n_qubits or scope.n_physical
+            scope.add_register(name, size, offset, quantum=False)
+            self.unread.update((q, bit) for q, bit in enumerate(scope.bit_registers[name]) if q not in self.unread)
+        self.link[len(self.op)] = self.unread[qubit]
+        self.emit(MEASURE, (qubit,))
 
     def assign(self, target: str, target_offset: int, value: str, offset: int) -> None:
         """Read ``bits = measure qubits``."""
@@ -606,6 +664,8 @@ class Reader:
         self.scope.declare(match[1], "an opaque gate", offset + match.start(1))
         if match[1] not in self.natives:
             self.opaque.add(match[1])
+        else:
+            self.gates[match[1]] = self.natives[match[1]]
 
     # ---------------------------------------------------------------- gate definitions
 
@@ -637,7 +697,7 @@ class Reader:
         name = made.name
         known = self.natives.get(name) or GATES.get(name)
         same = known is not None and equals(made, known)
-        if name in self.natives and not same:
+        if name in self.natives and not same and self.strict:
             raise self.source.error(
                 f"the definition of '{shorten(name)}' differs from the device's native gate",
                 start,

@@ -102,7 +102,7 @@ class Source:
         text = text.removeprefix("\ufeff")
         if "\r" in text:
             text = text.replace("\r\n", "\n").replace("\r", "\n")
-        self.text = text
+        self.text = self.original = text
         if "\0" in text:
             raise self.error(
                 "this is not a text", text.index("\0"), required="an OpenQASM program", found="a zero byte"

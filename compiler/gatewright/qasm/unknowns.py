@@ -7,24 +7,22 @@ from typing import NoReturn
 
 from gatewright.classical import Bits, Expression, Literal, Name, Operation, expression_text, leaves
 from gatewright.errors import ExpressionError, UnsupportedError
-from gatewright.expressions import FUNCTIONS
+from gatewright.expressions import FUNCTIONS, parse
 from gatewright.gates import BARRIER, GATES, Gate
 from gatewright.parameters import (
     Affine,
     Parameter,
     applied,
-    names_in,
     power,
     product,
     quotient,
-    read_affine,
 )
 from gatewright.qasm.definitions import Op, same_gate
 from gatewright.rotations import Term, controlled_phase, inverse_parameters
 from gatewright.rotations import controlled as controlled_terms
 
 __all__ = [
-    "as_name",
+    "as_tree",
     "as_parameter",
     "controlled_unknown",
     "inverse_unknown",
@@ -37,8 +35,6 @@ __all__ = [
     "with_values",
 ]
 
-#: Casts that leave a number as it is.
-_CASTS = ("float", "int", "uint", "bool")
 #: Gates whose powers are those with a multiple of the angle.
 _ONE_ANGLE = frozenset("rx ry rz p phase u1 cp cphase cu1 crx cry crz rxx ryy rzz rzx".split())
 
@@ -60,7 +56,7 @@ def as_parameter(tree: Expression) -> Parameter:
         case Literal(text):
             return _number(text)
         case Name(name):
-            return Affine.of(name) if name.isidentifier() else read_affine(name, names_in(name))
+            return Affine.of(name)
         case Bits():
             raise ExpressionError("bits cannot stand here", required="a number")
         case Operation("-", (inner,)):
@@ -81,8 +77,6 @@ def as_parameter(tree: Expression) -> Parameter:
             return power(as_parameter(left), as_parameter(right))
         case Operation(name, (inner,)) if name in FUNCTIONS:
             return applied(name, as_parameter(inner))
-        case Operation(name, (Name() as inner,)) if name.partition("[")[0] in _CASTS[:1]:
-            return as_parameter(inner)
         case Operation(name, (inner,)) if name.partition("[")[0] == "float":
             return as_parameter(inner)
     return Affine.of(expression_text(tree, _no_bits))
@@ -98,17 +92,42 @@ def _no_bits(bits: Bits) -> str:
     raise ExpressionError("bits cannot stand here", required="a number")
 
 
-def as_name(value: Parameter) -> Name | Literal:
-    """Return a parameter as one leaf of an expression: a name, or a text in parentheses."""
-    if isinstance(value, Affine):
-        text = str(value)
-        return Name(text if text.isidentifier() else f"({text})")
-    return Literal(repr(value))
+def as_tree(value: Parameter) -> Expression:
+    """Return a parameter as an expression, of the form in which its text would be read.
+
+    Examples
+    --------
+    >>> as_tree(Affine.of("theta") * 2)
+    Operation(op='*', operands=(Literal(text='2.0'), Name(name='theta')))
+    """
+    if not isinstance(value, Affine):
+        return Literal(repr(value))
+    stack: list[Expression] = []
+    for step in parse(str(value), names=value.names, imaginary=False).steps:
+        if step.kind in ("number", "constant"):
+            stack.append(Literal(repr(step.number)))
+        elif step.kind == "name":
+            stack.append(Name(step.name))
+        elif step.kind == "neg" or step.kind in FUNCTIONS:
+            stack.append(_folded("-" if step.kind == "neg" else step.kind, (stack.pop(),)))
+        else:
+            second, first = stack.pop(), stack.pop()
+            stack.append(_folded("**" if step.kind == "pow" else step.kind, (first, second)))
+    return stack[0]
+
+
+def _folded(op: str, operands: tuple[Expression, ...]) -> Expression:
+    tree = Operation(op, operands)
+    if not all(isinstance(operand, Literal) for operand in operands):
+        return tree
+    number = as_parameter(tree)
+    assert not isinstance(number, Affine)
+    return Literal(repr(number))
 
 
 def names_of(tree: Expression) -> set[str]:
     """Return the names in an expression."""
-    return {name for leaf in leaves(tree) if isinstance(leaf, Name) for name in names_in(leaf.name)}
+    return {leaf.name for leaf in leaves(tree) if isinstance(leaf, Name)}
 
 
 def reads_bits(tree: Expression) -> bool:

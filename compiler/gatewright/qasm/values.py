@@ -120,6 +120,10 @@ def cast(value: Value, kind: Kind, *, implicit: bool = False) -> Value:
     """
     data, source = value.data, value.kind
     name = kind.name
+    if "duration" in (name, source.name):
+        if name != source.name or value.is_open:
+            raise ExpressionError(f"{source} cannot become {kind}", required="a duration that is known when compiling")
+        return value
     if value.is_open:
         same = source == kind or implicit
         return Value(kind, data if same else Operation(str(kind), (data,)))
@@ -203,6 +207,8 @@ def binary(op: str, a: Value, b: Value, *, real: bool = False) -> Value:
     >>> binary("/", seven, two).data, binary("/", seven, two, real=True).data
     (3, 3.5)
     """
+    if "duration" in (a.kind.name, b.kind.name):
+        return _duration(op, a, b)
     if a.is_open or b.is_open:
         return _open_binary(op, a, b, real=real)
     if op in _COMPARISONS:
@@ -230,6 +236,19 @@ def binary(op: str, a: Value, b: Value, *, real: bool = False) -> Value:
     return _real(op, a, b)
 
 
+def _duration(op: str, a: Value, b: Value) -> Value:
+    """Return a sum, a difference, a multiple, a quotient or a comparison of durations."""
+    if a.is_open or b.is_open:
+        raise ExpressionError("a duration depends on the run", required="a duration that is known when compiling")
+    both = a.kind.name == b.kind.name
+    if both and op in _COMPARISONS:
+        return Value(_BOOL, _COMPARISONS[op](a.data, b.data))
+    if not (op in ("+", "-", "/") if both else op == "*" or (op == "/" and a.kind.name == "duration")):
+        raise ExpressionError(f"'{op}' between {a.kind} and {b.kind}", required="durations, or multiples of them")
+    value = _real(op, Value(_FLOAT, a.data), Value(_FLOAT, b.data))
+    return value if both and op == "/" else Value(Kind("duration"), value.data)
+
+
 def expression(value: Value) -> Expression:
     """Return a value as an expression: a literal where it is known."""
     data = value.data
@@ -237,6 +256,8 @@ def expression(value: Value) -> Expression:
         return data  # type: ignore[no-any-return]
     if value.kind.name == "bool":
         return Literal("true" if data else "false")
+    if value.kind.name == "duration":
+        return Literal(f"{data!r}ns")
     if value.kind.name == "bit" and value.kind.width:
         return Literal(f'"{int(data):0{value.kind.width}b}"')
     return Literal(repr(data) if isinstance(data, float) else str(int(data)))
@@ -325,6 +346,10 @@ def unary(op: str, a: Value) -> Value:
     """Return the value of ``-``, ``!`` or ``~``."""
     if a.is_open:
         return Value(_BOOL if op == "!" else a.kind, Operation(op, (a.data,)))
+    if a.kind.name == "duration":
+        if op != "-":
+            raise ExpressionError(f"'{op}' of a duration", required="'-'")
+        return Value(a.kind, -a.data)
     if op == "!":
         return Value(_BOOL, not a.data)
     if op == "~":

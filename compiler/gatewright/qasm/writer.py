@@ -18,7 +18,7 @@ from gatewright.angles import angle_texts
 from gatewright.circuit import Circuit
 from gatewright.classical import Bits, bits_text
 from gatewright.errors import CircuitError, QasmError, UnsupportedError, shorten
-from gatewright.gates import BARRIER, GATES, MEASURE, RESET, UNITARY, Gate
+from gatewright.gates import BARRIER, DELAY, GATES, MEASURE, RESET, UNITARY, Gate
 from gatewright.parameters import Affine
 from gatewright.program import Program
 from gatewright.qasm.blocks import block_lines, conditional_lines
@@ -114,7 +114,10 @@ def write(
     head = [line if line.startswith("//") else f"// {line}" for line in comments]
     head += [f"OPENQASM {version}.0;", f'include "{LIBRARY_FILES[version]}";', "", *defined.values()]
     head += [f"input {kind} {name};" for name, kind in flat.inputs]
-    if defined or flat.inputs:
+    if flat.calibrations and version == 2:
+        raise CircuitError("OpenQASM 2 has no 'cal' and 'defcal'", hint="write OpenQASM 3")
+    head += flat.calibrations
+    if defined or flat.inputs or flat.calibrations:
         head.append("")
     quantum, classical = ("qreg {0}[{1}];", "creg {0}[{1}];") if version == 2 else ("qubit[{1}] {0};", "bit[{1}] {0};")
     head += [quantum.format(name, size) for name, size in qubits]
@@ -240,6 +243,10 @@ def _statements(
                 places = circuit.qubits_of(row)
                 names = registers if places == whole else [qubits[q] for q in places]
                 lines[row] = f"barrier {', '.join(names)};"
+        elif gate.name == DELAY.name and gate.function is None and version == 3:
+            for row in rows.tolist():
+                time = repr(float(circuit.parameters[circuit.parameter_offsets[row]])).removesuffix(".0")
+                lines[row] = f"delay[{time}ns] {', '.join([qubits[q] for q in circuit.qubits_of(row)])};"
         elif gate.function is not None or gate.name == RESET.name:
             lines[rows] = _calls(circuit, gate, rows, qubits)
         else:

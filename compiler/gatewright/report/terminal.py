@@ -23,7 +23,11 @@ def print_result(result: Result | ProgramResult, stream: TextIO) -> None:
     rows = [
         ("two-qubit gates", str(costs.two_qubit_gates), f"at least {result.lower_bound.two_qubit_gates} (see note)"),
         ("one-qubit gates", str(costs.one_qubit_gates), "physical pulses; virtual ones are free"),
-        ("swaps inserted", str(costs.swaps_inserted), "merged into neighbouring windows where there are any"),
+        (
+            "swaps inserted",
+            str(costs.swaps_inserted),
+            f"at least {result.lower_bound.swaps} (see note); merged into neighbouring windows where there are any",
+        ),
         ("two-qubit depth", str(costs.two_qubit_depth), ""),
         ("depth", str(costs.depth), "layers of physical operations"),
     ]
@@ -60,6 +64,8 @@ def print_verdict(verdict: Verdict, stream: TextIO) -> None:
     print(f"equal within {verdict.error_bound:.3g} (operator norm, up to global phase)", file=stream)
     if verdict.round_bound:
         print(f"each further round of a loop adds {verdict.round_bound:.3g} at most", file=stream)
+    if verdict.rounding:
+        print(f"of this, {verdict.rounding:.3g} is what the checker's own rounding may hide", file=stream)
     print(f"method: {verdict.method}", file=stream)
     if verdict.windows:
         worst = f"the worst, number {verdict.worst_window}, is {verdict.worst_distance:.3g} off"

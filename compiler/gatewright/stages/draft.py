@@ -66,6 +66,8 @@ class Draft:
         Claims of the stages so far, for the checker.
     initial, final : ndarray of int32, shape (N,)
         Physical qubit of each source wire, from placement and routing on.
+    script : ndarray of int64
+        Swaps that go with `initial`, as `gatewright.mapping.search.Plan` has them.
     origin : ndarray of int64, shape (operations,)
         Operation of `expanded` behind each operation of the routed circuit, -1 for an inserted swap.
     fused : Fused
@@ -73,6 +75,8 @@ class Draft:
         Of the scheduled circuit: nanoseconds where the device states durations, else layers.
     swaps : int
         Swaps inserted.
+    source : Circuit or None
+        What the chain began with, if it may be given back unchanged.
     """
 
     circuit: Circuit
@@ -83,10 +87,12 @@ class Draft:
     steps: tuple[Step, ...] = ()
     initial: NDArray[np.int32] = field(default_factory=lambda: np.zeros(0, np.int32))
     final: NDArray[np.int32] = field(default_factory=lambda: np.zeros(0, np.int32))
+    script: NDArray[np.int64] = field(default_factory=lambda: np.zeros(0, np.int64))
     origin: NDArray[np.int64] = field(default_factory=lambda: np.zeros(0, np.int64))
     fused: Fused | None = None
     starts: NDArray[np.float64] = field(default_factory=lambda: np.zeros(0))
     swaps: int = 0
+    source: Circuit | None = None
 
 
 #: A stage of the chain.

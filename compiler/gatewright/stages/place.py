@@ -7,7 +7,7 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
-from gatewright.mapping.placement import place as choose
+from gatewright.mapping.search import plan
 from gatewright.mapping.routing import Graph, Operations, make_graph, make_operations
 from gatewright.stages.draft import Draft
 
@@ -20,10 +20,10 @@ def place(draft: Draft) -> Draft:
     Raises
     ------
     DisconnectedError, InputError
-        See `gatewright.mapping.placement.place`.
+        See `gatewright.mapping.search.plan`.
     """
     graph, operations = mapping_task(draft)
-    initial = choose(
+    found = plan(
         graph,
         operations,
         n_source=draft.circuit.n_qubits,
@@ -32,7 +32,7 @@ def place(draft: Draft) -> Draft:
         seed=draft.settings.seed,
         fixed=draft.settings.placement,
     )
-    return replace(draft, initial=initial)
+    return replace(draft, initial=found.initial, script=found.script)
 
 
 def mapping_task(draft: Draft) -> tuple[Graph, Operations]:

@@ -24,7 +24,7 @@ def route(draft: Draft) -> Draft:
     The result acts on all physical qubits of the device; ``origin`` says which operation each comes from.
     """
     graph, operations = mapping_task(draft)
-    routing = find_route(graph, operations, draft.initial, seed=draft.settings.seed)
+    routing = find_route(graph, operations, draft.initial, seed=draft.settings.seed, script=draft.script)
     circuit = draft.circuit
     key = np.arange(len(routing.events), dtype=np.int64)
     is_swap = routing.events < 0

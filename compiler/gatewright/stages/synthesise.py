@@ -8,6 +8,7 @@ at the end of a window in this way is its seam in the proof.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from typing import Any
 
@@ -16,6 +17,7 @@ from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit, Piece, assemble
 from gatewright.errors import GateSetError
+from gatewright.gates import Gate
 from gatewright.linalg import dagger
 from gatewright.proof.windows import Step
 from gatewright.stages._kernels import carry_phases, merge_runs
@@ -63,7 +65,7 @@ def synthesise(draft: Draft) -> Draft:
     is_two = fused.kind == TWO
     uses[is_two], tools[is_two], layers[is_two] = made.uses, made.members, made.layers
     sites, seams, window_event = _runs(fused, layers, uses, tools, native, circuit.n_qubits, draft.settings.tolerance)
-    output, windows = _emit(circuit, fused, sites, uses, tools, window_event, native)
+    output, windows = _emit(circuit, fused, sites, uses, tools, window_event, native, draft.device.gate_set.natives)
     step, final = _claim(draft, fused, windows, seams)
     return replace(draft, circuit=output, fused=fused, final=final, steps=(*draft.steps, step))
 
@@ -210,6 +212,7 @@ def _emit(
     tools: NDArray[np.int64],
     window_event: NDArray[np.int64],
     native: NativeSet,
+    natives: Mapping[str, Gate],
 ) -> tuple[Circuit, NDArray[np.int32]]:
     """Return the native circuit and the window of each of its operations."""
     emission = native.plan.emit(sites.angles, sites.trailing)
@@ -230,7 +233,9 @@ def _emit(
     fixed_rows = np.flatnonzero(fused.kind[fused.window] == FIXED)
     at = fused.window[fixed_rows]
     for chosen, piece in circuit.pieces(fixed_rows, window_event[at] * room):
-        pieces.append(piece)
+        # A rotation by an unknown angle is the device's own gate from here on.
+        gate = natives.get(piece.gate.name, piece.gate) if piece.gate.function is not None else piece.gate
+        pieces.append(replace(piece, gate=gate))
         windows.append(at[chosen])
     output, order = assemble(replace(circuit, matrices=(), phase=0.0), circuit.n_qubits, pieces)
     joined = np.concatenate(windows) if windows else np.zeros(0)

@@ -3,7 +3,7 @@
 In the magic basis of `gatewright.synthesis._kernels` a circuit of k entanglers is M = D_k O_{k−1} … O_1 D_1, each D_j
 diagonal and each O_j a rotation, and it is of the class with phases a if M = L diag(e^{ia}) Rᵀ with rotations L, R.
 What has to vanish is E = Im W of the symmetric unitary W_{bc} = e^{−i(a_b + a_c)} (RᵀMᵀMR)_{bc}, to first order linear
-in turns of all O_j and R: 9 equations, solved with least turns. This form stays smooth where phases coincide, and R
+in turns of all O_j and R: 10 equations, solved with least turns. This form stays smooth where phases coincide, and R
 need not be known beforehand. On a facet of what is reached E is quadratic in the turns; steps are doubled there.
 """
 
@@ -22,6 +22,7 @@ __all__ = ["PAIRS", "refine"]
 
 PAIRS = np.array([[1, 0], [2, 0], [3, 0], [3, 2], [1, 3], [2, 1]], dtype=np.int64)
 """Planes of the six turns: about 1 and the unit i, then about the two others, so that quaternions come out easily."""
+_DIAGONAL = np.array([0, 4, 7, 9], dtype=np.int64)
 _DONE = 4e-31
 """Sum of the squares of E and of Re W − 1 that is rounding."""
 _NEAR = 1e-24
@@ -71,7 +72,7 @@ def refine(
     turn = np.empty((k, 4, 4))
     part = np.empty((k + 1, 4, 4), np.complex128)
     column = np.empty((count, 10))
-    normal, factor = np.empty((9, 9)), np.empty((9, 9))
+    normal, factor = np.empty((10, 10)), np.empty((10, 10))
     error, y = np.empty(10), np.empty(10)
     twist, step = np.empty(4, np.complex128), np.empty(6)
     failures = 0
@@ -122,7 +123,7 @@ def refine(
                     stretch = 2.0 if stretch == 1.0 and 9.0 * trial < merit < 32.0 * trial and trial < 1e-2 else 1.0
                     merit, refused = trial, 0
                     damping = max(0.1 * damping, 1e-16)
-                    for r in range(9):
+                    for r in range(10):
                         error[r] = y[r]
                     for j in range(k):
                         for q in range(2):
@@ -148,40 +149,45 @@ def refine(
                                         sine = math.sin(targets[index, b] - targets[index, c])
                                         column[6 * j + t, r] = scale * a * sine
                                     r += 1
-                    for r in range(9):
+                    for r in range(10):
                         for m in range(r + 1):
                             a = 0.0
                             for t in range(count):
                                 a += column[t, r] * column[t, m]
                             normal[r, m] = a
+                    # The sum of the diagonal equations says nothing: keep it apart, on the scale of the others.
+                    a = 0.25 * (normal[0, 0] + normal[4, 4] + normal[7, 7] + normal[9, 9])
+                    for r in range(4):
+                        for m in range(r + 1):
+                            normal[_DIAGONAL[r], _DIAGONAL[m]] += a
                 else:
                     refused += 1
                     if refused > 3 and merit < _NEAR:
                         break
                     damping = damping if stretch == 2.0 else 8.0 * damping + 1e-15
                     stretch = 1.0
-                # Cholesky, with damping tied to how far the target still is. A tenth equation follows from the nine.
+                # Cholesky, with damping tied to how far the target still is.
                 shift = 1.0 + damping * min(1.0, merit) + 1e-16
-                for r in range(9):
+                for r in range(10):
                     for m in range(r + 1):
                         a = normal[r, m] * shift + 1e-22 if r == m else normal[r, m]
                         for t in range(m):
                             a -= factor[r, t] * factor[m, t]
                         factor[r, m] = math.sqrt(max(a, 1e-17 * normal[r, r], 1e-300)) if r == m else a / factor[m, m]
-                for r in range(9):
+                for r in range(10):
                     a = -error[r]
                     for t in range(r):
                         a -= factor[r, t] * y[t]
                     y[r] = a / factor[r, r]
-                for r in range(8, -1, -1):
+                for r in range(9, -1, -1):
                     a = y[r]
-                    for t in range(r + 1, 9):
+                    for t in range(r + 1, 10):
                         a -= factor[t, r] * y[t]
                     y[r] = a / factor[r, r]
                 for j in range(k):
                     for t in range(6):
                         a = 0.0
-                        for r in range(9):
+                        for r in range(10):
                             a += column[6 * j + t, r] * y[r]
                         step[t] = 0.5 * stretch * a * (weight if j < k - 1 else 1.0)
                     for q in range(2):

@@ -191,16 +191,16 @@ class Entangler:
         made[...] = np.eye(2)
         for k in np.unique(chosen.index):
             rows = np.flatnonzero(chosen.index == k)
-            made[rows, : k + 1] = gates(
-                sequence_layers(
-                    factors.local[rows],
-                    chosen.points[rows],
-                    chosen.turned[rows],
-                    np.broadcast_to(self.coordinates, (1, k, 3)),
-                    np.broadcast_to(self.frame, (1, k, 4, 4)),
-                    np.zeros(len(rows), dtype=np.int64),
-                )
+            inner, more = sequence_layers(
+                factors.local[rows],
+                chosen.points[rows],
+                chosen.turned[rows],
+                np.broadcast_to(self.coordinates, (1, k, 3)),
+                np.broadcast_to(self.frame, (1, k, 4, 4)),
+                np.zeros(len(rows), dtype=np.int64),
             )
+            made[rows, : k + 1] = gates(inner)
+            chosen.distance[rows] += more
         return EntanglerCircuit(
             uses=chosen.index.reshape(batch),
             layers=made.reshape(*batch, most + 1, 2, 2, 2),

@@ -197,16 +197,12 @@ def synthesise_mixed(
 
         frames = np.array([entanglers[i].frame for i in order]).reshape(1, k, 4, 4)
         points = np.array([entanglers[i].coordinates for i in order]).reshape(1, k, 3)
-        layers[rows, : k + 1] = gates(
-            sequence_layers(
-                factors.local[rows],
-                chosen.points[rows],
-                chosen.turned[rows],
-                points,
-                frames,
-                np.zeros(len(rows), dtype=np.int64),
-            )
+        which = np.zeros(len(rows), dtype=np.int64)
+        inner, more = sequence_layers(
+            factors.local[rows], chosen.points[rows], chosen.turned[rows], points, frames, which
         )
+        layers[rows, : k + 1] = gates(inner)
+        distance[rows] += more
     return MixedCircuit(uses, members, layers, distance)
 
 
