@@ -16,6 +16,7 @@
     │   ├── UnsupportedError    not yet supported by this version
     │   └── DisconnectedError   no path between the qubits on this device
     ├── ProofError              the output was not proven equal, or is not legal (exit code 3)
+    │   └── UndecidedError      no method could tell whether it is equal
     └── BudgetError             a limit that the user set is exceeded (exit code 4)
 
 Each error says what was required, what was found and what to try, on one line.
@@ -42,6 +43,7 @@ __all__ = [
     "ProofError",
     "ProofFileError",
     "QasmError",
+    "UndecidedError",
     "UnsupportedError",
     "nearest_name",
     "shorten",
@@ -227,6 +229,10 @@ class ProofError(GatewrightError):
         self.qubits = qubits
         self.distance = distance
         super().__init__(what, required=required, found=found, hint=hint, where=where, line=line, column=column)
+
+
+class UndecidedError(ProofError):
+    """No method could tell whether the output is equal to its source: neither 'equal' nor 'different'."""
 
 
 class BudgetError(GatewrightError):

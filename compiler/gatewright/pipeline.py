@@ -17,10 +17,12 @@ from gatewright.errors import InputError, ProofError, nearest_name
 from gatewright.linalg import checked_unitary
 from gatewright.lower_bounds import lower_bound
 from gatewright.program import Program
-from gatewright.proof import Proof, Verdict, check_legal, check_program, check_proof
+from gatewright.proof import Fingerprints, Proof, Verdict, check_legal, check_program, check_proof
 from gatewright.proof.dense import BINDINGS, dense_distance, dense_work
+from gatewright.proof.judge import judge
 from gatewright.result import ProgramResult, Result
 from gatewright.stages.draft import Draft, Settings, Stage
+from gatewright.stages.edges import PREFERENCES
 from gatewright.stages.expand import expand
 from gatewright.stages.fuse import fuse
 from gatewright.stages.parametrise import parametrise
@@ -55,6 +57,7 @@ def compile(  # noqa: A001
     seed: int = 0,
     tolerance: float = 1e-12,
     effort: str = "standard",
+    prefer: str = "uses",
     placement: Sequence[int] | None = None,
     final_placement: Sequence[int] | None = None,
     budget: Mapping[str, float] | None = None,
@@ -73,6 +76,7 @@ def compile(  # noqa: A001
     seed: int = 0,
     tolerance: float = 1e-12,
     effort: str = "standard",
+    prefer: str = "uses",
     placement: Sequence[int] | None = None,
     final_placement: Sequence[int] | None = None,
     budget: Mapping[str, float] | None = None,
@@ -90,6 +94,7 @@ def compile(  # noqa: A001
     seed: int = 0,
     tolerance: float = 1e-12,
     effort: str = "standard",
+    prefer: str = "uses",
     placement: Sequence[int] | None = None,
     final_placement: Sequence[int] | None = None,
     budget: Mapping[str, float] | None = None,
@@ -112,6 +117,9 @@ def compile(  # noqa: A001
         Nothing else is approximated. A matrix may be non-unitary by as much.
     effort : {"standard", "quick", "deep"}
         How long to search for placements.
+    prefer : {"uses", "fidelity", "duration"}
+        What is made least in each window where its qubits have several entanglers: the number of uses, the loss of
+        fidelity, or the duration. The others decide between equals. What the device does not state is not compared.
     placement : sequence of int, optional
         Physical qubit of each source qubit at the start; -1 leaves one free.
     final_placement : sequence of int, optional
@@ -150,6 +158,8 @@ def compile(  # noqa: A001
     """
     if effort not in EFFORTS:
         raise InputError(f"unknown effort '{str(effort)[:60]}'", hint=nearest_name(str(effort), EFFORTS))
+    if prefer not in PREFERENCES:
+        raise InputError(f"unknown preference '{str(prefer)[:60]}'", hint=nearest_name(str(prefer), PREFERENCES))
     if not 0 <= tolerance <= 1e-2:
         raise InputError("the tolerance is out of range", required="0 to 0.01", found=str(tolerance))
     clock = _Clock(progress)
@@ -163,6 +173,7 @@ def compile(  # noqa: A001
         seed=seed,
         tolerance=tolerance,
         effort=effort,
+        prefer=prefer,
         placement=_placement(placement, asked),
         final=_placement(final_placement, asked),
     )
@@ -177,7 +188,7 @@ def compile(  # noqa: A001
         clock.start(stage.__name__)
         draft = stage(draft)
     clock.start("prove")
-    proof = Proof(draft.steps)
+    proof = Proof(draft.steps, Fingerprints.of(asked, draft.circuit, device))
     verdict = proven(asked, draft.circuit, proof, device=device, tolerance=tolerance)
     clock.start("count")
     costs = count_costs(draft.circuit, device, starts=draft.starts, swaps_inserted=draft.swaps)
@@ -230,7 +241,10 @@ def _compile_program(
     clock.start("compile circuits")
     threaded = thread_program(source, draft, chain)
     clock.start("prove")
-    proofs = tuple(Proof(part.steps) for part in threaded.drafts)
+    proofs = tuple(
+        Proof(part.steps, Fingerprints.of(circuit, part.circuit, device))
+        for circuit, part in zip(source.circuits(), threaded.drafts, strict=True)
+    )
     slack = _window_tolerance(draft.native, tolerance)
     verdict = check_program(source, threaded.program, proofs, device=device, tolerance=slack)
     clock.start("count")
@@ -281,9 +295,9 @@ def check(
     device : Device, optional
         Without it, legality is not checked.
     proof : Proof, optional
-        With it, circuits of any size; without, full unitaries are compared, up to about 10 qubits.
+        Without it, whatever can decide is tried: see `gatewright.proof.judge`.
     initial, final : sequence of int, optional
-        Without a proof: output qubit of each source qubit at the two ends; each at its own number by default.
+        Without a proof: output qubit of each source qubit at the two ends; found if not given.
     tolerance : float
         Largest operator-norm distance that counts as equal: of a window with a proof, of the whole without one.
 
@@ -291,38 +305,23 @@ def check(
     ------
     ProofError
         Not equal, or not legal, and where.
+    UndecidedError
+        Without a proof: no method could tell.
     """
     if proof is not None:
         return check_proof(source, output, proof, device=device, tolerance=tolerance)
     if device is not None:
         check_legal(output, device)
-    places = [tuple(range(source.n_qubits)) if given is None else tuple(given) for given in (initial, final)]
-    for name, given in zip(("initial", "final"), places, strict=True):
-        if len(set(given)) != source.n_qubits or not all(0 <= q < output.n_qubits for q in given):
+    for name, given in (("initial", initial), ("final", final)):
+        if given is not None and (
+            len(set(given)) != source.n_qubits or not all(0 <= q < output.n_qubits for q in given)
+        ):
             raise InputError(
                 f"the {name} placement does not fit",
                 required=f"{source.n_qubits} different qubits below {output.n_qubits}",
                 found=", ".join(map(str, given[:16])),
             )
-    distance = dense_distance(source, output, *places)
-    if not distance <= tolerance:
-        raise ProofError(
-            "not equal: the full unitaries differ",
-            distance=distance,
-            required=f"operator-norm distance at most {tolerance:.3g}",
-            found=f"{distance:.6g}",
-            hint="check with the --proof file to see which window differs",
-        )
-    return Verdict(
-        error_bound=distance,
-        windows=0,
-        worst_window=0,
-        worst_distance=0.0,
-        initial=places[0],
-        final=places[1],
-        method="full unitaries compared; qubits beyond the source's taken to start and end in |0⟩"
-        + (f"; at {BINDINGS} random values of the unknown parameters: evidence, no proof" if source.symbolic else ""),
-    )
+    return judge(source, output, initial=initial, final=final, tolerance=tolerance)
 
 
 def _placement(given: Sequence[int] | None, circuit: Circuit | Program) -> tuple[int, ...] | None:

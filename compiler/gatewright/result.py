@@ -14,7 +14,7 @@ from gatewright.cost import SUCCESS_MODEL, Bound, Costs
 from gatewright.devices import Device
 from gatewright.gates import GATES
 from gatewright.program import Program
-from gatewright.proof import Proof, Verdict, encode_program_proof, encode_proof
+from gatewright.proof import Fingerprints, Proof, Verdict, encode_program_proof, encode_proof
 from gatewright.synthesis.definition import definition_of
 
 __all__ = ["ProgramResult", "Result"]
@@ -168,7 +168,7 @@ class Result(_Compiled):
         steps = [
             step if step.output is None else replace(step, output=step.output.bind(values)) for step in self.proof.steps
         ]
-        proof = Proof(tuple(steps))
+        proof = Proof(tuple(steps), Fingerprints.of(source, circuit, self.device))
         verdict = proven(source, circuit, proof, device=self.device, tolerance=self.tolerance)
         return replace(self, circuit=circuit, source=source, proof=proof, verdict=verdict)
 
@@ -178,7 +178,7 @@ class Result(_Compiled):
 
     def encode_proof(self) -> bytes:
         """Return the bytes of the proof file, for `gatewright.read_proof` and ``gatewright check``."""
-        return encode_proof(self.proof, self.source, self.circuit)
+        return encode_proof(self.proof)
 
     def to_qasm(self, *, version: int = 3) -> str:
         """Return the circuit as an OpenQASM program, with the placement in its header.
@@ -221,7 +221,7 @@ class ProgramResult(_Compiled):
 
     def encode_proof(self) -> bytes:
         """Return the bytes of the proof file, for `gatewright.read_proof` and ``gatewright check``."""
-        return encode_program_proof(self.proofs, self.source, self.program)
+        return encode_program_proof(self.proofs)
 
     def to_qasm(self, *, version: int = 3) -> str:
         """Return the program as OpenQASM, with the placement in its header; see `Result.to_qasm`."""

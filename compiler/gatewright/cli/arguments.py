@@ -9,8 +9,8 @@ from gatewright._version import __version__
 __all__ = ["build_parser"]
 
 _EXITS = (
-    "exit codes: 0 done; 1 the input, gate set or device is at fault; 2 usage; 3 not proven equal, or not legal; "
-    "4 over budget; 130 interrupted"
+    "exit codes: 0 done; 1 the input, gate set or device is at fault; 2 usage; 3 not proven equal (different or "
+    "undecided), or not legal; 4 over budget; 130 interrupted"
 )
 _INPUT = "OpenQASM 2 or 3, or a unitary as .npy, .npz, .csv, .txt or .json; - for standard input"
 _JSON = "write the summary as JSON to FILE, - for standard output"
@@ -123,6 +123,13 @@ def _compile_options(parser: argparse.ArgumentParser) -> None:
         help="how long to search for placements (default: standard)",
     )
     parser.add_argument(
+        "--prefer",
+        choices=("uses", "fidelity", "duration"),
+        default="uses",
+        help="what is made least where qubits have several entanglers: their uses (the default), the loss of fidelity, "
+        "or the duration",
+    )
+    parser.add_argument(
         "--tolerance",
         type=_tolerance,
         default=1e-12,
@@ -191,7 +198,7 @@ def _add_check(commands: argparse._SubParsersAction) -> None:  # type: ignore[ty
     parser.add_argument("source", metavar="SOURCE", help=_INPUT)
     parser.add_argument("output", metavar="OUTPUT", help="OpenQASM program to judge")
     parser.add_argument("--device", metavar="FILE", help="device file (TOML); without it, legality is not checked")
-    parser.add_argument("--proof", metavar="FILE", help="proof file; without it, up to about 10 qubits are compared")
+    parser.add_argument("--proof", metavar="FILE", help="proof file; without it, whatever can decide is tried")
     parser.add_argument("--json", metavar="FILE", help=_JSON)
     parser.add_argument(
         "--tolerance",

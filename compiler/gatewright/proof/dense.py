@@ -6,6 +6,7 @@ Qubits of the output that carry no source qubit are taken to start in |0⟩, and
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,8 +15,19 @@ from gatewright.circuit import Circuit, apply_operations
 from gatewright.errors import CircuitError, ProofError
 from gatewright.gates import BARRIER, DELAY, MEASURE
 from gatewright.linalg import dagger
+from gatewright.proof.products import multiplication, operation_matrices
 
-__all__ = ["dense_distance", "dense_work", "touched_qubits"]
+__all__ = [
+    "DenseComparison",
+    "applied_rounding",
+    "check_measurements",
+    "compare_dense",
+    "dense_distance",
+    "dense_work",
+    "spread",
+    "touched_qubits",
+    "unitary_part",
+]
 
 Array = NDArray[np.complex128]
 
@@ -37,13 +49,44 @@ def dense_work(source: Circuit, output: Circuit, initial: Sequence[int], final: 
     return float(entries * (1 + np.count_nonzero(output.widths >= 2)))
 
 
+@dataclass(frozen=True, eq=False, slots=True)
+class DenseComparison:
+    """What full matrices say.
+
+    Attributes
+    ----------
+    distance : float
+        Operator norm of the difference, the phase chosen for the smallest Frobenius norm.
+    rounding : float
+        Bound on the error of that.
+    worst : ndarray, shape (2**n,)
+        The input state on which they differ most.
+    """
+
+    distance: float
+    rounding: float
+    worst: Array
+
+
 def dense_distance(source: Circuit, output: Circuit, initial: Sequence[int], final: Sequence[int]) -> float:
-    """Return the operator-norm distance, up to global phase, of the output from the source on its places.
+    """Return the distance found by `compare_dense`; unknown parameters are given a few random values."""
+    if source.symbolic or output.symbolic:
+        rng = np.random.default_rng(source.n_qubits)
+        atoms = dict.fromkeys((*source.atoms, *output.atoms))
+        draws = [
+            dict(zip(atoms, rng.uniform(-np.pi, np.pi, len(atoms)).tolist(), strict=True)) for _ in range(BINDINGS)
+        ]
+        return max(dense_distance(source.at_atoms(v), output.at_atoms(v), initial, final) for v in draws)
+    return compare_dense(source, output, initial, final).distance
+
+
+def compare_dense(source: Circuit, output: Circuit, initial: Sequence[int], final: Sequence[int]) -> DenseComparison:
+    """Compare the full matrices, up to global phase, of the output and the source on its places.
 
     Parameters
     ----------
     source, output : Circuit
-        Unitary, but for measurements at the end; these must agree. Unknown parameters are given a few random values.
+        Unitary, but for measurements at the end; these must agree.
     initial, final : sequence of int, length source.n_qubits
         Output qubit of each source qubit at the two ends.
 
@@ -54,13 +97,6 @@ def dense_distance(source: Circuit, output: Circuit, initial: Sequence[int], fin
     ProofError
         The measurements differ.
     """
-    if source.symbolic or output.symbolic:
-        rng = np.random.default_rng(source.n_qubits)
-        atoms = dict.fromkeys((*source.atoms, *output.atoms))
-        draws = [
-            dict(zip(atoms, rng.uniform(-np.pi, np.pi, len(atoms)).tolist(), strict=True)) for _ in range(BINDINGS)
-        ]
-        return max(dense_distance(source.at_atoms(v), output.at_atoms(v), initial, final) for v in draws)
     held = touched_qubits(output, initial, final)
     n = source.n_qubits
     if len(held) + n > MAX_LOG_ENTRIES:
@@ -70,23 +106,57 @@ def dense_distance(source: Circuit, output: Circuit, initial: Sequence[int], fin
             found=f"{n} and {len(held)}",
             hint="compile with --proof and check with that proof",
         )
-    meant_unitary, meant_bits = _split(source)
-    made_unitary, made_bits = _split(output)
+    check_measurements(source, output, final)
+    meant_rows, made_rows = unitary_part(source), unitary_part(output)
+    rank = {q: k for k, q in enumerate(held)}
+    meant = spread(apply_operations(source, meant_rows, range(n), np.eye(2**n, dtype=np.complex128)), final, rank)
+    start = spread(np.eye(2**n, dtype=np.complex128), initial, rank)
+    made = apply_operations(output, made_rows, [rank.get(q, 0) for q in range(output.n_qubits)], start)
+    overlap = complex(np.vdot(meant, made))
+    phase = overlap / abs(overlap) if overlap else 1.0
+    difference = made - phase * meant
+    # The largest singular value, by the Hermitian eigenvalue problem: many times faster, and as accurate for it.
+    values, vectors = np.linalg.eigh(dagger(difference) @ difference)
+    growth = 2 ** (n / 2)
+    rounding = growth * (applied_rounding(source, meant_rows) + applied_rounding(output, made_rows))
+    return DenseComparison(float(np.sqrt(max(0.0, values[-1]))), rounding, vectors[:, -1])
+
+
+def check_measurements(source: Circuit, output: Circuit, final: Sequence[int]) -> None:
+    """Check that both measure the same at their ends.
+
+    Raises
+    ------
+    CircuitError
+        Something else follows a measurement.
+    ProofError
+        The measurements differ.
+    """
+    meant_bits, made_bits = _split(source)[1], _split(output)[1]
     if {(final[q], bit) for q, bit in meant_bits} != set(made_bits):
         raise ProofError(
             "not equal: the measurements at the end differ",
             required=_listed([(final[q], bit) for q, bit in meant_bits]),
             found=_listed(made_bits),
         )
-    rank = {q: k for k, q in enumerate(held)}
-    meant = _spread(apply_operations(source, meant_unitary, range(n), np.eye(2**n, dtype=np.complex128)), final, rank)
-    start = _spread(np.eye(2**n, dtype=np.complex128), initial, rank)
-    made = apply_operations(output, made_unitary, [rank.get(q, 0) for q in range(output.n_qubits)], start)
-    overlap = complex(np.vdot(meant, made))
-    phase = overlap / abs(overlap) if overlap else 1.0
-    difference = made - phase * meant
-    # The largest singular value, by the Hermitian eigenvalue problem: many times faster, and as accurate for it.
-    return float(np.sqrt(max(0.0, np.linalg.eigvalsh(dagger(difference) @ difference)[-1])))
+
+
+def unitary_part(circuit: Circuit) -> list[int]:
+    """Return the unitary operations, in order; what else there is must be measurements at the end, and barriers."""
+    return _split(circuit)[0]
+
+
+def applied_rounding(circuit: Circuit, rows: Sequence[int]) -> float:
+    """Return a bound on the error, per unit vector, of applying operations one after another to a state.
+
+    A product with a gate on w qubits is an inner product of length 2^w for every entry, so it is off by at most
+    √2 γ_(2·2^w) ‖|G|‖ in norm, ‖|G|‖ ≤ 2^(w/2); the matrix itself, and merging one-qubit gates into it, count too.
+    """
+    index = np.asarray(rows, dtype=np.int64)
+    total = float(2 * multiplication(2.0 ** circuit.widths[index]).sum()) if len(index) else 0.0
+    for _, _, errors in operation_matrices(circuit, index):
+        total += float(errors.sum())
+    return total / (1 - total) if total < 0.5 else float("inf")
 
 
 def _listed(pairs: list[tuple[int, int]]) -> str:
@@ -124,7 +194,7 @@ def _split(circuit: Circuit) -> tuple[list[int], list[tuple[int, int]]]:
     return unitary, measured
 
 
-def _spread(columns: Array, places: Sequence[int], rank: dict[int, int]) -> Array:
+def spread(columns: Array, places: Sequence[int], rank: dict[int, int]) -> Array:
     """Put the n qubits of `columns` on their places among all held qubits, the others in |0⟩."""
     n, total = len(places), len(rank)
     bits = (np.arange(2**n)[:, None] >> np.arange(n - 1, -1, -1)) & 1

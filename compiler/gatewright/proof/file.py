@@ -1,18 +1,23 @@
-"""Proof files: a zip archive of one JSON header and plain little-endian arrays; no pickle, nothing executable.
+"""Proof files: a zip archive of one JSON header and packed arrays; no pickle, nothing executable.
 
-``proof.json`` states the format, its version, the version of gatewright, fingerprints of source and output, and for
-every array its type and shape. Each array is a member of its own. The bytes depend on the proof alone.
+``proof.json`` states the format and its version, the version of gatewright, the fingerprints of source, output, gate
+set and device, the kinds of claims, and type and shape of every array; each array is a little-endian member of its own.
+`packing` says how arrays are packed. The bytes depend on the proof alone: reading and writing again gives the same.
+
+A step K has ``K.initial``, ``K.final``, ``K.entry``, ``K.exit`` (as differences from the entries) and ``K.widths``
+(integers), ``K.source_window`` and ``K.output_window`` (differences), ``K.claims``, and the parts of ``K.seams``;
+``K.wires`` only where they do not follow; and, but for the last, the columns of the circuit it ends with.
 """
 
 from __future__ import annotations
 
-import hashlib
 import io
 import json
 import math
 import zipfile
+import zlib
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from dataclasses import asdict
 from pathlib import Path
 from typing import Any
 
@@ -21,30 +26,31 @@ from numpy.typing import NDArray
 
 from gatewright._version import __version__
 from gatewright.circuit import Circuit
-from gatewright.errors import ProofFileError, shorten
+from gatewright.errors import InputError, ProofFileError, shorten
 from gatewright.gates import BARRIER, DELAY, GATES, MEASURE, RESET, UNITARY, Gate
 from gatewright.parameters import Affine, Parameter
+from gatewright.proof.claims import CLAIM_KINDS
+from gatewright.proof.fingerprints import Fingerprints
+from gatewright.proof.packing import (
+    follow_wires,
+    pack_differences,
+    pack_integers,
+    pack_seams,
+    unpack_differences,
+    unpack_integers,
+    unpack_seams,
+)
+from gatewright.proof.reorder import Reorder
 from gatewright.proof.windows import Proof, Step
 
-__all__ = ["FORMAT", "ProofFile", "decode_proof", "encode_proof", "fingerprint", "read_proof"]
+__all__ = ["FORMAT", "FORMAT_VERSION", "decode_proof", "encode_proof", "read_proof"]
 
 FORMAT = "gatewright-proof"
-FORMAT_VERSION = 1
+FORMAT_VERSION = 2
 #: Largest size of all arrays together, uncompressed.
 MAX_BYTES = 1 << 32
 MAX_HEADER = 1 << 24
 
-_STEP = {
-    "initial": np.int32,
-    "final": np.int32,
-    "source_window": np.int32,
-    "output_window": np.int32,
-    "offsets": np.int64,
-    "wires": np.int32,
-    "entry": np.int32,
-    "exit": np.int32,
-    "seams": np.float64,
-}
 _CIRCUIT = {
     "op": np.int16,
     "qubits": np.int32,
@@ -53,43 +59,95 @@ _CIRCUIT = {
     "parameter_offsets": np.int64,
     "link": np.int32,
 }
+_GROWING = ("offsets", "parameter_offsets")
+_SEAMS = ("code", "steps", "small", "odd")
 _SPECIAL = {gate.name: gate for gate in (MEASURE, RESET, BARRIER, DELAY, UNITARY)}
 
 
-@dataclass(frozen=True, eq=False, slots=True)
-class ProofFile:
-    """A proof as read from a file, with the fingerprints of the circuits it was made for."""
+def encode_proof(proof: Proof) -> bytes:
+    """Return the bytes of a proof file.
 
-    proof: Proof
-    source: str
-    output: str
-    version: str
+    Raises
+    ------
+    ProofFileError
+        A circuit between two steps uses a gate that is not in the standard table.
+    """
+    arrays: dict[str, NDArray[Any]] = {}
+    steps: list[dict[str, Any]] = []
+    for number, step in enumerate(proof.steps):
+        if isinstance(step, Reorder):
+            arrays[f"{number}.window"] = pack_differences(step.window)
+            arrays[f"{number}.rank"] = pack_differences(step.rank)
+            steps.append({"output": None, "reorder": True})
+            continue
+        arrays |= {f"{number}.{name}": array for name, array in _pack_step(step).items()}
+        steps.append({"output": _encode_circuit(step.output, f"{number}.output", arrays)})
+    header = {
+        "format": FORMAT,
+        "format_version": FORMAT_VERSION,
+        "gatewright": proof.version or __version__,
+        "fingerprints": asdict(proof.made_for),
+        "claims": [kind.name for kind in CLAIM_KINDS],
+        "steps": steps,
+        "arrays": {name: [array.dtype.str, list(array.shape)] for name, array in arrays.items()},
+    }
+    buffer = io.BytesIO()
+    with zipfile.ZipFile(buffer, "w", zipfile.ZIP_DEFLATED, compresslevel=5) as archive:
+        # ZipInfo's fixed default date keeps the bytes the same from run to run.
+        archive.writestr(_member("proof.json"), json.dumps(header, indent=1))
+        for name, array in arrays.items():
+            archive.writestr(_member(name), array.astype(array.dtype.newbyteorder("<")).tobytes())
+    return buffer.getvalue()
 
 
-def fingerprint(circuit: Circuit) -> str:
-    """Return a SHA-256 digest of what a circuit does: operations, qubits, parameters, bits and matrices."""
-    digest = hashlib.sha256()
-    # Kinds are numbered as they first occur too.
-    used, places = np.unique(circuit.op, return_index=True)
-    code_of: dict[str, int] = {}
-    codes = np.zeros(len(circuit.table) + 1, dtype=np.int16)
-    for kind in used[np.argsort(places)].tolist():
-        codes[kind] = code_of.setdefault(circuit.table[kind].name, len(code_of))
-    digest.update(json.dumps([circuit.n_qubits, circuit.n_bits, list(code_of)]).encode())
-    link, symbolic = circuit.link, circuit.symbolic
-    if symbolic:
-        # Numbered as they first occur, whatever the order of the table.
-        unknown = circuit.is_symbolic
-        number_of: dict[int, int] = {}
-        link = link.copy()
-        link[unknown] = [number_of.setdefault(k, len(number_of)) for k in link[unknown].tolist()]
-        symbolic = tuple(symbolic[k] for k in number_of)
-    arrays = (codes[circuit.op], circuit.qubits, circuit.offsets, circuit.parameters, link, *circuit.matrices)
-    for array in arrays:
-        digest.update(np.ascontiguousarray(array).tobytes())
-    if symbolic:
-        digest.update(json.dumps([_encode_symbolic(symbolic), circuit.inputs]).encode())
-    return digest.hexdigest()
+def _pack_step(step: Step) -> dict[str, NDArray[Any]]:
+    packed = {
+        "initial": pack_integers(step.initial),
+        "final": pack_integers(step.final),
+        "widths": pack_integers(np.diff(step.offsets)),
+        "entry": pack_integers(step.entry),
+        "exit": pack_integers(step.exit.astype(np.int64) - step.entry),
+        "source_window": pack_differences(step.source_window),
+        "output_window": pack_differences(step.output_window),
+        "claims": step.claims.astype(np.uint8),
+    }
+    packed |= {f"seams.{part}": array for part, array in pack_seams(step.seams).items()}
+    followed = follow_wires(step.initial, step.entry, step.exit)
+    if followed is None or not np.array_equal(followed, step.wires):
+        packed["wires"] = pack_integers(step.wires)
+    return packed
+
+
+def _member(name: str) -> zipfile.ZipInfo:
+    info = zipfile.ZipInfo(name)
+    info.compress_type = zipfile.ZIP_DEFLATED
+    return info
+
+
+def _encode_circuit(circuit: Circuit | None, prefix: str, arrays: dict[str, NDArray[Any]]) -> dict[str, Any] | None:
+    if circuit is None:
+        return None
+    for gate in circuit.table:
+        if gate.name not in _SPECIAL and GATES.get(gate.name) != gate:
+            raise ProofFileError(
+                f"the proof passes through the gate '{gate.name}', which is not in the standard table",
+                hint="give wide gates of your own as explicit unitaries",
+            )
+    for name in _CIRCUIT:
+        column = getattr(circuit, name)
+        if name == "parameters":
+            arrays[f"{prefix}.{name}"] = np.asarray(column, dtype=np.float64)
+        else:
+            arrays[f"{prefix}.{name}"] = pack_differences(column) if name in _GROWING else pack_integers(column)
+    flat = [matrix.ravel() for matrix in circuit.matrices]
+    arrays[f"{prefix}.matrices"] = np.concatenate(flat) if flat else np.zeros(0, dtype=np.complex128)
+    return {
+        "n_qubits": circuit.n_qubits,
+        "n_bits": circuit.n_bits,
+        "table": [gate.name for gate in circuit.table],
+        "matrix_sizes": [len(matrix) for matrix in circuit.matrices],
+        **({"symbolic": _encode_symbolic(circuit.symbolic)} if circuit.symbolic else {}),
+    }
 
 
 def _encode_symbolic(symbolic: Sequence[Sequence[Parameter]]) -> list[list[Any]]:
@@ -123,67 +181,7 @@ def _decode_symbolic(entry: Any) -> tuple[tuple[Parameter, ...], ...]:
     return tuple(rows)
 
 
-def encode_proof(proof: Proof, source: Circuit, output: Circuit) -> bytes:
-    """Return the bytes of a proof file.
-
-    Raises
-    ------
-    ProofFileError
-        A circuit between two steps uses a gate that is not in the standard table.
-    """
-    arrays: dict[str, NDArray[Any]] = {}
-    steps: list[dict[str, Any]] = []
-    for number, step in enumerate(proof.steps):
-        for name, dtype in _STEP.items():
-            arrays[f"{number}.{name}"] = np.asarray(getattr(step, name), dtype=dtype)
-        steps.append({"output": _encode_circuit(step.output, f"{number}.output", arrays)})
-    header = {
-        "format": FORMAT,
-        "format_version": FORMAT_VERSION,
-        "gatewright": __version__,
-        "source": fingerprint(source),
-        "output": fingerprint(output),
-        "steps": steps,
-        "arrays": {name: [array.dtype.str, list(array.shape)] for name, array in arrays.items()},
-    }
-    buffer = io.BytesIO()
-    with zipfile.ZipFile(buffer, "w", zipfile.ZIP_DEFLATED) as archive:
-        # ZipInfo's fixed default date keeps the bytes the same from run to run.
-        archive.writestr(_member("proof.json"), json.dumps(header, indent=1))
-        for name, array in arrays.items():
-            archive.writestr(_member(name), array.astype(array.dtype.newbyteorder("<")).tobytes())
-    return buffer.getvalue()
-
-
-def _member(name: str) -> zipfile.ZipInfo:
-    info = zipfile.ZipInfo(name)
-    info.compress_type = zipfile.ZIP_DEFLATED
-    return info
-
-
-def _encode_circuit(circuit: Circuit | None, prefix: str, arrays: dict[str, NDArray[Any]]) -> dict[str, Any] | None:
-    if circuit is None:
-        return None
-    for gate in circuit.table:
-        if gate.name not in _SPECIAL and GATES.get(gate.name) != gate:
-            raise ProofFileError(
-                f"the proof passes through the gate '{gate.name}', which is not in the standard table",
-                hint="give wide gates of your own as explicit unitaries",
-            )
-    for name, dtype in _CIRCUIT.items():
-        arrays[f"{prefix}.{name}"] = np.asarray(getattr(circuit, name), dtype=dtype)
-    flat = [matrix.ravel() for matrix in circuit.matrices]
-    arrays[f"{prefix}.matrices"] = np.concatenate(flat) if flat else np.zeros(0, dtype=np.complex128)
-    return {
-        "n_qubits": circuit.n_qubits,
-        "n_bits": circuit.n_bits,
-        "table": [gate.name for gate in circuit.table],
-        "matrix_sizes": [len(matrix) for matrix in circuit.matrices],
-        **({"symbolic": _encode_symbolic(circuit.symbolic)} if circuit.symbolic else {}),
-    }
-
-
-def read_proof(path: str | Path) -> ProofFile:
+def read_proof(path: str | Path) -> Proof:
     """Read a proof file.
 
     Raises
@@ -202,7 +200,7 @@ def read_proof(path: str | Path) -> ProofFile:
         raise error.located(where=where) from None
 
 
-def decode_proof(data: bytes) -> ProofFile:
+def decode_proof(data: bytes) -> Proof:
     """Decode the bytes of a proof file; see `read_proof`."""
     try:
         with zipfile.ZipFile(io.BytesIO(data)) as archive:
@@ -210,13 +208,17 @@ def decode_proof(data: bytes) -> ProofFile:
             if sum(info.file_size for info in members.values()) > MAX_BYTES:
                 raise ProofFileError("the proof file is too large", required=f"{MAX_BYTES} bytes at most")
             header = _header(archive, members)
+            if set(members) != {"proof.json", *header["arrays"]} or len(archive.infolist()) > len(members):
+                raise ProofFileError("the proof file is damaged", required="one member for each array it lists")
             arrays = {name: _array(archive, members, name, entry) for name, entry in header["arrays"].items()}
         return _decode(header, arrays)
     except ProofFileError:
         raise
-    except (zipfile.BadZipFile, zipfile.LargeZipFile, OSError, EOFError, NotImplementedError) as error:
+    except (zipfile.BadZipFile, zipfile.LargeZipFile, zlib.error, OSError, EOFError, NotImplementedError) as error:
         raise ProofFileError("the proof file is damaged", found=shorten(error)) from None
-    except (KeyError, TypeError, ValueError, AttributeError, IndexError, OverflowError, RuntimeError) as error:
+    except InputError as error:
+        raise ProofFileError("the proof file is damaged", found=error.what) from None
+    except (KeyError, TypeError, ValueError, AttributeError, IndexError, ArithmeticError, RuntimeError) as error:
         raise ProofFileError(
             "the proof file is damaged", required=f"the fields of {FORMAT} {FORMAT_VERSION}", found=shorten(error)
         ) from None
@@ -242,34 +244,68 @@ def _array(archive: zipfile.ZipFile, members: dict[str, zipfile.ZipInfo], name: 
     kind, shape = entry
     dtype = np.dtype(kind)
     size = math.prod(int(length) for length in shape) * dtype.itemsize
-    if dtype.kind not in "ifc" or name not in members or members[name].file_size != size:
+    if dtype.kind not in "uifc" or name not in members or members[name].file_size != size:
         raise ProofFileError("the proof file is damaged", required=f"array '{shorten(name)}' of {size} bytes")
     return np.frombuffer(archive.read(members[name]), dtype=dtype).reshape(shape)
 
 
-def _decode(header: dict[str, Any], arrays: dict[str, NDArray[Any]]) -> ProofFile:
-    steps = []
+def _decode(header: dict[str, Any], arrays: dict[str, NDArray[Any]]) -> Proof:
+    if header["claims"][: len(CLAIM_KINDS)] != [kind.name for kind in CLAIM_KINDS][: len(header["claims"])]:
+        raise ProofFileError("the proof makes claims of kinds that this version does not know")
+    steps: list[Step | Reorder] = []
     for number, entry in enumerate(header["steps"]):
-        columns = {name: arrays[f"{number}.{name}"].astype(dtype) for name, dtype in _STEP.items()}
-        _require_dimensions(columns, {"seams": 2})
-        if len(columns["offsets"]) < 1 or columns["offsets"][-1] != len(columns["wires"]):
-            raise ProofFileError("the proof file is damaged", required="offsets that end at the number of slots")
-        if columns["offsets"][0] != 0 or (np.diff(columns["offsets"]) < 0).any():
-            raise ProofFileError("the proof file is damaged", required="offsets that increase from 0")
+        mine = {name.partition(".")[2]: array for name, array in arrays.items() if name.startswith(f"{number}.")}
+        if entry.get("reorder") is True:
+            window, rank = unpack_differences(mine["window"]), unpack_differences(mine["rank"])
+            for array in (window, rank):
+                if len(array) and not 0 <= array.min() <= array.max() < 1 << 31:
+                    raise ProofFileError("the proof file is damaged", required="numbers of windows below 2³¹")
+            steps.append(Reorder(window.astype(np.int32), rank.astype(np.int32)))
+            continue
         output = None if entry["output"] is None else _decode_circuit(entry["output"], f"{number}.output", arrays)
-        steps.append(Step(**columns, output=output))
-    return ProofFile(Proof(tuple(steps)), str(header["source"]), str(header["output"]), str(header["gatewright"]))
+        steps.append(_unpack_step(mine, len(header["claims"]), output))
+    known = {name: str(header["fingerprints"][name]) for name in asdict(Fingerprints())}
+    return Proof(tuple(steps), Fingerprints(**known), str(header["gatewright"]))
 
 
-def _require_dimensions(columns: dict[str, NDArray[Any]], but: dict[str, int]) -> None:
-    for name, array in columns.items():
-        if array.ndim != but.get(name, 1):
-            raise ProofFileError("the proof file is damaged", required=f"array '{name}' of {but.get(name, 1)} axes")
+def _unpack_step(packed: dict[str, NDArray[Any]], kinds: int, output: Circuit | None) -> Step:
+    widths = unpack_integers(packed["widths"])
+    names = ("initial", "final", "entry", "exit")
+    columns = {name: unpack_integers(packed[name]) for name in names}
+    columns["exit"] = columns["exit"] + columns["entry"]
+    columns |= {name: unpack_differences(packed[name]) for name in ("source_window", "output_window")}
+    claims = packed["claims"]
+    if len(widths) and not 0 <= widths.min() <= widths.max() <= len(columns["entry"]):
+        raise ProofFileError("the proof file is damaged", required="windows of at least 0 slots")
+    if claims.ndim != 1 or (claims >= kinds).any() or (claims >= len(CLAIM_KINDS)).any():
+        raise ProofFileError("the proof file is damaged", required="claims of the kinds that it lists")
+    for array in columns.values():
+        if len(array) and not -1 <= array.min() <= array.max() < 1 << 31:
+            raise ProofFileError("the proof file is damaged", required="numbers of wires and windows below 2³¹")
+    short = {name: array.astype(np.int32) for name, array in columns.items()}
+    if "wires" in packed:
+        wires = unpack_integers(packed["wires"]).astype(np.int32)
+    else:
+        followed = follow_wires(short["initial"], short["entry"], short["exit"])
+        if followed is None:
+            raise ProofFileError("the proof file is damaged", required="slots that begin where others end")
+        wires = followed
+    offsets = np.concatenate([[0], np.cumsum(widths)])
+    seams = unpack_seams({part: packed[f"seams.{part}"] for part in _SEAMS})
+    if not offsets[-1] == len(wires) == len(seams) == len(short["entry"]) or len(claims) != len(widths):
+        raise ProofFileError("the proof file is damaged", required="as many slots in every column")
+    return Step(**short, offsets=offsets, wires=wires, seams=seams, output=output, claims=claims.astype(np.int8))
 
 
 def _decode_circuit(entry: dict[str, Any], prefix: str, arrays: dict[str, NDArray[Any]]) -> Circuit:
-    columns: dict[str, Any] = {name: arrays[f"{prefix}.{name}"].astype(dtype) for name, dtype in _CIRCUIT.items()}
-    _require_dimensions(columns, {})
+    columns: dict[str, Any] = {}
+    for name, dtype in _CIRCUIT.items():
+        array = arrays[f"{prefix}.{name}"]
+        if name != "parameters":
+            array = unpack_differences(array) if name in _GROWING else unpack_integers(array)
+        if array.ndim != 1:
+            raise ProofFileError("the proof file is damaged", required=f"array '{name}' of one axis")
+        columns[name] = array.astype(dtype)
     table: tuple[Gate, ...] = tuple(_SPECIAL.get(name) or GATES[name] for name in entry["table"])
     sizes = [int(size) for size in entry["matrix_sizes"]]
     circuit = Circuit(

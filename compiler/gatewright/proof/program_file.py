@@ -13,8 +13,7 @@ from collections.abc import Sequence
 from pathlib import Path
 
 from gatewright.errors import ProofFileError, shorten
-from gatewright.program import Program
-from gatewright.proof.file import ProofFile, decode_proof, encode_proof
+from gatewright.proof.file import decode_proof, encode_proof
 from gatewright.proof.windows import Proof
 
 __all__ = ["decode_program_proof", "encode_program_proof", "read_program_proof"]
@@ -26,7 +25,7 @@ MAX_CIRCUITS = 1_000_000
 MAX_BYTES = 1 << 32
 
 
-def encode_program_proof(proofs: Sequence[Proof], source: Program, output: Program) -> bytes:
+def encode_program_proof(proofs: Sequence[Proof]) -> bytes:
     """Return the bytes of a program's proof file.
 
     Raises
@@ -39,13 +38,12 @@ def encode_program_proof(proofs: Sequence[Proof], source: Program, output: Progr
     with zipfile.ZipFile(buffer, "w", zipfile.ZIP_STORED) as archive:
         # ZipInfo's fixed default date keeps the bytes the same from run to run.
         archive.writestr(zipfile.ZipInfo("program.json"), json.dumps(header, indent=1))
-        parts = zip(proofs, source.circuits(), output.circuits(), strict=True)
-        for number, (proof, meant, made) in enumerate(parts):
-            archive.writestr(zipfile.ZipInfo(f"{number}.proof"), encode_proof(proof, meant, made))
+        for number, proof in enumerate(proofs):
+            archive.writestr(zipfile.ZipInfo(f"{number}.proof"), encode_proof(proof))
     return buffer.getvalue()
 
 
-def read_program_proof(path: str | Path) -> tuple[ProofFile, ...]:
+def read_program_proof(path: str | Path) -> tuple[Proof, ...]:
     """Read a program's proof file.
 
     Raises
@@ -64,7 +62,7 @@ def read_program_proof(path: str | Path) -> tuple[ProofFile, ...]:
         raise error.located(where=where) from None
 
 
-def decode_program_proof(data: bytes) -> tuple[ProofFile, ...]:
+def decode_program_proof(data: bytes) -> tuple[Proof, ...]:
     """Decode the bytes of a program's proof file; see `read_program_proof`."""
     try:
         with zipfile.ZipFile(io.BytesIO(data)) as archive:

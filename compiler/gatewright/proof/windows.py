@@ -13,13 +13,18 @@ measurements, resets and barriers are the identity. The module holds data only; 
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+import os
+from dataclasses import dataclass, field
+from pathlib import Path
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
+from gatewright.errors import ProofFileError
+from gatewright.proof.fingerprints import Fingerprints
+from gatewright.proof.reorder import Reorder
 
 __all__ = ["Proof", "Step", "Verdict"]
 
@@ -46,6 +51,9 @@ class Step:
         Quaternion (a, b, c, d), the matrix a − i(b X + c Y + d Z), for the seam after the window.
     output : Circuit or None
         The circuit this step ends with, where it is not the last.
+    claims : ndarray of int8, shape (W,), optional
+        What is claimed of each window, by its number in `gatewright.proof.claims.CLAIM_KINDS`; by default 0
+        throughout: equal as matrices. Beside any other claim the seams are the identity.
     """
 
     initial: Integers
@@ -58,6 +66,12 @@ class Step:
     exit: Integers
     seams: NDArray[np.float64]
     output: Circuit | None = None
+    claims: NDArray[np.int8] = field(default_factory=lambda: np.zeros(0, dtype=np.int8))
+
+    def __post_init__(self) -> None:
+        """Claim equal matrices where nothing else is said."""
+        if not len(self.claims):
+            object.__setattr__(self, "claims", np.zeros(max(self.windows, 0), dtype=np.int8))
 
     @property
     def windows(self) -> int:
@@ -67,14 +81,46 @@ class Step:
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Proof:
-    """The steps from source to output, in order; each starts where the one before ended."""
+    """The steps from source to output, in order; each starts where the one before ended.
 
-    steps: tuple[Step, ...]
+    Attributes
+    ----------
+    steps : tuple of Step or Reorder
+        The last is a `Step`.
+    made_for : Fingerprints
+        Of source, output, gate set and device, as far as they are stated; the checker compares them.
+    version : str
+        Version of gatewright that made it; empty for this one.
+    """
+
+    steps: tuple[Step | Reorder, ...]
+    made_for: Fingerprints = field(default_factory=Fingerprints)
+    version: str = ""
 
     @property
     def windows(self) -> int:
         """Number of windows in all steps together."""
         return sum(step.windows for step in self.steps)
+
+    def save(self, path: str | Path) -> None:
+        """Write the proof file, whole or not at all; `gatewright.read_proof` reads it.
+
+        Raises
+        ------
+        ProofFileError
+            The file cannot be written.
+        """
+        from gatewright.proof.file import encode_proof
+
+        data, path = encode_proof(self), Path(path)
+        temporary = path.with_name(f".{path.name}.{os.getpid()}")
+        try:
+            temporary.write_bytes(data)
+            temporary.replace(path)
+        except OSError as error:
+            raise ProofFileError(f"cannot write the proof file: {error.strerror}", where=str(path)) from None
+        finally:
+            temporary.unlink(missing_ok=True)
 
 
 @dataclass(frozen=True, slots=True)
@@ -85,13 +131,15 @@ class Verdict:
     ----------
     error_bound : float
         Upper bound on the operator-norm distance, up to global phase, between the source (on its wires, moved to
-        their places) and the output.
+        their places) and the output; the checker's own rounding is part of it.
     windows : int
     worst_window, worst_distance
         Number (within its step) and distance of the window that contributes most.
     initial, final : tuple of int
         Physical qubit of each source qubit at the two ends.
     method : str
+    rounding : float
+        Part of ``error_bound``: a bound on what the checker's own arithmetic may have hidden.
     round_bound : float or None
         For programs with classical control: ``error_bound`` covers one round of every loop, and each further round
         adds this much at most. None for straight-line circuits.
@@ -104,6 +152,7 @@ class Verdict:
     initial: tuple[int, ...]
     final: tuple[int, ...]
     method: str
+    rounding: float = 0.0
     round_bound: float | None = None
 
     def to_dict(self) -> dict[str, Any]:
@@ -111,6 +160,7 @@ class Verdict:
         facts = {
             "verified": True,
             "error_bound": self.error_bound,
+            "rounding": self.rounding,
             "windows": self.windows,
             "method": self.method,
             "worst_window": self.worst_window,

@@ -64,6 +64,8 @@ def print_verdict(verdict: Verdict, stream: TextIO) -> None:
     print(f"equal within {verdict.error_bound:.3g} (operator norm, up to global phase)", file=stream)
     if verdict.round_bound:
         print(f"each further round of a loop adds {verdict.round_bound:.3g} at most", file=stream)
+    if verdict.rounding:
+        print(f"of this, {verdict.rounding:.3g} is what the checker's own rounding may hide", file=stream)
     print(f"method: {verdict.method}", file=stream)
     if verdict.windows:
         worst = f"the worst, number {verdict.worst_window}, is {verdict.worst_distance:.3g} off"
