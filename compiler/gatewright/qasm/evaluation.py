@@ -18,6 +18,7 @@ if TYPE_CHECKING:
 __all__ = [
     "MAX_ELEMENTS",
     "MAX_STEPS",
+    "POWER",
     "STATEMENT",
     "Evaluator",
     "Pending",
@@ -31,6 +32,8 @@ __all__ = [
 MAX_STEPS = 1_000_000
 #: What a statement or a round of a loop counts for; a gate counts for one.
 STATEMENT = 10
+#: What a fractional power of a gate counts for, an eigenvalue problem that is solved once for equal ones.
+POWER = 200
 
 #: Most elements of one array, set or index range.
 MAX_ELEMENTS = 1_000_000
@@ -128,7 +131,8 @@ class Evaluator:
             raise self.source.error(
                 "unrolling the program takes too many steps",
                 offset,
-                required=f"at most {MAX_STEPS} gates, a statement counting for {STATEMENT}",
+                required=f"at most {MAX_STEPS} gates, a statement counting for {STATEMENT}, "
+                f"a distinct fractional power for {POWER}",
             )
 
     # ---------------------------------------------------------------- names

@@ -13,7 +13,7 @@ from gatewright.errors import CannotError, CircuitError, ExpressionError, QasmEr
 from gatewright.gates import BARRIER, MEASURE, RESET, UNITARY, Gate
 from gatewright.parameters import Affine, Parameter
 from gatewright.qasm.definitions import MAX_DEPTH, Definition, Op, expand, same_gate
-from gatewright.qasm.evaluation import Evaluator, Places, ValueFault, Variable
+from gatewright.qasm.evaluation import POWER, Evaluator, Places, ValueFault, Variable
 from gatewright.qasm.modifiers import Passage, controlled, inverse, passage_of, power
 from gatewright.qasm.scope import MAX_QUBITS, RESERVED
 from gatewright.qasm.unknowns import as_parameter, is_unknown, known_parameters, reads_bits, with_values
@@ -112,6 +112,8 @@ class Operations(Evaluator):
         key = (id(target), tuple(values), tuple(changes))
         known = self.modified.get(key)
         if known is None:
+            roots = sum(isinstance(change, float) and change != int(change) for change in changes)
+            self.charge(POWER * roots, node)
             if isinstance(target, Definition):
                 self.charge(target.size, node)
             known = target, self.change(passage_of(target, values), changes, node)
