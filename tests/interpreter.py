@@ -52,7 +52,8 @@ class Machine:
 
     def project(self, qubit: int, line: int) -> int:
         """Measure a qubit; the outcome is that of the script's line if it can occur."""
-        wanted = int(self.outcomes[line][self.seen[line] % 200])
+        # All resets have the same, so that it does not matter which of two on different qubits comes first.
+        wanted = int(self.outcomes[line][self.seen[line] % 200 if line < len(self.bits) else 0])
         self.seen[line] += 1
         parts = np.moveaxis(self.state, qubit, 0)
         weights = [float(np.sum(np.abs(parts[value]) ** 2)) for value in (0, 1)]

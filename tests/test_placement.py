@@ -12,8 +12,8 @@ from hypothesis import strategies as st
 
 from gatewright.errors import DisconnectedError, InputError
 from gatewright.mapping.placement import embed
-from gatewright.mapping.search import place, plan
 from gatewright.mapping.routing import Graph, Operations, make_graph, make_operations, route
+from gatewright.mapping.search import place, plan
 
 
 def grid(rows: int, columns: int) -> nx.Graph:

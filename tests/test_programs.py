@@ -50,6 +50,9 @@ def spread(state: np.ndarray, places: tuple[int, ...], n: int) -> np.ndarray:
 
 def agree(source: Circuit | Program, output: Circuit | Program, initial: Any, final: Any, seed: int) -> float:
     """Run both on the same outcomes; compare bits and variables, and return how far apart the states are."""
+    rng = np.random.default_rng(seed)
+    values = {name: float(rng.uniform(-3, 3)) for name, _ in source.inputs}
+    source, output = source.bind(values), output.bind(values)
     start = haar_unitary(2**source.n_qubits, rng=seed)[:, 0]
     meant = run(source, start, seed)
     made = run(output, spread(start, initial, output.n_qubits), seed)
@@ -153,6 +156,19 @@ def test_damaged_control_is_refused() -> None:
     assert "statements" in refused(source, replace(output, body=shorter), proofs)
     assert "variables" in refused(source, replace(output, variables=()), proofs)
     assert "does not fit" in refused(source, output, proofs[:-1])
+
+
+def test_programs_are_judged_without_their_proofs() -> None:
+    source, result = compiled()
+    verdict = gw.check_program(source, result.program, device=LINE, initial=result.initial)
+    assert (verdict.initial, verdict.final) == (result.initial, result.final)
+    assert verdict.error_bound < 1e-9
+    branch = result.program.body.statements[place_of(result.program, If)]
+    assert isinstance(branch, If)
+    turned = If(branch.condition, branch.otherwise, branch.then)
+    changed = with_body(result.program, {place_of(result.program, If): turned})
+    with pytest.raises(ProofError, match="not equal"):
+        gw.check_program(source, changed, device=LINE, initial=result.initial)
 
 
 def test_a_damaged_gate_is_named_with_its_circuit() -> None:

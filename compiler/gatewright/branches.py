@@ -17,7 +17,7 @@ from gatewright.cost import Costs
 from gatewright.mapping.restoring import restoring_swaps
 from gatewright.program import Assign, Block, If, Leave, Program, Statement, While, inner_blocks
 from gatewright.stages.draft import Draft, Stage
-from gatewright.stages.place import mapping_task
+from gatewright.stages.place import device_graph
 
 __all__ = ["Threaded", "combined_costs", "thread_program"]
 
@@ -113,7 +113,7 @@ class _Threader:
         self.draft = draft
         self.chain = chain
         self.begin = begin
-        self.graph, _ = mapping_task(draft)
+        self.graph = device_graph(draft)
 
     def circuit(self, circuit: Circuit, start: Places, target: Places | None) -> Draft:
         settings = replace(self.draft.settings, placement=start, final=target)

@@ -1,4 +1,4 @@
-"""The compiled beam search over sequences of swaps: level by level, the most promising states of the circuit are kept."""
+"""The compiled beam search over sequences of swaps: level by level, the most promising states are kept."""
 
 # mypy: disable-error-code="no-untyped-def, untyped-decorator"
 from __future__ import annotations
@@ -6,15 +6,14 @@ from __future__ import annotations
 import numpy as np
 from numba import njit
 
-from gatewright.mapping._kernels import (
+from gatewright.mapping._steps import (
+    CLOCK,
     CURRENT,
     DONE,
     HEAD,
-    LEFT,
     MATE,
     OCCUPANT,
     OTHER,
-    CLOCK,
     PENDING,
     POSITION,
     STACK,
@@ -22,7 +21,6 @@ from gatewright.mapping._kernels import (
     SWAPPED,
     WAITING,
     WAITS,
-    SPOT,
     advance,
     survey,
 )
@@ -47,7 +45,8 @@ def _mark(wire, qubit, n):
     "Tuple((int64, int64, float64))(int32[:, ::1], int32[::1], int32[::1], int32[::1], float32[:, ::1],"
     "int32[::1], int32[::1], int32[::1], int16[:, ::1], float32[::1], float32[:, ::1], float32[::1], float64[::1],"
     "float64[::1], int32[:, :, :, ::1], int64[:, :, ::1], float64[:, :, :, ::1], int64[:, :, ::1], int64[::1],"
-    "int32[:, ::1], int32[:, ::1], float64[:, ::1], uint64[:, ::1], int32[:, ::1], float64[:, ::1], uint64[::1], int64, int64)",
+    "int32[:, ::1], int32[:, ::1], float64[:, ::1], uint64[:, ::1], int32[:, ::1], float64[:, ::1], uint64[::1],"
+    "int64, int64)",
     cache=True,
     nogil=True,
 )

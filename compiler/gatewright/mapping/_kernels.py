@@ -1,12 +1,6 @@
-"""Compiled loops of routing: running what can run, looking ahead, the greedy sweep, weaving.
+"""Compiled loops of routing: the greedy sweep, settling gates beside swaps, weaving in what is on one wire only.
 
-The sweep is a heuristic search in the manner of Li, Ding and Xie, ASPLOS 2019, arXiv:1809.02573.
-
-Every wire has a *line*: its operations in order, closed by a sentinel. An entry of `lane` holds the operation (-1 at
-the end), the partner's wire of a two-qubit gate (-1 for any other operation, -2 at the end), where the gate is on the
-partner's line, the ordinal of its group on the wire, and where the group stops. Operations of one group commute and
-run in any order; a wire's state is the first entry of its group, how many of them are left and which are done.
-Callers allocate the work arrays, and slices are not assigned to: both keep compilation short.
+The sweep is a heuristic search in the manner of Li, Ding and Xie, ASPLOS 2019, arXiv:1809.02573; see `_steps`.
 """
 
 # mypy: disable-error-code="no-untyped-def, untyped-decorator"
@@ -15,188 +9,38 @@ from __future__ import annotations
 import numpy as np
 from numba import njit
 
-__all__ = [
-    "CLOCK", "CURRENT", "DONE", "EVENTS", "GROUP", "HEAD", "LEFT", "MATE", "OCCUPANT", "OTHER", "PENDING", "POSITION", "ROWS",
-    "SHAKEN", "SPOT", "STACK", "STALE", "SWAPPED", "TOUCHED", "WAITING", "WAITS", "advance", "survey", "sweep", "weave",
-]  # fmt: skip
+from gatewright.mapping._steps import (
+    CLOCK,
+    CURRENT,
+    DONE,
+    EVENTS,
+    HEAD,
+    MATE,
+    OCCUPANT,
+    OTHER,
+    PENDING,
+    POSITION,
+    SHAKEN,
+    SPOT,
+    STACK,
+    STALE,
+    SWAPPED,
+    TOUCHED,
+    WAITING,
+    WAITS,
+    advance,
+    survey,
+)
 
-#: Rows of the integer state: per wire its qubit; per qubit its wire; per wire the head of its line, the operations left
-#: in the head's group, its place in the list of waiting wires; that list; per qubit the other end of its open window,
-#: and with which other it was swapped last, if nothing came after; per wire whether its outlook is stale, and whether it
-#: is on the stack; the wires to be looked at again; the stack.
-POSITION, OCCUPANT, HEAD, LEFT, SPOT, WAITS, MATE, SWAPPED, STALE, PENDING, TOUCHED, STACK, ROWS = range(13)
-#: Rows of the float state: what a qubit's open window costs, what it would cost with its wires exchanged, the time.
-CURRENT, OTHER, CLOCK = range(3)
-#: Places in the counts.
-WAITING, EVENTS, DONE, SHAKEN = range(4)
-#: Operations of a group at most: their marks are the bits of one integer.
-GROUP = 60
+__all__ = ["settle", "sweep", "weave"]
+
+#: Waiting wires looked at in turn for the one to be served next.
+CROWD = 64
 
 _MULTIPLIER = np.uint64(0x2545F4914F6CDD1D)  # xorshift64*: Vigna, ACM Trans. Math. Softw. 42, 30 (2016)
 _S12, _S25, _S27, _S33 = np.uint64(12), np.uint64(25), np.uint64(27), np.uint64(33)
-_ONE = np.int64(1)
 
 _STATE = "int32[:, ::1], int64[::1], float64[:, ::1], int64[::1]"
-
-
-@njit(inline="always")
-def advance(
-    lane, wires, offsets, entries, costs, starts, neighbours, distance, weight, top, events,
-    state, done, tally, counts,
-):  # fmt: skip
-    """Run everything that can run, beginning at the `top` wires on the stack; return what it costs.
-
-    `costs` has for each operation the entanglers it needs, and those it needs together with a swap; its last row has
-    those of a swap alone, and the most that any window needs.
-    """
-    n = starts.shape[0] - 1
-    most = costs[costs.shape[0] - 1, 1]
-    record = events.shape[0] > 0
-    spent = 0.0
-    while top > 0:
-        top -= 1
-        w = state[STACK, top]
-        state[PENDING, w] = 0
-        if state[STALE, w] != 2:
-            state[STALE, w] = 2
-            state[TOUCHED, counts[SHAKEN]] = w
-            counts[SHAKEN] += 1
-        waits = False
-        e = state[HEAD, w]
-        stop = lane[e, 4]
-        while e < stop:
-            if done[w] >> (e - state[HEAD, w]) & 1:
-                e += 1
-                continue
-            g = lane[e, 0]
-            x = lane[e, 1]
-            if x >= 0:
-                c = lane[e, 2]
-                if c >= lane[state[HEAD, x], 4]:
-                    e += 1
-                    continue
-                p = state[POSITION, w]
-                q = state[POSITION, x]
-                if distance[p, q] != 1:
-                    waits = True
-                    if state[SPOT, x] < 0:
-                        state[SPOT, x] = counts[WAITING]
-                        state[WAITS, counts[WAITING]] = x
-                        counts[WAITING] += 1
-                        if state[STALE, x] != 2:
-                            state[STALE, x] = 2
-                            state[TOUCHED, counts[SHAKEN]] = x
-                            counts[SHAKEN] += 1
-                    e += 1
-                    continue
-                plain = costs[g, 0]
-                crossed = costs[g, 1]
-                begin = 0.0
-                late = max(tally[CLOCK, p], tally[CLOCK, q])
-                if state[MATE, p] == q and state[MATE, q] == p:
-                    begin = tally[CURRENT, p]
-                    if tally[OTHER, p] == 0.0:
-                        plain = costs[g, 1]
-                        crossed = costs[g, 0]
-                    elif begin > 0.0:
-                        plain = min(most, plain + begin)
-                        crossed = min(most, costs[g, 0] + tally[OTHER, p])
-                state[MATE, p] = q
-                state[MATE, q] = p
-                state[SWAPPED, p] = -1
-                state[SWAPPED, q] = -1
-                tally[CURRENT, p] = plain
-                tally[CURRENT, q] = plain
-                tally[OTHER, p] = crossed
-                tally[OTHER, q] = crossed
-                tally[CLOCK, p] = late + plain - begin
-                tally[CLOCK, q] = late + plain - begin
-                i = starts[p]
-                while neighbours[i] != q:
-                    i += 1
-                spent += (plain - begin) * weight[i]
-                counts[DONE] += 1
-                if record:
-                    events[counts[EVENTS]] = g
-                    counts[EVENTS] += 1
-            else:
-                runs = True
-                for j in range(offsets[g], offsets[g + 1]):
-                    if entries[j] >= lane[state[HEAD, wires[j]], 4]:
-                        runs = False
-                        break
-                if not runs:
-                    e += 1
-                    continue
-            for j in range(offsets[g], offsets[g + 1]):
-                y = wires[j]
-                done[y] |= _ONE << (entries[j] - state[HEAD, y])
-                state[LEFT, y] -= 1
-                if x < 0 and y < n:
-                    state[MATE, state[POSITION, y]] = -1
-                if state[LEFT, y] == 0:
-                    h = lane[state[HEAD, y], 4]
-                    state[HEAD, y] = h
-                    state[LEFT, y] = lane[h, 4] - h
-                    done[y] = 0
-                if y != w and state[PENDING, y] == 0:
-                    state[PENDING, y] = 1
-                    state[STACK, top] = y
-                    top += 1
-            e += 1
-            if e - state[HEAD, w] > 0 and lane[state[HEAD, w], 4] == stop:
-                continue
-            e = state[HEAD, w]
-            stop = lane[e, 4]
-            waits = False
-        if waits != (state[SPOT, w] >= 0):
-            if waits:
-                state[SPOT, w] = counts[WAITING]
-                state[WAITS, counts[WAITING]] = w
-                counts[WAITING] += 1
-            else:
-                counts[WAITING] -= 1
-                y = state[WAITS, counts[WAITING]]
-                state[WAITS, state[SPOT, w]] = y
-                state[SPOT, y] = state[SPOT, w]
-                state[SPOT, w] = -1
-    return spent
-
-
-@njit(inline="always")
-def survey(lane, starts, neighbours, distance, ahead, rise, pull, w, state, done):
-    """Fill `pull` on the edges of wire w: what moving w along each changes in the weighted sum of its distances ahead.
-
-    Returns that sum, of distances beyond 1, as it is; a gate is as deep as it is on the later of its wires.
-    """
-    depths = ahead.shape[1]
-    p = state[POSITION, w]
-    first = starts[p]
-    last = starts[p + 1]
-    for i in range(first, last):
-        pull[i] = 0.0
-    total = 0.0
-    e = state[HEAD, w]
-    base = lane[e, 3] - (state[SPOT, w] < 0)
-    stop = lane[e, 4]
-    head = e
-    while lane[e, 1] >= -1 and lane[e, 3] - base < depths:
-        x = lane[e, 1]
-        if x >= 0 and (e >= stop or not done[w] >> (e - head) & 1):
-            h = state[HEAD, x]
-            depth = max(lane[e, 3] - base, lane[lane[e, 2], 3] - lane[h, 3] + (state[SPOT, x] < 0))
-            if depth < depths:
-                home = state[POSITION, x]
-                free = 1 if lane[e, 3] == lane[e + 1, 3] or lane[e, 3] == lane[e - 1, 3] else 0
-                a = ahead[free, depth]
-                d = rise[distance[home, p]]
-                total += a * (d - rise[1])
-                for i in range(first, last):
-                    q = neighbours[i]
-                    if q != home:
-                        pull[i] += a * (rise[distance[home, q]] - d)
-        e += 1
-    return total
 
 
 @njit(
@@ -219,9 +63,7 @@ def sweep(
     Returns the number of swaps, the weighted entanglers, and the events: a gate, or ``-1 - (p*n + q)`` for a swap.
     """
     n = starts.shape[0] - 1
-    total = 0
-    for g in range(costs.shape[0] - 1):
-        total += 1
+    total = costs.shape[0] - 1
     swap = costs[total, 0]
     events = np.empty(2 * total + 64 if record else 0, np.int64)
     top = state.shape[1]
@@ -229,7 +71,7 @@ def sweep(
         state[STACK, w] = w
         state[PENDING, w] = 1
     n_swaps = fruitless = 0
-    chased = -1
+    chased = served = -1
     spent = 0.0
     random = seed
     while True:
@@ -261,8 +103,14 @@ def sweep(
             if chased < 0 and fruitless > patience or terms[2] > 0.0:
                 # Serve one gate: the closest of all in a livelock, else the one whose qubits are free first.
                 least = 1e300
-                for k in range(n_list):
-                    w = state[WAITS, k]
+                turns = n_list
+                if fruitless <= patience and n_list > CROWD:
+                    turns = CROWD  # looking at all for every swap would take most of the time
+                for _ in range(turns):
+                    served += 1
+                    if served >= n_list:
+                        served = 0
+                    w = state[WAITS, served]
                     p = state[POSITION, w]
                     e = state[HEAD, w]
                     head = e
@@ -438,3 +286,112 @@ def weave(order, wires, offsets, groups, line, cursor, done, stack, events):
                 filled += 1
                 done[g] = 1
     return filled
+
+
+@njit(
+    "Tuple((float64, float64))(int64[::1], int64[::1], int32[::1], int32[::1], int32[::1], float32[:, ::1], int32[::1],"
+    "int32[::1], float32[::1], int32[:, ::1], int32[:, ::1], int32[::1], int32[::1], float64[:, ::1])",
+    cache=True,
+    nogil=True,
+)
+def settle(
+    events, settled, wires, offsets, groups, costs, starts, neighbours, weight, state, earlier, bound, waits, tally,
+):  # fmt: skip
+    """Put gates right before a swap of the same wires where they may be done then; copy `events` into `settled`.
+
+    Rows of `state`: qubit of each wire, wire of each qubit, and two of -1; `bound` (like the gates) and `waits` (like
+    the events) come as -1. A window that a barrier or measurement cuts counts as one.
+    Returns the weighted entanglers, and their depth.
+    """
+    n = starts.shape[0] - 1
+    m = costs.shape[0] - 1
+    swap = costs[m, 0]
+    most = costs[m, 1]
+    for k in range(events.shape[0]):
+        g = events[k]
+        if g >= 0:
+            first = offsets[g]
+            earlier[g, 0] = state[2, wires[first]]
+            earlier[g, 1] = state[2, wires[first + 1]]
+            state[2, wires[first]] = g
+            state[2, wires[first + 1]] = g
+            continue
+        p = (-1 - g) // n
+        q = -1 - g - p * n
+        u = state[1, p]
+        v = state[1, q]
+        state[1, p] = v
+        state[1, q] = u
+        top = state[2, u]
+        other = state[2, v]
+        h = top
+        while h >= 0 and other >= 0:
+            a = 0 if wires[offsets[h]] == u else 1
+            b = 0 if wires[offsets[top]] == u else 1
+            if groups[offsets[h] + a] != groups[offsets[top] + b]:
+                break
+            if wires[offsets[h] + 1 - a] == v:
+                b = 0 if wires[offsets[other]] == v else 1
+                if bound[h] < 0 and groups[offsets[h] + 1 - a] == groups[offsets[other] + b]:
+                    bound[h] = k
+                    waits[k] = h
+                break
+            h = earlier[h, a]
+    filled = 0
+    spent = 0.0
+    for w in range(n):
+        state[1, state[0, w]] = w
+    for k in range(events.shape[0]):
+        for turn in range(2):
+            g = events[k]
+            if turn == 0:
+                if g >= 0 and bound[g] >= 0 or g < 0 and waits[k] < 0:
+                    continue
+                if g < 0:
+                    g = waits[k]
+            elif g >= 0:
+                continue
+            if g >= 0:
+                p = np.int64(state[0, wires[offsets[g]]])
+                q = np.int64(state[0, wires[offsets[g] + 1]])
+            else:
+                p = (-1 - g) // n
+                q = -1 - g - p * n
+            settled[filled] = g
+            filled += 1
+            begin = 0.0
+            plain = swap if g < 0 else costs[g, 0]
+            crossed = 0.0 if g < 0 else costs[g, 1]
+            if state[3, p] == q and state[3, q] == p:
+                begin = tally[0, p]
+                if g < 0:
+                    plain = tally[1, p]
+                    crossed = begin
+                elif tally[1, p] == 0.0:
+                    plain = costs[g, 1]
+                    crossed = costs[g, 0]
+                elif begin > 0.0:
+                    plain = min(most, plain + begin)
+                    crossed = min(most, costs[g, 0] + tally[1, p])
+            state[3, p] = q
+            state[3, q] = p
+            late = max(tally[2, p], tally[2, q]) + plain - begin
+            for r in (p, q):
+                tally[0, r] = plain
+                tally[1, r] = crossed
+                tally[2, r] = late
+            i = starts[p]
+            while neighbours[i] != q:
+                i += 1
+            spent += (plain - begin) * weight[i]
+            if g < 0:
+                u = state[1, p]
+                v = state[1, q]
+                state[1, p] = v
+                state[1, q] = u
+                state[0, u] = q
+                state[0, v] = p
+    late = 0.0
+    for p in range(n):
+        late = max(late, tally[2, p])
+    return spent, late

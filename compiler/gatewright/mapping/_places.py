@@ -29,8 +29,8 @@ def embed(
     """Seek a qubit for each wire so that all peers are adjacent; `place` holds the pinned wires, else -1.
 
     A wire may stand on qubits whose component is its `home`; those near its `hint` (where that is not -1), with few
-    free neighbours and a low `appeal` are tried first, as many as `options` has room for. Returns the number of tests spent on success, -1 when the options
-    are exhausted, -2 when the budget is.
+    free neighbours and a low `appeal` are tried first, as many as `options` has room for. Returns the number of tests
+    spent on success, -1 when the options are exhausted, -2 when the budget is.
     """
     n = place.shape[0]
     occupant, free, need, ties, chosen, at, count = work[0], work[1], work[2], work[3], work[4], work[5], work[6]

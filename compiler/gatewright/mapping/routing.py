@@ -10,7 +10,7 @@ only keep operations in order.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
@@ -19,7 +19,9 @@ from scipy.sparse import csr_array
 from scipy.sparse.csgraph import connected_components, shortest_path
 
 from gatewright.errors import CircuitError, DeviceError, DisconnectedError, InputError
-from gatewright.mapping._kernels import CLOCK, GROUP, HEAD, LEFT, OCCUPANT, POSITION, ROWS, STALE, sweep, weave
+from gatewright.mapping._kernels import settle, sweep, weave
+from gatewright.mapping._steps import CLOCK, HEAD, LEFT, OCCUPANT, POSITION, ROWS, STALE
+from gatewright.mapping.operations import GROUP, Operations, make_operations
 
 __all__ = ["Graph", "Operations", "Pass", "Router", "Routing", "make_graph", "make_operations", "route", "run_pass"]
 
@@ -31,9 +33,11 @@ AHEAD = np.tile(np.concatenate([[1.0], 0.25 * 0.6 ** np.arange(5)]), (2, 1)).ast
 #: last gate ran, the paper's decay: enough to break ties; whether the gate is served first whose qubits are free
 #: first; what a layer of waiting weighs.
 TERMS = (0.15, 0.001, 0.0, 0.0)
-#: Of a state in the beam: what a gate done is worth, an entangler costs; levels beyond the first that ends; the weight of
-#: time; the weight of a swap when results are compared.
-BEAM = (0.5, 0.0, 0.0, 0.0, 1.0)
+#: The same where depth counts.
+IN_TIME = (0.15, 0.001, 1.0, 0.0)
+#: Of a state in the beam: what a gate done is worth, an entangler costs; levels beyond the first that ends; the weight
+#: of time; the weight of a swap when results are compared.
+BEAM = (1.35, 0.15, 0.0, 0.0, 1.0)
 NO_SCRIPT = np.zeros(0, dtype=np.int64)
 #: Distance of qubits without a path.
 FAR = 30_000
@@ -145,107 +149,6 @@ def _costs(values: ArrayLike | None, count: int, of: str) -> NDArray[np.float64]
 
 
 @dataclass(frozen=True, eq=False, slots=True)
-class Operations:
-    """Operations in time order, on flat wires; what routing must keep in order.
-
-    Attributes
-    ----------
-    wires : ndarray of int32
-        Operation k is on ``wires[offsets[k]:offsets[k + 1]]``.
-    offsets : ndarray of int32, shape (m + 1,)
-    coupled : ndarray of uint8, shape (m,)
-        1 for gates whose first two wires must be neighbours.
-    n_all : int
-        Number of wires, further ones included.
-    groups : ndarray of int32, like `wires`
-        Along a wire, never falling; neighbours of one group may change places.
-    costs : ndarray of float32, shape (m, 2)
-        Entanglers that each operation needs alone, and together with a swap of its wires.
-    swap_cost : float
-        Entanglers of a swap alone.
-    """
-
-    wires: Integers
-    offsets: Integers
-    coupled: NDArray[np.uint8]
-    n_all: int
-    groups: Integers
-    costs: NDArray[np.float32]
-    swap_cost: float
-
-    def __len__(self) -> int:
-        """Return the number of operations."""
-        return len(self.coupled)
-
-    @property
-    def pairs(self) -> Integers:
-        """Wires of the coupled operations, shape (g, 2)."""
-        first = self.offsets[:-1][self.coupled == 1]
-        return np.asarray(self.wires[first[:, None] + np.arange(2)])
-
-    @property
-    def joint(self) -> NDArray[np.int64]:
-        """Numbers of the operations on two or more wires, which alone constrain the swaps."""
-        return np.flatnonzero(np.diff(self.offsets) > 1)
-
-    def take(self, rows: NDArray[np.int64]) -> Operations:
-        """Return the operations numbered `rows`."""
-        lengths = np.diff(self.offsets)[rows]
-        offsets = np.concatenate([[0], np.cumsum(lengths)]).astype(np.int32)
-        at = np.arange(offsets[-1]) + np.repeat(self.offsets[:-1][rows] - offsets[:-1], lengths)
-        wires, groups = np.ascontiguousarray(self.wires[at]), np.ascontiguousarray(self.groups[at])
-        return replace(
-            self, wires=wires, offsets=offsets, coupled=self.coupled[rows], groups=groups, costs=self.costs[rows]
-        )
-
-
-def make_operations(
-    wires: ArrayLike,
-    offsets: ArrayLike,
-    coupled: ArrayLike,
-    n_all: int,
-    *,
-    groups: ArrayLike | None = None,
-    costs: ArrayLike | None = None,
-    swap_cost: float = 3.0,
-) -> Operations:
-    """Return `Operations` with the types that the compiled loops want.
-
-    Without `groups` every operation keeps its place; without `costs` every gate costs what a CNOT does among CNOTs: one
-    entangler alone, two with a swap.
-
-    Raises
-    ------
-    CircuitError
-        The arrays do not fit together, or a coupled operation has fewer than two wires.
-    """
-    # Compiled signatures hold for writable arrays only, so read-only ones are copied.
-    made_wires = np.require(wires, np.int32, ["C", "W"])
-    made_offsets = np.require(offsets, np.int32, ["C", "W"])
-    made_coupled = np.require(coupled, np.uint8, ["C", "W"])
-    lengths, m = np.diff(made_offsets), len(made_coupled)
-    if (
-        made_offsets.shape != (m + 1,)
-        or made_offsets[0] != 0
-        or made_offsets[-1] != len(made_wires)
-        or (lengths < 2 * (made_coupled == 1)).any()
-        or (len(made_wires) and not 0 <= made_wires.min() <= made_wires.max() < n_all)
-    ):
-        raise CircuitError("the arrays of operations do not fit together", required=f"wires 0 to {n_all - 1}")
-    made_groups = np.repeat(np.arange(m), lengths) if groups is None else groups
-    made_costs = np.tile([1.0, 2.0], (m, 1)) if costs is None else costs
-    return Operations(
-        made_wires,
-        made_offsets,
-        made_coupled,
-        n_all,
-        np.require(made_groups, np.int32, ["C", "W"]),
-        np.require(made_costs, np.float32, ["C", "W"]),
-        float(swap_cost),
-    )
-
-
-@dataclass(frozen=True, eq=False, slots=True)
 class Pass:
     """Outcome of one pass.
 
@@ -275,7 +178,7 @@ class Pass:
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Lines:
-    """Operations along their wires, forwards or backwards; see `_kernels`."""
+    """Operations along their wires, forwards or backwards; see `_steps`."""
 
     lane: NDArray[np.int32]
     heads: Integers
@@ -407,7 +310,33 @@ class Router:
             random,
             record,
         )
-        return Pass(state[POSITION, : g.n].copy(), int(swaps), float(cost), float(tally[CLOCK].max()), events)
+        end = state[POSITION, : g.n].copy()
+        if not record:
+            return Pass(end, int(swaps), float(cost), float(tally[CLOCK].max()), events)
+        return self._settled(start, end, events, int(swaps), lines)
+
+    def _settled(self, start: Integers, end: Integers, events: NDArray[np.int64], swaps: int, lines: Lines) -> Pass:
+        """Put gates beside swaps that they merge with, and count what that costs."""
+        g, settled = self.graph, np.empty_like(events)
+        state = np.full((4, g.n), -1, dtype=np.int32)
+        state[0], state[1, start] = start, np.arange(g.n)
+        cost, depth = settle(
+            events,
+            settled,
+            lines.wires,
+            lines.offsets,
+            self.operations.groups,
+            lines.costs,
+            g.starts,
+            g.neighbours,
+            g.weight,
+            state,
+            np.empty((len(self.operations), 2), dtype=np.int32),
+            np.full(len(self.operations), -1, dtype=np.int32),
+            np.full(len(events), -1, dtype=np.int32),
+            np.zeros((3, g.n)),
+        )
+        return Pass(end, swaps, float(cost), float(depth), settled)
 
     def search(
         self,
@@ -506,6 +435,7 @@ def route(
     *,
     seed: int = 0,
     script: NDArray[np.int64] = NO_SCRIPT,
+    in_time: bool = False,
 ) -> Routing:
     """Insert swaps from the placement `initial` on.
 
@@ -522,6 +452,8 @@ def route(
         For ties; the same seed gives the same routing, in any thread.
     script : ndarray of int64
         Swaps to make first, in order, coded ``p * n + q``.
+    in_time : bool
+        Beyond the script, serve the gate whose qubits are free first: for a low depth, and on large devices for speed.
 
     Returns
     -------
@@ -547,7 +479,7 @@ def route(
     if start.shape != (graph.n,) or not np.array_equal(np.sort(start), np.arange(graph.n)):
         raise InputError("the start placement is malformed", required=f"each qubit from 0 to {graph.n - 1} once")
     joint = operations.joint
-    router = Router(graph, operations.take(joint))
+    router = Router(graph, operations.take(joint), terms=IN_TIME if in_time else TERMS)
     pairs = operations.pairs
     at = graph.component[start[pairs]]
     apart = np.flatnonzero(at[:, 0] != at[:, 1])

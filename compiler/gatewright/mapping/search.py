@@ -24,9 +24,9 @@ from gatewright.mapping.placement import (
     random_region,
     restored,
 )
-from gatewright.mapping.routing import NO_SCRIPT, Graph, Operations, Pass, Router
+from gatewright.mapping.routing import IN_TIME, NO_SCRIPT, TERMS, Graph, Operations, Pass, Router
 
-__all__ = ["EFFORTS", "Effort", "Plan", "place", "plan"]
+__all__ = ["EFFORTS", "Effort", "Plan", "in_time", "place", "plan"]
 
 Integers = NDArray[np.int32]
 
@@ -41,6 +41,8 @@ class Effort:
         Searches for an embedding.
     trials : int
         Starts at most.
+    patience : int
+        Starts without improvement after which no more are tried; up to 30 qubits, more in proportion beyond.
     rounds : int
         Passes to and fro from each.
     moves : int
@@ -55,6 +57,7 @@ class Effort:
 
     restarts: int
     trials: int
+    patience: int
     rounds: int
     moves: int
     work: float
@@ -63,9 +66,9 @@ class Effort:
 
 
 EFFORTS = {
-    "quick": Effort(4, 4, 1, 4_000, 1e5, 0, 0.0),
-    "standard": Effort(16, 32, 4, 20_000, 6e6, 24, 4e7),
-    "deep": Effort(100, 400, 8, 40_000, 2e8, 64, 2e9),
+    "quick": Effort(4, 4, 2, 1, 4_000, 1e5, 0, 0.0),
+    "standard": Effort(16, 32, 6, 4, 20_000, 6e6, 24, 4e7),
+    "deep": Effort(100, 400, 48, 8, 40_000, 2e8, 64, 2e9),
 }
 #: Operations on which starts are improved; what comes later hardly depends on them.
 PREFIX = 20_000
@@ -99,12 +102,14 @@ class _Candidate:
 class _Pool:
     """The best candidates so far, no two with the same start."""
 
-    def __init__(self, router: Router) -> None:
+    def __init__(self, router: Router, objective: str) -> None:
         self.router = router
+        self.objective = objective
         self.held: list[_Candidate] = []
 
     def value(self, made: Pass) -> tuple[float, float]:
-        return (made.cost, made.swaps)
+        """Return what is to be least, and what decides between equals."""
+        return (made.depth, made.cost) if self.objective == "depth" else (made.cost, made.swaps + 1e-4 * made.depth)
 
     def add(self, initial: Integers, made: Pass, script: NDArray[np.int64]) -> bool:
         """Take in a candidate; return whether it is the best so far."""
@@ -118,6 +123,10 @@ class _Pool:
                 break
         self.held = sorted([*self.held, new], key=lambda held: held.value)[:KEPT]
         return best
+
+    def wants(self, made: Pass) -> bool:
+        """Tell whether a pass promises to get among the best."""
+        return len(self.held) < KEPT or self.value(made) <= self.held[-1].value
 
     @property
     def best(self) -> _Candidate:
@@ -133,6 +142,7 @@ def plan(
     effort: str = "standard",
     seed: int = 0,
     fixed: Sequence[int] | None = None,
+    objective: str = "entanglers",
 ) -> Plan:
     """Return a start placement and the swaps to make from there.
 
@@ -150,6 +160,8 @@ def plan(
     seed : int
     fixed : sequence of int, length n_source, optional
         Qubit of each wire, -1 where it is free; respected exactly.
+    objective : {"entanglers", "depth"}
+        What is made least: entanglers, weighted by what they cost on their edges, or their depth.
 
     Returns
     -------
@@ -179,14 +191,15 @@ def plan(
     if start is not None and not pinned:
         return Plan(start, NO_SCRIPT)
     short = len(joint) <= PREFIX
-    router = Router(graph, operations.take(joint if short else joint[:PREFIX]))
-    pool = _Pool(router)
+    terms = IN_TIME if in_time(objective, effort) else TERMS
+    router = Router(graph, operations.take(joint if short else joint[:PREFIX]), terms=terms)
+    pool = _Pool(router, objective)
     if start is not None:
-        pool.add(start, router.run(start, seed=seed), NO_SCRIPT)
+        pool.add(start, router.run(start, seed=seed, record=True), NO_SCRIPT)
     try:
         if start is None:
             _try_starts(task, pool, work, seed=seed)
-        if work.width:
+        if work.width and objective != "depth":
             _widen(pool, task, work, seed=seed)
     except KeyboardInterrupt:
         if effort != "deep" or not pool.held:
@@ -194,11 +207,16 @@ def plan(
     if short:
         return pool.best.plan
     # What was found for the beginning holds only as a start for the whole.
-    whole = Router(graph, operations.take(joint))
+    whole = Router(graph, operations.take(joint), terms=terms)
     finalists = [held.plan.initial for held in pool.held[: max(1, int(work.work / (len(joint) * graph.n**0.5)))]]
     outcomes = [whole.run(initial, seed=seed) for initial in finalists] if len(finalists) > 1 else []
-    best = min(range(len(outcomes)), key=lambda k: (outcomes[k].cost, outcomes[k].swaps), default=0)
+    best = min(range(len(outcomes)), key=lambda k: pool.value(outcomes[k]), default=0)
     return Plan(finalists[best], NO_SCRIPT)
+
+
+def in_time(objective: str, effort: str) -> bool:
+    """Tell whether passes serve the gate whose qubits are free first: for a low depth, or for speed."""
+    return objective == "depth" or effort == "quick"
 
 
 def place(graph: Graph, operations: Operations, **options: object) -> Integers:
@@ -210,9 +228,13 @@ def _try_starts(task: Task, pool: _Pool, work: Effort, *, seed: int) -> None:
     router = pool.router
     size = max(1, len(router.operations)) * task.graph.n**0.5
     trials = max(2, min(work.trials, int(work.work / (size * (2 * work.rounds + 1)))))
+    patience = max(work.patience, work.patience * task.graph.n // 30)
+    since = 0
     for number, start in enumerate(_starts(task, pool, work, trials, seed=seed)):
+        before = pool.best.value if pool.held else None
         _improve(pool, start, task, rounds=work.rounds, seed=seed + 1000 * number)
-        if pool.best.swaps == 0:
+        since = since + 1 if pool.best.value == before else 0
+        if pool.best.swaps == 0 or since >= patience:
             return
 
 
@@ -226,8 +248,9 @@ def _improve(pool: _Pool, start: Integers, task: Task, *, rounds: int, seed: int
         pool.add(start, there, there.script())
         back = router.run(there.end, seed=seed + round_, backwards=True, record=True)
         start = restored(back.end, task.fixed)
-        if np.array_equal(start, back.end):
-            pool.add(start, back, np.flip(back.script()).copy())
+        if np.array_equal(start, back.end) and pool.wants(back):
+            script = np.flip(back.script()).copy()
+            pool.add(start, router.run(start, seed=seed, script=script, record=True), script)
         value = min(pool.value(there), pool.value(back))
         since = 0 if best is None or value < best else since + 1
         best = value if best is None else min(best, value)
@@ -237,7 +260,7 @@ def _improve(pool: _Pool, start: Integers, task: Task, *, rounds: int, seed: int
 
 def _starts(task: Task, pool: _Pool, work: Effort, trials: int, *, seed: int) -> Iterator[Integers]:
     """Yield starts of all kinds: annealed on the whole and on the beginning, embedded, grown, random, reheated."""
-    moves = work.moves * len(task.used)
+    moves = int(work.moves * len(task.used) * min(1.0, task.graph.n / 40))
     for trial in range(trials):
         kind = trial % 8
         child = seed * 7919 + trial
@@ -280,10 +303,8 @@ def _widen(pool: _Pool, task: Task, work: Effort, *, seed: int) -> None:
         found = router.search(starts, width=work.width, limit=limit, backwards=backwards)
         if found is not None:
             start, script = found
-            made = router.run(start, seed=seed, script=script, backwards=backwards)
             if backwards:
-                pool.add(made.end, made, np.flip(script).copy())
-            else:
-                pool.add(start, made, script)
+                start, script = router.run(start, seed=seed, script=script, backwards=True).end, np.flip(script).copy()
+            pool.add(start, router.run(start, seed=seed, script=script, record=True), script)
         if pool.best is before and round_ > 0:
             return

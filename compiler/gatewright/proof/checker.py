@@ -6,6 +6,7 @@ It knows nothing of how an output was made and imports nothing that makes one. F
    windows come in order, so that the circuit equals the product of its windows;
 2. in every window, output and source agree up to the seams, a permutation and a phase: the Frobenius norm of the
    difference bounds the operator norm from above; with unknown parameters, for all their values (`parametrised`);
+   where windows change places, all that share a wire and do are multiplied out and found to commute (`reorder`);
 3. the places of the wires, and the seams, lead from each window to the next and end as claimed;
 4. every output operation is a native gate, its parameters in range, on qubits that the device allows.
 
@@ -38,6 +39,7 @@ from gatewright.proof.products import (
     quaternion_matrices,
     window_products,
 )
+from gatewright.proof.reorder import Reorder, check_reorder
 from gatewright.proof.windows import Proof, Step, Verdict
 
 if TYPE_CHECKING:
@@ -89,6 +91,12 @@ def check_proof(
     current = source
     for number, step in enumerate(proof.steps):
         last = number == len(proof.steps) - 1
+        if isinstance(step, Reorder):
+            if last:
+                _refuse("a claim of a new order leads to no output")
+            current, distance, error = check_reorder(current, step, tolerance)
+            measured, rounding = measured + distance, rounding + error
+            continue
         following = output if last else step.output
         if following is None:
             raise ProofError("the proof lacks the circuit between two of its steps", found=f"step {number}")

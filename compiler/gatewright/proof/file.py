@@ -40,6 +40,7 @@ from gatewright.proof.packing import (
     unpack_integers,
     unpack_seams,
 )
+from gatewright.proof.reorder import Reorder
 from gatewright.proof.windows import Proof, Step
 
 __all__ = ["FORMAT", "FORMAT_VERSION", "decode_proof", "encode_proof", "read_proof"]
@@ -74,6 +75,11 @@ def encode_proof(proof: Proof) -> bytes:
     arrays: dict[str, NDArray[Any]] = {}
     steps: list[dict[str, Any]] = []
     for number, step in enumerate(proof.steps):
+        if isinstance(step, Reorder):
+            arrays[f"{number}.window"] = pack_differences(step.window)
+            arrays[f"{number}.rank"] = pack_differences(step.rank)
+            steps.append({"output": None, "reorder": True})
+            continue
         arrays |= {f"{number}.{name}": array for name, array in _pack_step(step).items()}
         steps.append({"output": _encode_circuit(step.output, f"{number}.output", arrays)})
     header = {
@@ -246,9 +252,16 @@ def _array(archive: zipfile.ZipFile, members: dict[str, zipfile.ZipInfo], name: 
 def _decode(header: dict[str, Any], arrays: dict[str, NDArray[Any]]) -> Proof:
     if header["claims"][: len(CLAIM_KINDS)] != [kind.name for kind in CLAIM_KINDS][: len(header["claims"])]:
         raise ProofFileError("the proof makes claims of kinds that this version does not know")
-    steps = []
+    steps: list[Step | Reorder] = []
     for number, entry in enumerate(header["steps"]):
         mine = {name.partition(".")[2]: array for name, array in arrays.items() if name.startswith(f"{number}.")}
+        if entry.get("reorder") is True:
+            window, rank = unpack_differences(mine["window"]), unpack_differences(mine["rank"])
+            for array in (window, rank):
+                if len(array) and not 0 <= array.min() <= array.max() < 1 << 31:
+                    raise ProofFileError("the proof file is damaged", required="numbers of windows below 2³¹")
+            steps.append(Reorder(window.astype(np.int32), rank.astype(np.int32)))
+            continue
         output = None if entry["output"] is None else _decode_circuit(entry["output"], f"{number}.output", arrays)
         steps.append(_unpack_step(mine, len(header["claims"]), output))
     known = {name: str(header["fingerprints"][name]) for name in asdict(Fingerprints())}

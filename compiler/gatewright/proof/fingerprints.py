@@ -97,7 +97,10 @@ def fingerprint(circuit: Circuit) -> str:
     if rows:
         facts += [rows, [[str(value) for value in circuit.symbolic[row]] for row in unknown], circuit.inputs]
     op = number[circuit.op] if len(circuit) else circuit.op
-    arrays = (op, circuit.qubits, circuit.offsets, circuit.parameters + 0.0, measured, *explicit)
+    parameters = circuit.parameters + 0.0
+    if rows:
+        parameters[np.repeat(circuit.is_symbolic, np.diff(circuit.parameter_offsets))] = 0.0
+    arrays = (op, circuit.qubits, circuit.offsets, parameters, measured, *explicit)
     return _digest(facts, arrays)
 
 

@@ -24,6 +24,7 @@ from numpy.typing import NDArray
 from gatewright.circuit import Circuit
 from gatewright.errors import ProofFileError
 from gatewright.proof.fingerprints import Fingerprints
+from gatewright.proof.reorder import Reorder
 
 __all__ = ["Proof", "Step", "Verdict"]
 
@@ -84,14 +85,15 @@ class Proof:
 
     Attributes
     ----------
-    steps : tuple of Step
+    steps : tuple of Step or Reorder
+        The last is a `Step`.
     made_for : Fingerprints
         Of source, output, gate set and device, as far as they are stated; the checker compares them.
     version : str
         Version of gatewright that made it; empty for this one.
     """
 
-    steps: tuple[Step, ...]
+    steps: tuple[Step | Reorder, ...]
     made_for: Fingerprints = field(default_factory=Fingerprints)
     version: str = ""
 

@@ -10,7 +10,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
+from gatewright.proof.reorder import Reorder
 from gatewright.proof.windows import Step
+from gatewright.stages.blocks import Blocks
 from gatewright.stages.windows import Fused
 
 if TYPE_CHECKING:
@@ -62,10 +64,12 @@ class Draft:
         How the device's gates are used.
     expanded : Circuit
         The source in gates of one and two qubits.
-    steps : tuple of Step
+    steps : tuple of Step or Reorder
         Claims of the stages so far, for the checker.
     initial, final : ndarray of int32, shape (N,)
         Physical qubit of each source wire, from placement and routing on.
+    blocks : Blocks or None
+        The circuit as placement and routing see it.
     script : ndarray of int64
         Swaps that go with `initial`, as `gatewright.mapping.search.Plan` has them.
     origin : ndarray of int64, shape (operations,)
@@ -84,9 +88,10 @@ class Draft:
     settings: Settings
     native: NativeSet
     expanded: Circuit
-    steps: tuple[Step, ...] = ()
+    steps: tuple[Step | Reorder, ...] = ()
     initial: NDArray[np.int32] = field(default_factory=lambda: np.zeros(0, np.int32))
     final: NDArray[np.int32] = field(default_factory=lambda: np.zeros(0, np.int32))
+    blocks: Blocks | None = None
     script: NDArray[np.int64] = field(default_factory=lambda: np.zeros(0, np.int64))
     origin: NDArray[np.int64] = field(default_factory=lambda: np.zeros(0, np.int64))
     fused: Fused | None = None

@@ -79,7 +79,7 @@ def groups_of_edges(
         if tool.flipped:
             straight = names.index(tool.gate.name)
             allowed[:, t] &= ~allowed[:, straight]
-    choices = np.asarray(allowed.sum(axis=1))
+    choices = np.asarray(allowed, dtype=np.int64).sum(axis=1)
     if not choices.all():
         p, q = distinct[int(np.argmin(choices))].tolist()
         raise DeviceError(

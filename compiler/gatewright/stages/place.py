@@ -7,11 +7,12 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
+from gatewright.mapping.routing import Graph, make_graph
 from gatewright.mapping.search import plan
-from gatewright.mapping.routing import Graph, Operations, make_graph, make_operations
+from gatewright.stages.blocks import Blocks, cut_blocks
 from gatewright.stages.draft import Draft
 
-__all__ = ["place"]
+__all__ = ["device_graph", "mapping_task", "objective_of", "place"]
 
 
 def place(draft: Draft) -> Draft:
@@ -22,28 +23,37 @@ def place(draft: Draft) -> Draft:
     DisconnectedError, InputError
         See `gatewright.mapping.search.plan`.
     """
-    graph, operations = mapping_task(draft)
+    graph, blocks = mapping_task(draft)
     found = plan(
         graph,
-        operations,
+        blocks.operations,
         n_source=draft.circuit.n_qubits,
         active=np.asarray(draft.device.active),
         effort=draft.settings.effort,
         seed=draft.settings.seed,
         fixed=draft.settings.placement,
+        objective=objective_of(draft),
     )
-    return replace(draft, initial=found.initial, script=found.script)
+    return replace(draft, blocks=blocks, initial=found.initial, script=found.script)
 
 
-def mapping_task(draft: Draft) -> tuple[Graph, Operations]:
-    """Return the coupling graph, and the circuit's operations on as many wires as the device has qubits."""
-    circuit, n = draft.circuit, draft.device.n_qubits
-    wires, offsets = circuit.lanes()
-    # Bits are numbered behind the circuit's own qubits; make room for the idle ones.
-    wires = np.where(wires >= circuit.n_qubits, wires + (n - circuit.n_qubits), wires)
-    coupled = circuit.is_unitary & (circuit.widths == 2)
-    graph = make_graph(draft.device.edges, n, edge_cost=_edge_costs(draft))
-    return graph, make_operations(wires, offsets, coupled, n + circuit.n_bits)
+def objective_of(draft: Draft) -> str:
+    """Return what placement and routing make least."""
+    return "depth" if draft.settings.prefer == "duration" else "entanglers"
+
+
+def mapping_task(draft: Draft) -> tuple[Graph, Blocks]:
+    """Return the coupling graph, and the circuit in blocks on as many wires as the device has qubits."""
+    n = draft.device.n_qubits
+    blocks = draft.blocks
+    if blocks is None or len(blocks.item) != len(draft.circuit):
+        blocks = cut_blocks(draft.circuit, draft.native, n, tolerance=draft.settings.tolerance)
+    return device_graph(draft), blocks
+
+
+def device_graph(draft: Draft) -> Graph:
+    """Return the coupling graph, with what entanglers cost on its edges."""
+    return make_graph(draft.device.edges, draft.device.n_qubits, edge_cost=_edge_costs(draft))
 
 
 def _edge_costs(draft: Draft) -> NDArray[np.float64] | None:

@@ -10,7 +10,7 @@ from gatewright.circuit import Piece, assemble
 from gatewright.gates import GATES
 from gatewright.mapping.restoring import restoring_swaps
 from gatewright.stages.draft import Draft
-from gatewright.stages.place import mapping_task
+from gatewright.stages.place import device_graph
 
 __all__ = ["restore"]
 
@@ -27,7 +27,7 @@ def restore(draft: Draft) -> Draft:
     if wanted is None:
         return draft
     n = len(wanted)
-    graph, _ = mapping_task(draft)
+    graph = device_graph(draft)
     swaps = restoring_swaps(graph, draft.final[:n], np.array(wanted, dtype=np.int32))
     if not swaps:
         return draft

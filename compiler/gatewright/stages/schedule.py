@@ -7,6 +7,7 @@ from dataclasses import replace
 import numpy as np
 
 from gatewright.cost import as_soon_as_possible, is_virtual, operation_durations
+from gatewright.proof.windows import Step
 from gatewright.stages.draft import Draft
 
 __all__ = ["schedule"]
@@ -21,6 +22,7 @@ def schedule(draft: Draft) -> Draft:
     starts, _ = as_soon_as_possible(circuit, durations)
     order = np.argsort(starts, kind="stable")
     last = draft.steps[-1]
+    assert isinstance(last, Step)  # what synthesis claimed
     step = replace(last, output_window=last.output_window[order])
     return replace(
         draft,

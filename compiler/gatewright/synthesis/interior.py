@@ -26,13 +26,13 @@ Vector = NDArray[np.float64]
 
 #: Phases of CAN(x, y, z) in the magic basis, over (x, y, z); ascending for points of the alcove.
 _PHASES = np.array([[-1.0, -1, -1], [-1, 1, 1], [1, -1, 1], [1, 1, -1]])
-_STARTS = 32
+_STARTS = 64
 _TRIES = 3
 _ROUNDS = 4
 _HELPERS = 2000
 _NEIGHBOURS = 4
 _STEPS = 60
-_PATIENT = 200
+_PATIENT = 2000
 _ACCEPTED = 3e-13
 _GIVEN_UP = 2e-10
 #: CAN(p) ∝ (Z ⊗ X) CAN(q) (Y ⊗ 1) for the two images p, q of a class.
@@ -82,17 +82,19 @@ def inner_gates(points: Vector, sequences: Vector, which: NDArray[np.int64]) -> 
     # Near facets random starts fail often, but neighbours that are solved lead there.
     for _ in range(_ROUNDS if k > 1 else 0):
         solved = residual <= _ACCEPTED
-        rest = np.flatnonzero(~solved)
-        if not 0 < len(rest) < len(points):
+        left_over = np.flatnonzero(~solved)
+        if not 0 < len(left_over) < len(points):
             break
         helpers = np.flatnonzero(solved)[:_HELPERS]
-        apart = np.abs(targets[rest, None, :] - targets[None, helpers, :]).sum(axis=2)
-        apart[row[rest, None] != row[None, helpers]] += 10.0
+        apart = np.abs(targets[left_over, None, :] - targets[None, helpers, :]).sum(axis=2)
+        apart[row[left_over, None] != row[None, helpers]] += 10.0
         nearest = helpers[np.argsort(apart, axis=1)[:, :_NEIGHBOURS]]
-        tried, error = np.empty((len(rest), k + 1, 2, 4)), np.empty(len(rest))
-        refine(targets[rest], row[rest], phases, found[nearest, :k], free, nearest.shape[1], _STEPS, tried, error)
-        better = error < residual[rest]
-        found[rest[better]], residual[rest[better]] = tried[better], error[better]
+        tried, error = np.empty((len(left_over), k + 1, 2, 4)), np.empty(len(left_over))
+        refine(
+            targets[left_over], row[left_over], phases, found[nearest, :k], free, nearest.shape[1], _STEPS, tried, error
+        )
+        better = error < residual[left_over]
+        found[left_over[better]], residual[left_over[better]] = tried[better], error[better]
     for n in np.flatnonzero(~(residual <= _ACCEPTED)) if k > 1 else ():
         other, rest = _on_facets(points[n], sequences[row[n]], targets[[n]], phases[[row[n]]])
         if rest < residual[n]:
@@ -130,9 +132,15 @@ def _on_facets(point: Vector, sequence: Vector, target: Vector, phases: NDArray[
         if least <= _ACCEPTED:
             return best[0], least
     whole = np.zeros((k + 1, 4), dtype=np.int64)
-    starts = block_starts(whole, phases[0], target[0], rng, pool=1000, keep=_STARTS)[None]
-    refine(target, row, phases, starts, every, _STARTS, _PATIENT, found, rest)
-    return (found[0], float(rest[0])) if rest[0] < least else (best[0], least)
+    # What is left are points where nearly all circuits are elsewhere: draw many, and take the time.
+    starts = block_starts(whole, phases[0], target[0], rng, pool=20000, keep=_STARTS)[None]
+    for tries, steps in ((_STARTS, _STEPS), (_STARTS // 4, _PATIENT)):
+        refine(target, row, phases, starts, every, tries, steps, found, rest)
+        if rest[0] < least:
+            best, least = found.copy(), float(rest[0])
+        if least <= _ACCEPTED:
+            break
+    return best[0], least
 
 
 def _left(found: Vector, targets: Vector, phases: NDArray[np.complex128]) -> Vector:

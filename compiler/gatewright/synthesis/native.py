@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from gatewright.errors import GateSetError, UnsupportedError
+from gatewright.errors import GateSetError
 from gatewright.gates import Gate
 from gatewright.linalg import dagger, kron, reorder_qubits
 from gatewright.synthesis.entangler import Entangler, classify
@@ -27,9 +27,11 @@ if TYPE_CHECKING:
 __all__ = ["NativeEntangler", "NativeSet", "entangler_parameters", "native_set", "usable_entanglers"]
 
 Array = NDArray[np.complex128]
+Vector = NDArray[np.float64]
 
 #: Chamber points of the classes that `classify` accepts.
 CLASSES = np.array([[np.pi / 4, 0, 0], [np.pi / 4, np.pi / 4, 0]])
+B_CLASS = np.array([np.pi / 4, np.pi / 8, 0])
 #: Points at which a parametrised entangler is looked at before refining.
 SAMPLES = 241
 PAULI = np.array([[[0, 1], [1, 0]], [[0, -1j], [1j, 0]], [[1, 0], [0, -1]]])
@@ -150,11 +152,7 @@ def entangler_parameters(native: NativeGate) -> tuple[float, ...]:
     if native.gate.n_parameters == 0:
         return ()
     if native.gate.n_parameters > 1:
-        raise UnsupportedError(
-            "cannot yet choose among several parameters",
-            required="one parameter at most",
-            found=str(native.gate.n_parameters),
-        )
+        return _several_parameters(native)
     # Only parametrised entanglers need it, and it takes a fifth of a second to load.
     from scipy.optimize import minimize_scalar
 
@@ -175,6 +173,32 @@ def entangler_parameters(native: NativeGate) -> tuple[float, ...]:
     simple = np.round(refined.x * 24 / np.pi) * np.pi / 24
     candidates = [c for c in (simple, float(refined.x), float(grid[best])) if low <= c <= high]
     return (min(candidates, key=lambda a: float(np.round(away([a])[0], 14))),)
+
+
+def _several_parameters(native: NativeGate) -> tuple[float, ...]:
+    """Choose several parameters: the class of B if it is there, which makes everything in two, else as for one."""
+    from scipy.optimize import minimize
+
+    samples = native.samples()
+    points = canonical_coordinates(native.gate.matrix(samples))
+    low, high = np.array(native.ranges).T
+    best: tuple[float, tuple[float, ...]] = (np.inf, ())
+    wanted = B_CLASS
+
+    def away(parameters: Vector) -> float:
+        inside = np.clip(parameters, low, high)
+        return float(np.abs(canonical_coordinates(native.gate.matrix(inside)) - wanted).max())
+
+    for wanted in np.concatenate([[B_CLASS], CLASSES]):
+        start = samples[int(np.argmin(np.abs(points - wanted).max(axis=1)))]
+        precise = minimize(away, start, method="Nelder-Mead", options={"xatol": 1e-13, "fatol": 1e-15, "maxiter": 4000})
+        found = np.clip(precise.x, low, high)
+        simple = np.clip(np.round(found * 24 / np.pi) * np.pi / 24, low, high)
+        parameters = min((simple, found), key=lambda p: round(away(p), 13))
+        if away(parameters) <= 1e-12:
+            return tuple(float(p) for p in parameters)
+        best = min(best, (away(parameters), tuple(float(p) for p in parameters)))
+    return best[1]
 
 
 def _passages(matrix: Array, axis: NDArray[np.float64] | None) -> tuple[tuple[int, int], tuple[int, int]]:
