@@ -23,6 +23,7 @@ from gatewright.linalg import haar_unitary
 from gatewright.program import Assign, Block, If, Leave, Program, While
 from gatewright.proof import decode_program_proof
 from gatewright.qasm import read, write
+from gatewright.stages.settle import cheaper
 from interpreter import run
 
 HERE = Path(__file__).parent
@@ -87,8 +88,31 @@ def test_programs_compile_and_run_alike(file: Path) -> None:
         verdict = gw.check(source, again, device=device, proof=result.proof)
     assert verdict.error_bound < 1e-10
     assert (verdict.initial, verdict.final) == (result.initial, result.final)
+    values = {name: 0.4 + 0.3 * k for k, (name, _) in enumerate(source.inputs)}
+    source, again = source.bind(values), again.bind(values)
     for seed in range(4):
         assert agree(source, again, verdict.initial, verdict.final, seed) < 1e-9
+
+
+def plain(text: str) -> list[str]:
+    return [line for line in text.splitlines() if not line.startswith("//")]
+
+
+@pytest.mark.parametrize("file", FILES, ids=lambda file: file.stem)
+def test_output_with_nothing_to_do_comes_back_as_it_is(file: Path) -> None:
+    """Read back and compiled again, until nothing becomes cheaper: then the text is the same."""
+    source = load(file).circuit
+    device = device_for(source, file)
+    result = gw.compile(source, device)
+    for _ in range(6):
+        text = result.to_qasm()
+        again = gw.compile(read(text, natives=device.gate_set.natives), device)
+        if plain(again.to_qasm()) == plain(text):
+            assert again.verdict.initial == again.verdict.final == tuple(range(device.n_qubits))
+            return
+        assert cheaper(again.costs, result.costs)
+        result = again
+    raise AssertionError("it becomes cheaper again and again")
 
 
 # ---------------------------------------------------------------- the joins

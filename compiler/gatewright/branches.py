@@ -18,6 +18,7 @@ from gatewright.mapping.restoring import restoring_swaps
 from gatewright.program import Assign, Block, If, Leave, Program, Statement, While, inner_blocks
 from gatewright.stages.draft import Draft, Stage
 from gatewright.stages.place import device_graph
+from gatewright.stages.settle import cheaper, costs_of, settle, stays, unchanged
 
 __all__ = ["Threaded", "combined_costs", "thread_program"]
 
@@ -86,7 +87,23 @@ def thread_program(program: Program, draft: Draft, chain: Sequence[Stage]) -> Th
         body=made.block,
         qubit_registers=(),
     )
-    return Threaded(changed, made.drafts)
+    return _settled(program, draft, Threaded(changed, made.drafts), chain)
+
+
+def _settled(program: Program, draft: Draft, made: Threaded, chain: Sequence[Stage]) -> Threaded:
+    """Return the program itself where it is legal as it stands and not dearer, if the chain settles circuits so."""
+    if settle not in chain or program.n_qubits != draft.device.n_qubits or not stays(draft.settings):
+        return made
+    same: list[Draft] = []
+    for part, circuit in zip(made.drafts, program.circuits(), strict=True):
+        kept = unchanged(part, circuit)
+        if kept is None:
+            return made
+        same.append(kept)
+    costs = combined_costs(made.program, [costs_of(part) for part in made.drafts])
+    if cheaper(costs, combined_costs(program, [costs_of(part) for part in same])):
+        return made
+    return Threaded(program, tuple(same))
 
 
 def _leaves(block: Block) -> list[Leave]:

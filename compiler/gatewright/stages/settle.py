@@ -15,9 +15,9 @@ from gatewright.cost import Costs, as_soon_as_possible, count_costs, is_virtual,
 from gatewright.errors import ProofError
 from gatewright.proof import check_legal
 from gatewright.proof.windows import Step
-from gatewright.stages.draft import Draft
+from gatewright.stages.draft import Draft, Settings
 
-__all__ = ["settle"]
+__all__ = ["cheaper", "costs_of", "settle", "stays", "unchanged"]
 
 
 def settle(draft: Draft) -> Draft:
@@ -25,24 +25,31 @@ def settle(draft: Draft) -> Draft:
 
     The first difference decides: two-qubit gates, one-qubit gates, operations, duration, depths.
     """
-    source, device, settings = draft.source, draft.device, draft.settings
-    places = tuple(range(device.n_qubits))
-    if source is None or source.n_qubits != device.n_qubits or not len(source):
+    source = draft.source
+    if source is None or not len(source) or source.n_qubits != draft.device.n_qubits or not stays(draft.settings):
         return draft
-    for wanted in (settings.placement, settings.final):
-        if wanted is not None and any(q not in (-1, place) for q, place in zip(wanted, places, strict=True)):
-            return draft
+    same = unchanged(draft, source)
+    return draft if same is None or cheaper(costs_of(draft), costs_of(same)) else same
+
+
+def stays(settings: Settings) -> bool:
+    """Whether the settings let every qubit of the device begin and end where it is."""
+    wishes = (settings.placement, settings.final)
+    return not any(q not in (-1, place) for wanted in wishes for place, q in enumerate(wanted or ()))
+
+
+def unchanged(draft: Draft, source: Circuit) -> Draft | None:
+    """Return the draft that gives back its source, if that is on all qubits of the device and legal as it stands."""
+    device = draft.device
+    if source.n_qubits != device.n_qubits:
+        return None
     try:
         check_legal(source, device)
     except ProofError:
-        return draft
+        return None
     starts = _starts(source, draft)
     if (np.diff(starts) < 0).any():
-        return draft  # not in order of time, as the output of a compilation is
-    before = count_costs(source, device, starts=starts, swaps_inserted=0)
-    after = count_costs(draft.circuit, device, starts=draft.starts, swaps_inserted=draft.swaps)
-    if _counted(after) < _counted(before):
-        return draft
+        return None  # not in order of time, as the output of a compilation is
     return replace(
         draft,
         circuit=source,
@@ -52,6 +59,16 @@ def settle(draft: Draft) -> Draft:
         starts=starts,
         swaps=0,
     )
+
+
+def costs_of(draft: Draft) -> Costs:
+    """Return the costs of a draft that has been through the chain."""
+    return count_costs(draft.circuit, draft.device, starts=draft.starts, swaps_inserted=draft.swaps)
+
+
+def cheaper(costs: Costs, others: Costs) -> bool:
+    """Whether costs are less than others."""
+    return _counted(costs) < _counted(others)
 
 
 def _starts(circuit: Circuit, draft: Draft) -> NDArray[np.float64]:
