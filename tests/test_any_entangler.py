@@ -7,8 +7,8 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 import gatewright as gw
-from gatewright.devices import Device, read_gate_set
-from gatewright.errors import GateSetError
+from gatewright.devices import Device, read_device, read_gate_set
+from gatewright.errors import DeviceError, GateSetError
 from gatewright.linalg import distance, haar_unitary, kron
 from gatewright.synthesis.entangler import classify
 from gatewright.synthesis.polytopes import other_image
@@ -195,6 +195,21 @@ def test_several_entanglers_and_directions_in_one_circuit():
     assert result.verdict.error_bound < 1e-11
 
 
+def test_what_is_preferred_decides_between_entanglers():
+    native = gate_set(
+        {"long": canonical_matrix((Q, Q / 2, 0)), "quick": CZ},
+        long={"error": 0.02, "duration_ns": 500},
+        quick={"error": 0.001, "duration_ns": 50},
+    )
+    device = Device.from_graph([(0, 1)], native)
+    target = haar_unitary(4, rng=1)
+    uses = {prefer: gw.compile(target, device, prefer=prefer).costs for prefer in ("uses", "fidelity", "duration")}
+    assert uses["uses"].two_qubit_gates == 2
+    assert uses["fidelity"].by_gate["quick"] == uses["duration"].by_gate["quick"] == 3
+    with pytest.raises(gw.errors.InputError, match="unknown preference 'speed'"):
+        gw.compile(target, device, prefer="speed")
+
+
 @pytest.mark.parametrize(
     ("matrix", "message"),
     [
@@ -207,3 +222,23 @@ def test_sets_that_cannot(matrix, message):
     device = Device.from_graph([(0, 1)], gate_set({"pulse": matrix}))
     with pytest.raises(GateSetError, match=message):
         gw.compile(CZ, device)
+
+
+def test_different_entanglers_on_different_edges():
+    native = gate_set({"pulse": haar_unitary(4, rng=3), "cz": CZ, "swapping": ISWAP})
+    data = {
+        "name": "patchwork",
+        "gate_set": native,
+        "coupling": {"shape": "line", "qubits": 4},
+        "gates": {"pulse": {"pairs": [[1, 0]]}, "cz": {"pairs": [[1, 2]]}, "swapping": {"pairs": [[3, 2]]}},
+    }
+    device = read_device(data)
+    assert device.allows("pulse", [[0, 1], [1, 0]]).tolist() == [False, True]
+    assert device.allows("cz", [[1, 2], [2, 1], [0, 1]]).tolist() == [True, True, False]
+    assert device.allowed_pairs("swapping").tolist() == [[2, 3], [3, 2]]
+    result = gw.compile(haar_unitary(8, rng=6), device, placement=[0, 1, 2])
+    assert {"pulse", "cz"} <= set(result.costs.by_gate)
+    assert result.verdict.error_bound < 1e-11
+    for gate, pairs in (("pulse", [[0, 1]]), ("cz", [[0, 2]]), ("cx", [[0, 1]])):
+        with pytest.raises(DeviceError, match="no two-qubit gate|a pair of the coupling|unknown|known"):
+            read_device({**data, "gates": {**data["gates"], gate: {"pairs": pairs[:0] if gate == "pulse" else pairs}}})

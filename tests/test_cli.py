@@ -267,7 +267,7 @@ BAD_PROGRAMS: dict[str, tuple[bytes, str]] = {
     "division by zero": (f"{QASM}rz(1/0) q[0];\n".encode(), r":4:"),
     "control flow": (f"{QASM}bit c;\nif (c) x q[c];\n".encode(), r":5:12: .*depends on the run"),
     "modifier without a gate": (f"{QASM}ctrl @ reset q[0], q[1];\n".encode(), r":4:8: .*reset"),
-    "timing": (f"{QASM}box {{ x q[0]; }}\n".encode(), r":4:1: .*box"),
+    "timing": (f"{QASM}box[10ns] {{ x q[0]; }}\n".encode(), r":4:1: .*box"),
     "endless loop": (f"{QASM}for int i in [0:10**12] {{ x q[0]; }}\n".encode(), r":4:.*at most 1000000"),
     "too many qubits": (b'OPENQASM 3.0;\ninclude "stdgates.inc";\nqubit[10] q;\nh q;\n', "more qubits than the device"),
     "empty": (b"", "empty"),

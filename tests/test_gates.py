@@ -15,6 +15,7 @@ import numpy as np
 import openqasm3
 import pytest
 import scipy.linalg
+import sympy
 import sympy.physics.quantum.gate as sympy_gates
 from openqasm3 import ast
 from sympy.physics.quantum.represent import represent
@@ -22,6 +23,8 @@ from sympy.physics.quantum.represent import represent
 from gatewright.errors import CircuitError
 from gatewright.gates import ANY, BARRIER, GATES, MEASURE, RESET, UNITARY, Gate, find_gate
 from gatewright.linalg import dagger, distance
+from gatewright.qasm import read
+from gatewright.qasm.library import LIBRARIES, LIBRARY_FILES
 
 STDGATES = """
 gate p(lambda) a { ctrl @ gphase(lambda) a; }
@@ -262,6 +265,96 @@ def test_against_sympy(name: str) -> None:
     gate, n_qubits = SYMPY[name]
     expected = np.array(represent(gate, nqubits=n_qubits).evalf(20), dtype=complex)
     np.testing.assert_allclose(GATES[name].matrix(), expected, atol=1e-15)
+
+
+def _rotation(axis: str, theta: sympy.Symbol) -> sympy.Matrix:
+    """Return exp(-i θ/2 P) of a Pauli matrix, as Nielsen and Chuang, 4.4 to 4.6."""
+    pauli = {"x": sympy.Matrix([[0, 1], [1, 0]]), "y": sympy.Matrix([[0, -sympy.I], [sympy.I, 0]])}
+    matrix = pauli.get(axis, sympy.Matrix([[1, 0], [0, -1]]))
+    return sympy.cos(theta / 2) * sympy.eye(2) - sympy.I * sympy.sin(theta / 2) * matrix
+
+
+def _controlled(matrix: sympy.Matrix, controls: int = 1) -> sympy.Matrix:
+    """Return a matrix under controls, which are the first qubits."""
+    return sympy.diag(sympy.eye(matrix.rows * (2**controls - 1)), matrix)
+
+
+def _u(theta: sympy.Symbol, phi: sympy.Symbol, lam: sympy.Symbol) -> sympy.Matrix:
+    """Return U as the OpenQASM 3 specification prints it."""
+    i = sympy.I
+    a, b = 1 + sympy.exp(i * theta), 1 - sympy.exp(i * theta)
+    return (
+        sympy.Matrix([[a, -i * sympy.exp(i * lam) * b], [i * sympy.exp(i * phi) * b, sympy.exp(i * (phi + lam)) * a]])
+        / 2
+    )
+
+
+def _power(generator: sympy.Matrix, theta: sympy.Symbol) -> sympy.Matrix:
+    """Return exp(-i θ/2 G) where G squared is 1."""
+    return sympy.cos(theta / 2) * sympy.eye(generator.rows) - sympy.I * sympy.sin(theta / 2) * generator
+
+
+_A, _B, _C, _D = sympy.symbols("a b c d", real=True)
+_PAULI = {"x": sympy.Matrix([[0, 1], [1, 0]]), "z": sympy.Matrix([[1, 0], [0, -1]])}
+_SWAP = sympy.Matrix([[1, 0, 0, 0], [0, 0, 1, 0], [0, 1, 0, 0], [0, 0, 0, 1]])
+_HALF = (1 + sympy.I) / 2
+#: The principal square root of X.
+_ROOT = sympy.Matrix([[_HALF, 1 - _HALF], [1 - _HALF, _HALF]])
+
+#: Gates of several qubits of both libraries in SymPy's matrices, with their parameters; what `SYMPY` has is left out.
+SYMPY_MATRICES: dict[str, tuple[sympy.Matrix, tuple[sympy.Symbol, ...]]] = {
+    "cp": (_controlled(sympy.diag(1, sympy.exp(sympy.I * _A))), (_A,)),
+    "cphase": (_controlled(sympy.diag(1, sympy.exp(sympy.I * _A))), (_A,)),
+    "cu1": (_controlled(sympy.diag(1, sympy.exp(sympy.I * _A))), (_A,)),
+    "crx": (_controlled(_rotation("x", _A)), (_A,)),
+    "cry": (_controlled(_rotation("y", _A)), (_A,)),
+    "crz": (_controlled(_rotation("z", _A)), (_A,)),
+    # The control's phase takes away that of U, which is exp(iθ/2) in OpenQASM 3.
+    "cu": (_controlled(sympy.exp(sympy.I * (_D - _A / 2)) * _u(_A, _B, _C)), (_A, _B, _C, _D)),
+    "cu3": (_controlled(sympy.exp(-sympy.I * _A / 2) * _u(_A, _B, _C)), (_A, _B, _C)),
+    "csx": (_controlled(_ROOT), ()),
+    "c3sqrtx": (_controlled(_ROOT, 3), ()),
+    "cswap": (_controlled(_SWAP), ()),
+    "rxx": (_power(sympy.kronecker_product(_PAULI["x"], _PAULI["x"]), _A), (_A,)),
+    "rzz": (_power(sympy.kronecker_product(_PAULI["z"], _PAULI["z"]), _A), (_A,)),
+    # The relative-phase Toffoli of Margolus, as Barenco et al., PRA 52, 3457 (1995), section 6.2, up to the places of
+    # its signs: those of qelib1.inc.
+    "rccx": (sympy.diag(sympy.eye(5), -1, sympy.Matrix([[0, -sympy.I], [sympy.I, 0]])), ()),
+    # Maslov, PRA 93, 022311 (2016), figure 4, with the signs of qelib1.inc.
+    "rc3x": (
+        sympy.diag(sympy.eye(12), sympy.I, -sympy.I, sympy.Matrix([[0, 1], [-1, 0]])),
+        (),
+    ),
+}
+
+
+@pytest.mark.parametrize("name", SYMPY_MATRICES)
+def test_gates_of_several_qubits_against_sympy_matrices(name: str) -> None:
+    matrix, symbols = SYMPY_MATRICES[name]
+    for values in angles(GATES[name]):
+        expected = np.array(matrix.subs(dict(zip(symbols, values, strict=True))).evalf(20).tolist(), dtype=complex)
+        np.testing.assert_allclose(GATES[name].matrix(values), expected, atol=1e-14)
+
+
+def test_every_gate_of_several_qubits_has_a_sympy_matrix() -> None:
+    names = {name for library in LIBRARIES.values() for name in library if GATES[name].n_qubits > 1}
+    assert names <= {*SYMPY, *SYMPY_MATRICES}
+
+
+@pytest.mark.parametrize("version", [2, 3])
+def test_a_program_that_includes_the_library_means_these_matrices(version: int) -> None:
+    """Read from text, on qubits in another order."""
+    header = f'OPENQASM {version}.0; include "{LIBRARY_FILES[version]}"; ' + ("qreg" if version == 2 else "qubit")
+    header += " q[5];" if version == 2 else "[5] q;"
+    for name in sorted(LIBRARIES[version]):
+        gate = GATES[name]
+        places = [4, 0, 3, 1, 2][: gate.n_qubits]
+        for values in angles(gate):
+            given = f"({', '.join(map(repr, values))})" if values else ""
+            text = f"{header} {name}{given} {', '.join(f'q[{q}]' for q in places)};"
+            (op,) = read(text)
+            assert op.qubits == tuple(places) and op.matrix is not None
+            np.testing.assert_allclose(op.matrix, gate.matrix(values), atol=1e-15)
 
 
 X = np.array([[0, 1], [1, 0]])

@@ -40,6 +40,17 @@ SX, X, H = native("sx", ns=30.0), native("x", ns=30.0), native("h", ns=30.0)
 U = native("u", (0, PI), FULL, FULL, ns=45.0)
 R = native("r", (0, PI), FULL, ns=40.0)
 
+
+def any_axis(*ranges: tuple[float, float]) -> Native:
+    """A rotation by p[0] about the axis at p[1] from z and p[2] about z."""
+
+    def matrix(p: np.ndarray) -> np.ndarray:
+        frame = GATES["rz"].matrix(p[..., 2:]) @ GATES["ry"].matrix(p[..., 1:2])
+        return frame @ GATES["rz"].matrix(p[..., :1]) @ dagger(frame)
+
+    return Native(Gate("free", 1, 3, matrix), ranges, duration_ns=45.0)
+
+
 SETS: dict[str, list[Native]] = {
     "virtual z, quarter": [RZ, SX],
     "virtual z, quarter, half": [RZ, SX, X],
@@ -54,11 +65,14 @@ SETS: dict[str, list[Native]] = {
     "equatorial": [R],
     "equatorial, both ways over half the circle": [native("r", FULL, (0, PI))],
     "equatorial, negative": [native("r", (-PI, 0), (0, 2 * PI))],
-    "equatorial to 0.3": [native("r", (0, 0.3), FULL)],
-    "z to 0.2, quarter": [native("rz", (0, 0.2)), SX],
+    "equatorial to a half": [native("r", (0, 0.5), FULL)],
     "general": [U],
     "general, negative": [native("u", (-PI, 0), (0, 2 * PI), FULL)],
     "general, virtual z": [U, native("p", FULL, virtual=True)],
+    "general, any axis": [any_axis((0, PI), (0, PI), FULL)],
+    "general, any axis, negative": [any_axis((-PI, 0), (0, PI), (0, 2 * PI))],
+    "general, any axis of a half": [any_axis(FULL, (0, PI / 2), FULL)],
+    "general, any axis, virtual z": [any_axis((0, PI), (0, PI), FULL), RZ],
     "two parameters held, virtual z": [native("u2", FULL, FULL), RZ],
     "everything": [SX, native("rx", FULL), U, R, RZ, native("id")],
 }
@@ -246,6 +260,9 @@ def test_named_gates_with_virtual_z():
     assert counts([RZ, R], gates) == [0, 0, 0, 0, 1, 1, 1, 1, 1]
     assert counts([U], gates) == [0, 1, 1, 1, 1, 1, 1, 1, 1]
     assert counts([R], gates) == [0, 2, 2, 2, 2, 1, 1, 1, 1]
+    free = any_axis((0, PI), (0, PI), FULL)
+    assert counts([free], gates) == [0, 1, 1, 1, 1, 1, 1, 1, 1]
+    assert counts([RZ, free], gates) == [0, 0, 0, 0, 1, 1, 1, 1, 1]
 
 
 def quaternions(u: np.ndarray) -> np.ndarray:
@@ -313,6 +330,16 @@ def test_two_equatorial_pulses_have_the_least_total_angle():
         assert total == pytest.approx(brute, abs=1e-3)
 
 
+def test_short_ranges_take_many_equal_pulses():
+    natives = [native("rz", (0, 0.2)), SX]
+    plan = plan_one_qubit(natives)
+    u = np.concatenate([haar_unitary(2, 100, rng=9), cliffords()])
+    emission = plan.emit(plan.angles(u))
+    check_legal(plan, natives, emission)
+    # Each of up to a hundred pulses adds its rounding.
+    assert distance(rebuilt(plan, emission), u).max() < 5 * BOUND
+
+
 def test_tolerance_saves_pulses():
     plan = plan_one_qubit([RZ, SX, X])
     off = 2e-13
@@ -372,6 +399,7 @@ def test_the_axis_is_the_virtual_one():
         [native("r", (0, PI), (0, PI / 2))],
         [native("r", (0, 0.04), FULL)],
         [native("u", (0, 1.0), FULL, FULL)],
+        [any_axis((0, 1.0), (0, PI), FULL)],
         [native("rz", (0, 0.09)), SX],
         [RZ, Native(Gate("tilted", 1, 1, lambda p: rotation([0.01, 0, 1], p[..., 0])), (FULL,))],
         [RZ, Native(Gate("weak", 1, 0, lambda p: rotation("x", 0.01)))],

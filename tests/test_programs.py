@@ -158,6 +158,19 @@ def test_damaged_control_is_refused() -> None:
     assert "does not fit" in refused(source, output, proofs[:-1])
 
 
+def test_programs_are_judged_without_their_proofs() -> None:
+    source, result = compiled()
+    verdict = gw.check_program(source, result.program, device=LINE, initial=result.initial)
+    assert (verdict.initial, verdict.final) == (result.initial, result.final)
+    assert verdict.error_bound < 1e-9
+    branch = result.program.body.statements[place_of(result.program, If)]
+    assert isinstance(branch, If)
+    turned = If(branch.condition, branch.otherwise, branch.then)
+    changed = with_body(result.program, {place_of(result.program, If): turned})
+    with pytest.raises(ProofError, match="not equal"):
+        gw.check_program(source, changed, device=LINE, initial=result.initial)
+
+
 def test_a_damaged_gate_is_named_with_its_circuit() -> None:
     source, result = compiled()
     for number, circuit in enumerate(result.program.circuits()):

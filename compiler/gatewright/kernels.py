@@ -11,20 +11,25 @@ import gc
 import subprocess
 import sys
 from collections.abc import Callable
-from typing import Any
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from gatewright.devices import Device
 
 __all__ = ["load_kernels"]
 
 _OTHERS = "import gc; gc.disable(); import gatewright.mapping.search, gatewright.stages.windows"
 
 
-def load_kernels(tell: Callable[[str], None]) -> None:
+def load_kernels(tell: Callable[[str], None], device: Device | None = None) -> None:
     """Load every module with kernels, compiling them if need be.
 
     Parameters
     ----------
     tell : callable
         Called with one line if kernels have to be compiled.
+    device : Device, optional
+        What is compiled for; the solver for entanglers without closed forms is loaded only if it needs that.
     """
     import numba.core.event
 
@@ -56,6 +61,12 @@ def load_kernels(tell: Callable[[str], None]) -> None:
         for helper in helpers:
             helper.wait()
         import gatewright.pipeline  # noqa: F401
+        from gatewright.synthesis.native import native_set
+
+        if device is not None:
+            tools = native_set(device.gate_set).straight
+            if len(tools) > 1 or not all(tool.entangler.closed for tool in tools):
+                import gatewright.synthesis.interior  # noqa: F401
     finally:
         event.unregister("numba:compile", listener)
         if collecting:

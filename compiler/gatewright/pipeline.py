@@ -22,6 +22,7 @@ from gatewright.proof.dense import BINDINGS, dense_distance, dense_work
 from gatewright.proof.judge import judge
 from gatewright.result import ProgramResult, Result
 from gatewright.stages.draft import Draft, Settings, Stage
+from gatewright.stages.edges import PREFERENCES
 from gatewright.stages.expand import expand
 from gatewright.stages.fuse import fuse
 from gatewright.stages.parametrise import parametrise
@@ -56,6 +57,7 @@ def compile(  # noqa: A001
     seed: int = 0,
     tolerance: float = 1e-12,
     effort: str = "standard",
+    prefer: str = "uses",
     placement: Sequence[int] | None = None,
     final_placement: Sequence[int] | None = None,
     budget: Mapping[str, float] | None = None,
@@ -74,6 +76,7 @@ def compile(  # noqa: A001
     seed: int = 0,
     tolerance: float = 1e-12,
     effort: str = "standard",
+    prefer: str = "uses",
     placement: Sequence[int] | None = None,
     final_placement: Sequence[int] | None = None,
     budget: Mapping[str, float] | None = None,
@@ -91,6 +94,7 @@ def compile(  # noqa: A001
     seed: int = 0,
     tolerance: float = 1e-12,
     effort: str = "standard",
+    prefer: str = "uses",
     placement: Sequence[int] | None = None,
     final_placement: Sequence[int] | None = None,
     budget: Mapping[str, float] | None = None,
@@ -113,6 +117,9 @@ def compile(  # noqa: A001
         Nothing else is approximated. A matrix may be non-unitary by as much.
     effort : {"standard", "quick", "deep"}
         How long to search for placements.
+    prefer : {"uses", "fidelity", "duration"}
+        What is made least in each window where its qubits have several entanglers: the number of uses, the loss of
+        fidelity, or the duration. The others decide between equals. What the device does not state is not compared.
     placement : sequence of int, optional
         Physical qubit of each source qubit at the start; -1 leaves one free.
     final_placement : sequence of int, optional
@@ -151,6 +158,8 @@ def compile(  # noqa: A001
     """
     if effort not in EFFORTS:
         raise InputError(f"unknown effort '{str(effort)[:60]}'", hint=nearest_name(str(effort), EFFORTS))
+    if prefer not in PREFERENCES:
+        raise InputError(f"unknown preference '{str(prefer)[:60]}'", hint=nearest_name(str(prefer), PREFERENCES))
     if not 0 <= tolerance <= 1e-2:
         raise InputError("the tolerance is out of range", required="0 to 0.01", found=str(tolerance))
     clock = _Clock(progress)
@@ -164,6 +173,7 @@ def compile(  # noqa: A001
         seed=seed,
         tolerance=tolerance,
         effort=effort,
+        prefer=prefer,
         placement=_placement(placement, asked),
         final=_placement(final_placement, asked),
     )

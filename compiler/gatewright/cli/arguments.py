@@ -123,6 +123,13 @@ def _compile_options(parser: argparse.ArgumentParser) -> None:
         help="how long to search for placements (default: standard)",
     )
     parser.add_argument(
+        "--prefer",
+        choices=("uses", "fidelity", "duration"),
+        default="uses",
+        help="what is made least where qubits have several entanglers: their uses (the default), the loss of fidelity, "
+        "or the duration",
+    )
+    parser.add_argument(
         "--tolerance",
         type=_tolerance,
         default=1e-12,

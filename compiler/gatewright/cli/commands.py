@@ -53,10 +53,10 @@ def _say(line: str) -> None:
     print(line, file=sys.stderr, flush=True)
 
 
-def _prepare() -> None:
+def _prepare(device: Device | None = None) -> None:
     from gatewright.kernels import load_kernels
 
-    load_kernels(lambda line: _say(f"gatewright: {line}"))
+    load_kernels(lambda line: _say(f"gatewright: {line}"), device)
 
 
 @contextmanager
@@ -137,7 +137,7 @@ def _compiled(options: argparse.Namespace) -> Result | ProgramResult:
     device.require_room(source.circuit.n_qubits)
     given = source.circuit.bind(dict(options.set)) if options.set else source.circuit
     # What is wrong with the input has been said before this: the kernels take longer to load than all of that.
-    _prepare()
+    _prepare(device)
     from gatewright.pipeline import compile as compile_source
 
     with _progress() as progress:
@@ -147,6 +147,7 @@ def _compiled(options: argparse.Namespace) -> Result | ProgramResult:
             seed=options.seed,
             tolerance=options.tolerance,
             effort=options.effort,
+            prefer=options.prefer,
             placement=options.placement,
             budget=dict(options.budget),
             progress=progress,
@@ -244,13 +245,16 @@ def _check_program(options: argparse.Namespace, source: Source, output: Source, 
             "not equal: one of the two has classical control and the other has not",
             found=f"source {source.circuit!r}, output {output.circuit!r}",
         )
-    if not options.proof:
-        raise InputError(
-            "programs with classical control are checked with their proof only", required="--proof FILE, as compiled"
-        )
-    proofs = read_program_proof(options.proof)
+    proofs = read_program_proof(options.proof) if options.proof else None
     _prepare()
-    verdict = check_program(source.circuit, output.circuit, proofs, device=device, tolerance=options.tolerance)
+    verdict = check_program(
+        source.circuit,
+        output.circuit,
+        proofs,
+        device=device,
+        initial=output.qubit_map.initial if output.qubit_map else None,
+        tolerance=options.tolerance,
+    )
     return _tell(options, verdict, legality_checked=device is not None)
 
 

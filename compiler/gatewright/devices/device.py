@@ -64,6 +64,9 @@ class Device:
     gate_errors, gate_durations : mapping of str to ndarray
         For each native gate one value a qubit, shape (n_qubits,), or a row of `pairs`, shape (E,).
     description : str
+    gate_pairs : mapping of str to ndarray of bool
+        For the two-qubit gates that are not on all pairs: on which rows of `pairs` each is, shape (E,). In either
+        order for a gate that is symmetric in its qubits.
     """
 
     name: str
@@ -80,10 +83,16 @@ class Device:
     gate_errors: Mapping[str, Vector] = field(repr=False)
     gate_durations: Mapping[str, Vector] = field(repr=False)
     description: str = ""
+    gate_pairs: Mapping[str, NDArray[np.bool_]] = field(default_factory=dict, repr=False)
 
     def __post_init__(self) -> None:
         """Make the arrays read-only."""
-        for value in (*vars(self).values(), *self.gate_errors.values(), *self.gate_durations.values()):
+        for value in (
+            *vars(self).values(),
+            *self.gate_errors.values(),
+            *self.gate_durations.values(),
+            *self.gate_pairs.values(),
+        ):
             if isinstance(value, np.ndarray):
                 value.setflags(write=False)
 
@@ -209,9 +218,10 @@ class Device:
         For a gate that is symmetric in its qubits both orders are legal on a directed coupling too.
         """
         self._check_width(gate_name, 2)
+        pairs = self.pairs[self.gate_pairs[gate_name]] if gate_name in self.gate_pairs else self.pairs
         if not self.native(gate_name).symmetric:
-            return self.pairs
-        return np.unique(np.concatenate([self.pairs, self.pairs[:, ::-1]]), axis=0)
+            return pairs
+        return np.unique(np.concatenate([pairs, pairs[:, ::-1]]), axis=0)
 
     def allows(self, gate_name: str, qubits: ArrayLike) -> NDArray[np.bool_]:
         """Return whether a native gate is legal on each row of `qubits`, shape (k, w) → (k,)."""
@@ -287,8 +297,13 @@ class Device:
         if width == 1 or not len(rows):
             found = rows[:, 0] if len(rows) else np.zeros(0, dtype=np.int64)
             return np.where(self.active[found], found, -1)
+        here = np.append(self.gate_pairs.get(gate_name, np.ones(len(self.pairs), dtype=np.bool_)), False)
         places = self._find(rows[:, 0], rows[:, 1])
-        return np.where(places < 0, self._find(rows[:, 1], rows[:, 0]), places) if symmetric else places
+        places = np.where(here[places], places, -1)
+        if symmetric:
+            reverse = self._find(rows[:, 1], rows[:, 0])
+            places = np.where((places < 0) & here[reverse], reverse, places)
+        return places
 
     def _find(self, first: NDArray[np.int64], second: NDArray[np.int64]) -> NDArray[np.int64]:
         """Return the rows of `pairs`, -1 where there is none."""
@@ -332,6 +347,9 @@ def read_device(source: str | os.PathLike[str] | Mapping[str, Any]) -> Device:
             of a shape go from the smaller number to the larger).
         ``out_of_service``
             ``qubits`` and ``edges``, lists; an edge goes out in both directions.
+        ``gates.NAME.pairs``
+            For a two-qubit gate that is not on every pair of the coupling: the pairs that have it, in the order in
+            which they have it (either one for a gate that is symmetric in its qubits). A gate left out is on all.
         ``calibration``
             ``t1_ns``, ``t2_ns``, ``readout_error``, ``readout_duration_ns``, ``reset_duration_ns``: one number, or a
             list with one a qubit, nan where unknown. ``gates.NAME`` with ``error`` and ``duration_ns``, for a one-qubit
@@ -394,7 +412,7 @@ def read_any(source: str | os.PathLike[str]) -> Device | GateSet:
 
 def _read(data: object, file: Path | None) -> Device:
     where, folder = ("", Path()) if file is None else (shorten(file, 200), file.parent)
-    known = ("name", "description", "gate_set", "coupling", "out_of_service", "calibration")
+    known = ("name", "description", "gate_set", "coupling", "gates", "out_of_service", "calibration")
     table = Table(data, error=DeviceError, where=where, known=known)
     name = table.text("name")
     description = table.text("description", "", limit=2000)
@@ -463,6 +481,7 @@ def _assemble(table: Table, name: str, description: str, gate_set: GateSet, coup
             found = {key: column[kept] for key, column in found.items()}
         errors[gate_name], durations[gate_name] = found["error"], found["duration_ns"]
 
+    gate_pairs = {name: here[kept] for name, here in _gate_pairs(table, gate_set, pairs, n).items()}
     removed = np.unique(np.sort(pairs[~kept], axis=1), axis=0).astype(np.int32)
     return Device(
         name=name,
@@ -474,8 +493,38 @@ def _assemble(table: Table, name: str, description: str, gate_set: GateSet, coup
         gate_errors=errors,
         gate_durations=durations,
         description=description,
+        gate_pairs=gate_pairs,
         **columns,
     )
+
+
+def _gate_pairs(table: Table, gate_set: GateSet, pairs: Integers, n: int) -> dict[str, NDArray[np.bool_]]:
+    """Return on which rows of `pairs` each two-qubit gate is that is not on all of them."""
+    two = [gate.gate.name for gate in gate_set.two_qubit]
+    gates = table.table("gates", two)
+    keys = _keys_of(pairs, n)
+    found: dict[str, NDArray[np.bool_]] = {}
+    for name in gates.data:
+        entry = gates.table(name, ("pairs",))
+        entry.get("pairs")
+        here = np.zeros(len(pairs), dtype=np.bool_)
+        for k, pair in enumerate(entry.sequence("pairs")):
+            orders = [pair, _reverse(pair)] if gate_set.gates[name].symmetric else [pair]
+            places = [_pair_place(entry, f"pairs[{k}]", order, keys, n) for order in orders]
+            if max(places) < 0:
+                raise entry.fault(f"pairs[{k}]", f"a pair of the coupling that may carry '{name}'", pair)
+            here[[place for place in places if place >= 0]] = True
+        found[name] = here
+    if two and all(name in found for name in two):
+        served = np.any([found[name] for name in two], axis=0)
+        ends = {(min(a, b), max(a, b)) for a, b in pairs[served].tolist()}
+        for a, b in pairs.tolist():
+            if (min(a, b), max(a, b)) not in ends:
+                raise gates.fail(
+                    f"qubits {a} and {b} are coupled and have no two-qubit gate",
+                    required="a gate whose 'pairs' has them, or one without 'pairs', which is on all",
+                )
+    return found
 
 
 def _keys_of(pairs: Integers, n: int) -> NDArray[np.int64]:

@@ -269,9 +269,8 @@ def _fixed_windows(meant: _Side, made: _Side, step: Step, first: int, special: N
                 )
             qubits = circuit.qubits[circuit.offsets[rows[0]] : circuit.offsets[rows[0] + 1]]
             whole = np.array_equal(np.sort(qubits), np.sort(side.wires[span]))
-            row = rows[0]
-            values = circuit.parameters[circuit.parameter_offsets[row] : circuit.parameter_offsets[row + 1]].tolist()
-            facts.append((circuit.table[circuit.op[row]].name, int(circuit.link[row]), values, whole))
+            values = circuit.parameters[slice(*circuit.parameter_offsets[rows[0] : rows[0] + 2])].tolist()
+            facts.append((circuit.table[circuit.op[rows[0]]].name, int(circuit.link[rows[0]]), values, whole))
         (name, bit, values, whole), (other_name, other_bit, other_values, other_whole) = facts
         same = (name, bit, values) == (other_name, other_bit, other_values) and whole and other_whole
         if not same or not np.array_equal(step.entry[span], step.exit[span]):

@@ -14,9 +14,12 @@ from collections.abc import Sequence
 from dataclasses import replace
 from typing import TYPE_CHECKING
 
-from gatewright.errors import ProofError
+from gatewright.circuit import Circuit
+from gatewright.errors import ProofError, UndecidedError
 from gatewright.program import Assign, Block, If, Leave, Program, Statement, While
 from gatewright.proof.checker import check_proof
+from gatewright.proof.judge import judge
+from gatewright.proof.legality import check_legal
 from gatewright.proof.windows import Proof, Verdict
 
 if TYPE_CHECKING:
@@ -30,9 +33,10 @@ Places = tuple[int, ...]
 def check_program(
     source: Program,
     output: Program,
-    proofs: Sequence[Proof],
+    proofs: Sequence[Proof] | None = None,
     *,
     device: Device | None = None,
+    initial: Sequence[int] | None = None,
     tolerance: float = 1e-9,
 ) -> Verdict:
     """Check the proofs of a program's circuits and the joins between them.
@@ -40,10 +44,13 @@ def check_program(
     Parameters
     ----------
     source, output : Program
-    proofs : sequence of Proof
-        One for each circuit, in the order of the text.
+    proofs : sequence of Proof, optional
+        One for each circuit, in the order of the text. Without them every circuit is judged by
+        `gatewright.proof.judge.judge`.
     device, tolerance
         As for `gatewright.proof.check_proof`.
+    initial : sequence of int, optional
+        Without proofs: output qubit of each source qubit at the start; found where it is not given.
 
     Returns
     -------
@@ -55,39 +62,42 @@ def check_program(
     ------
     ProofError
         Naming the part of the program.
+    UndecidedError
+        Without proofs, and no method could tell.
     """
     for what in ("n_bits", "variables"):
         mine, other = getattr(source, what), getattr(output, what)
         if mine != other:
             raise ProofError("not equal: the classical variables differ", required=str(mine), found=str(other))
-    return _Walk(proofs, device, tolerance).program(source, output)
+    start = None if initial is None else tuple(int(q) for q in initial)
+    return _Walk(proofs, device, tolerance).program(source, output, start)
 
 
 class _Walk:
     """One walk through two programs side by side."""
 
-    def __init__(self, proofs: Sequence[Proof], device: Device | None, tolerance: float) -> None:
-        self.proofs = list(proofs)
+    def __init__(self, proofs: Sequence[Proof] | None, device: Device | None, tolerance: float) -> None:
+        self.proofs = None if proofs is None else list(proofs)
         self.device = device
         self.tolerance = tolerance
         self.parts: list[Verdict] = []
         self.round_bound = 0.0
         self.early: Places | None = None  # where the qubits are when the program ends before its end
 
-    def program(self, source: Program, output: Program) -> Verdict:
-        if len(self.proofs) != sum(1 for _ in source.circuits()):
+    def program(self, source: Program, output: Program, start: Places | None) -> Verdict:
+        if self.proofs is not None and len(self.proofs) != sum(1 for _ in source.circuits()):
             raise ProofError(
                 "the proof does not fit the program",
                 required=f"{sum(1 for _ in source.circuits())} circuits",
                 found=str(len(self.proofs)),
             )
         begin: list[Places] = []
-        final, bound = self.block(source.body, output.body, None, None, begin)
+        final, bound = self.block(source.body, output.body, start, None, begin)
         if final is None:
             final = self.early
         assert final is not None
         if self.early is not None and self.early != final:
-            raise ProofError("not equal: a run that ends early leaves the qubits on other places", found=_listed(final))
+            raise self.apart("a run that ends early leaves the qubits on other places", self.early, final)
         worst = max(self.parts, key=lambda part: part.worst_distance)
         return replace(
             worst,
@@ -98,6 +108,23 @@ class _Walk:
             method=f"{worst.method}; {len(self.parts)} circuits and the joins between them",
             round_bound=self.round_bound,
         )
+
+    def part(self, meant: Circuit, made: Circuit, number: int, place: Places | None) -> Verdict:
+        """Check one circuit by its proof, or judge it without."""
+        if self.proofs is not None:
+            return check_proof(meant, made, self.proofs[number], device=self.device, tolerance=self.tolerance)
+        if self.device is not None:
+            check_legal(made, self.device)
+        return judge(meant, made, initial=place, tolerance=self.tolerance)
+
+    def apart(self, what: str, required: Places, found: Places) -> ProofError:
+        """Return the error of a join; without proofs other places may have been possible too."""
+        wanted, is_now = _listed(required), _listed(found)
+        if self.proofs is None:
+            hint = "compile with --proof and check with that proof"
+            what = f"undecided: as far as can be told without a proof, {what}"
+            return UndecidedError(what, required=wanted, found=is_now, hint=hint)
+        return ProofError(f"not equal: {what}", required=wanted, found=is_now)
 
     def block(
         self, source: Block, output: Block, place: Places | None, loop: Places | None, begin: list[Places]
@@ -116,16 +143,12 @@ class _Walk:
         for meant, made in circuits:
             number = len(self.parts)
             try:
-                part = check_proof(meant, made, self.proofs[number], device=self.device, tolerance=self.tolerance)
+                part = self.part(meant, made, number, place)
             except ProofError as problem:
                 problem.what = f"{problem.what} (circuit {number} of the program)"
                 raise
             if place is not None and part.initial != place:
-                raise ProofError(
-                    f"not equal: circuit {number} of the program does not begin where its qubits are",
-                    required=_listed(place),
-                    found=_listed(part.initial),
-                )
+                raise self.apart(f"circuit {number} does not begin where its qubits are", place, part.initial)
             if not begin:
                 begin.append(part.initial)
             self.parts.append(part)
@@ -154,20 +177,12 @@ class _Walk:
                 first, a = self.block(then, then_made, place, loop, [place])
                 second, b = self.block(otherwise, otherwise_made, place, loop, [place])
                 if first is not None and second is not None and first != second:
-                    raise ProofError(
-                        "not equal: the branches of an 'if' leave the qubits on different places",
-                        required=_listed(first),
-                        found=_listed(second),
-                    )
+                    raise self.apart("the branches of an 'if' leave the qubits on different places", first, second)
                 return (first if first is not None else second), max(a, b)
             case While(condition, body), While(other, made) if condition == other:
                 end, bound = self.block(body, made, place, place, [place])
                 if end is not None and end != place:
-                    raise ProofError(
-                        "not equal: a round of a loop does not leave the qubits where it found them",
-                        required=_listed(place),
-                        found=_listed(end),
-                    )
+                    raise self.apart("a round of a loop does not leave the qubits where it found them", place, end)
                 self.round_bound += bound
                 return place, bound
         raise ProofError(
@@ -181,11 +196,7 @@ class _Walk:
         if word == "end" and self.early is None:
             self.early = wanted = place
         if wanted != place:
-            raise ProofError(
-                f"not equal: a '{word}' leaves the qubits on other places than the rest",
-                required=_listed(wanted or ()),
-                found=_listed(place),
-            )
+            raise self.apart(f"a '{word}' leaves the qubits on other places than the rest", wanted or (), place)
 
 
 def _listed(places: Places) -> str:

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from gatewright.circuit import Circuit
 from gatewright.errors import CircuitError, ProofError, UndecidedError
-from gatewright.gates import BARRIER, MEASURE
+from gatewright.gates import MEASURE
 from gatewright.proof.checker import check_proof
 from gatewright.proof.dense import (
     BINDINGS,
@@ -334,7 +334,7 @@ class _Task:
 
 
 def _restricted(circuit: Circuit, rank: dict[int, int]) -> Circuit:
-    kept = circuit.take(np.flatnonzero(~circuit.is_named(BARRIER.name)))
+    kept = circuit.take(np.flatnonzero(circuit.is_unitary))
     qubits = np.array([rank[q] for q in kept.qubits.tolist()], dtype=np.int32)
     return replace(kept, n_qubits=len(rank), qubits=qubits, qubit_registers=())
 

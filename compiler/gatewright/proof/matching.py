@@ -453,6 +453,12 @@ class _Search:
             same = meant.table[meant.op[other]].name == name and len(self.meant.wires[facing]) == len(places)
             if not same or (name == MEASURE.name and meant.link[other] != bit):
                 continue
+            held, wanted = (
+                circuit.parameters[slice(*circuit.parameter_offsets[k : k + 2])]
+                for circuit, k in ((made, row), (meant, other))
+            )
+            if not np.array_equal(held, wanted):
+                continue
             their = self.meant.wires[facing]
             if any(self._ahead(w) != facing for w in their):
                 continue

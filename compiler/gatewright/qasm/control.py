@@ -15,6 +15,7 @@ from gatewright.classical import Bits, Expression, Literal, Name, Operation, dep
 from gatewright.errors import shorten
 from gatewright.program import Assign, Leave, Mark
 from gatewright.qasm.evaluation import STATEMENT, Pending, Places, Variable
+from gatewright.qasm.hidden import FIRST_HIDDEN, HiddenBits
 from gatewright.qasm.operations import Operations
 from gatewright.qasm.scope import RESERVED
 from gatewright.qasm.unknowns import as_parameter, as_tree, names_of, reads_bits
@@ -23,7 +24,7 @@ from gatewright.qasm.values import Array, Kind, Value, cast, expression
 if TYPE_CHECKING:
     from gatewright.qasm.reader import Reader
 
-__all__ = ["Control", "End", "Return"]
+__all__ = ["Control", "End", "Return", "assigned_names", "parts_of"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -60,10 +61,42 @@ class Control(Operations):
         self.depth = 0  # blocks open at the moment that run or not depending on the run
         self.loops: list[tuple[bool, int]] = []  # open loops: whether each is kept, and the depth outside it
         self.stored: set[int] = set()  # bits that were assigned at run time
+        self.hidden_bits = HiddenBits()
 
     def block(self, statements: Sequence[Any], names: dict[str, Any] | None = None) -> Left:
         """Carry out the statements of a block in a frame of their own; the interpreter does."""
         raise NotImplementedError
+
+    # ---------------------------------------------------------------- bits that have no register
+
+    def take_bits(self, number: int, *, single: bool, node: Any) -> Places:
+        """Take bits of our own, until the statement or the block at hand ends."""
+        self.charge(number, node)
+        return Places(self.hidden_bits.take(number, self.depth), single, False)
+
+    def release_bits(self, top: int) -> None:
+        """Give back bits of our own that were taken since `top` were in use."""
+        for place in self.hidden_bits.release(top):
+            self.bits.pop(place, None)
+
+    def measured(self, pending: Pending, node: Any) -> Value:
+        """Measure into bits of our own, and return their value."""
+        sources = pending.qubits
+        places = self.take_bits(len(sources.indices), single=sources.single, node=node)
+        self.measurement(sources, places, node)
+        return self.read_bits(places, node)
+
+    def acts(self, node: Any) -> bool:
+        """Whether evaluating an expression does something to qubits; the interpreter tells."""
+        raise NotImplementedError
+
+    def measures(self, node: Any) -> bool:
+        """Whether evaluating an expression measures; the interpreter tells."""
+        raise NotImplementedError
+
+    def level(self, places: Sequence[int]) -> int:
+        """Return the blocks around the declaration of bits that run or not depending on the run."""
+        return min(self.hidden_bits.levels[place] if place >= FIRST_HIDDEN else 0 for place in places)
 
     # ---------------------------------------------------------------- marks, and what they do to names
 
@@ -120,7 +153,7 @@ class Control(Operations):
 
     def forget(self, statements: Sequence[Any], node: Any) -> None:
         """Let go of what is known of the variables and bits that statements assign."""
-        for name in dict.fromkeys(_assigned(statements)):
+        for name in dict.fromkeys(assigned_names(statements)):
             try:
                 found = self.find(name, node)
             except Exception:  # declared inside the statements
@@ -214,6 +247,9 @@ class Control(Operations):
 
     def do_WhileLoop(self, node: Any) -> Left:
         """Unroll ``while`` as long as its condition is known, and keep it from where it is not."""
+        if self.acts(node.while_condition):
+            # Each round does so anew, and a condition that is kept has no place for that.
+            node = _with_condition_inside(node)
         while True:
             value = self.scalar(node.while_condition)
             if value.is_open or (value.data and self.depends(node)):
@@ -233,16 +269,18 @@ class Control(Operations):
 
     def depends(self, node: Any) -> bool:
         """Whether a loop, whose condition is known before its first round, depends on the run later."""
-        changed = {name for name in _open_targets(node.block, self.is_open_name)}
+        changed = {name for name in _open_targets(node.block, self.is_open_name, self.measures)}
 
         def is_open(expression: Any) -> bool:
-            return any(name in changed or self.is_open_name(name, at) for name, at in _names(expression))
+            return self.measures(expression) or any(
+                name in changed or self.is_open_name(name, at) for name, at in _names(expression)
+            )
 
         if is_open(node.while_condition):
             return True
-        branches = [part for part in _parts(node.block) if type(part).__name__ == "BranchingStatement"]
+        branches = [part for part in parts_of(node.block) if type(part).__name__ == "BranchingStatement"]
         return any(
-            is_open(part.condition) and any(type(inner).__name__ in LEAVING for inner in _parts([part]))
+            is_open(part.condition) and any(type(inner).__name__ in LEAVING for inner in parts_of([part]))
             for part in branches
         )
 
@@ -253,7 +291,7 @@ class Control(Operations):
         except Exception:  # declared inside the loop
             return False
         if isinstance(found, Places):
-            return not found.quantum
+            return not found.quantum and not all(place in self.bits for place in found.indices)
         return isinstance(found, Variable) and isinstance(found.value, Value) and found.value.is_open
 
     def keep_loop(self, node: Any) -> Left:
@@ -320,7 +358,7 @@ class Control(Operations):
         raise End
 
 
-def _parts(nodes: Iterable[Any]) -> Iterator[Any]:
+def parts_of(nodes: Iterable[Any]) -> Iterator[Any]:
     """Yield all nodes of syntax trees."""
     waiting = list(nodes)
     while waiting:
@@ -334,7 +372,7 @@ def _parts(nodes: Iterable[Any]) -> Iterator[Any]:
 
 def _names(node: Any) -> Iterator[tuple[str, Any]]:
     """Yield the names in a syntax tree."""
-    return ((part.name, part) for part in _parts([node]) if type(part).__name__ == "Identifier")
+    return ((part.name, part) for part in parts_of([node]) if type(part).__name__ == "Identifier")
 
 
 def _target(node: Any) -> list[str]:
@@ -342,11 +380,27 @@ def _target(node: Any) -> list[str]:
     return [node.name.name if type(node).__name__ == "IndexedIdentifier" else node.name]
 
 
-def _open_targets(statements: Sequence[Any], is_open: Callable[[str, Any], bool]) -> set[str]:
+def _with_condition_inside(loop: Any) -> Any:
+    """Return ``while (true) { if (!condition) break; ... }`` for a loop."""
+    from openqasm3 import ast
+
+    def at(node: Any, span: Any) -> Any:
+        node.span = span
+        return node
+
+    condition, span = loop.while_condition, loop.while_condition.span
+    inverted = at(ast.UnaryExpression(ast.UnaryOperator["!"], condition), span)
+    leaving = at(ast.BranchingStatement(inverted, [at(ast.BreakStatement(), span)], []), span)
+    return at(ast.WhileLoop(at(ast.BooleanLiteral(True), span), [leaving, *loop.block]), loop.span)
+
+
+def _open_targets(
+    statements: Sequence[Any], is_open: Callable[[str, Any], bool], measures: Callable[[Any], bool]
+) -> set[str]:
     """Return the names that statements may give a value that depends on a measurement."""
     found: set[str] = set()
     assignments = []
-    for part in _parts(statements):
+    for part in parts_of(statements):
         if type(part).__name__ == "QuantumMeasurementStatement" and part.target is not None:
             found.update(_target(part.target))
         elif type(part).__name__ == "ClassicalAssignment":
@@ -357,15 +411,14 @@ def _open_targets(statements: Sequence[Any], is_open: Callable[[str, Any], bool]
     while size < len(found):
         size = len(found)
         for name, value in assignments:
-            measured = any(type(inner).__name__ == "QuantumMeasurement" for inner in _parts([value]))
-            if measured or any(read in found or is_open(read, at) for read, at in _names(value)):
+            if measures(value) or any(read in found or is_open(read, at) for read, at in _names(value)):
                 found.add(name)
     return found
 
 
-def _assigned(statements: Sequence[Any]) -> Iterator[str]:
+def assigned_names(statements: Sequence[Any]) -> Iterator[str]:
     """Yield the names that statements assign."""
-    for part in _parts(statements):
+    for part in parts_of(statements):
         if type(part).__name__ == "ClassicalAssignment":
             yield from _target(part.lvalue)
         elif type(part).__name__ == "QuantumMeasurementStatement" and part.target is not None:

@@ -18,7 +18,7 @@ import numpy as np
 from gatewright.classical import Bits, Name
 from gatewright.errors import ExpressionError, shorten
 from gatewright.program import Assign
-from gatewright.qasm.control import End, Return
+from gatewright.qasm.control import End, Return, assigned_names, parts_of
 from gatewright.qasm.evaluation import MAX_ELEMENTS, STATEMENT, Pending, Places, Variable
 from gatewright.qasm.grammar import MAX_STATEMENT, parse_statement, statement_end
 from gatewright.qasm.scope import MAX_QUBITS, NAME, RESERVED
@@ -104,6 +104,7 @@ class FullLane(Timing):
         self.phase = 0.0
         self.frames, self.enclosed, self.calls = [], False, 0
         self.depth, self.loops = 0, []
+        self.release_bits(0)
         try:
             if self.execute(node) == "gone":
                 return end, True
@@ -164,22 +165,31 @@ class FullLane(Timing):
             if method is None:
                 raise self.unsupported(f"this statement ({name})", node)
             self.methods[type(node)] = method
+        top = self.hidden_bits.top
         try:
-            return method(node)
+            left = method(node)
         except ExpressionError as problem:
             raise self.fault(problem, node) from None
+        if not isinstance(left, Return) and type(node).__name__ != "ClassicalDeclaration":
+            self.release_bits(top)
+        return left
 
     def block(self, statements: Sequence[Any], names: dict[str, Any] | None = None) -> str | Return | None:
         """Carry out the statements of a block in a frame of their own."""
         self.frames.append(names or {})
+        top = self.hidden_bits.top
+        left: str | Return | None = None
         try:
             for statement in statements:
                 left = self.execute(statement)
                 if left is not None:
-                    return left
-            return None
+                    break
         finally:
             self.frames.pop()
+        # What is returned may be read from bits of the block.
+        if not isinstance(left, Return):
+            self.release_bits(top)
+        return left
 
     def do_Pragma(self, node: Any) -> None:
         """Pass over a pragma."""
@@ -192,8 +202,6 @@ class FullLane(Timing):
         """Leave a subroutine."""
         if node.expression is None:
             return Return(None)
-        if type(node.expression).__name__ == "QuantumMeasurement":
-            return Return(Pending(self.places(node.expression.qubit)))
         real = type(self.returning).__name__ in ("FloatType", "AngleType")
         return Return(self.evaluate(node.expression, real=real))
 
@@ -247,21 +255,31 @@ class FullLane(Timing):
 
     def do_ClassicalDeclaration(self, node: Any) -> None:
         """Declare a variable, or bits."""
-        if type(node.type).__name__ != "BitType" or self.frames:
-            if type(node.init_expression).__name__ == "QuantumMeasurement":
-                raise self.unsupported("a measurement into a bit of a block or a subroutine", node)
+        if type(node.type).__name__ != "BitType":
+            top = self.hidden_bits.top
             self.variable(node, constant=False)
+            self.release_bits(top)
             return
-        value = None
         given = node.init_expression
-        measured = type(given).__name__ == "QuantumMeasurement"
-        if given is not None and not measured:
-            value = self.evaluate(given)
-        self.register(node.identifier, node.type.size, quantum=False)
-        if measured:
-            value = Pending(self.places(given.qubit))
+        if not self.frames:
+            value = None if given is None else self.evaluate(given)
+            self.register(node.identifier, node.type.size, quantum=False)
+            if value is not None:
+                self.set_bits(self.places(node.identifier, quantum=False), value, node)
+            return
+        size = None if node.type.size is None else self.integer(node.type.size, 1, MAX_QUBITS)
+        self.local_bits(node.identifier, size, None if given is None else lambda: self.evaluate(given))
+
+    def local_bits(self, identifier: Any, size: int | None, given: Callable[[], Any] | None) -> None:
+        """Declare bits of a block; without a value they begin as 0, as all bits do."""
+        places = self.take_bits(size or 1, single=size is None, node=identifier)
+        top = self.hidden_bits.top
+        self.bits.update(dict.fromkeys(places.indices, 0))
+        value = None if given is None else given()
+        self.declare(identifier.name, places, "bits", identifier)
         if value is not None:
-            self.set_bits(self.places(node.identifier, quantum=False), value, node)
+            self.set_bits(places, value, identifier)
+        self.release_bits(top)
 
     def variable(self, node: Any, *, constant: bool) -> Variable:
         """Declare a variable or a constant with its value."""
@@ -293,7 +311,7 @@ class FullLane(Timing):
     def assigned(self, kind: Kind, value: Any, node: Any) -> Value:
         """Return a value as a variable of a type takes it."""
         if isinstance(value, Pending):
-            raise self.unsupported("a variable that depends on a measurement", node)
+            value = self.measured(value, node)
         if isinstance(value, Array):
             raise self.error("an array cannot stand here", node, required=f"a value of type {kind}")
         try:
@@ -323,7 +341,9 @@ class FullLane(Timing):
             places = self.places(node.lvalue, quantum=False)
             value = self.evaluate(node.rvalue)
             if op:
-                if isinstance(value, Array | Pending):
+                if isinstance(value, Pending):
+                    value = self.measured(value, node)
+                if isinstance(value, Array):
                     raise self.unsupported("this assignment", node)
                 value = binary(op, self.read_bits(places, node.lvalue), value)
             self.set_bits(places, value, node)
@@ -336,9 +356,13 @@ class FullLane(Timing):
         if not indexed and isinstance(found.value, Array) and not op:
             found.value = self.array(found.kind, _shape(found.value), node.rvalue)
             return
+        if indexed and isinstance(found.value, Array) and self.set_part(found, found.value, node, op):
+            return
         value = self.evaluate(node.rvalue, real=real)
-        if isinstance(value, Array | Pending):
-            raise self.unsupported("assigning an array or a measurement here", node)
+        if isinstance(value, Pending):
+            value = self.measured(value, node)
+        if isinstance(value, Array):
+            raise self.unsupported("assigning an array here", node)
         old = found.value
         if not indexed:
             if op:
@@ -348,6 +372,36 @@ class FullLane(Timing):
             self.assign(found, name, self.assigned(found.kind, value, node.rvalue), node)
             return
         self.set_element(found, node, value, op, real)
+
+    def set_part(self, variable: Variable, holder: Array, node: Any, op: str) -> bool:
+        """Assign to a row or a slice of an array; return whether the assignment is to one."""
+        flat = [part for index in node.lvalue.indices for part in (index if isinstance(index, list) else [index])]
+        for number, part in enumerate(flat):
+            chosen, single = self.positions(len(holder.items), part, node.lvalue)
+            item = holder.items[chosen[0]] if single else None
+            if number < len(flat) - 1:
+                if item is None:
+                    raise self.unsupported("an index behind a slice of an array", node)
+                if not isinstance(item, Array):
+                    raise self.error("too many indices", node.lvalue)
+                holder = item
+                continue
+            if single and not isinstance(item, Array):
+                return False
+            if op or self.depth > variable.depth:
+                what = f"'{op}='" if op else "assigning, depending on a measurement,"
+                raise self.unsupported(f"{what} to a part of an array", node)
+            wanted = _shape(item) if isinstance(item, Array) else [len(chosen), *_shape(holder)[1:]]
+            made = self.array(variable.kind, wanted, node.rvalue)
+            if _shape(made) != wanted:
+                required, found = (" by ".join(map(str, sizes)) for sizes in (wanted, _shape(made)))
+                raise self.error("an array of another size or type", node.rvalue, required=required, found=found)
+            if isinstance(item, Array):
+                item.items[:] = made.items
+            else:
+                for place, value in zip(chosen, made.items, strict=True):
+                    holder.items[place] = value
+        return True
 
     def set_element(self, variable: Variable, node: Any, value: Value, op: str, real: bool) -> None:
         """Assign to an element of an array, or to bits of a variable."""
@@ -375,17 +429,14 @@ class FullLane(Timing):
             variable.value = cast(Value(Kind("int"), data), holder.kind)
             return
         for number, part in enumerate(flat):
-            chosen, single = self.positions(len(holder.items), part, node.lvalue)
-            if not single:
-                raise self.unsupported("assigning to a slice of an array", node)
+            # `set_part` has seen to it that an index is a single one, and the last of an element.
+            chosen, _ = self.positions(len(holder.items), part, node.lvalue)
             item = holder.items[chosen[0]]
             if number < len(flat) - 1:
-                if not isinstance(item, Array):
-                    raise self.error("too many indices", node.lvalue)
+                assert isinstance(item, Array)
                 holder = item
-            elif isinstance(item, Array):
-                raise self.unsupported("assigning to a row of an array", node)
             else:
+                assert isinstance(item, Value)
                 value = binary(op, item, value, real=real) if op else value
                 holder.items[chosen[0]] = self.assigned(variable.kind, value, node.rvalue)
 
@@ -400,7 +451,7 @@ class FullLane(Timing):
         # Measurements that the fast lane remembers would pass by what is known from here on.
         self.reader.statements.clear()
         value = self.assigned(kind, value, node)
-        if value.is_open or self.depth:
+        if value.is_open or self.depth > self.level(places.indices):
             self.mark("assign", Assign(Bits(tuple(places.indices), places.single), expression(value)), node)
             self.stored.update(places.indices)
             for place in places.indices:
@@ -409,7 +460,46 @@ class FullLane(Timing):
         for k, place in enumerate(places.indices):
             self.bits[place] = int(value.data) >> k & 1
 
+    def do_QuantumMeasurementStatement(self, node: Any) -> None:
+        """Measure into bits, or into a variable by way of bits of our own."""
+        if node.target is not None:
+            name = node.target.name
+            if isinstance(self.find(name if isinstance(name, str) else name.name, node.target), Variable):
+                plain = SimpleNamespace(lvalue=node.target, op=SimpleNamespace(name="="), rvalue=node.measure)
+                plain.span = node.span
+                self.do_ClassicalAssignment(plain)
+                return
+        super().do_QuantumMeasurementStatement(node)
+
     # ---------------------------------------------------------------- subroutines
+
+    def acts(self, node: Any) -> bool:
+        """Whether evaluating an expression calls a subroutine that has qubits."""
+        return any(
+            type(argument).__name__ == "QuantumArgument"
+            for called in self.called(node)
+            for argument in called.node.arguments
+        )
+
+    def called(self, node: Any) -> list[Subroutine]:
+        """Return the subroutines that an expression calls itself."""
+        calls = [part for part in parts_of([node]) if type(part).__name__ == "FunctionCall"]
+        found = [self.globals.get(call.name.name) for call in calls]
+        return [known for known in found if isinstance(known, Subroutine)]
+
+    def measures(self, node: Any) -> bool:
+        """Whether evaluating an expression measures, if only in a subroutine."""
+        seen: set[str] = set()
+        waiting = [node]
+        while waiting:
+            part = waiting.pop()
+            if any(type(inner).__name__ == "QuantumMeasurement" for inner in parts_of([part])):
+                return True
+            for known in self.called(part):
+                if known.node.name.name not in seen:
+                    seen.add(known.node.name.name)
+                    waiting.append(known.node.body)
+        return False
 
     def do_SubroutineDefinition(self, node: Any) -> None:
         """Declare a subroutine."""
@@ -447,10 +537,14 @@ class FullLane(Timing):
             raise self.error("subroutines call each other too deeply", node, required=f"at most {MAX_CALLS} levels")
         self.charge(STATEMENT, node)
         names: dict[str, Any] = {}
+        changed = set(assigned_names(definition.body))
         for formal, given in zip(definition.arguments, node.arguments, strict=True):
             if formal.name.name in names or formal.name.name in RESERVED:
                 raise self.error(f"'{shorten(formal.name.name)}' cannot name an argument", node)
             names[formal.name.name] = self.argument(formal, given, known)
+            bound = names[formal.name.name]
+            if isinstance(bound, Variable) and bound.kind.name == "bit" and formal.name.name in changed:
+                names[formal.name.name] = self.own_bits(bound, formal)
         taken = [place for thing in names.values() if isinstance(thing, Places) for place in thing.indices]
         if len(set(taken)) < len(taken):
             raise self.error("a qubit is repeated", node, required="distinct qubits")
@@ -463,9 +557,7 @@ class FullLane(Timing):
             if definition.return_type is None or value is None:
                 return None
             kind = self.kind(definition.return_type)
-            if isinstance(value, Pending):
-                if kind.name != "bit":
-                    raise self.unsupported("a value that depends on a measurement", definition)
+            if isinstance(value, Pending) and kind.name == "bit":
                 return value
             return self.assigned(kind, value, definition)
         finally:
@@ -503,6 +595,14 @@ class FullLane(Timing):
             mutable = formal.access is not None and formal.access.name == "mutable"
             return Variable(kind, value if mutable else value.copy(), not mutable, self.depth)
         return Variable(kind, self.assigned(kind, value, given), depth=self.depth)
+
+    def own_bits(self, argument: Variable, node: Any) -> Places | Variable:
+        """Return bits of a subroutine's own with the value of an argument that it assigns to."""
+        if not isinstance(argument.value, Value):
+            return argument
+        places = self.take_bits(argument.kind.width or 1, single=not argument.kind.width, node=node)
+        self.set_bits(places, argument.value, node)
+        return places
 
 
 def _blank(kind: Kind, sizes: Sequence[int]) -> Array:

@@ -318,9 +318,6 @@ class Operations(Evaluator):
         if node.target is None:
             self.unread(self.places(node.measure.qubit), node)
             return
-        found = self.find(node.target.name if isinstance(node.target.name, str) else node.target.name.name, node.target)
-        if isinstance(found, Variable):
-            raise self.unsupported("a measurement into a bit of a block or a subroutine", node)
         self.measurement(self.places(node.measure.qubit), self.places(node.target, quantum=False), node)
 
     def unread(self, sources: Places, node: Any) -> None:

@@ -27,6 +27,7 @@ from gatewright.program import Mark, Program, split_at_marks
 from gatewright.qasm.bodies import read_definition
 from gatewright.qasm.columns import MAX_OPERANDS, circuit
 from gatewright.qasm.definitions import Definition, equals, expand, same_gate
+from gatewright.qasm.hidden import placed
 from gatewright.qasm.lanes import CONST, EITHER, FAST, beyond, lane, leading_word
 from gatewright.qasm.library import BUILT_IN, LIBRARIES, LIBRARY_FILES
 from gatewright.qasm.scanner import Scanner, pays
@@ -203,6 +204,8 @@ class Reader:
         if self.full is not None and self.full.bits:
             self.full.finish()
             order.append(self.finish(None))
+        if self.full is not None and self.full.hidden_bits.levels:
+            self.place_hidden_bits()
         if scanner is None or not scanner.count:
             flat = circuit(self, np.array(order, dtype=np.int64))
         else:
@@ -224,6 +227,15 @@ class Reader:
             qubit_registers=flat.qubit_registers,
             bit_registers=flat.bit_registers,
         )
+
+    def place_hidden_bits(self) -> None:
+        """Give bits that have no register one behind all others."""
+        scope = self.scope
+        self.link, self.contents, number = placed(self.link, self.contents, scope.n_bits)
+        if number:
+            taken = {*self.variables, *scope.declared}
+            name = next(name for k in count() if (name := f"local_bits{k or ''}") not in taken)
+            scope.add_register(name, number, 0, quantum=False)
 
     def mark(self, mark: Mark) -> None:
         """Append a mark of control flow."""

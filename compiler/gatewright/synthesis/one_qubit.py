@@ -4,7 +4,7 @@ What the gates do is found from their matrices (`gatewright.synthesis.recognise`
 angles (Nielsen and Chuang, theorem 4.1); one or two fixed quarter turns between rotations, which cost nothing where
 they are virtual (McKay et al., PRA 96, 022330 (2017)); one equatorial pulse before a rotation about the pole; two
 equatorial pulses of least total angle; one general rotation. For axes and pulses at other angles:
-`gatewright.synthesis.tilted`.
+`gatewright.synthesis.tilted`; pulses about any axis: `gatewright.synthesis.free_axis`.
 """
 
 from __future__ import annotations
@@ -20,6 +20,7 @@ from gatewright.errors import MatrixError, UnsupportedError
 from gatewright.gates import Gate
 from gatewright.linalg import haar_unitary
 from gatewright.synthesis.euler import ROUNDING, axis_vector, euler_angles, fewest_turns, quaternion, rotation, settle
+from gatewright.synthesis.free_axis import free_axis_ways
 from gatewright.synthesis.recognise import SAME, Equatorial, Fixed, General, Kind, NativeOneQubit, Turn, recognise
 from gatewright.synthesis.tilted import TwoTilted, tilted_ways, too_weak
 
@@ -481,7 +482,7 @@ def plan_one_qubit(gates: Sequence[NativeOneQubit], *, passing: Sequence[ArrayLi
     [0, 1, 2]
     """
     kinds = [recognise(index, native) for index, native in enumerate(gates)]
-    ways = [*_ways(kinds), *tilted_ways(kinds, [native.virtual for native in gates])]
+    ways = [*_ways(kinds), *free_axis_ways(kinds), *tilted_ways(kinds, [native.virtual for native in gates])]
     plans = [_planned(way, gates) for way in ways]
     if not plans:
         found = "; ".join(f"'{native.gate.name}' {kind.describe()}" for native, kind in zip(gates, kinds, strict=True))

@@ -2,7 +2,7 @@
 
 The kinds, with σ the Pauli vector and R_n(t) = exp(-i t/2 n·σ), all up to phase: a fixed rotation; a rotation
 R_n(t) about one axis; an equatorial rotation R_n(φ) R_m(θ) R_n(-φ), m orthogonal to n; a general one,
-R_n(a) R_m(b) R_n(c).
+R_n(a) R_m(b) R_n(c); one about any axis, R_v(θ) with v at the angles ϑ from n and φ about n.
 Each angle is an affine function of one parameter. What is found is verified over the parameter range.
 """
 
@@ -20,7 +20,7 @@ from gatewright.errors import GateSetError
 from gatewright.gates import Gate
 from gatewright.synthesis.euler import ROUNDING, quaternion, rotation, settle
 
-__all__ = ["SAME", "Equatorial", "Fixed", "General", "Kind", "Knob", "NativeOneQubit", "Turn", "recognise"]
+__all__ = ["SAME", "Equatorial", "Fixed", "FreeAxis", "General", "Kind", "Knob", "NativeOneQubit", "Turn", "recognise"]
 
 Real: TypeAlias = NDArray[np.float64]
 Complex: TypeAlias = NDArray[np.complex128]
@@ -193,7 +193,30 @@ class General:
         return f"makes three rotations, about {_show(self.outer)} and an axis orthogonal to it, by {ranges}"
 
 
-Kind: TypeAlias = Fixed | Turn | Equatorial | General
+@dataclass(frozen=True, eq=False, slots=True)
+class FreeAxis:
+    """A rotation by θ about the axis cos ϑ · pole + sin ϑ (cos φ · reference + sin φ · pole × reference).
+
+    `sign` is 1 or -1 where θ covers [0, π] or [-π, 0] and ϑ covers [0, π], 2 or 3 where θ covers [-π, π] and ϑ
+    [0, π/2] or [π/2, π]; always with φ a full turn. Otherwise 0.
+    """
+
+    index: int
+    pole: Real
+    reference: Real
+    turn: Knob
+    polar: Knob
+    azimuth: Knob
+    sign: int
+
+    def describe(self) -> str:
+        """Return what it does, for a message."""
+        (a, b), (c, d), (e, f) = self.turn.reach, self.polar.reach, self.azimuth.reach
+        axes = f"axes at {c:.4g} to {d:.4g} from {_show(self.pole)} and {e:.4g} to {f:.4g} about it"
+        return f"rotates by {a:.4g} to {b:.4g} about {axes}"
+
+
+Kind: TypeAlias = Fixed | Turn | Equatorial | General | FreeAxis
 
 
 def _show(axis: Real) -> str:
@@ -228,10 +251,14 @@ def recognise(index: int, native: NativeOneQubit) -> Kind:
             found=", ".join(f"{low:.6g} to {high:.6g}" for low, high in native.ranges),
         )
     samples = _Samples(native)
-    finders: dict[int, Callable[..., Kind | None]] = {1: _find_turn, 2: _find_equatorial, 3: _find_general}
-    if gate.n_parameters in finders:
+    finders: dict[int, tuple[Callable[..., Kind | None], ...]] = {
+        1: (_find_turn,),
+        2: (_find_equatorial,),
+        3: (_find_general, _find_free_axis),
+    }
+    for finder in finders.get(gate.n_parameters, ()):
         for slots in permutations(range(gate.n_parameters)):
-            kind = finders[gate.n_parameters](index, samples, *slots)
+            kind = finder(index, samples, *slots)
             if kind is not None:
                 return kind
     parameters = np.clip(0.0, samples.low, samples.high)
@@ -397,6 +424,73 @@ def _find_general(index: int, samples: _Samples, left: int, middle: int, right: 
     if knobs[0].copies(-_PI, _PI) == knobs[2].copies(-_PI, _PI) == 1:
         sign = 1 if knobs[1].copies(0, _PI) == 1 else -1 if knobs[1].copies(-_PI, 0) == 1 else 0
     return General(index, outer, inner, *knobs, sign)
+
+
+def _find_free_axis(index: int, samples: _Samples, turn: int, polar: int, azimuth: int) -> FreeAxis | None:
+    found = samples.rotation(turn, {})
+    if found is None:
+        return None
+    start, rate = found
+
+    def axis_at(slot: int, p: float) -> Real:
+        now = samples.rotation(turn, {slot: p})
+        return start if now is None else now[0]
+
+    # Three axes of a cone, as far apart as may be, give its pole.
+    low, high, base = float(samples.low[azimuth]), float(samples.high[azimuth]), float(samples.base[azimuth])
+    others = [
+        axis_at(azimuth, low + (base - low + f * (high - low)) % (high - low)) for f in (0.08, 0.21, 1 / 3, 2 / 3)
+    ]
+    poles = [np.cross(a - start, b - start) for k, a in enumerate(others) for b in others[:k]]
+    pole = max(poles, key=lambda found: float(np.linalg.norm(found)))
+    if np.linalg.norm(pole) < 1e-7:
+        return None
+    pole = _clean(pole)
+
+    def around(p: float) -> tuple[Real, float]:
+        now = axis_at(azimuth, p)
+        a, b = (axis - pole * (pole @ axis) for axis in (start, now))
+        size = float(np.linalg.norm(a) * np.linalg.norm(b)) or 1.0
+        return pole * float(pole @ np.cross(a, b)) / size, float(a @ b) / size
+
+    swung = samples.sweep(azimuth, around)
+    if swung is None:
+        return None
+    pole, pace = swung[0], _simple(swung[1])
+
+    def away(p: float) -> tuple[Real, float]:
+        now = axis_at(polar, p)
+        return np.cross(start, now), float(start @ now)
+
+    tilted = samples.sweep(polar, away)
+    side = start - pole * (pole @ start)
+    if tilted is None or np.linalg.norm(side) < 1e-7:
+        return None
+    side = side / np.linalg.norm(side)
+    slope = _simple(tilted[1]) * (1.0 if tilted[0] @ np.cross(pole, side) > 0 else -1.0)
+    reference = _clean(_turned(pole, -pace * base, side))
+    across = _clean(np.cross(pole, reference))
+    theta = samples.knob(turn, rate, samples.shift(turn, start, rate))
+    lean = samples.knob(
+        polar, slope, float(np.arctan2(side @ start, pole @ start)) - slope * float(samples.base[polar])
+    )
+    phi = samples.knob(azimuth, pace)
+
+    def model(p: Real) -> Complex:
+        frame = rotation(pole, pace * p[:, azimuth]) @ rotation(across, slope * p[:, polar] + lean.shift)
+        return frame @ rotation(pole, rate * p[:, turn] + theta.shift) @ np.conj(np.swapaxes(frame, -1, -2))
+
+    if not samples.agree(model):
+        return None
+    if np.sin(sum(lean.reach) / 2) < 0:
+        lean, reference = lean.reversed(), -reference
+    sign = 0
+    if phi.copies(-_PI, _PI) == 1:
+        if lean.copies(0, _PI) == 1:
+            sign = 1 if theta.copies(0, _PI) == 1 else -1 if theta.copies(-_PI, 0) == 1 else 0
+        elif theta.copies(-_PI, _PI) == 1:
+            sign = 2 if lean.copies(0, _PI / 2) == 1 else 3 if lean.copies(_PI / 2, _PI) == 1 else 0
+    return FreeAxis(index, pole, reference, theta, lean, phi, sign)
 
 
 def _times(a: Real, b: Real) -> Real:
