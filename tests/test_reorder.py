@@ -105,7 +105,7 @@ def test_a_proof_with_a_new_order_goes_through_a_file_and_a_wrong_one_does_not()
     assert result.costs.two_qubit_gates <= 26
     claims = [step for step in result.proof.steps if isinstance(step, Reorder)]
     assert len(claims) == 1
-    read = decode_proof(encode_proof(result.proof)).proof
+    read = decode_proof(encode_proof(result.proof))
     assert check_proof(source, result.circuit, read, device=device).error_bound == pytest.approx(
         result.verdict.error_bound, rel=0.1
     )

@@ -15,8 +15,8 @@ import networkx as nx
 import numpy as np
 from numba import njit
 
-from gatewright.mapping.placement import TRIALS, place
 from gatewright.mapping.routing import make_graph, make_operations, route, run_pass
+from gatewright.mapping.search import EFFORTS, place, plan
 
 
 @njit("int64(int32[::1], int32[::1], int32[::1])")
@@ -116,7 +116,7 @@ def main() -> None:
                     ),
                 ),
             )
-            for effort in TRIALS
+            for effort in EFFORTS
         )
         print(
             f"{name:<26} {len(pairs) / seconds:>10.3g} g/s {len(pairs) / floor:>10.3g} g/s {seconds / floor:>6.0f}"
@@ -135,8 +135,8 @@ def main() -> None:
             pairs = planted_pairs(graph, layers, share)
             operations = make_operations(pairs.ravel(), np.arange(0, pairs.size + 1, 2), np.ones(len(pairs)), n)
             begun = time.perf_counter()
-            initial = place(made, operations, n_source=n, active=np.ones(n, bool))
-            count = len(route(made, operations, initial).swaps)
+            planned = plan(made, operations, n_source=n, active=np.ones(n, bool))
+            count = len(route(made, operations, planned.initial, script=planned.script).swaps)
             found.append(f"{len(pairs)} gates: {count} swaps {time.perf_counter() - begun:.2f} s")
         print(f"{name:<26} {'   '.join(found)}")
 

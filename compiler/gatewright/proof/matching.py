@@ -103,22 +103,23 @@ def match_circuits(source: Circuit, output: Circuit, initial: Sequence[int] | No
         steps.append(step)
         source = step.output
     meant, made = Blocks(source), Blocks(output)
-    choices: list[int] = []
     furthest: Stuck | None = None
-    for _ in range(max(1, min(TRIALS, WORK // (len(made.kind) + 1)))):
-        search = _Search(meant, made, initial, choices)
-        found = search.run()
-        if isinstance(found, Step):
-            return Matched(Proof((*steps, found)))
-        if furthest is None or found.blocks > furthest.blocks:
-            furthest = found
-        # The last decision with another possibility takes it; those after it begin anew.
-        taken = search.decisions
-        while taken and taken[-1][0] + 1 >= taken[-1][1]:
-            taken.pop()
-        if not taken:
-            break
-        choices = [choice for choice, _ in taken[:-1]] + [taken[-1][0] + 1]
+    for sparing in (False, True):
+        choices: list[int] = []
+        for _ in range(max(1, min(TRIALS, WORK // (len(made.kind) + 1)))):
+            search = _Search(meant, made, initial, choices, sparing=sparing)
+            found = search.run()
+            if isinstance(found, Step):
+                return Matched(Proof((*steps, found)))
+            if furthest is None or found.blocks > furthest.blocks:
+                furthest = found
+            # The last decision with another possibility takes it; those after it begin anew.
+            taken = search.decisions
+            while taken and taken[-1][0] + 1 >= taken[-1][1]:
+                taken.pop()
+            if not taken:
+                break
+            choices = [choice for choice, _ in taken[:-1]] + [taken[-1][0] + 1]
     assert furthest is not None
     return furthest
 
@@ -126,8 +127,10 @@ def match_circuits(source: Circuit, output: Circuit, initial: Sequence[int] | No
 class _Search:
     """One pass over both circuits."""
 
-    def __init__(self, meant: Blocks, made: Blocks, initial: Sequence[int] | None, choices: list[int]) -> None:
-        self.meant, self.made, self.choices = meant, made, choices
+    def __init__(
+        self, meant: Blocks, made: Blocks, initial: Sequence[int] | None, choices: list[int], *, sparing: bool
+    ) -> None:
+        self.meant, self.made, self.choices, self.sparing = meant, made, choices, sparing
         self.n, self.wires = made.circuit.n_qubits, meant.circuit.n_qubits
         self.decisions: list[tuple[int, int]] = []
         self.given = initial is not None
@@ -278,12 +281,14 @@ class _Search:
             labels = self.label_at[self.made.wires[block][0]], self.label_at[self.made.wires[block][1]]
             a, b = self.bound[labels[0]], self.bound[labels[1]]
             facing = self._front(a, b) if min(a, b) >= 0 else None
-            if facing is not None and self._consume(block, labels, facing, None, None):
-                return True
-            if self._consume(block, labels, None, None, None):
-                return True
             gates = len(self.meant.members[facing]) - self.done[facing] if facing is not None else 0
-            if any(self._consume(block, labels, facing, part, None) for part in range(gates - 1, 0, -1)):
+            # All of the source block, nothing of it, or the first gates, the most or the fewest first.
+            most = [] if facing is None else [None, *range(gates - 1, 0, -1)]
+            ways: list[tuple[int | None, int | None]] = [(facing, part) for part in most]
+            ways.insert(min(len(ways), 1), (None, None))
+            if self.sparing:
+                ways.reverse()
+            if any(self._consume(block, labels, *way, None) for way in ways):
                 return True
             if not split:
                 return False
