@@ -2,7 +2,7 @@
 
 Each statement is parsed by the standard's reference parser and carried out on the names and columns that the fast
 lane has: loops are unrolled, branches decided, subroutines written out in place, modifiers resolved. After the
-OpenQASM 3 specification (arXiv:2104.14722). Timing, inputs and calibrations are refused.
+OpenQASM 3 specification (arXiv:2104.14722).
 """
 
 from __future__ import annotations
@@ -24,7 +24,7 @@ from gatewright.qasm.grammar import MAX_STATEMENT, parse_statement, statement_en
 from gatewright.qasm.scope import MAX_QUBITS, NAME, RESERVED
 from gatewright.qasm.shapes import Shape, signature
 from gatewright.qasm.timing import Timing
-from gatewright.qasm.values import Array, Kind, Value, binary, cast, expression
+from gatewright.qasm.values import Array, Kind, Value, binary, blank_array, cast, expression, shape_of
 
 if TYPE_CHECKING:
     from gatewright.qasm.reader import Reader
@@ -291,7 +291,7 @@ class FullLane(Timing):
             if float(np.prod(np.array(sizes, dtype=np.float64))) > MAX_ELEMENTS:
                 raise self.error("an array is too large", node, required=f"at most {MAX_ELEMENTS} elements")
             self.charge(int(np.prod(sizes)), node)
-            value = _blank(kind, sizes) if given is None else self.array(kind, sizes, given)
+            value = blank_array(kind, sizes) if given is None else self.array(kind, sizes, given)
         else:
             kind = self.kind(node.type)
             if given is not None:
@@ -354,7 +354,7 @@ class FullLane(Timing):
             raise self.error(f"'{shorten(name)}' is a constant", node.lvalue, required="a variable")
         real = found.kind.name in ("float", "angle")
         if not indexed and isinstance(found.value, Array) and not op:
-            found.value = self.array(found.kind, _shape(found.value), node.rvalue)
+            found.value = self.array(found.kind, shape_of(found.value), node.rvalue)
             return
         if indexed and isinstance(found.value, Array) and self.set_part(found, found.value, node, op):
             return
@@ -391,10 +391,10 @@ class FullLane(Timing):
             if op or self.depth > variable.depth:
                 what = f"'{op}='" if op else "assigning, depending on a measurement,"
                 raise self.unsupported(f"{what} to a part of an array", node)
-            wanted = _shape(item) if isinstance(item, Array) else [len(chosen), *_shape(holder)[1:]]
+            wanted = shape_of(item) if isinstance(item, Array) else [len(chosen), *shape_of(holder)[1:]]
             made = self.array(variable.kind, wanted, node.rvalue)
-            if _shape(made) != wanted:
-                required, found = (" by ".join(map(str, sizes)) for sizes in (wanted, _shape(made)))
+            if shape_of(made) != wanted:
+                required, found = (" by ".join(map(str, sizes)) for sizes in (wanted, shape_of(made)))
                 raise self.error("an array of another size or type", node.rvalue, required=required, found=found)
             if isinstance(item, Array):
                 item.items[:] = made.items
@@ -603,19 +603,3 @@ class FullLane(Timing):
         places = self.take_bits(argument.kind.width or 1, single=not argument.kind.width, node=node)
         self.set_bits(places, argument.value, node)
         return places
-
-
-def _blank(kind: Kind, sizes: Sequence[int]) -> Array:
-    """Return an array of zeros: the language leaves the first values open."""
-    if len(sizes) == 1:
-        return Array(kind, [cast(Value(Kind("bit"), 0) if kind.name != "angle" else Value(kind, 0), kind)] * sizes[0])
-    return Array(kind, [_blank(kind, sizes[1:]) for _ in range(sizes[0])])
-
-
-def _shape(array: Array) -> list[int]:
-    """Return the sizes of an array."""
-    sizes = [len(array.items)]
-    while array.items and isinstance(array.items[0], Array):
-        array = array.items[0]
-        sizes.append(len(array.items))
-    return sizes

@@ -19,7 +19,19 @@ from gatewright.classical import Bits, Expression, Literal, Name, Operation
 from gatewright.errors import ExpressionError, shorten
 from gatewright.expressions import CONSTANTS
 
-__all__ = ["BUILT_IN", "Array", "Kind", "Value", "binary", "cast", "expression", "function", "unary"]
+__all__ = [
+    "BUILT_IN",
+    "Array",
+    "Kind",
+    "Value",
+    "binary",
+    "blank_array",
+    "cast",
+    "expression",
+    "function",
+    "shape_of",
+    "unary",
+]
 
 #: Width of integers without a stated one, and the widest that may be stated.
 UNSIZED = 64
@@ -419,3 +431,19 @@ def function(name: str, values: Sequence[Value]) -> Value | None:
     data &= (1 << width) - 1
     data = ((data << places) | (data >> (width - places))) & ((1 << width) - 1)
     return Value(a.kind, _wrap(data, a.kind.name, width))
+
+
+def blank_array(kind: Kind, sizes: Sequence[int]) -> Array:
+    """Return an array of zeros: the language leaves the first values open."""
+    if len(sizes) == 1:
+        return Array(kind, [cast(Value(Kind("bit"), 0) if kind.name != "angle" else Value(kind, 0), kind)] * sizes[0])
+    return Array(kind, [blank_array(kind, sizes[1:]) for _ in range(sizes[0])])
+
+
+def shape_of(array: Array) -> list[int]:
+    """Return the sizes of an array."""
+    sizes = [len(array.items)]
+    while array.items and isinstance(array.items[0], Array):
+        array = array.items[0]
+        sizes.append(len(array.items))
+    return sizes
