@@ -35,7 +35,7 @@ def test_output_compiled_again(gate_set: str, seed: int) -> None:
         same = statements(again.to_qasm()) == statements(text)
         if same:
             assert again.verdict.initial == again.verdict.final == tuple(range(5))
-            assert again.verdict.error_bound < 1e-12 and again.costs.swaps_inserted == 0
+            assert again.verdict.error_bound < 1e-10 and again.costs.swaps_inserted == 0
             assert np.array_equal(again.starts, result.starts)
             break
         # It is another one only where it is cheaper.

@@ -18,7 +18,8 @@ from gatewright.gates import GATES, Gate
 from gatewright.parameters import Affine, close, product, read_affine, within
 from gatewright.pipeline import proven
 from gatewright.proof import Proof, check_legal, check_proof, dense_distance
-from gatewright.proof.file import decode_proof, fingerprint
+from gatewright.proof.file import decode_proof
+from gatewright.proof.fingerprints import fingerprint
 from gatewright.proof.parametrised import HARMONICS
 from gatewright.qasm import read, write
 from gatewright.rotations import PARAMETRISED
@@ -411,9 +412,9 @@ def test_proof_files_and_programs_round_trip(seed: int) -> None:
     assert [(op.name, op.qubits, op.parameters) for op in output] == [
         (op.name, op.qubits, op.parameters) for op in result.circuit
     ]
-    assert fingerprint(output) == fingerprint(result.circuit) == file.output
-    assert check_proof(circuit, output, file.proof, device=device).error_bound == result.verdict.error_bound
-    proven(circuit, output, file.proof, device=device, tolerance=1e-12)
+    assert fingerprint(output) == fingerprint(result.circuit) == file.made_for.output
+    assert check_proof(circuit, output, file, device=device).error_bound == result.verdict.error_bound
+    proven(circuit, output, file, device=device, tolerance=1e-12)
     # Compiled once more, the output costs no more.
     again = gw.compile(output, device, placement=range(3))
     assert again.costs.two_qubit_gates <= result.costs.two_qubit_gates
