@@ -13,6 +13,7 @@ import numba as nb
 import numpy as np
 from numpy.typing import NDArray
 
+from gatewright.calibrated import without_matrix
 from gatewright.circuit import Circuit
 from gatewright.errors import BudgetError, InputError, nearest_name
 from gatewright.gates import BARRIER, DELAY, RESET
@@ -156,6 +157,9 @@ def _per_operation(circuit: Circuit, device: Device, look_up: Callable[[str, Any
         rows = np.flatnonzero((circuit.op == k) & ~free)
         if len(rows):
             width = int(circuit.widths[rows[0]])
+            if without_matrix(gate) and gate.name not in device.gate_set.gates:
+                values[rows] = np.nan  # only the program's own calibration knows
+                continue
             values[rows] = look_up(gate.name, circuit.qubits[circuit.offsets[rows][:, None] + np.arange(width)])
     return values
 

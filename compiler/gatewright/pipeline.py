@@ -10,10 +10,11 @@ from typing import Any, overload
 from numpy.typing import ArrayLike
 
 from gatewright.branches import combined_costs, thread_program
+from gatewright.calibrated import misplaced, without_matrix
 from gatewright.circuit import Circuit
 from gatewright.cost import Bound, Costs, check_budget, count_costs, require_budget
 from gatewright.devices import Device
-from gatewright.errors import InputError, ProofError, nearest_name
+from gatewright.errors import InputError, ProofError, UnsupportedError, nearest_name
 from gatewright.linalg import checked_unitary
 from gatewright.lower_bounds import lower_bound
 from gatewright.program import Program
@@ -169,6 +170,9 @@ def compile(  # noqa: A001
         unitary, moved = checked_unitary(source, tolerance=tolerance, nearest=nearest_unitary)
         asked = Circuit.from_unitary(unitary)
     device.require_room(asked.n_qubits)
+    if isinstance(asked, Circuit) and any(without_matrix(gate) for gate in asked.table):
+        # Gates that only a calibration defines stand on physical qubits.
+        placement = final_placement = _at_home(asked, placement, final_placement)
     settings = Settings(
         seed=seed,
         tolerance=tolerance,
@@ -187,6 +191,7 @@ def compile(  # noqa: A001
     for stage in chain:
         clock.start(stage.__name__)
         draft = stage(draft)
+    _require_calibrated_in_place(draft.circuit)
     clock.start("prove")
     proof = Proof(draft.steps, Fingerprints.of(asked, draft.circuit, device))
     verdict = proven(asked, draft.circuit, proof, device=device, tolerance=tolerance)
@@ -322,6 +327,28 @@ def check(
                 found=", ".join(map(str, given[:16])),
             )
     return judge(source, output, initial=initial, final=final, tolerance=tolerance)
+
+
+def _at_home(circuit: Circuit, *given: Sequence[int] | None) -> tuple[int, ...]:
+    """Return the placement that leaves every qubit where it is, and refuse any other."""
+    home = tuple(range(circuit.n_qubits))
+    for places in given:
+        if places is not None and any(q not in (-1, at) for at, q in enumerate(places)):
+            raise InputError(
+                "gates that only a 'defcal' defines stay on their physical qubits", required="no other placement"
+            )
+    return home
+
+
+def _require_calibrated_in_place(circuit: Circuit) -> None:
+    row = misplaced(circuit)
+    if row is not None:
+        operation = circuit.operation(row)
+        raise UnsupportedError(
+            f"routing would move '{operation.name}', which only a 'defcal' defines, to other qubits",
+            required="two-qubit gates on coupled qubits in a program with such gates",
+            found=", ".join(f"${q}" for q in operation.qubits),
+        )
 
 
 def _placement(given: Sequence[int] | None, circuit: Circuit | Program) -> tuple[int, ...] | None:

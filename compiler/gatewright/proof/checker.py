@@ -78,6 +78,10 @@ def check_proof(
     ProofError
         Naming the window, the qubits and the distance.
     """
+    width = max((len(step.initial) for step in proof.steps if isinstance(step, Step)), default=0)
+    if output.n_qubits < width:
+        # A program on physical qubits need not name the last ones.
+        output = replace(output, n_qubits=width, qubit_registers=())
     if not proof.steps:
         raise ProofError("the proof is empty", required="at least one step")
     given = output

@@ -25,6 +25,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gatewright._version import __version__
+from gatewright.calibrated import without_matrix
 from gatewright.circuit import Circuit
 from gatewright.errors import InputError, ProofFileError, shorten
 from gatewright.gates import BARRIER, DELAY, GATES, MEASURE, RESET, UNITARY, Gate
@@ -128,7 +129,7 @@ def _encode_circuit(circuit: Circuit | None, prefix: str, arrays: dict[str, NDAr
     if circuit is None:
         return None
     for gate in circuit.table:
-        if gate.name not in _SPECIAL and GATES.get(gate.name) != gate:
+        if gate.name not in _SPECIAL and GATES.get(gate.name) != gate and not without_matrix(gate):
             raise ProofFileError(
                 f"the proof passes through the gate '{gate.name}', which is not in the standard table",
                 hint="give wide gates of your own as explicit unitaries",
@@ -146,6 +147,7 @@ def _encode_circuit(circuit: Circuit | None, prefix: str, arrays: dict[str, NDAr
         "n_bits": circuit.n_bits,
         "table": [gate.name for gate in circuit.table],
         "matrix_sizes": [len(matrix) for matrix in circuit.matrices],
+        "calibrated": {gate.name: [gate.n_qubits, gate.n_parameters] for gate in circuit.table if without_matrix(gate)},
         **({"symbolic": _encode_symbolic(circuit.symbolic)} if circuit.symbolic else {}),
     }
 
@@ -306,7 +308,8 @@ def _decode_circuit(entry: dict[str, Any], prefix: str, arrays: dict[str, NDArra
         if array.ndim != 1:
             raise ProofFileError("the proof file is damaged", required=f"array '{name}' of one axis")
         columns[name] = array.astype(dtype)
-    table: tuple[Gate, ...] = tuple(_SPECIAL.get(name) or GATES[name] for name in entry["table"])
+    own = {str(name): Gate(str(name), int(n), int(p)) for name, (n, p) in entry.get("calibrated", {}).items()}
+    table: tuple[Gate, ...] = tuple(_SPECIAL.get(name) or own.get(name) or GATES[name] for name in entry["table"])
     sizes = [int(size) for size in entry["matrix_sizes"]]
     circuit = Circuit(
         n_qubits=int(entry["n_qubits"]),

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, NoReturn
 import numpy as np
 from numpy.typing import NDArray
 
+from gatewright.calibrated import misplaced, without_matrix
 from gatewright.circuit import Circuit
 from gatewright.errors import ProofError
 from gatewright.gates import BARRIER, DELAY, MEASURE, RESET
@@ -38,6 +39,9 @@ def check_legal(circuit: Circuit, device: Device) -> None:
             required=f"{device.n_qubits} at most",
             found=str(circuit.n_qubits),
         )
+    stray = misplaced(circuit)
+    if stray is not None:
+        _illegal(circuit, stray, f"'{circuit.operation(stray).name}' is not native, nor calibrated on these qubits")
     active = np.asarray(device.active)
     for k, gate in enumerate(circuit.table):
         rows = np.flatnonzero(circuit.op == k)
@@ -49,6 +53,8 @@ def check_legal(circuit: Circuit, device: Device) -> None:
             if len(wrong):
                 _illegal(circuit, int(rows[wrong[0]]), "a delay has no duration from 0 up")
             continue
+        if without_matrix(gate) and gate.name not in device.gate_set.gates:
+            continue  # judged by the program's own calibrations, below
         width = int(circuit.widths[rows[0]])
         qubits = circuit.qubits[circuit.offsets[rows][:, None] + np.arange(width)]
         native = None

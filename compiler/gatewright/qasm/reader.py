@@ -18,6 +18,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
+from gatewright.calibrated import calibrated_gates, misplaced
 from gatewright.circuit import Circuit
 from gatewright.classical import Bits, Literal, Operation
 from gatewright.errors import ExpressionError, QasmError, UnsupportedError, nearest_name, shorten
@@ -213,6 +214,16 @@ class Reader:
         if self.calibrations and self.marks:
             raise self.scope.unsupported("'cal' or 'defcal' beside control that depends on the run", 0)
         flat = replace(flat, calibrations=tuple(self.calibrations))
+        wrong = misplaced(flat) if self.calibrations else None
+        if wrong is not None:
+            operation = flat.operation(wrong)
+            operands = r"\s*,\s*".join(rf"\${q}" for q in operation.qubits)
+            call = re.search(rf"\b{re.escape(operation.name)}\s*(?:\([^()]*\))?\s*{operands}\s*;", self.source.text)
+            raise self.source.error(
+                f"'{shorten(operation.name)}', which only a 'defcal' defines, has none for these qubits",
+                call.start() if call else 0,
+                found=", ".join(f"${q}" for q in operation.qubits),
+            )
         return self.with_control(flat) if self.marks else flat
 
     def with_control(self, flat: Circuit) -> Program:
@@ -487,7 +498,7 @@ class Reader:
         if gate is not None:
             return gate
         if name in self.calibrated:
-            raise self.scope.unsupported(f"calling '{shorten(name)}', which has a 'defcal' and no definition,", offset)
+            return self.calibrated_gate(name, offset)
         scope = self.scope
         library = LIBRARY_FILES[scope.version]
         if name in scope.declared:
@@ -499,6 +510,14 @@ class Reader:
         else:
             hint = nearest_name(name, self.gates)
         raise self.source.error(f"unknown gate '{shorten(name)}'", offset, hint=hint)
+
+    def calibrated_gate(self, name: str, offset: int) -> Gate:
+        """Return a gate that only a calibration defines."""
+        found = calibrated_gates(self.calibrations).get(name)
+        if found is None or not self.scope.n_physical and self.scope.n_qubits:
+            what = f"calling '{shorten(name)}', which only a 'defcal' defines, on anything but its physical qubits"
+            raise self.scope.unsupported(what, offset)
+        return found.gate
 
     # ---------------------------------------------------------------- other operations
 

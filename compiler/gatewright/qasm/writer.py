@@ -15,6 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gatewright.angles import angle_texts
+from gatewright.calibrated import without_matrix
 from gatewright.circuit import Circuit
 from gatewright.classical import Bits, bits_text
 from gatewright.errors import CircuitError, QasmError, UnsupportedError, shorten
@@ -89,10 +90,14 @@ def write(
     defined = _definitions(flat, version, definitions)
     qubits, bits = _registers(flat, version, defined)
     phase = 0.0
+    # Calibrations speak of physical qubits, and so does what they define.
+    physical = any(without_matrix(flat.table[k]) for k in np.unique(flat.op).tolist())
 
     def lines_of(part: Circuit) -> list[str]:
         nonlocal phase
-        made, phase = _statements(part, version, _elements(qubits), _elements(bits), [name for name, _ in qubits])
+        names = [f"${k}" for k in range(flat.n_qubits)] if physical else _elements(qubits)
+        registers = names if physical else [name for name, _ in qubits]
+        made, phase = _statements(part, version, names, _elements(bits), registers)
         return made
 
     if isinstance(circuit, Circuit):
@@ -120,7 +125,7 @@ def write(
     if defined or flat.inputs or flat.calibrations:
         head.append("")
     quantum, classical = ("qreg {0}[{1}];", "creg {0}[{1}];") if version == 2 else ("qubit[{1}] {0};", "bit[{1}] {0};")
-    head += [quantum.format(name, size) for name, size in qubits]
+    head += [] if physical else [quantum.format(name, size) for name, size in qubits]
     head += [classical.format(name, size) for name, size in bits]
     if phase and version == 3:
         head.append(f"gphase({angle_texts([phase])[0]});")
@@ -247,7 +252,7 @@ def _statements(
             for row in rows.tolist():
                 time = repr(float(circuit.parameters[circuit.parameter_offsets[row]])).removesuffix(".0")
                 lines[row] = f"delay[{time}ns] {', '.join([qubits[q] for q in circuit.qubits_of(row)])};"
-        elif gate.function is not None or gate.name == RESET.name:
+        elif gate.function is not None or gate.name == RESET.name or (without_matrix(gate) and version == 3):
             lines[rows] = _calls(circuit, gate, rows, qubits)
         else:
             raise CircuitError(f"the operation '{shorten(gate.name)}' cannot be written in OpenQASM {version}")
