@@ -8,7 +8,6 @@ of swaps is not claimed to be the least.
 
 from __future__ import annotations
 
-import networkx as nx
 import numpy as np
 from numpy.typing import NDArray
 
@@ -81,6 +80,9 @@ def restoring_swaps(graph: Graph, now: Integers, wanted: Integers) -> list[tuple
 
 def _serve_ends(graph: Graph, goal: dict[int, int], swap: object) -> None:
     """Bring each wire home to an end of what is left of a spanning forest, and take that end away."""
+    # Seldom needed, and it takes a quarter of a second to load.
+    import networkx as nx
+
     assert callable(swap)
     forest = nx.Graph()
     forest.add_nodes_from(range(graph.n))
