@@ -35,9 +35,14 @@ class Columns(NamedTuple):
     parameters: NDArray[np.float64]
 
 
+#: Statements longer than this on average are no calls of gates.
+_LONGEST_MEAN = 400
+
+
 def pays(text: str) -> bool:
-    """Return whether a text is large enough for the scanner."""
-    return len(text) >= (_LOADED if "numba" in sys.modules else LARGE)
+    """Return whether a text is large enough for the scanner, and made of statements as short as those it reads."""
+    large = len(text) >= (_LOADED if "numba" in sys.modules else LARGE)
+    return large and text.count(";") * _LONGEST_MEAN > len(text)
 
 
 class Scanner:
