@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gatewright.angles import angle_texts
-from gatewright.calibrated import without_matrix
+from gatewright.calibrated import calibrated_gates, without_matrix
 from gatewright.circuit import Circuit
 from gatewright.classical import Bits, bits_text
 from gatewright.errors import CircuitError, QasmError, UnsupportedError, shorten
@@ -91,7 +91,9 @@ def write(
     qubits, bits = _registers(flat, version, defined)
     phase = 0.0
     # Calibrations speak of physical qubits, and so does what they define.
-    physical = any(without_matrix(flat.table[k]) for k in np.unique(flat.op).tolist())
+    known = calibrated_gates(flat.calibrations)
+    kinds = (flat.table[k] for k in np.unique(flat.op).tolist())
+    physical = any(without_matrix(gate) and gate.name in known for gate in kinds)
 
     def lines_of(part: Circuit) -> list[str]:
         nonlocal phase
@@ -252,7 +254,9 @@ def _statements(
             for row in rows.tolist():
                 time = repr(float(circuit.parameters[circuit.parameter_offsets[row]])).removesuffix(".0")
                 lines[row] = f"delay[{time}ns] {', '.join([qubits[q] for q in circuit.qubits_of(row)])};"
-        elif gate.function is not None or gate.name == RESET.name or (without_matrix(gate) and version == 3):
+        elif (
+            gate.function is not None or gate.name == RESET.name or gate.name in calibrated_gates(circuit.calibrations)
+        ):
             lines[rows] = _calls(circuit, gate, rows, qubits)
         else:
             raise CircuitError(f"the operation '{shorten(gate.name)}' cannot be written in OpenQASM {version}")
