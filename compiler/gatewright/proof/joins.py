@@ -15,6 +15,7 @@ from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from gatewright.circuit import Circuit
+from gatewright.classical import Expression, expression_text
 from gatewright.errors import ProofError, UndecidedError
 from gatewright.program import Assign, Block, If, Leave, Program, Statement, While
 from gatewright.proof.checker import check_proof
@@ -206,5 +207,13 @@ def _listed(places: Places) -> str:
 def _shown(statement: Statement) -> str:
     match statement:
         case If(condition) | While(condition):
-            return f"{type(statement).__name__.lower()} {condition}"[:120]
-    return str(statement)[:120]
+            text = f"{type(statement).__name__.lower()} ({_text(condition)})"
+        case Assign(target, value):
+            text = f"{_text(target)} = {_text(value)}"
+        case Leave(word):
+            text = word
+    return f"'{text[:120]}'"
+
+
+def _text(expression: Expression) -> str:
+    return expression_text(expression, lambda bits: f"bit[{', '.join(map(str, bits.indices))}]")
