@@ -16,10 +16,10 @@ import json
 import math
 import zipfile
 import zlib
-from collections.abc import Iterable, Sequence
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import asdict
 from pathlib import Path
-from typing import Any
+from typing import Any, TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -44,7 +44,9 @@ from gatewright.proof.packing import (
 from gatewright.proof.reorder import Reorder
 from gatewright.proof.windows import Proof, Step
 
-__all__ = ["FORMAT", "FORMAT_VERSION", "decode_proof", "encode_proof", "read_proof"]
+__all__ = ["FORMAT", "FORMAT_VERSION", "decode_proof", "encode_proof", "read_file", "read_proof"]
+
+Decoded = TypeVar("Decoded")
 
 FORMAT = "gatewright-proof"
 FORMAT_VERSION = 2
@@ -191,13 +193,18 @@ def read_proof(path: str | Path) -> Proof:
     ProofFileError
         Missing, truncated, edited, or of another version.
     """
+    return read_file(path, decode_proof)
+
+
+def read_file(path: str | Path, decode: Callable[[bytes], Decoded]) -> Decoded:
+    """Read a file and decode its bytes; errors name the file."""
     where = str(path)
     try:
         data = Path(path).read_bytes()
     except OSError as error:
         raise ProofFileError(f"cannot read the proof file: {error.strerror}", where=where) from None
     try:
-        return decode_proof(data)
+        return decode(data)
     except ProofFileError as error:
         raise error.located(where=where) from None
 

@@ -13,7 +13,7 @@ from collections.abc import Sequence
 from pathlib import Path
 
 from gatewright.errors import ProofFileError, shorten
-from gatewright.proof.file import decode_proof, encode_proof
+from gatewright.proof.file import decode_proof, encode_proof, read_file
 from gatewright.proof.windows import Proof
 
 __all__ = ["decode_program_proof", "encode_program_proof", "read_program_proof"]
@@ -51,15 +51,7 @@ def read_program_proof(path: str | Path) -> tuple[Proof, ...]:
     ProofFileError
         Missing, truncated, edited, of another version, or the proof of a straight-line circuit.
     """
-    where = str(path)
-    try:
-        data = Path(path).read_bytes()
-    except OSError as error:
-        raise ProofFileError(f"cannot read the proof file: {error.strerror}", where=where) from None
-    try:
-        return decode_program_proof(data)
-    except ProofFileError as error:
-        raise error.located(where=where) from None
+    return read_file(path, decode_program_proof)
 
 
 def decode_program_proof(data: bytes) -> tuple[Proof, ...]:
